@@ -1,0 +1,30 @@
+"""What is judged, and by which rule."""
+
+from dataclasses import dataclass
+from enum import StrEnum
+
+
+class Quantity(StrEnum):
+    """A judged quantity, as the contract names it: limits are in this unit."""
+
+    ER_DB = "er_db"
+    ANGLE_DEG = "angle_deg"
+    DOP = "dop"
+    POWER_W = "power_w"
+
+    @property
+    def is_bad_above(self) -> bool:
+        """True where larger is worse."""
+        return self is Quantity.ANGLE_DEG
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class LimitRule:
+    """A limit's values at one moment; levels and deadband in the quantity's unit, delays in s."""
+
+    quantity: Quantity
+    alarm: float
+    warning: float | None = None
+    on_delay_s: float = 60.0
+    off_delay_s: float = 60.0
+    deadband: float = 1.0

@@ -1,0 +1,73 @@
+"""What is derived from raw readings: all of it can be thrown away and made anew (except calibrations)."""
+
+from django.contrib.postgres.fields import ArrayField
+from django.db import models
+
+
+class Calibration(models.Model):
+    """A version of a tap's calibration, by valid time and entry time.
+
+    It holds from ``valid_from`` until the next version's ``valid_from``; of two with the same ``valid_from`` the
+    later entered one holds. Zeros, floors (1 sigma), saturation, monitor and nominal power are in the tap's raw unit
+    (for dBm taps in W).
+    """
+
+    tap = models.ForeignKey("ingest.Tap", models.CASCADE, related_name="calibrations")
+    valid_from = models.DateTimeField()
+    entered_at = models.DateTimeField(auto_now_add=True)
+    entered_by = models.CharField(max_length=150, blank=True, help_text="Who; the audit has the person.")
+    zero1 = models.FloatField(default=0.0)
+    zero2 = models.FloatField(default=0.0)
+    zero_taken_at = models.DateTimeField(null=True)
+    gain_ratio = models.FloatField(default=1.0, help_text="Gain of port 1 / gain of port 2.")
+    floor1 = models.FloatField(default=0.0)
+    floor2 = models.FloatField(default=0.0)
+    saturation1 = models.FloatField(null=True)
+    saturation2 = models.FloatField(null=True)
+    leakage = models.JSONField(null=True, help_text="[[a, b], [c, d]]: readings = leakage @ (wanted of port 1, of port 2).")
+    wanted_port = models.PositiveSmallIntegerField(default=1)
+    monitor_ratio = models.FloatField(null=True, help_text="Bright power / monitor power.")
+    bright_nominal = models.FloatField(null=True)
+    wanted_state = ArrayField(models.FloatField(), size=3, null=True, help_text="Unit (s1, s2, s3).")
+    handedness = models.CharField(max_length=6, default="optics", choices=[("optics", "optics"), ("ieee", "ieee")])
+
+    class Meta:
+        indexes = [models.Index(fields=["tap", "valid_from", "entered_at"], name="calibration_by_time")]
+
+
+class TapNow(models.Model):
+    """The newest reduced sample of a tap, as the pages and the API show it."""
+
+    tap = models.OneToOneField("ingest.Tap", models.CASCADE, primary_key=True, related_name="now")
+    at_us = models.BigIntegerField()
+    sample = models.JSONField()
+    trust_state = models.JSONField(default=dict, help_text="Where the trust fold stands.")
+
+
+class RollupRow(models.Model):
+    """One bucket of the open days: a mergeable cell as bytes (see analysis.rollup.cells)."""
+
+    pk = models.CompositePrimaryKey("tap_id", "level_s", "bucket_us")
+    tap = models.ForeignKey("ingest.Tap", models.CASCADE, db_index=False)
+    level_s = models.IntegerField()
+    bucket_us = models.BigIntegerField()
+    body = models.BinaryField()
+
+
+class RollupDay(models.Model):
+    """All buckets of one past day, tap and level in one compressed buffer."""
+
+    pk = models.CompositePrimaryKey("tap_id", "level_s", "day_us")
+    tap = models.ForeignKey("ingest.Tap", models.CASCADE, db_index=False)
+    level_s = models.IntegerField()
+    day_us = models.BigIntegerField()
+    count = models.IntegerField()
+    body = models.BinaryField()
+
+
+class RollupDue(models.Model):
+    """A span of a tap whose rollups must be made anew."""
+
+    tap = models.ForeignKey("ingest.Tap", models.CASCADE)
+    first_at_us = models.BigIntegerField()
+    last_at_us = models.BigIntegerField()

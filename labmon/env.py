@@ -1,0 +1,56 @@
+"""Environment variables, typed; ``finish`` reports every fault at once."""
+
+from collections.abc import Callable, Mapping
+from typing import Any
+
+
+class EnvironmentFault(Exception):
+    """One or more variables cannot be used; the message names each with its value and the remedy."""
+
+
+def parse_bool(text: str) -> bool:
+    """``1 yes true on`` or ``0 no false off``."""
+    word = text.strip().lower()
+    if word in {"1", "yes", "true", "on"}:
+        return True
+    if word in {"0", "no", "false", "off"}:
+        return False
+    raise ValueError("write 1 or 0")
+
+
+def parse_words(text: str) -> list[str]:
+    """Words with commas between."""
+    return [word.strip() for word in text.split(",") if word.strip()]
+
+
+def parse_positive(text: str) -> float:
+    """A number above 0."""
+    number = float(text)
+    if not 0.0 < number < float("inf"):
+        raise ValueError("write a number above 0")
+    return number
+
+
+class Env:
+    """Reads variables with a common prefix from a mapping."""
+
+    def __init__(self, source: Mapping[str, str], prefix: str) -> None:
+        self.source = source
+        self.prefix = prefix
+        self.faults: list[str] = []
+
+    def get(self, name: str, parse: Callable[[str], Any], *, default: Any) -> Any:
+        """The parsed value of ``prefix + name``; unset or empty gives ``default``."""
+        text = self.source.get(self.prefix + name, "")
+        if not text:
+            return default
+        try:
+            return parse(text)
+        except ValueError as error:
+            self.faults.append(f"{self.prefix}{name}={text!r}: {error}")
+            return default
+
+    def finish(self) -> None:
+        """Raise once, with all faults."""
+        if self.faults:
+            raise EnvironmentFault("; ".join(self.faults))

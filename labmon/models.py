@@ -1,0 +1,11 @@
+"""Gathers the models of labmon's nouns for Django."""
+
+from labmon.alarms.models import Alarm, AlarmBounds
+from labmon.audit.models import AuditEntry
+from labmon.benches.models import Bench
+from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitVersion
+from labmon.people.models import Person, PersonKey
+from labmon.tell.models import OutboxMail
+
+__all__ = ["Alarm", "AlarmBounds", "AuditEntry", "Bench", "Experiment", "FoldCheckpoint", "Limit", "LimitVersion",
+           "OutboxMail", "Person", "PersonKey"]

@@ -1,0 +1,32 @@
+"""Who may do what."""
+
+from django.contrib.auth.models import AbstractUser
+from django.db import models
+
+
+class Role(models.TextChoices):
+    """Rights of CONTRACT section 5, least first."""
+
+    GUEST = "guest"
+    RESEARCHER = "researcher"
+    OWNER = "owner"
+    MANAGER = "manager"
+
+
+class Person(AbstractUser):
+    """Someone who signs in. A guest sees only the benches named for them."""
+
+    role = models.CharField(max_length=10, choices=Role, default=Role.GUEST)
+    guest_until = models.DateTimeField(null=True, blank=True)
+    guest_stations = models.ManyToManyField("ingest.Station", blank=True, related_name="guests")
+
+
+class PersonKey(models.Model):
+    """A person's key for the read API; only its digest is kept."""
+
+    person = models.ForeignKey(Person, models.CASCADE, related_name="keys")
+    digest = models.BinaryField(max_length=32, unique=True)
+    hint = models.CharField(max_length=8)
+    made_at = models.DateTimeField(auto_now_add=True)
+    expires_at = models.DateTimeField(null=True, blank=True)
+    revoked_at = models.DateTimeField(null=True, blank=True)

@@ -1,0 +1,131 @@
+"""The one settings module. Every ``LABMON_`` variable is listed with unit and default in docker/env.example."""
+
+import os
+from pathlib import Path
+
+from labmon.env import Env, parse_bool, parse_positive, parse_words
+from labmon.services import django_database, find_services
+
+BASE_DIR = Path(__file__).resolve().parent.parent
+env = Env(os.environ, prefix="LABMON_")
+
+DATA_DIR = env.get("DATA", Path, default=BASE_DIR / "lab-data").absolute()
+DEBUG = env.get("DEBUG", parse_bool, default=False)
+_services = find_services(os.environ, DATA_DIR)
+
+
+def _secret_key() -> str:
+    """From the environment, else made once and kept in the data folder, else for this process only."""
+    import secrets
+
+    kept = DATA_DIR / "secret-key"
+    if kept.is_file():
+        return kept.read_text().strip()
+    return secrets.token_urlsafe(50)
+
+
+SECRET_KEY = env.get("SECRET_KEY", str, default="") or _secret_key()
+ALLOWED_HOSTS = env.get("HOSTS", parse_words, default=["localhost", "127.0.0.1", "[::1]"])
+CSRF_TRUSTED_ORIGINS = env.get("ORIGINS", parse_words, default=[])
+IS_BEHIND_TLS = env.get("BEHIND_TLS", parse_bool, default=False)
+
+INSTALLED_APPS = [
+    "django.contrib.auth",
+    "django.contrib.contenttypes",
+    "django.contrib.sessions",
+    "django.contrib.messages",
+    "django.contrib.staticfiles",
+    "django.contrib.postgres",
+    "channels",
+    "ingest",
+    "analysis",
+    "labmon",
+]
+MIDDLEWARE = [
+    "labmon.screen.headers.ContentSecurityPolicy",
+    "django.middleware.security.SecurityMiddleware",
+    "whitenoise.middleware.WhiteNoiseMiddleware",
+    "django.contrib.sessions.middleware.SessionMiddleware",
+    "django.middleware.common.CommonMiddleware",
+    "django.middleware.csrf.CsrfViewMiddleware",
+    "django.contrib.auth.middleware.AuthenticationMiddleware",
+    "django.contrib.messages.middleware.MessageMiddleware",
+]
+ROOT_URLCONF = "labmon.urls"
+ASGI_APPLICATION = "labmon.asgi.application"
+TEMPLATES = [{
+    "BACKEND": "django.template.backends.django.DjangoTemplates",
+    "DIRS": [BASE_DIR / "templates"],
+    "APP_DIRS": True,
+    "OPTIONS": {"context_processors": [
+        "django.template.context_processors.request",
+        "django.contrib.auth.context_processors.auth",
+        "django.contrib.messages.context_processors.messages",
+    ]},
+}]
+
+# An unknown address is not a fault here: `check` reports it (labmon.E001), and commands that need none still run.
+DATABASES = {"default": django_database(_services.database_url or "postgresql://nobody@127.0.0.1:9/labmon")}
+BROKER_URL = _services.broker_url or "redis://127.0.0.1:9/0"
+HAS_SERVICES = bool(_services.database_url and _services.broker_url)
+DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"
+
+AUTH_USER_MODEL = "labmon.Person"
+LOGIN_URL = "login"
+LOGIN_REDIRECT_URL = "lab"
+LOGOUT_REDIRECT_URL = "login"
+AUTH_PASSWORD_VALIDATORS = [
+    {"NAME": "django.contrib.auth.password_validation.MinimumLengthValidator", "OPTIONS": {"min_length": 10}},
+    {"NAME": "django.contrib.auth.password_validation.CommonPasswordValidator"},
+]
+SESSION_COOKIE_AGE = 14 * 24 * 3600
+SESSION_COOKIE_SECURE = CSRF_COOKIE_SECURE = IS_BEHIND_TLS
+SECURE_PROXY_SSL_HEADER = ("HTTP_X_FORWARDED_PROTO", "https") if IS_BEHIND_TLS else None
+
+CHANNEL_LAYERS = {"default": {
+    "BACKEND": "channels_redis.pubsub.RedisPubSubChannelLayer",
+    "CONFIG": {"hosts": [BROKER_URL.replace("redis+socket://", "unix://")], "prefix": "labmon"},
+}}
+
+CELERY_BROKER_URL = BROKER_URL
+CELERY_TASK_IGNORE_RESULT = True
+CELERY_TASK_ACKS_LATE = True
+CELERY_TASK_TIME_LIMIT = 300
+CELERY_BROKER_CONNECTION_RETRY_ON_STARTUP = True
+CELERY_BROKER_TRANSPORT_OPTIONS = {"visibility_timeout": 3600, "socket_connect_timeout": 2}
+CELERY_WORKER_PREFETCH_MULTIPLIER = 1
+CELERY_WORKER_HIJACK_ROOT_LOGGER = False
+
+USE_TZ = True
+TIME_ZONE = "UTC"
+LANGUAGE_CODE = "en-gb"
+STATIC_URL = "static/"
+STATIC_ROOT = env.get("STATIC", Path, default=DATA_DIR / "static")
+STORAGES = {
+    "default": {"BACKEND": "django.core.files.storage.FileSystemStorage"},
+    "staticfiles": {"BACKEND": "labmon.screen.assets.HashedStorage"},
+}
+MEDIA_ROOT = DATA_DIR / "files"
+
+EMAIL_BACKEND = env.get("MAIL_BACKEND", str, default=(
+    "django.core.mail.backends.smtp.EmailBackend" if os.environ.get("LABMON_MAIL_HOST")
+    else "django.core.mail.backends.console.EmailBackend"))
+EMAIL_HOST = env.get("MAIL_HOST", str, default="localhost")
+EMAIL_PORT = int(env.get("MAIL_PORT", parse_positive, default=25))
+EMAIL_HOST_USER = env.get("MAIL_USER", str, default="")
+EMAIL_HOST_PASSWORD = env.get("MAIL_PASSWORD", str, default="")
+EMAIL_USE_TLS = env.get("MAIL_TLS", parse_bool, default=False)
+EMAIL_TIMEOUT = env.get("MAIL_TIMEOUT_S", parse_positive, default=10.0)
+DEFAULT_FROM_EMAIL = env.get("MAIL_FROM", str, default="labmon@localhost")
+PUBLIC_URL = env.get("PUBLIC_URL", str, default="http://127.0.0.1:8000")
+DATA_UPLOAD_MAX_MEMORY_SIZE = 8 * 2**20
+FILE_UPLOAD_MAX_MEMORY_SIZE = 2 * 2**20
+LOGGING = {
+    "version": 1,
+    "disable_existing_loggers": False,
+    "formatters": {"line": {"()": "labmon.log.LineFormatter"}},
+    "handlers": {"stderr": {"class": "logging.StreamHandler", "formatter": "line"}},
+    "root": {"handlers": ["stderr"], "level": env.get("LOG_LEVEL", str, default="INFO")},
+    "loggers": {"django.request": {"level": "ERROR"}},
+}
+env.finish()

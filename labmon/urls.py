@@ -1,0 +1,5 @@
+"""Addresses of pages and of the API."""
+
+from django.urls import URLPattern, URLResolver
+
+urlpatterns: list[URLPattern | URLResolver] = []

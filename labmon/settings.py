@@ -82,12 +82,14 @@ SESSION_COOKIE_AGE = 14 * 24 * 3600
 SESSION_COOKIE_SECURE = CSRF_COOKIE_SECURE = IS_BEHIND_TLS
 SECURE_PROXY_SSL_HEADER = ("HTTP_X_FORWARDED_PROTO", "https") if IS_BEHIND_TLS else None
 
+BROKER_PREFIX = env.get("BROKER_PREFIX", str, default="labmon")   # so that several labs may share one broker
 CHANNEL_LAYERS = {"default": {
     "BACKEND": "channels_redis.pubsub.RedisPubSubChannelLayer",
-    "CONFIG": {"hosts": [BROKER_URL.replace("redis+socket://", "unix://")], "prefix": "labmon"},
+    "CONFIG": {"hosts": [BROKER_URL.replace("redis+socket://", "unix://")], "prefix": BROKER_PREFIX},
 }}
 
 CELERY_BROKER_URL = BROKER_URL
+CELERY_TASK_DEFAULT_QUEUE = BROKER_PREFIX
 CELERY_TASK_IGNORE_RESULT = True
 CELERY_TASK_ACKS_LATE = True
 CELERY_TASK_TIME_LIMIT = 300

@@ -1,0 +1,111 @@
+"""What a limit may say: checks with sentences, and the parts a default fills in."""
+
+import math
+from dataclasses import dataclass
+
+from analysis.judge.rule import LimitRule, Quantity
+from ingest.models import Tap, TapKind, Unit
+from labmon.errors import WriteError
+from labmon.experiments.models import LimitVersion
+
+LONGEST_DELAY_S = 7 * 86_400.0
+_UNITS_WITHOUT_WATTS = frozenset({Unit.VOLT, Unit.COUNT})
+_DEADBAND = {Quantity.ER_DB: 1.0, Quantity.ANGLE_DEG: 1.0, Quantity.DOP: 0.01}
+_RANGES = {Quantity.ER_DB: (-100.0, 100.0), Quantity.ANGLE_DEG: (0.0, 180.0), Quantity.DOP: (0.0, 1.0), Quantity.POWER_W: (0.0, 1e6)}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class LimitWish:
+    """A limit as a person asks for it; levels and deadband in the quantity's unit, delays in s."""
+
+    alarm: float
+    warning: float | None = None
+    on_delay_s: float = 60.0
+    off_delay_s: float = 60.0
+    deadband: float | None = None
+    in_runs_only: bool = False
+
+
+def rule_of(version: LimitVersion, quantity: str) -> LimitRule:
+    """A stored version as the pure fold takes it."""
+    return LimitRule(quantity=Quantity(quantity), alarm=version.alarm, warning=version.warning, on_delay_s=version.on_delay_s,
+                     off_delay_s=version.off_delay_s, deadband=version.deadband)
+
+
+def checked_quantity(quantity: str, tap: Tap) -> Quantity:
+    """The quantity, if this kind of tap can give it.
+
+    Raises:
+        WriteError: It is unknown, or the tap cannot give it.
+    """
+    if quantity not in list(Quantity):
+        raise WriteError("quantity", f"{quantity!r} is no quantity.", f"Use one of {', '.join(Quantity)}.")
+    if tap.kind == TapKind.CLIMATE:
+        raise WriteError("quantity", "A climate tap measures no light.", "Choose a tap that does.")
+    if quantity == Quantity.DOP and tap.kind != TapKind.STOKES:
+        raise WriteError("quantity", "Two ports cannot tell the degree of polarization.", "Set a limit on er_db, or watch a Stokes tap.")
+    if quantity == Quantity.POWER_W and tap.unit in _UNITS_WITHOUT_WATTS:
+        raise WriteError("quantity", f"The tap sends {tap.unit}, from which no watts follow.",
+                         "Set a limit on er_db or angle_deg, or let the station send W, mW, uW or dBm.")
+    return Quantity(quantity)
+
+
+def checked_wish(quantity: Quantity, wish: LimitWish) -> LimitRule:
+    """The limit's rule with defaults filled in.
+
+    Raises:
+        WriteError: A number cannot be meant: names the field.
+    """
+    alarm = _level("alarm", quantity, wish.alarm)
+    warning = None if wish.warning is None else _level("warning", quantity, wish.warning)
+    if warning is not None and (warning >= alarm if quantity.is_bad_above else warning <= alarm):
+        side = "below" if quantity.is_bad_above else "above"
+        raise WriteError("warning", f"{warning:g} would never come before the alarm at {alarm:g}.",
+                         f"Choose a warning {side} {alarm:g}, or leave it empty.")
+    deadband = default_deadband(quantity, alarm) if wish.deadband is None else _not_negative("deadband", wish.deadband)
+    _check_can_clear(quantity, alarm if warning is None else warning, deadband)
+    return LimitRule(quantity=quantity, alarm=alarm, warning=warning, on_delay_s=_delay("on_delay_s", wish.on_delay_s),
+                     off_delay_s=_delay("off_delay_s", wish.off_delay_s), deadband=deadband)
+
+
+def default_deadband(quantity: Quantity, alarm: float) -> float:
+    """1 dB, 1 degree, 0.01 of DOP; for power a fiftieth of the alarm level (a proposal, no source)."""
+    return _DEADBAND.get(quantity, abs(alarm) / 50.0)
+
+
+def _number(field: str, value: float) -> float:
+    if isinstance(value, bool) or not isinstance(value, (int, float)) or not math.isfinite(value):
+        raise WriteError(field, f"{value!r} is not a finite number.", "Give a number.")
+    return float(value)
+
+
+def _level(field: str, quantity: Quantity, value: float) -> float:
+    number = _number(field, value)
+    low, high = _RANGES[quantity]
+    is_inside = low < number < high if quantity is Quantity.ANGLE_DEG else low <= number <= high
+    if quantity is Quantity.POWER_W:
+        is_inside = 0.0 < number <= high
+    if not is_inside:
+        raise WriteError(field, f"{number:g} is no sensible level for {quantity.value}.", f"Choose a level between {low:g} and {high:g}.")
+    return number
+
+
+def _not_negative(field: str, value: float) -> float:
+    number = _number(field, value)
+    if number < 0:
+        raise WriteError(field, f"{number:g} is negative.", "Give 0 or more.")
+    return number
+
+
+def _delay(field: str, value: float) -> float:
+    number = _not_negative(field, value)
+    if number > LONGEST_DELAY_S:
+        raise WriteError(field, f"{number:g} s is longer than a week.", "Give a delay of at most a week.")
+    return number
+
+
+def _check_can_clear(quantity: Quantity, level: float, deadband: float) -> None:
+    if quantity is Quantity.DOP and level + deadband > 1.0:
+        raise WriteError("deadband", f"Clear would need a DOP of {level + deadband:g}.", f"Choose at most {1.0 - level:g}.")
+    if quantity is Quantity.ANGLE_DEG and level - deadband <= 0.0:
+        raise WriteError("deadband", f"Clear would need an angle of {level - deadband:g} degrees.", f"Choose less than {level:g}.")

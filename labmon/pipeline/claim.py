@@ -1,0 +1,32 @@
+"""Claiming taps: one tap is never judged (or rolled up) by two workers at once, and nobody waits for another.
+
+Advisory locks of the transaction: they end with it, whatever becomes of the worker.
+"""
+
+from collections.abc import Iterable
+
+from django.db import connection
+
+#: First key of the two-key locks; the second is the tap's id (folded into 32 bits).
+JUDGING, ROLLING, BEAT = 0x6C61, 0x6C62, 0x6C63
+
+
+def claim_taps(kind: int, tap_ids: Iterable[int]) -> list[int]:
+    """Those of ``tap_ids`` that nobody else holds, locked until the transaction ends; sorted."""
+    with connection.cursor() as cursor:
+        cursor.execute("SELECT id FROM unnest(%s::bigint[]) AS t(id) WHERE pg_try_advisory_xact_lock(%s, (id %% 2147483647)::int)",
+                       [sorted(tap_ids), kind])
+        return sorted(row[0] for row in cursor.fetchall())
+
+
+def lock_tap(kind: int, tap_id: int) -> None:
+    """Wait for one tap: for a person's write that must not meet a worker half-way. Lock no second one after it."""
+    with connection.cursor() as cursor:
+        cursor.execute("SELECT pg_advisory_xact_lock(%s, (%s %% 2147483647)::int)", [kind, tap_id])
+
+
+def claim_name(name: str) -> bool:
+    """True if this transaction got the named job: of two beats that send the same task one does it."""
+    with connection.cursor() as cursor:
+        cursor.execute("SELECT pg_try_advisory_xact_lock(%s, hashtext(%s))", [BEAT, name])
+        return bool(cursor.fetchone()[0])

@@ -1,0 +1,126 @@
+"""Stokes taps: polarimeter readings to the state of polarization, its angle and extinction ratio on the wanted axis."""
+
+from collections.abc import Mapping
+from typing import Any, Final
+
+import numpy as np
+
+from analysis.judge.rule import Quantity
+from analysis.quantities import BoolArray, FloatArray, angle_between_rad, db_from_ratio, sop_from_angles, watts_per_unit, linear_from_raw
+from analysis.reduce.calibration import IEEE, TapCalibration
+from analysis.reduce.extinction import extinction
+from analysis.reduce.trust import Reason, ReasonArray, marked
+
+Columns = Mapping[str, FloatArray]
+DOP_ROUNDING: Final = 1e-6  # float32 readings of fully polarized light pass 1 by this much
+POLE_ROUNDING: Final = 1e-12
+
+
+def reduce_stokes(columns: Columns, unit: str, cal: TapCalibration) -> tuple[dict[str, Any], dict[Quantity, ReasonArray]]:
+    """Quantities of polarimeter readings.
+
+    Args:
+        columns: ``s0 s1 s2 s3`` (powers in ``unit``), or ``azimuth_deg ellipticity_deg`` with optional ``dop`` (ratio)
+            and ``power``, shape (N,). The floors of the calibration are 1 sigma of the wanted and the other port.
+    Returns:
+        Fields of `Reduced`, and reasons per quantity. Azimuth rad in (-pi/2, pi/2], NaN at the poles; ellipticity rad
+        in [-pi/4, pi/4]; ``dop`` may exceed 1 (doubtful, never refused), NaN where S0 is not above 0. ER and angle are
+        NaN without a wanted state. Source: docs/formulas.md, F-02 to F-04, F-11 to F-13.
+    """
+    total, vector, dop = _from_stokes(columns, unit) if "s0" in columns else _from_angles(columns, unit)
+    _turn_to_optics(vector, cal.handedness)
+    length = np.linalg.norm(vector, axis=-1)
+    sop = vector / np.where(length > 0.0, length, np.nan)[:, None]
+    azimuth_rad, ellipticity_rad = _angles_of(sop)
+    count = len(dop)
+    clipped = columns.get("clipped")
+    is_saturated = np.zeros(count, dtype=bool) if clipped is None else np.nan_to_num(clipped) > 0.0
+    if cal.saturation1 is not None and "s0" in columns:
+        is_saturated = is_saturated | (total >= cal.saturation1)
+    lost = ~np.isfinite(vector).all(axis=-1)
+    shared = marked(count, (is_saturated, Reason.SATURATED), (lost, Reason.IMPOSSIBLE))
+    odd_dop = marked(count, (dop > 1.0 + DOP_ROUNDING, Reason.DOP_ABOVE_ONE))
+    scale_w = watts_per_unit(unit or "V")
+    fields: dict[str, Any] = {
+        "power_w": total * scale_w, "dop": dop, "sop": sop, "azimuth_rad": azimuth_rad, "ellipticity_rad": ellipticity_rad,
+    }
+    reasons = {
+        Quantity.DOP: shared | odd_dop | marked(count, (np.isnan(dop) & ~lost, Reason.NEGATIVE if "s0" in columns else Reason.UNDEFINED)),
+        Quantity.POWER_W: shared | (np.uint32(Reason.NO_POWER_UNIT) if np.isnan(scale_w) else np.uint32(0))
+        | marked(count, (~np.isfinite(total) & ~lost, Reason.UNDEFINED)),
+    }
+    on_axis, axis_reasons = _on_wanted_axis(total, sop, dop, cal)
+    reasons |= {quantity: axis_reasons[quantity] | shared | odd_dop for quantity in axis_reasons}
+    return fields | on_axis, reasons
+
+
+def _from_stokes(columns: Columns, unit: str) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """S0, the vector (S1, S2, S3) and DOP; dBm has no meaning for signed Stokes values, so they are taken as linear."""
+    total = np.asarray(columns["s0"], dtype=np.float64)
+    vector = np.stack([columns["s1"], columns["s2"], columns["s3"]], axis=-1).astype(np.float64)
+    return total, vector, np.linalg.norm(vector, axis=-1) / np.where(total > 0.0, total, np.nan)
+
+
+def _from_angles(columns: Columns, unit: str) -> tuple[FloatArray, FloatArray, FloatArray]:
+    ellipticity_rad = np.radians(np.asarray(columns["ellipticity_deg"], dtype=np.float64))
+    azimuth_rad = np.radians(np.asarray(columns["azimuth_deg"], dtype=np.float64))
+    at_pole = np.abs(ellipticity_rad) >= np.pi / 4 - POLE_ROUNDING
+    vector = sop_from_angles(np.where(at_pole & np.isnan(azimuth_rad), 0.0, azimuth_rad), ellipticity_rad)
+    nothing = np.full(len(vector), np.nan)
+    dop = np.asarray(columns["dop"], dtype=np.float64) if "dop" in columns else nothing
+    power = linear_from_raw(columns["power"], unit) if "power" in columns else nothing
+    return power, vector, dop
+
+
+def _turn_to_optics(vector: FloatArray, handedness: Any) -> None:
+    """Flip S3 in place where the instrument counts circular light the other way; F-12."""
+    if isinstance(handedness, str):
+        if handedness == IEEE:
+            vector[:, 2] *= -1.0
+    else:
+        vector[np.asarray(handedness) == IEEE, 2] *= -1.0
+
+
+def _angles_of(sop: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Azimuth and ellipticity of unit vectors, rad; F-11."""
+    equator = np.hypot(sop[:, 0], sop[:, 1])
+    azimuth_rad = 0.5 * np.arctan2(sop[:, 1], sop[:, 0])
+    azimuth_rad[azimuth_rad == -np.pi / 2] = np.pi / 2
+    azimuth_rad[~(equator > POLE_ROUNDING)] = np.nan
+    return azimuth_rad, 0.5 * np.arctan2(sop[:, 2], equator)
+
+
+def _on_wanted_axis(
+    total: FloatArray, sop: FloatArray, dop: FloatArray, cal: TapCalibration
+) -> tuple[dict[str, Any], dict[Quantity, ReasonArray]]:
+    """Port powers, ER and angle on the axis of the wanted state; F-13."""
+    count = len(sop)
+    if cal.wanted_state is None:
+        unset = np.full(count, np.uint32(Reason.NO_WANTED_STATE))
+        return {}, {Quantity.ER_DB: unset, Quantity.ANGLE_DEG: unset.copy()}
+    state = np.broadcast_to(np.asarray(cal.wanted_state, dtype=np.float64), (count, 3))
+    is_unset = ~(np.abs(state).sum(axis=-1) > 0.0)
+    axis = state / np.where(is_unset, np.nan, np.linalg.norm(state, axis=-1))[:, None]
+    cosine = np.einsum("ni,ni->n", axis, sop)
+    scale = np.where(np.isfinite(total), total, 1.0)
+    share = np.where(dop == 0.0, 0.0, dop * cosine)
+    wanted, other = 0.5 * scale * (1.0 + share), 0.5 * scale * (1.0 - share)
+    ratio = extinction(wanted, other, np.asarray(cal.floor1, dtype=np.float64), np.asarray(cal.floor2, dtype=np.float64))
+    angle_rad = angle_between_rad(axis, sop)
+    unset = marked(count, (is_unset, Reason.NO_WANTED_STATE))
+    er_reasons = np.where(is_unset, unset, ratio.reasons)
+    fields = {
+        "wanted_power": np.where(np.isfinite(total), wanted, np.nan), "other_power": np.where(np.isfinite(total), other, np.nan),
+        "er_db": ratio.er_db, "er_sigma_db": ratio.er_sigma_db,
+        "is_lower_bound": ratio.is_lower_bound, "is_upper_bound": ratio.is_upper_bound,
+        "angle_rad": angle_rad, "polarized_er_db": _polarized_er_db(angle_rad),
+    }
+    undefined_angle: BoolArray = np.isnan(angle_rad) & ~is_unset
+    return fields, {Quantity.ER_DB: er_reasons, Quantity.ANGLE_DEG: unset | marked(count, (undefined_angle, Reason.UNDEFINED))}
+
+
+def _polarized_er_db(angle_rad: FloatArray) -> FloatArray:
+    """ER of the polarized part alone, dB: cot^2 of half the angle; NaN where exactly on the axis or opposite."""
+    half_rad = 0.5 * angle_rad
+    sine, cosine = np.sin(half_rad) ** 2, np.cos(half_rad) ** 2
+    return db_from_ratio(np.where(sine > 0.0, cosine / np.where(sine > 0.0, sine, 1.0), np.nan))

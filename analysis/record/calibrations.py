@@ -8,7 +8,7 @@ from typing import Any
 from django.db import transaction
 
 from analysis.models import Calibration, RollupDue
-from analysis.times import us_of
+from ingest.times import us_of
 from ingest.models import Tap, TapHeard, TapKind, Touch
 
 #: Fields a version may set; the rest of the row says when and by whom.

@@ -8,7 +8,7 @@ from typing import Any
 from django.db import IntegrityError, connection, transaction
 from django.utils import timezone
 
-from analysis.times import us_of
+from ingest.times import us_of
 from ingest.models import Tap, TapHeard, Touch
 from labmon.audit.actions import note
 from labmon.errors import WriteError

@@ -1,0 +1,148 @@
+"""The OpenAPI document: every call, who may make it, what it answers."""
+
+import functools
+from typing import Any
+
+from django.http import HttpRequest, HttpResponse
+
+from labmon.api.answer import json_answer
+from labmon.api.schemas import ALARM_STATES, ID, MEASURED, NAME, NAMED, TIME, Schema, ref
+
+Operation = dict[str, Any]
+
+BASE = "/api/v1"
+PERSON = [{"personKey": []}, {"session": []}]
+READING_FORMATS = {"csv": "text/csv", "json": "application/json", "parquet": "application/vnd.apache.parquet",
+                   "arrow": "application/vnd.apache.arrow.stream"}
+
+
+def get_openapi(request: HttpRequest) -> HttpResponse:
+    """The document itself; open to all, as it holds nothing of the lab."""
+    return json_answer(document())
+
+
+def call(text: str, answers: dict[int, Schema], *, parameters: tuple[Schema, ...] = (), body: str = "",
+         faults: tuple[int, ...] = (400, 401, 404), security: list[Schema] | None = None,
+         is_body_required: bool = True) -> Operation:
+    """One operation of a path."""
+    said: Operation = {"summary": text, "security": PERSON if security is None else security,
+                       "responses": {str(status): schema for status, schema in answers.items()}
+                       | {str(status): problem(status) for status in (*faults, 503)}}
+    if parameters:
+        said["parameters"] = list(parameters)
+    if body:
+        said["requestBody"] = {"required": is_body_required, "content": {"application/json": {"schema": ref(body)}}}
+    return said
+
+
+def answer(text: str, name: str) -> Schema:
+    """A JSON answer of a named shape."""
+    return {"description": text, "content": {"application/json": {"schema": ref(name)}}}
+
+
+FAULT_TEXTS = {400: "Something sent cannot be used; field names it.", 401: "No usable key or session.",
+               403: "The role does not allow it, or the CSRF token is missing.",
+               404: "Not there, or not for this person.", 413: "Too large.",
+               415: "Not announced as JSON.", 429: "Too fast; see Retry-After.",
+               503: "Database away; see Retry-After."}
+
+
+def problem(status: int) -> Schema:
+    """A fault."""
+    return {"description": FAULT_TEXTS[status], "content": {"application/problem+json": {"schema": ref("Problem")}}}
+
+
+def in_path(name: str, schema: Schema) -> Schema:
+    """A parameter in the address."""
+    return {"name": name, "in": "path", "required": True, "schema": schema}
+
+
+def in_query(name: str, schema: Schema, text: str, *, required: bool = False) -> Schema:
+    """A parameter behind the question mark."""
+    return {"name": name, "in": "query", "required": required, "schema": schema, "description": text}
+
+
+TAP = (in_path("station", NAME), in_path("tap", NAME))
+SPAN = in_query("span", {"type": "string"}, "ISO 8601 interval start/end or start/duration, absolute times with zone, "
+                                            "such as 2031-03-04T00:00:00Z/P1D.", required=True)
+WRITE = (400, 401, 403, 404, 413, 415)
+
+PATHS: dict[str, dict[str, Operation]] = {
+    f"{BASE}/stations": {"get": call(
+        "Stations with their taps, when last heard, health and clock.", {200: answer("All that you may see.", "Stations")},
+        faults=(400, 401))},
+    f"{BASE}/taps/{{station}}/{{tap}}/now": {"get": call(
+        "The newest reduced sample.", {200: answer("The sample; null where none yet.", "Now")}, parameters=TAP)},
+    f"{BASE}/taps/{{station}}/{{tap}}/history": {"get": call(
+        "An envelope of one quantity over a span.", {200: answer("The envelope.", "History")},
+        parameters=(*TAP, SPAN,
+                    in_query("points", {"type": "integer", "minimum": 1, "maximum": 10_000, "default": 1000},
+                             "At most so many buckets."),
+                    in_query("quantity", {"type": "string", "enum": list(MEASURED), "default": "er_db"},
+                             "What to draw.")))},
+    f"{BASE}/taps/{{station}}/{{tap}}/readings": {"get": call(
+        "Raw and reduced samples, streamed. Columns named raw_… are as sent; the unit ends each name.",
+        {200: {"description": "The samples, in order of time.",
+               "content": {kind: {"schema": {"type": "string"} if word != "json" else {"type": "object"}}
+                           for word, kind in READING_FORMATS.items()}}},
+        parameters=(*TAP, SPAN,
+                    in_query("format", {"type": "string", "enum": list(READING_FORMATS), "default": "json"}, "The form."),
+                    in_query("as_of", TIME, "Reduce with the calibrations that were entered by this time.")))},
+    f"{BASE}/taps/{{station}}/{{tap}}/calibration": {"patch": call(
+        "A new version of the calibration.", {200: answer("The new version.", "Calibration")},
+        parameters=TAP, body="NewCalibration", faults=WRITE)},
+    f"{BASE}/experiments": {
+        "get": call("Experiments that watch taps you may see.", {200: answer("The experiments.", "Experiments")},
+                    faults=(400, 401)),
+        "post": call("A new experiment.", {201: answer("The experiment.", "Experiment")}, body="NewExperiment",
+                     faults=WRITE)},
+    f"{BASE}/experiments/{{id}}/limits": {
+        "get": call("Limits in force and their history.", {200: answer("The limits.", "Limits")},
+                    parameters=(in_path("id", ID),)),
+        "post": call("A new limit, or a new version of it.", {201: answer("The version.", "Limit")},
+                     parameters=(in_path("id", ID),), body="NewLimit", faults=WRITE)},
+    f"{BASE}/alarms": {"get": call(
+        "Alarms, newest first.", {200: answer("The alarms.", "Alarms")},
+        parameters=(in_query("state", {"type": "string", "enum": list(ALARM_STATES)}, "Only in this state."),
+                    in_query("experiment", ID, "Only of this experiment."),
+                    in_query("before", ID, "Only older ones: ids below this."),
+                    in_query("count", {"type": "integer", "minimum": 1, "maximum": 1000, "default": 200},
+                             "At most so many.")), faults=(400, 401))},
+    f"{BASE}/alarms/{{id}}/acknowledge": {"post": call(
+        "Say that you have seen an alarm; a second time changes nothing.", {200: answer("The alarm.", "Alarm")},
+        parameters=(in_path("id", ID),), body="Acknowledgement", is_body_required=False, faults=WRITE)},
+    f"{BASE}/readings": {"post": {
+        "summary": "The station door: a batch of readings. Answered after the commit, never before.",
+        "security": [{"stationKey": []}],
+        "parameters": [{"name": "Content-Encoding", "in": "header", "schema": {"type": "string", "enum": ["gzip"]}}],
+        "requestBody": {"required": True, "content": {
+            "application/json": {"schema": ref("Batch")},
+            "application/msgpack": {"schema": {"description": "The same map; a column may be a binary string of "
+                                                              "little-endian float64 or int64."}}}},
+        "responses": {"200": answer("Committed.", "Accepted")}
+        | {str(status): problem(status) for status in (400, 401, 403, 413, 415, 429, 503)}}},
+    f"{BASE}/openapi.json": {"get": call("This document.", {200: {
+        "description": "OpenAPI 3.1.", "content": {"application/json": {"schema": {"type": "object"}}}}},
+        faults=(), security=[])},
+    "/health/process": {"get": call("The process is up.", {200: answer("It is.", "ProcessUp")}, faults=(), security=[])},
+    "/health/services": {"get": call("Database and broker reachable, migrations applied.",
+                                     {200: answer("All are.", "ServicesUp")}, faults=(), security=[])},
+}
+
+
+@functools.cache
+def document() -> dict[str, Any]:
+    """The whole document, OpenAPI 3.1."""
+    return {
+        "openapi": "3.1.0",
+        "info": {"title": "labmon", "version": "1", "description": "Polarization on a laboratory's fibre benches. "
+                 "Additions are free, changes are not: clients must accept members that they do not know."},
+        "paths": PATHS,
+        "components": {
+            "schemas": NAMED,
+            "securitySchemes": {
+                "personKey": {"type": "http", "scheme": "bearer", "description": "A person's key."},
+                "session": {"type": "apiKey", "in": "cookie", "name": "sessionid",
+                            "description": "A signed-in browser; writes need X-CSRFToken."},
+                "stationKey": {"type": "http", "scheme": "bearer", "description": "A station's key."}}},
+    }

@@ -1,0 +1,67 @@
+"""Raw and reduced samples of a span, streamed piece by piece."""
+
+import itertools
+from collections.abc import AsyncIterator, Iterator
+from datetime import datetime
+from typing import Any
+
+import pyarrow as pa
+from asgiref.sync import sync_to_async
+from django.core.handlers.asgi import ASGIRequest
+from django.http import HttpRequest, StreamingHttpResponse
+
+from analysis.record.reduce_span import reduced_samples
+from ingest.models import Tap, TapBoot
+from ingest.store.read import read_readings
+from labmon.api.chunks import chunks_of
+from labmon.api.formats import TYPES, written
+from labmon.api.named import tap_named, tap_path
+from labmon.api.query import known_only, one_of, span_of, time_or_none
+from labmon.api.span import Span
+from labmon.api.table import table_of
+from labmon.api.times import rfc3339
+from labmon.people.models import Person
+
+
+def get_readings(request: HttpRequest, person: Person, station: str, tap: str) -> StreamingHttpResponse:
+    """Every reading of the span with what was made of it, by the calibrations known at ``as_of`` (else now)."""
+    known_only(request.GET, "span", "format", "as_of")
+    span = span_of(request.GET)
+    form = one_of(request.GET, "format", TYPES, default="json")
+    as_of = time_or_none(request.GET, "as_of")
+    row = tap_named(person, station, tap)
+    tables = tables_of(row, span, as_of)
+    first = next(tables)    # faults come before the answer has begun
+    about = {"tap": tap_path(row), "kind": row.kind, "unit": row.unit or None, "span": str(span), "as_of": rfc3339(as_of)}
+    parts = written(form, first.schema, itertools.chain([first], tables), about)
+    answer = StreamingHttpResponse(_for_server(request, parts), content_type=TYPES[form])
+    answer.headers["Content-Disposition"] = f'attachment; filename="{station}-{tap}.{form}"'
+    answer.headers["Cache-Control"] = "no-store"
+    return answer
+
+
+def tables_of(tap: Tap, span: Span, as_of: datetime | None) -> Iterator[pa.Table]:
+    """The span's samples in pieces; the first may be empty and shows the columns."""
+    names: dict[int, str] = {}
+    yield _table(tap, span.from_us, span.from_us, as_of, names)
+    for from_us, until_us in chunks_of(tap.pk, span.from_us, span.until_us):
+        yield _table(tap, from_us, until_us, as_of, names)
+
+
+def _table(tap: Tap, from_us: int, until_us: int, as_of: datetime | None, names: dict[int, str]) -> pa.Table:
+    readings = read_readings(tap.pk, from_us, until_us)
+    missing = set(readings.boot_id.tolist()) - names.keys()
+    if missing:
+        rows = TapBoot.objects.filter(pk__in=missing)
+        names.update(rows.values_list("pk", "station_boot__boot"))
+    return table_of(tap, readings, reduced_samples(tap, from_us, until_us, as_of), names)
+
+
+def _for_server(request: HttpRequest, parts: Iterator[bytes]) -> Any:
+    """Under ASGI each part is made in the request's own thread, when the client has taken the one before."""
+    return _in_thread(parts) if isinstance(request, ASGIRequest) else parts
+
+
+async def _in_thread(parts: Iterator[bytes]) -> AsyncIterator[bytes]:
+    while (part := await sync_to_async(next)(parts, None)) is not None:
+        yield part

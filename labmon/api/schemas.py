@@ -1,0 +1,165 @@
+"""The shapes of bodies and answers, as JSON Schema for the OpenAPI document.
+
+Written by hand from the contract; tests hold every answer against its shape.
+"""
+
+from typing import Any
+
+Schema = dict[str, Any]
+
+TIME: Schema = {"type": "string", "format": "date-time", "description": "RFC 3339, UTC, with microseconds."}
+NAME: Schema = {"type": "string", "pattern": "^[a-z0-9][a-z0-9-]{0,62}$"}
+TAP_PATH: Schema = {"type": "string", "pattern": "^[a-z0-9][a-z0-9-]{0,62}/[a-z0-9][a-z0-9-]{0,62}$",
+                    "description": "station/tap"}
+NUMBER: Schema = {"type": "number"}
+COUNT: Schema = {"type": "integer", "minimum": 0}
+ID: Schema = {"type": "integer", "minimum": 1}
+TEXT: Schema = {"type": "string"}
+YES_NO: Schema = {"type": "boolean"}
+TEXTS: Schema = {"type": "array", "items": TEXT}
+MEASURED = ("er_db", "angle_deg", "dop", "power_w", "temperature_c", "humidity_pct", "pressure_hpa")
+LIMITED = ("er_db", "angle_deg", "dop", "power_w")
+TRUST: Schema = {"type": "string", "enum": ["trusted", "doubtful", "untrusted", "none"]}
+ALARM_STATES = ("normal", "unacknowledged", "acknowledged", "returned-unacknowledged", "shelved", "suppressed",
+                "out-of-service")
+
+
+def or_null(schema: Schema) -> Schema:
+    """The same, or null where the value is missing."""
+    if "type" in schema and "enum" not in schema:
+        return schema | {"type": [schema["type"], "null"]}
+    return {"anyOf": [schema, {"type": "null"}]}
+
+
+def ref(name: str) -> Schema:
+    """A schema by its name in the document."""
+    return {"$ref": f"#/components/schemas/{name}"}
+
+
+def many(schema: Schema) -> Schema:
+    """A list of it."""
+    return {"type": "array", "items": schema}
+
+
+def shape(properties: dict[str, Schema], *, optional: tuple[str, ...] = (), text: str = "") -> Schema:
+    """An object with just these members; all are there except the optional ones."""
+    return {"type": "object", "properties": properties, "additionalProperties": False,
+            "required": [name for name in properties if name not in optional]} | ({"description": text} if text else {})
+
+
+PROBLEM = {"type": "object", "description": "RFC 9457; detail says what to do.",
+           "required": ["type", "title", "status", "detail"],
+           "properties": {"type": TEXT, "title": TEXT, "status": {"type": "integer"}, "detail": TEXT,
+                          "field": {"type": "string", "description": "The field at fault, where one is."},
+                          "missing": TEXTS}}
+
+TAP = shape({
+    "tap": TAP_PATH, "name": NAME, "kind": {"type": "string", "enum": ["two-port", "dark-port", "stokes", "climate"]},
+    "unit": or_null({"type": "string", "enum": ["W", "mW", "uW", "dBm", "V", "count"]}),
+    "interval_s": or_null(NUMBER), "last_heard_at": or_null(TIME), "newest_at": or_null(TIME), "unknown_columns": TEXTS,
+}, text="newest_at: data time of the newest reading; last_heard_at: arrival on the server's clock.")
+
+STATION = shape({
+    "name": NAME, "room": or_null(TEXT), "health": TEXT, "last_heard_at": or_null(TIME), "firmware": or_null(TEXT),
+    "clock_offset_s": or_null(NUMBER), "clock_fault": or_null(TEXT), "is_server_timed": YES_NO, "taps": many(TAP),
+}, text="clock_offset_s: arrival minus the station's clock, the smallest seen in this boot.")
+
+LAST_TRUSTED = shape({"value": NUMBER, "at": TIME})
+
+NOW = shape({
+    "tap": TAP_PATH, "kind": TEXT, "taken_at": or_null(TIME), "age_s": or_null(NUMBER),
+    "er_db": or_null(NUMBER), "er_sigma_db": or_null(NUMBER), "is_lower_bound": YES_NO, "is_upper_bound": YES_NO,
+    "angle_deg": or_null(NUMBER), "angle_is_upper_bound": YES_NO, "polarized_er_db": or_null(NUMBER),
+    "dop": or_null(NUMBER), "azimuth_deg": or_null(NUMBER), "ellipticity_deg": or_null(NUMBER),
+    "sop": or_null({"type": "array", "items": NUMBER, "minItems": 3, "maxItems": 3}), "power_w": or_null(NUMBER),
+    "temperature_c": or_null(NUMBER), "humidity_pct": or_null(NUMBER), "pressure_hpa": or_null(NUMBER),
+    "trust": TRUST, "trust_reasons": TEXTS,
+    **{f"{name}_trust": TRUST for name in MEASURED}, **{f"{name}_reasons": TEXTS for name in MEASURED},
+    "last_trusted": shape({name: or_null(LAST_TRUSTED) for name in MEASURED}),
+}, text="The newest sample by data time. An untrusted or undefined quantity is null with its reasons; last_trusted has "
+        "its last trusted value. Where is_lower_bound is true, er_db is a 95 % bound: the ratio is at least this.")
+
+HISTORY = shape({
+    "tap": TAP_PATH, "quantity": {"type": "string", "enum": list(MEASURED)}, "span": TEXT, "bucket_s": NUMBER,
+    "at": many(TIME), "min": many(or_null(NUMBER)), "mean": many(or_null(NUMBER)), "max": many(or_null(NUMBER)),
+    "trusted_share": many(or_null(NUMBER)),
+}, text="Buckets of bucket_s from each time in at; a bucket without readings is null.")
+
+EXPERIMENT = shape({
+    "id": ID, "name": TEXT, "owner": or_null(TEXT), "taps": many(TAP_PATH), "no_reading_after_s": or_null(NUMBER),
+    "untrusted_after_s": NUMBER, "created_at": TIME,
+})
+
+_LIMIT_VALUES: dict[str, Schema] = {
+    "alarm": NUMBER, "warning": or_null(NUMBER), "on_delay_s": NUMBER, "off_delay_s": NUMBER, "deadband": NUMBER,
+    "in_runs_only": YES_NO, "reason": TEXT,
+}
+LIMIT = shape({
+    "id": ID, "experiment": ID, "tap": TAP_PATH, "quantity": {"type": "string", "enum": list(LIMITED)},
+    "version": ID, "valid_from": TIME, "valid_until": or_null(TIME), **_LIMIT_VALUES,
+    "alarm_db": or_null(NUMBER), "alarm_deg": or_null(NUMBER), "is_retired": YES_NO, "set_by": or_null(TEXT),
+}, text="One version of a limit. alarm_db and alarm_deg are the same alarm level on the other scale, tan²(γ/2).")
+
+LIMITS = shape({"experiment": ID, "limits": many(ref("Limit")), "history": many(ref("Limit"))},
+               text="limits: in force now; history: every version, oldest first.")
+
+ALARM = shape({
+    "id": ID, "kind": {"type": "string", "enum": ["limit", "no-reading", "untrusted"]}, "experiment": or_null(ID),
+    "tap": TAP_PATH, "quantity": or_null({"type": "string", "enum": list(LIMITED)}),
+    "level": {"type": "string", "enum": ["warning", "alarm"]}, "state": {"type": "string", "enum": list(ALARM_STATES)},
+    "raised_at": TIME, "alarm_at": or_null(TIME), "returned_at": or_null(TIME), "acknowledged_at": or_null(TIME),
+    "acknowledged_by": or_null(TEXT), "note": TEXT, "value": or_null(NUMBER), "limit": or_null(NUMBER),
+    "cause": or_null(TEXT), "message": TEXT, "noticed_at": TIME, "is_late": YES_NO, "is_withdrawn": YES_NO,
+}, text="value: the worst while open; limit: the level that it is held against. Times of limit alarms are data times.")
+
+CALIBRATION = shape({
+    "tap": TAP_PATH, "valid_from": TIME, "entered_at": TIME, "entered_by": TEXT, "zero1": NUMBER, "zero2": NUMBER,
+    "zero_taken_at": or_null(TIME), "gain_ratio": NUMBER, "floor1": NUMBER, "floor2": NUMBER,
+    "saturation1": or_null(NUMBER), "saturation2": or_null(NUMBER), "leakage": or_null(many(many(NUMBER))),
+    "wanted_port": {"type": "integer", "enum": [1, 2]}, "monitor_ratio": or_null(NUMBER),
+    "bright_nominal": or_null(NUMBER), "wanted_state": or_null(many(NUMBER)),
+    "handedness": {"type": "string", "enum": ["ieee", "optics"]},
+})
+
+NEW_EXPERIMENT = shape({"name": TEXT, "taps": many(TAP_PATH), "no_reading_after_s": or_null(NUMBER),
+                        "untrusted_after_s": NUMBER}, optional=("no_reading_after_s", "untrusted_after_s"))
+NEW_LIMIT = shape({"tap": TAP_PATH, "quantity": {"type": "string", "enum": list(LIMITED)}, **_LIMIT_VALUES},
+                  optional=tuple(name for name in _LIMIT_VALUES if name != "alarm"))
+NEW_CALIBRATION = shape({name: schema for name, schema in CALIBRATION["properties"].items()
+                         if name not in {"tap", "entered_at", "entered_by"}} | {"reason": TEXT},
+                        optional=(*CALIBRATION["properties"], "reason"),
+                        text="A missing field is taken from the version valid at valid_from (now, where that is missing).")
+ACKNOWLEDGEMENT = shape({"note": TEXT}, optional=("note",))
+
+BATCH: Schema = {
+    "type": "object", "required": ["taps"],
+    "properties": {
+        "boot": TEXT, "firmware": TEXT,
+        "now": {"type": "object", "properties": {"at": {"type": ["string", "integer", "null"]},
+                                                 "uptime_ms": {"type": ["integer", "null"]}}},
+        "taps": {"type": "object", "additionalProperties": {
+            "type": "object", "description": "Columns of equal length; see docs/stations.md for their names.",
+            "additionalProperties": {"type": "array"}}},
+    },
+}
+ACCEPTED = {
+    "type": "object", "required": ["stored", "known", "set_aside", "accepted", "through", "server_time"],
+    "properties": {
+        "stored": COUNT, "known": COUNT, "server_time": TIME,
+        "set_aside": many(shape({"tap": TEXT, "row": COUNT, "field": TEXT, "why": TEXT, "do": TEXT})),
+        "accepted": {"type": "object"}, "through": {"type": "object", "additionalProperties": {"type": "integer"}},
+    },
+}
+
+NAMED: dict[str, Schema] = {
+    "Problem": PROBLEM, "Tap": TAP, "Station": STATION, "Now": NOW, "History": HISTORY, "Experiment": EXPERIMENT,
+    "Limit": LIMIT, "Limits": LIMITS, "Alarm": ALARM, "Calibration": CALIBRATION, "NewExperiment": NEW_EXPERIMENT,
+    "NewLimit": NEW_LIMIT, "NewCalibration": NEW_CALIBRATION, "Acknowledgement": ACKNOWLEDGEMENT, "Batch": BATCH,
+    "Accepted": ACCEPTED,
+    "Stations": shape({"stations": many(ref("Station"))}),
+    "Experiments": shape({"experiments": many(ref("Experiment"))}),
+    "Alarms": shape({"alarms": many(ref("Alarm")), "before": or_null(ID)},
+                    text="Newest first; where more may follow, before is what to ask for next."),
+    "ProcessUp": shape({"process": TEXT}),
+    "ServicesUp": shape({"database": TEXT, "broker": TEXT, "migrations": TEXT, "missing": TEXTS}),
+}

@@ -1,0 +1,56 @@
+"""Addresses below /api/v1/. The station door, POST /api/v1/readings, is mounted before Django in labmon/asgi.py."""
+
+from django.urls import path, re_path, register_converter
+
+from ingest.models import NAME_PATTERN
+from labmon.api.alarms import get_alarms, post_acknowledge
+from labmon.api.call import by_method, open_to_all, unknown_address
+from labmon.api.experiments import get_experiments, get_limits, post_experiment, post_limit
+from labmon.api.openapi import get_openapi
+from labmon.api.readings import get_readings
+from labmon.api.stations import get_stations
+from labmon.api.taps import get_history, get_now, patch_calibration
+
+
+class ShortName:
+    """A station's or tap's name."""
+
+    regex = NAME_PATTERN
+
+    def to_python(self, text: str) -> str:
+        return text
+
+    def to_url(self, text: str) -> str:
+        return text
+
+
+class RowId:
+    """A row's number, as large as the database's own."""
+
+    regex = "[0-9]{1,18}"
+
+    def to_python(self, text: str) -> int:
+        return int(text)
+
+    def to_url(self, number: int) -> str:
+        return str(number)
+
+
+register_converter(ShortName, "short")
+register_converter(RowId, "row")
+TAP = "taps/<short:station>/<short:tap>/"
+
+app_name = "api"
+urlpatterns = [
+    path("stations", by_method(GET=get_stations), name="stations"),
+    path(TAP + "now", by_method(GET=get_now), name="now"),
+    path(TAP + "history", by_method(GET=get_history), name="history"),
+    path(TAP + "readings", by_method(GET=get_readings), name="readings"),
+    path(TAP + "calibration", by_method(PATCH=patch_calibration), name="calibration"),
+    path("experiments", by_method(GET=get_experiments, POST=post_experiment), name="experiments"),
+    path("experiments/<row:id>/limits", by_method(GET=get_limits, POST=post_limit), name="limits"),
+    path("alarms", by_method(GET=get_alarms), name="alarms"),
+    path("alarms/<row:id>/acknowledge", by_method(POST=post_acknowledge), name="acknowledge"),
+    path("openapi.json", open_to_all(GET=get_openapi), name="openapi"),
+    re_path(r"", unknown_address, name="unknown"),
+]

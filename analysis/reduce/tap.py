@@ -16,6 +16,7 @@ from analysis.reduce.trust import Reason, ReasonArray, trust_of
 
 TWO_PORT, DARK_PORT, STOKES, CLIMATE = "two-port", "dark-port", "stokes", "climate"
 _REDUCERS = {TWO_PORT: reduce_two_port, DARK_PORT: reduce_dark_port, STOKES: reduce_stokes}
+_MIX = (1.0, 2.0**0.5, 3.0**0.5)  # no usual change of one Stokes reading hides that of another
 _AIR = ("temperature_c", "humidity_pct", "pressure_hpa")
 
 
@@ -70,6 +71,23 @@ def reduce_tap(
         fields["reasons"][quantity] = mask
         fields["trust"][quantity] = trust_of(mask)
     return Reduced(**fields)
+
+
+def flat_channels(kind: str, columns: Mapping[str, FloatArray]) -> FloatArray:
+    """The raw channels that `analysis.reduce.flat.mark_flat` watches, shape (N, C).
+
+    (port1, port2); (monitor, port2) with NaN where there is no monitor; for Stokes taps one number that changes with
+    any of the three readings; for climate taps none (C = 0).
+    """
+    if kind == TWO_PORT:
+        return np.stack([columns["port1"], columns["port2"]], axis=-1)
+    if kind == DARK_PORT:
+        dark = columns["port2"]
+        return np.stack([columns.get("monitor", np.full(len(dark), np.nan)), dark], axis=-1)
+    if kind == STOKES:
+        names = ("s1", "s2", "s3") if "s0" in columns else ("azimuth_deg", "ellipticity_deg")
+        return sum(weight * columns[name] for weight, name in zip(_MIX, names, strict=False))[:, None]
+    return np.zeros((len(next(iter(columns.values()), ())), 0))
 
 
 def _mark_flat_quantities(

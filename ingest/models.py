@@ -100,13 +100,14 @@ class TapBoot(models.Model):
     station_boot = models.ForeignKey(StationBoot, models.CASCADE, related_name="taps")
     first_at_us = models.BigIntegerField()
     last_at_us = models.BigIntegerField()
+    lowest_sequence = models.BigIntegerField(null=True, help_text="Smallest sequence ever offered, also in a refused body.")
 
     class Meta:
         constraints = [models.UniqueConstraint(fields=["tap", "station_boot"], name="tap_boot_once")]
 
 
 class TapHeard(models.Model):
-    """When a tap was last heard; one row a tap, written with each commit."""
+    """When a tap last sent a new reading; one row a tap, written with each commit that stored some."""
 
     tap = models.OneToOneField(Tap, models.CASCADE, primary_key=True, related_name="heard")
     last_arrival_us = models.BigIntegerField()
@@ -145,6 +146,7 @@ class Block(models.Model):
 
     class Meta:
         constraints = [models.UniqueConstraint(fields=["tap", "slot_us"], name="block_once_per_slot")]
+        indexes = [models.Index(fields=["tap", "last_at_us"], name="block_tap_time")]
 
 
 class BlockBoot(models.Model):

@@ -43,9 +43,10 @@ def margin_of(quantity: Quantity, value: Any, alarm: Any, *, is_bound: Any = Fal
 
 
 def smallest_margin(margins: list[Margin]) -> Margin | None:
-    """The margin that a bench shows: the smallest in degrees, or in dB where none has degrees; None where none has either."""
+    """The margin that a bench shows: of the limits that are passed, else of all, the smallest in degrees (dB where none has)."""
+    passed = [margin for margin in margins if margin.margin_db < 0.0 or margin.margin_deg < 0.0]
     for name in ("margin_deg", "margin_db"):
-        known = [margin for margin in margins if np.isfinite(getattr(margin, name))]
+        known = [margin for margin in passed or margins if np.isfinite(getattr(margin, name))]
         if known:
             return min(known, key=lambda margin: float(getattr(margin, name)))
     return None

@@ -211,6 +211,7 @@ class FileImport(models.Model):
     tap = models.ForeignKey(Tap, models.CASCADE, related_name="imports")
     file_name = models.CharField(max_length=255)
     sha256 = models.CharField(max_length=64)
+    rules = models.JSONField(null=True, help_text="The mapping it is read in with; empty until someone asks for it.")
     started_at = models.DateTimeField(auto_now_add=True)
     finished_at = models.DateTimeField(null=True)
     rows_total = models.IntegerField(null=True)

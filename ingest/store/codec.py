@@ -136,8 +136,10 @@ def pack_block(readings: Readings) -> bytes:
     return b"".join([_BLOCK.pack(b"b1", 0, len(header), zlib.crc32(header)), header, *frames])
 
 
-def unpack_block(body: bytes, wanted: frozenset[str] | None = None) -> Readings:
-    """The readings of a block, values as float64; ``wanted`` names the columns to open (None: all).
+def unpack_block(body: bytes, wanted: frozenset[str] | None = None, *, as_sent: bool = False) -> Readings:
+    """The readings of a block; ``wanted`` names the columns to open (None: all).
+
+    Values are float64, or keep the dtype that was packed where ``as_sent``.
 
     Raises:
         DamagedBody: The body is not what ``pack_block`` made.
@@ -169,7 +171,8 @@ def unpack_block(body: bytes, wanted: frozenset[str] | None = None) -> Readings:
             found.append(unpack_runs(how, frame, count))
         elif name:
             if wanted is None or name in wanted:
-                columns[name] = unpack_numbers(how, frame, count, dtype).astype(np.float64, copy=False)
+                values = unpack_numbers(how, frame, count, dtype)
+                columns[name] = values if as_sent else values.astype(np.float64, copy=False)
         else:
             unknown = _objects(msgspec.msgpack.decode(decompress(frame, how[1])))
     at_us, boot_id, sequence, own_at_us, arrival_us, sent_us, timed = found

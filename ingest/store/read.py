@@ -88,7 +88,7 @@ def _assemble(rows: list[tuple[Any, ...]], taps: Sequence[int], columns: Sequenc
     for place, tap in enumerate(taps):
         parts = [_opened_block(tap, row, wanted) for row in sorted(blocks.get(place, ()), key=lambda row: row[1])]
         if place in inbox:
-            parts.append(_from_inbox(tap, sorted(inbox[place], key=lambda row: row[1]), wanted))
+            parts.append(readings_of_rows(tap, sorted(inbox[place], key=lambda row: row[1]), wanted))
         made.append(concatenate(parts).sorted() if parts else no_readings(columns))
     return made
 
@@ -100,7 +100,8 @@ def _opened_block(tap: int, row: tuple[Any, ...], wanted: frozenset[str] | None)
         raise _damage(tap, row, "block", error) from error
 
 
-def _from_inbox(tap: int, rows: list[tuple[Any, ...]], wanted: frozenset[str] | None) -> Readings:
+def readings_of_rows(tap: int, rows: list[tuple[Any, ...]], wanted: frozenset[str] | None = None) -> Readings:
+    """Readings of inbox rows (…, first_at_us, boot, arrival_us, crc, body, …), in the rows' order."""
     batches = []
     for row in rows:
         try:

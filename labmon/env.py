@@ -38,9 +38,11 @@ class Env:
         self.source = source
         self.prefix = prefix
         self.faults: list[str] = []
+        self.asked: dict[str, Any] = {}
 
     def get(self, name: str, parse: Callable[[str], Any], *, default: Any) -> Any:
         """The parsed value of ``prefix + name``; unset or empty gives ``default``."""
+        self.asked[self.prefix + name] = default
         text = self.source.get(self.prefix + name, "")
         if not text:
             return default

@@ -10,6 +10,8 @@ BASE_DIR = Path(__file__).resolve().parent.parent
 env = Env(os.environ, prefix="LABMON_")
 
 DATA_DIR = env.get("DATA", Path, default=BASE_DIR / "lab-data").absolute()
+LISTEN = env.get("LISTEN", str, default="127.0.0.1")
+PORT = int(env.get("PORT", parse_positive, default=8000))
 DEBUG = env.get("DEBUG", parse_bool, default=False)
 _services = find_services(os.environ, DATA_DIR)
 
@@ -25,6 +27,7 @@ def _secret_key() -> str:
 
 
 SECRET_KEY = env.get("SECRET_KEY", str, default="") or _secret_key()
+IS_SECRET_KEY_KEPT = bool(os.environ.get("LABMON_SECRET_KEY")) or (DATA_DIR / "secret-key").is_file()
 ALLOWED_HOSTS = env.get("HOSTS", parse_words, default=["localhost", "127.0.0.1", "[::1]"])
 CSRF_TRUSTED_ORIGINS = env.get("ORIGINS", parse_words, default=[])
 IS_BEHIND_TLS = env.get("BEHIND_TLS", parse_bool, default=False)
@@ -90,6 +93,7 @@ CHANNEL_LAYERS = {"default": {
 
 CELERY_BROKER_URL = BROKER_URL
 CELERY_TASK_DEFAULT_QUEUE = BROKER_PREFIX
+CELERY_BEAT_SCHEDULER = "labmon.engines.beat:OneBeatScheduler"
 CELERY_TASK_IGNORE_RESULT = True
 CELERY_TASK_ACKS_LATE = True
 CELERY_TASK_TIME_LIMIT = 300

@@ -39,10 +39,11 @@ def launched(command: Sequence[str | Path], *, identity: Identity = SAME,
 
 def start(command: Sequence[str | Path], *, log: IO[bytes] | int, identity: Identity = SAME,
           death_signal: signal.Signals = signal.SIGTERM, environ: Mapping[str, str] | None = None,
-          folder: Path | None = None) -> subprocess.Popen[bytes]:
+          folder: Path | None = None, open_files: Sequence[int] = ()) -> subprocess.Popen[bytes]:
     """Start a child in a group of its own, so that Ctrl-C reaches the supervisor only."""
     return subprocess.Popen(launched(command, identity=identity, death_signal=death_signal), stdin=subprocess.DEVNULL,
-                            stdout=log, stderr=subprocess.STDOUT, env=environ, cwd=folder, start_new_session=True)
+                            stdout=log, stderr=subprocess.STDOUT, env=environ, cwd=folder, pass_fds=open_files,
+                            start_new_session=True)
 
 
 def can_reach(path: Path, identity: Identity) -> bool:

@@ -12,7 +12,12 @@ GONE_WITHIN_S = 10.0
 
 
 def is_alive(pid: int) -> bool:
-    """Whether a process of that number exists."""
+    """Whether a process of that number runs (one that has ended and only waits to be counted does not)."""
+    try:
+        if (Path("/proc") / str(pid) / "stat").read_text().rsplit(")", 1)[1].split()[0] == "Z":
+            return False
+    except OSError:
+        pass                            # not Linux, or gone: the next question tells
     try:
         os.kill(pid, 0)
     except ProcessLookupError:

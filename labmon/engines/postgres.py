@@ -39,6 +39,7 @@ class EmbeddedPostgres:
     """
 
     name = "database"
+    title = "PostgreSQL"
 
     def __init__(self, folder: DataFolder, settings: Mapping[str, str] | None = None,
                  as_identity: Identity | None = None) -> None:
@@ -76,6 +77,7 @@ class EmbeddedPostgres:
         if not self.is_made:
             self._make_cluster(programs)
         self._check_version(programs)
+        self.title = f"PostgreSQL {programs.version}"
         leftover.clear_postgres(self.cluster)
         identity.give(self.socket_folder, self.identity)
         until = time.monotonic() + READY_WITHIN_S

@@ -6,6 +6,8 @@ import time
 from pathlib import Path
 
 import redis
+from redis.backoff import NoBackoff
+from redis.retry import Retry
 
 from labmon.engines import child
 from labmon.engines.binaries import find_valkey
@@ -25,6 +27,7 @@ class EmbeddedValkey:
     """
 
     name = "broker"
+    title = "Valkey"
 
     def __init__(self, folder: DataFolder, *, is_kept: bool = True) -> None:
         self.folder = folder
@@ -74,7 +77,8 @@ class EmbeddedValkey:
             self._client().shutdown(nosave=True)
 
     def _client(self) -> redis.Redis:
-        return redis.Redis(unix_socket_path=str(self.socket), socket_timeout=2.0)
+        once = Retry(NoBackoff(), 0)    # the client's own ten attempts take seconds where no server is
+        return redis.Redis(unix_socket_path=str(self.socket), socket_timeout=2.0, retry=once)
 
     def answers(self) -> bool:
         """Whether it answers now."""

@@ -69,7 +69,7 @@ def unpack_integers(how: list[Any], frame: memoryview, count: int) -> Array:
         return np.arange(count, dtype=np.int64) * how[2] + first
     step, size = how[2], how[3]
     raw = np.frombuffer(decompress(frame, (count - 1) * size), np.uint8)
-    rest = _woven(raw, size).view(f"<i{size}") if size > 1 else raw.view(np.int8)
+    rest = _woven(raw, size).reshape(-1).view(f"<i{size}") if size > 1 else raw.view(np.int8)
     values = np.empty(count, np.int64)
     values[0] = first
     values[1:] = rest

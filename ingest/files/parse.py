@@ -25,11 +25,12 @@ _NO_CELL = "\0"                                    # stands for a cell the line 
 class FileRows:
     """A part of a file, in the file's order.
 
-    ``line`` int64 (N,), ``at_us`` int64 (N,), ``columns`` float64 (N,) each, NaN where the file has no value;
-    ``refused``: the lines of this part that are no readings.
+    ``line`` int64 (N,), ``text`` (N,) as they came, ``at_us`` int64 (N,), ``columns`` float64 (N,) each, NaN where
+    the file has no value; ``refused``: the lines of this part that are no readings.
     """
 
     line: NDArray[np.int64]
+    text: NDArray[np.object_]
     at_us: NDArray[np.int64]
     columns: dict[str, NDArray[np.float64]]
     refused: list[RefusedRow]
@@ -79,7 +80,8 @@ class FileReader:
         columns = {rule.name: self._column(lines, rule, place, refusals) for rule, place in self._cells}
         self._refuse_incomplete(columns, refusals)
         is_sound = refusals.is_sound()
-        return FileRows(line=np.array([line.number for line in lines], np.int64)[is_sound], at_us=at_us[is_sound],
+        return FileRows(line=np.array([line.number for line in lines], np.int64)[is_sound],
+                        text=np.array([line.text for line in lines], object)[is_sound], at_us=at_us[is_sound],
                         columns={name: values[is_sound] for name, values in columns.items()}, refused=refusals.rows())
 
     def _times(self, lines: list[Line], refusals: "_Refusals") -> NDArray[np.int64]:

@@ -21,7 +21,8 @@ COUNTED = {"days since": 86_400e6, "hours since": 3600e6, "seconds since": 1e6, 
            "microseconds since": 1.0}              # microseconds in one
 TURN_BACK = ("set aside", "first", "second")
 
-_ISO = re.compile(r"(\d{4}-\d\d-\d\d)[T ](\d\d:\d\d(?::\d\d(?:[.,]\d{1,9})?)?)\s?(Z|[+-]\d\d:?\d\d)?", re.ASCII | re.IGNORECASE)
+_ISO = re.compile(r"(\d{4}-\d\d-\d\d)[T ](\d\d:\d\d(?::\d\d(?:[.,]\d{1,9})?)?)\s?(Z|[+-]\d\d:?\d\d)?",
+                  re.ASCII | re.IGNORECASE)
 _OFFSET = re.compile(r"([+-])(\d\d):?(\d\d)", re.ASCII)
 
 
@@ -65,9 +66,11 @@ def check_time(rules: Rules) -> TimeRule | None:
     if rule.format in COUNTED:
         _check_start(rules, rule)
     elif rule.since:
-        rules.fault("since", rule.since, "a start is only for counted times", 'leave it out, or write format = "seconds since"')
+        rules.fault("since", rule.since, "a start is only for counted times",
+                    'leave it out, or write format = "seconds since"')
     elif rule.format != "iso" and "%z" not in rule.format and not rule.zone:
-        rules.fault("zone", None, "times of this format have no zone", 'say where the clock stands: zone = "UTC" or "Europe/Berlin"')
+        rules.fault("zone", None, "times of this format have no zone",
+                    'say where the clock stands: zone = "UTC" or "Europe/Berlin"')
     return rule if len(rules.faults) == before else None
 
 

@@ -85,8 +85,7 @@ def test_a_file_that_was_cut_keeps_what_came_before():
                                            for x in noise)).encode())
     file = reader(packed[:len(packed) // 2])
     with pytest.raises(FileFault, match="damaged or ends early"):
-        read_before = [len(part) for part in file.parts(10)]
-        assert not read_before, "the fault should have been raised"
+        list(file.parts(10))
     assert file.lines_read > 100
 
 
@@ -107,7 +106,19 @@ def test_an_overlong_line_is_one_refused_row():
     assert rows.refused[-1].field == "line" and "longer than" in rows.refused[-1].why
 
 
-PLAIN = '[file]\nheader = false\nmissing = ["-"]\ncomment = "#"\n[time]\ncolumn = 1\nformat = "seconds since"\nsince = 2025-01-01T00:00:00Z\n[columns]\nport1 = 2\nport2 = 3\n'
+PLAIN = """
+[file]
+header = false
+missing = ["-"]
+comment = "#"
+[time]
+column = 1
+format = "seconds since"
+since = 2025-01-01T00:00:00Z
+[columns]
+port1 = 2
+port2 = 3
+"""
 
 
 @pytest.mark.parametrize("text", ["nan", "inf", "1e999", "0x10", "1_000", "１", "1.2.3", "1,2", "--1", ".", "e5"])
@@ -122,7 +133,8 @@ def test_only_the_persons_own_markers_are_missing_values():
     assert rows.columns["port1"].tolist() == [-99.99]
 
 
-cells = st.sampled_from(["1", "-2.5", "1e3", "", "-", "#", '"', "'", "x", "1e400", "nan", "\x00", "é", "2025-01-01 00:00"]) | st.text(max_size=5)
+oddities = ["1", "-2.5", "1e3", "", "-", "#", '"', "'", "x", "1e400", "nan", "\x00", "é", "2025-01-01 00:00"]
+cells = st.sampled_from(oddities) | st.text(max_size=5)
 rows_of_cells = st.lists(st.lists(cells, max_size=4).map(",".join), max_size=8).map("\n".join)
 
 

@@ -41,7 +41,22 @@ class TapNow(models.Model):
     tap = models.OneToOneField("ingest.Tap", models.CASCADE, primary_key=True, related_name="now")
     at_us = models.BigIntegerField()
     sample = models.JSONField()
-    trust_state = models.JSONField(default=dict, help_text="Where the trust fold stands.")
+    trust_state = models.JSONField(default=dict, help_text="Where the tap's folds stand (analysis.record.tap_state).")
+    open_until_us = models.BigIntegerField(null=True, help_text="Server time from which the tap's last second counts as complete.")
+
+    class Meta:
+        indexes = [models.Index(fields=["open_until_us"], condition=models.Q(open_until_us__isnull=False), name="tap_second_still_open")]
+
+
+class TapCheckpoint(models.Model):
+    """Where a tap's own folds (frozen values, interval) stood at an earlier whole second: replay starts from here."""
+
+    tap = models.ForeignKey("ingest.Tap", models.CASCADE, db_index=False, related_name="checkpoints")
+    at_us = models.BigIntegerField()
+    state = models.JSONField()
+
+    class Meta:
+        constraints = [models.UniqueConstraint(fields=["tap", "at_us"], name="tap_checkpoint_once")]
 
 
 class RollupRow(models.Model):
@@ -66,8 +81,9 @@ class RollupDay(models.Model):
 
 
 class RollupDue(models.Model):
-    """A span of a tap whose rollups must be made anew."""
+    """A span of a tap whose rollups must be made anew from ``level_s`` up."""
 
     tap = models.ForeignKey("ingest.Tap", models.CASCADE)
+    level_s = models.IntegerField(default=10)
     first_at_us = models.BigIntegerField()
     last_at_us = models.BigIntegerField()

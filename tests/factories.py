@@ -4,7 +4,10 @@ from datetime import UTC, datetime
 from itertools import count
 from typing import Any
 
+import numpy as np
+
 from ingest.models import Room, Station, StationBoot, Tap, TapBoot, TapKind, Unit
+from ingest.store.append import write_blocks
 from labmon.benches.models import Bench
 from labmon.experiments.models import Experiment
 from labmon.people.models import Person, Role
@@ -47,3 +50,10 @@ def make_experiment(*taps: Tap, owner: Person | None = None, **fields: Any) -> E
     experiment = Experiment.objects.create(**{"name": f"experiment {next(_number)}", "owner": owner} | fields)
     experiment.taps.set(taps)
     return experiment
+
+
+def store_readings(tap: Tap, at_us: Any, *, arrival_us: Any = None, boot: str = "", sequence: Any = None, **columns: Any) -> None:
+    """Raw readings, as heard at their own time unless said, with a mark for the pipeline; a column may be one number for all."""
+    at_us = np.asarray(at_us, dtype=np.int64)
+    filled = {name: np.broadcast_to(np.asarray(values, dtype=np.float64), at_us.shape).copy() for name, values in columns.items()}
+    write_blocks(tap, at_us, filled, boot=boot, sequence=sequence, arrival_us=at_us if arrival_us is None else arrival_us)

@@ -81,6 +81,21 @@ def seconds_of(reduced: Reduced, quantity: Quantity) -> Seconds:
     return _grouped(reduced, quantity, np.flatnonzero(np.diff(second, prepend=second[:1] - 1)), 1.0)
 
 
+def seconds_of_many(reduced: Reduced, quantity: Quantity, first: IntArray) -> tuple[Seconds, IntArray]:
+    """As `seconds_of` for several taps one after the other, each sorted by time.
+
+    Args:
+        first: Index of each tap's first sample, shape (K,), rising; every tap has one sample at least.
+    Returns:
+        The seconds of all taps, and the index of each tap's first second, shape (K,).
+    """
+    second = reduced.at_us // SECOND_US
+    is_start = np.diff(second, prepend=second[:1] - 1) != 0
+    is_start[first] = True
+    starts = np.flatnonzero(is_start)
+    return _grouped(reduced, quantity, starts, 1.0), np.searchsorted(starts, first)
+
+
 def plain_samples_of(reduced: Reduced, quantity: Quantity) -> Seconds:
     """One entry per sample, for taps judged without aggregation."""
     return _grouped(reduced, quantity, np.arange(len(reduced)), 0.0)

@@ -1,0 +1,72 @@
+"""The two weeks' ground truth: what is done to the invented lab's data, and the label it should get."""
+
+from labmon.demo.faults import (
+    AirFault,
+    ClockOffset,
+    Deed,
+    HandednessFlipped,
+    HumAlias,
+    JointCreep,
+    Ledger,
+    ModeHops,
+    NetworkOutage,
+    NightFails,
+    PortFrozen,
+    PowerRaised,
+    Restart,
+    RoomLight,
+    SecondDevice,
+    SourceAgeing,
+    SourceOff,
+    Touch,
+)
+from labmon.demo.moments import moment
+
+_BEACON_HOPS = tuple((moment(5, 16, minute), moment(5, 16, minute, second))
+                     for minute, second in ((20, 150), (27, 200), (34, 140), (40, 180), (46, 240)))
+_S1_HOPS = tuple((moment(9, 3, 10) + 3600.0 * hour, moment(9, 3, 10) + 3600.0 * hour + 45.0)
+                 for hour in (0.0, 3.3, 7.1, 10.4, 14.0, 17.6, 20.5, 21.8))
+
+LEDGER = Ledger((
+    ClockOffset(subjects=("V1",), start_s=moment(2, 8), offset_s=420.0, expected="clock, by arrival"),
+    Touch(subjects=("N1",), start_s=moment(3, 11, 42), peak_deg=14.0, stays_deg=6.0, end_s=moment(8, 9),
+          expected="touched, N1 only"),
+    RoomLight(subjects=("N2", "N4"), start_s=moment(4, 5, 30), end_s=moment(4, 5, 50), added_w=0.25e-6,
+              expected="room light: a note, nobody called"),
+    ModeHops(subjects=("Beacon",), start_s=moment(5, 16, 20), end_s=moment(5, 16, 50), hops=_BEACON_HOPS, power_share=-0.021,
+             leak_factors=(("N1", (1.4, 0.7, 1.8, 0.6, 1.3)), ("N2", (1.8, 0.6, 1.5, 0.8, 1.7)),
+                           ("N3", (0.6, 1.6, 1.8, 1.4, 0.7))),
+             expected="mode hop on Beacon, one call for three benches"),
+    JointCreep(subjects=("S2",), start_s=moment(5, 0), end_s=moment(15, 0), from_db=30.0, to_db=24.5,
+               expected="joint creep, trend by day 9, below 25 dB on day 13"),
+    SourceAgeing(subjects=("S1 laser",), start_s=moment(1, 0), end_s=moment(10, 14, 10), share_per_day=0.006,
+                 expected="source ageing by day 6"),
+    ModeHops(subjects=("S1 laser",), start_s=moment(9, 3, 10), end_s=moment(10, 1, 30), hops=_S1_HOPS, power_share=-0.03,
+             leak_factors=(("S1", (1.3, 0.8, 1.5, 1.4, 0.7, 1.6, 1.2, 1.5)),), expected="mode hop on the laser of S1"),
+    SourceOff(subjects=("S1 laser",), start_s=moment(10, 1, 30), end_s=moment(10, 14, 10),
+              expected="dark, laser off; not a lost ER"),
+    PowerRaised(subjects=("N4 laser",), start_s=moment(6, 14, 10), end_s=moment(6, 17), factor=2.0,
+                expected="saturated; the minutes are untrusted"),
+    PortFrozen(subjects=("S4",), start_s=moment(7, 2, 13), end_s=moment(7, 9), port=2, expected="flat within 10 min"),
+    Restart(subjects=("V1",), start_s=moment(8, 10, 5), gap_s=45.0, firmware="bench pc 2.1",
+            expected="configuration change"),
+    HumAlias(subjects=("V1",), start_s=moment(8, 10, 5), port=2, share=0.08, period_s=25.0, expected="hum alias"),
+    Deed(subjects=("N2",), start_s=moment(8, 22), end_s=moment(8, 23, 30), what="limit 20 → 17 dB by one person in a run",
+         expected="refused: a second person is needed"),
+    AirFault(subjects=("North Hall",), start_s=moment(9, 13), end_s=moment(9, 16), rise_k=2.3,
+             expected="shared: North Hall air"),
+    Restart(subjects=("S3",), start_s=moment(10, 9, 15), gap_s=120.0, firmware="polarimeter pc 3.0",
+            expected="configuration change"),
+    HandednessFlipped(subjects=("S3",), start_s=moment(10, 9, 15), expected="convention, asks a person"),
+    Deed(subjects=("Nadia Floss",), start_s=moment(11, 0), what="guest's date is over", expected="access refused"),
+    Restart(subjects=("N2",), start_s=moment(11, 4, 40), gap_s=35.0, unset_s=40.0, expected="gap of 35 s, server-timed"),
+    NetworkOutage(subjects=("South Hall",), start_s=moment(12, 1), end_s=moment(12, 4, 20),
+                  expected="network: one call; S3 has no reading"),
+    SecondDevice(subjects=("S4",), start_s=moment(13, 15), end_s=moment(13, 15, 25), expected="two devices, one key"),
+    Deed(subjects=("V2", "N3", "V1", "S3", "S2"), start_s=moment(14, 20), what="clearance asked for all",
+         expected="V2 likely but thin; N3, S2 not cleared; V1, S3 not enough evidence"),
+    *(NightFails(subjects=("N3",), start_s=moment(day, 9, 30), end_s=moment(day + 1, 9, 30),
+                 expected="below limit in the night") for day in (4, 8, 11)),
+    *(Touch(subjects=("N4",), start_s=moment(day, 15, 20), peak_deg=14.0, ring_down_s=20.0,
+            expected="habit: touched weekly, too short to call") for day in (2, 9)),
+))

@@ -18,7 +18,7 @@ from ingest.times import now_us
 @transaction.atomic
 def write_blocks(tap: Tap, at_us: IntArray, columns: Mapping[str, Any], *, boot: str = "",
                  sequence: IntArray | None = None, arrival_us: IntArray | int | None = None,
-                 is_touched: bool = True) -> int:
+                 own_at_us: IntArray | None = None, is_server_timed: bool = False, is_touched: bool = True) -> int:
     """Write history straight into blocks; for stretches the tap has no readings of yet, whose identities are new.
 
     Args:
@@ -27,6 +27,8 @@ def write_blocks(tap: Tap, at_us: IntArray, columns: Mapping[str, Any], *, boot:
         columns: Values by column name, float64 or float32, shape (N,), NaN where absent.
         boot, sequence: Identity; without sequence a reading is known by its time.
         arrival_us: When they came in (default: now), us, one number or shape (N,).
+        own_at_us: The station's own stamps where they differ from ``at_us``, us, shape (N,).
+        is_server_timed: The station's clock was not used for ``at_us``.
         is_touched: Leave a mark, so that the pipeline reduces and judges them.
     Returns:
         The number of readings written.
@@ -40,8 +42,8 @@ def write_blocks(tap: Tap, at_us: IntArray, columns: Mapping[str, Any], *, boot:
     tap_boot = tap_boot_ids(db, [(tap.pk, station_boot)])[tap.pk, station_boot]
     readings = Readings(at_us=np.asarray(at_us, np.int64), columns={name: np.asarray(values) for name, values in columns.items()},
                         boot_id=np.full(at_us.shape, tap_boot, np.int64), sequence=numbers,
-                        own_at_us=np.asarray(at_us, np.int64), arrival_us=arrival, sent_us=arrival,
-                        is_server_timed=np.zeros(at_us.shape, np.bool_)).sorted()
+                        own_at_us=np.asarray(at_us if own_at_us is None else own_at_us, np.int64), arrival_us=arrival,
+                        sent_us=arrival, is_server_timed=np.full(at_us.shape, is_server_timed, np.bool_)).sorted()
     lock_tap(db, tap.pk)
     slot_s = merge_into_blocks(db, tap.pk, readings)
     _note(db, tap.pk, tap_boot, readings, slot_s, is_touched)

@@ -42,7 +42,8 @@ def test_south_hall_is_set_back_at_night_and_the_others_are_not():
 
 def test_the_air_fault_warms_north_hall_only():
     at_s = np.arange(moment(9, 15), moment(9, 16), 10.0)
-    warming = {plan.name: (RoomAir(plan, 7, 10, LEDGER).at(at_s) - RoomAir(plan, 7, 10, Ledger(())).at(at_s)).mean() for plan in ROOMS}
+    warming = {plan.name: (RoomAir(plan, 7, 10, LEDGER).at(at_s) - RoomAir(plan, 7, 10, Ledger(())).at(at_s)).mean()
+               for plan in ROOMS}
     assert warming["North Hall"] == pytest.approx(2.3, abs=0.05)
     assert warming["South Hall"] == warming["Vault"] == 0.0
 

@@ -18,7 +18,8 @@ def lab():
 
         def do_POST(self):
             body = self.rfile.read(int(self.headers["Content-Length"]))
-            heard.append((self.path, self.headers["Authorization"], self.headers["Content-Type"], json.loads(body), self.client_address))
+            heard.append((self.path, self.headers["Authorization"], self.headers["Content-Type"], json.loads(body),
+                          self.client_address))
             text = b'{"stored": 1}' if len(heard) < 3 else b"busy"
             self.send_response(200 if len(heard) < 3 else 503)
             self.send_header("Content-Length", str(len(text)))

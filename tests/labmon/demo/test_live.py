@@ -11,8 +11,8 @@ from labmon.demo.world import SEED, World
 
 
 def test_an_instrument_hands_out_each_reading_once():
-    instrument = Instrument(times=lambda first, last: np.arange(np.ceil(first), last, 1.0), columns=lambda at_s: {"port1": 2 * at_s},
-                            taken_until_s=100.0)
+    instrument = Instrument(times=lambda first, last: np.arange(np.ceil(first), last, 1.0),
+                            columns=lambda at_s: {"port1": 2 * at_s}, taken_until_s=100.0)
     taken, moment_s = [], 100.0
     for wait_s in (0.2, 0.2, 1.7, 0.0, 700.0, 3.3, 295.0):
         moment_s += wait_s

@@ -61,7 +61,8 @@ def test_s3_moves_five_degrees_by_the_night_setback(quiet):
     bench = bench_named("S3")
     angles = []
     for number in (2, 3, 4):
-        night, day = (quiet.sop(bench, _span(moment(number, hour), moment(number, hour + 3), 10.0)).mean(axis=0) for hour in (3, 15))
+        night, day = (quiet.sop(bench, _span(moment(number, hour), moment(number, hour + 3), 10.0)).mean(axis=0)
+                      for hour in (3, 15))
         angles.append(np.degrees(np.arctan2(np.linalg.norm(np.cross(day, night)), day @ night)))
     assert np.median(angles) == pytest.approx(5.0, abs=1.2)
 

@@ -12,8 +12,8 @@ django_application = get_asgi_application()
 from channels.auth import AuthMiddlewareStack  # noqa: E402  (needs the loaded applications)
 from channels.routing import URLRouter  # noqa: E402
 from channels.security.websocket import AllowedHostsOriginValidator  # noqa: E402
-from ingest.door.asgi import DoorApplication  # noqa: E402
 
+from ingest.door.asgi import DoorApplication  # noqa: E402
 from labmon.live.routing import websocket_urlpatterns  # noqa: E402
 
 Scope = MutableMapping[str, Any]

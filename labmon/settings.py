@@ -28,8 +28,9 @@ def _secret_key() -> str:
 
 SECRET_KEY = env.get("SECRET_KEY", str, default="") or _secret_key()
 IS_SECRET_KEY_KEPT = bool(os.environ.get("LABMON_SECRET_KEY")) or (DATA_DIR / "secret-key").is_file()
-ALLOWED_HOSTS = env.get("HOSTS", parse_words, default=["localhost", "127.0.0.1", "[::1]"])
+ALLOWED_HOSTS = ["localhost", "127.0.0.1", "[::1]", *env.get("HOSTS", parse_words, default=[])]
 CSRF_TRUSTED_ORIGINS = env.get("ORIGINS", parse_words, default=[])
+TRUSTED_PROXIES = env.get("PROXIES", parse_words, default=["127.0.0.1"])
 IS_BEHIND_TLS = env.get("BEHIND_TLS", parse_bool, default=False)
 
 INSTALLED_APPS = [
@@ -64,6 +65,7 @@ TEMPLATES = [{
         "django.template.context_processors.request",
         "django.contrib.auth.context_processors.auth",
         "django.contrib.messages.context_processors.messages",
+        "labmon.screen.frame.frame",
     ]},
 }]
 
@@ -74,6 +76,7 @@ HAS_SERVICES = bool(_services.database_url and _services.broker_url)
 DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"
 
 AUTH_USER_MODEL = "labmon.Person"
+CSRF_FAILURE_VIEW = "labmon.screen.faults.no_token"
 LOGIN_URL = "login"
 LOGIN_REDIRECT_URL = "lab"
 LOGOUT_REDIRECT_URL = "login"

@@ -5,6 +5,7 @@ import os
 import socket
 
 import uvicorn
+from django.conf import settings
 
 BACKLOG = 2048
 DRAIN_WITHIN_S = 5
@@ -34,18 +35,18 @@ def serve(listener: socket.socket) -> None:
     """
     config = uvicorn.Config("labmon.asgi:application", ws_per_message_deflate=False, lifespan="on", access_log=False,
                             log_config=None, timeout_graceful_shutdown=DRAIN_WITHIN_S, backlog=BACKLOG,
-                            proxy_headers=True, server_header=False)
+                            proxy_headers=True, forwarded_allow_ips=settings.TRUSTED_PROXIES, server_header=False)
     uvicorn.Server(config).run(sockets=[listener])
 
 
 def main() -> None:
     """Take the address, or the socket that the supervisor holds open across restarts."""
+    os.environ.setdefault("DJANGO_SETTINGS_MODULE", "labmon.settings")
     parser = argparse.ArgumentParser(description=__doc__)
-    parser.add_argument("--listen", default="127.0.0.1", help="address to listen on")
-    parser.add_argument("--port", type=int, default=8000)
+    parser.add_argument("--listen", default=settings.LISTEN, help="address to listen on")
+    parser.add_argument("--port", type=int, default=settings.PORT)
     parser.add_argument("--socket", type=int, help="number of an open, bound socket, instead of the address")
     wish = parser.parse_args()
-    os.environ.setdefault("DJANGO_SETTINGS_MODULE", "labmon.settings")
     serve(socket.socket(fileno=wish.socket) if wish.socket is not None else bound_socket(wish.listen, wish.port))
 
 

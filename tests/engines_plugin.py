@@ -71,7 +71,7 @@ def _begin() -> None:
         engines.start()
         os.environ["LABMON_TEST_FOLDER"] = str(engines.folder.path)
     folder = Path(os.environ["LABMON_TEST_FOLDER"]) / f"data{worker}"
-    folder.mkdir(exist_ok=True)
+    (folder / "static").mkdir(parents=True, exist_ok=True)      # WhiteNoise warns where there is none
     os.environ["LABMON_DATA"] = str(folder)
     os.environ["LABMON_BROKER_PREFIX"] = f"labmon-test{worker}"
 

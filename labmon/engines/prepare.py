@@ -14,6 +14,7 @@ from django.core.management.base import SystemCheckError
 from django.db import connection
 from django.db.migrations.executor import MigrationExecutor
 
+from labmon.people.actions import add_person
 from labmon.people.models import Person, Role
 
 Say = Callable[[str], None]
@@ -75,10 +76,10 @@ def collect_static(say: Say) -> bool:
 
 
 def first_login() -> list[str]:
-    """Make a manager where nobody can sign in yet; the password is shown once, in these lines, and kept nowhere."""
-    if Person.objects.exists():
+    """Make a manager where there is none yet; the password is shown once, in these lines, and kept nowhere."""
+    if Person.objects.filter(role=Role.MANAGER, is_active=True).exists():
         return []
     password = secrets.token_urlsafe(12)
-    Person.objects.create_user(FIRST_LOGIN, password=password, role=Role.MANAGER, is_staff=False)
+    add_person(FIRST_LOGIN, Role.MANAGER, password=password)
     return [f"Sign in as {FIRST_LOGIN} with the password {password} (shown this once).",
             f"Change it with: manage.py changepassword {FIRST_LOGIN} --data {settings.DATA_DIR}"]

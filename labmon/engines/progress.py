@@ -24,5 +24,5 @@ class Progress:
         """A line as it is; a terminal that went away is no reason to stop."""
         try:
             print(text, file=self.out, flush=True)
-        except (BrokenPipeError, OSError):
+        except OSError:
             self.out = open("/dev/null", "w")

@@ -64,6 +64,7 @@ class Supervisor:
         self.folder = DataFolder(wish.folder)
         self.engines: list[EmbeddedPostgres | EmbeddedValkey] = []
         self.commands: list[Command] = []
+        self.listener: socket.socket | None = None
         self.stop_asked = threading.Event()
         self.stops = 0
 
@@ -97,13 +98,13 @@ class Supervisor:
         self.stop_asked.set()
 
     def _start(self) -> None:
-        listener = self._listener()
+        self.listener = self._listener()
         self.progress.plain(f"labmon in {self.folder.path}" + (" with the demo laboratory" if self.wish.has_demo else ""))
         trim_logs(self.folder.logs)
         self.folder.keep_secret_key()
         self._start_services()
         answer = self._prepare()
-        self._start_processes(listener)
+        self._start_processes()
         self._await_web()
         self._tell_ready(answer)
 
@@ -163,9 +164,11 @@ class Supervisor:
                 process.terminate()
                 return
 
-    def _start_processes(self, listener: socket.socket) -> None:
+    def _start_processes(self) -> None:
         python, celery = sys.executable, [sys.executable, "-m", "celery", "-A", "labmon"]
-        self._add("web", [python, "-m", "labmon.web", "--socket", str(listener.fileno())], listener.fileno())
+        assert self.listener is not None
+        number = self.listener.fileno()
+        self._add("web", [python, "-m", "labmon.web", "--socket", str(number)], number)
         self._add("worker", [*celery, "worker", "--concurrency", "2", "--loglevel", "INFO", "--without-gossip",
                              "--without-mingle"])
         self._add("beat", [*celery, "beat", "--loglevel", "INFO", "--pidfile", ""])
@@ -197,7 +200,7 @@ class Supervisor:
         host = self.address.removeprefix("http://").rsplit(":", 1)[0]
         connection = http.client.HTTPConnection(host.strip("[]"), self.wish.port, timeout=2.0)
         try:
-            connection.request("GET", "/health/process", headers={"Host": f"localhost:{self.wish.port}"})
+            connection.request("GET", "/health/process", headers={"Host": "localhost"})
             return connection.getresponse().status == 200
         except (OSError, http.client.HTTPException):
             return False
@@ -240,6 +243,8 @@ class Supervisor:
         for engine in reversed(self.engines):
             engine.stop()
         self.folder.forget_services()
+        if self.listener is not None:
+            self.listener.close()
         if self.engines or self.commands:
             self.progress.say("labmon", f"stopped in {self.progress.elapsed_s() - before_s:.1f} s")
 

@@ -25,7 +25,7 @@ class Command(LabCommand):
     def _demo(self) -> list[str]:
         from labmon.demo.build import build_demo_lab
 
-        return build_demo_lab(self._say)
+        return build_demo_lab(self._say).lines
 
     def _say(self, text: str) -> None:
         self.stdout.write(text)

@@ -7,9 +7,9 @@ from ingest.models import StationBoot, TapBoot
 from ingest.stations import NewTap, add_station
 from ingest.store.read import read_readings
 from labmon.demo import history
+from labmon.demo.air import ROOMS
 from labmon.demo.benches import bench_named
 from labmon.demo.history import TimeAxis, write_bench, write_room
-from labmon.demo.air import ROOMS
 from labmon.demo.moments import moment
 from labmon.demo.world import World
 

@@ -44,11 +44,13 @@ def shape_of(standing: Standing, *, is_doubtful: bool = False) -> str:
     return f"mark-{standing}{'-hollow' if is_doubtful and standing in {Standing.BELOW, Standing.THIN} else ''}"
 
 
-def short_rail(mark: Mark) -> str:
-    """A bench's own rail for its row: only the mark; line and limit are the cell's background."""
+def short_mark(mark: Mark) -> str:
+    """The mark on a bench's own rail in its row; calm benches have a tick in the row's path instead (see sparkline)."""
+    if not mark.standing.has_shape:
+        return ""
     x = x_percent(mark.margin_db) if mark.margin_db is not None else GUTTER_PERCENT / 2
-    return (f'<svg class="rail-own" aria-hidden="true"><use href="#{shape_of(mark.standing, is_doubtful=mark.is_doubtful)}" '
-            f'x="{x:.1f}%" y="10"/></svg>')
+    shape = shape_of(mark.standing, is_doubtful=mark.is_doubtful)
+    return f'<svg class="rail-own" aria-hidden="true"><use href="#{shape}" x="{x:.1f}%" y="13"/></svg>'
 
 
 def room_rail(room: str, marks: Sequence[Mark]) -> str:
@@ -57,13 +59,18 @@ def room_rail(room: str, marks: Sequence[Mark]) -> str:
     placed = [mark for mark in named if mark.margin_db is not None and mark.standing is not Standing.NO_READING]
     parked = [mark for mark in named if mark.margin_db is None or mark.standing is Standing.NO_READING]
     ticks = [mark.margin_db for mark in marks if not mark.standing.wants_a_look and mark.margin_db is not None]
-    return (f'<svg class="rail" role="group" aria-label="{escape(_spoken(room, marks))}" height="{RAIL_HEIGHT_PX}">'
-            f"{_scale(ticks)}{_gutter(parked)}{_named_marks(placed)}</svg>")
+    return (
+        f'<svg class="rail" role="group" aria-label="{escape(_spoken(room, marks))}" height="{RAIL_HEIGHT_PX}">'
+        f"{_scale(ticks)}{_gutter(parked)}{_named_marks(placed)}</svg>"
+    )
 
 
 def _spoken(room: str, marks: Sequence[Mark]) -> str:
-    looks = [f"{mark.name} {mark.standing.word}" + (f" {mark.label}" if mark.label else "")
-             for mark in marks if mark.standing.wants_a_look]
+    looks = [
+        f"{mark.name} {mark.standing.word}" + (f" {mark.label}" if mark.label else "")
+        for mark in marks
+        if mark.standing.wants_a_look
+    ]
     calm = len(marks) - len(looks)
     return f"{room}: " + "; ".join([*looks, f"{calm} as wanted"] if calm or not looks else looks)
 
@@ -72,23 +79,33 @@ def _scale(ticks_db: Sequence[float]) -> str:
     """Hatch below the limit, rail with engraved whole dB, limit line, and one tick for each calm bench."""
     rule = "".join(f"M{db} {BASE_PX}v{9 if db % 4 == 0 else 5}" for db in range(int(LOW_DB), int(HIGH_DB) + 1))
     calm = "".join(f"M{min(max(db, LOW_DB), HIGH_DB):.2f} {BASE_PX - 14}v13" for db in ticks_db)
-    return (f'<rect class="rail-under" x="{GUTTER_PERCENT}%" width="{LIMIT_PERCENT - GUTTER_PERCENT:.2f}%" y="{BASE_PX - 22}" '
-            'height="22" fill="url(#hatch)"/>'
-            f'<svg x="{GUTTER_PERCENT}%" width="{100 - GUTTER_PERCENT - 1}%" height="{RAIL_HEIGHT_PX}" '
-            f'viewBox="{LOW_DB:g} 0 {HIGH_DB - LOW_DB:g} {RAIL_HEIGHT_PX}" preserveAspectRatio="none" overflow="visible">'
-            f'<path class="rail-line" d="M{LOW_DB:g} {BASE_PX}H{HIGH_DB:g}{rule}"/><path class="rail-limit" d="M0 {BASE_PX - 26}v38"/>'
-            f'<path class="rail-calm" d="{calm}"/></svg>')
+    return (
+        f'<rect class="rail-under" x="{GUTTER_PERCENT}%" width="{LIMIT_PERCENT - GUTTER_PERCENT:.2f}%" y="{BASE_PX - 22}" '
+        'height="22" fill="url(#hatch)"/>'
+        f'<svg x="{GUTTER_PERCENT}%" width="{100 - GUTTER_PERCENT - 1}%" height="{RAIL_HEIGHT_PX}" '
+        f'viewBox="{LOW_DB:g} 0 {HIGH_DB - LOW_DB:g} {RAIL_HEIGHT_PX}" preserveAspectRatio="none" overflow="visible">'
+        f'<path class="rail-line" d="M{LOW_DB:g} {BASE_PX}H{HIGH_DB:g}{rule}"/>'
+        f'<path class="rail-limit" d="M0 {BASE_PX - 26}v38"/>'
+        f'<path class="rail-calm" d="{calm}"/></svg>'
+    )
 
 
 def _gutter(parked: Sequence[Mark]) -> str:
     """Benches without a reading, left of the scale; more than two share one count."""
-    drawn = "".join(f'<a href="{escape(mark.href)}"><title>{escape(mark.name)} {mark.standing.word}</title>'
-                    f'<use href="#{shape_of(mark.standing)}" x="{2.2 + 4.0 * (index % 3):.1f}%" y="{BASE_PX - 7}"/></a>'
-                    for index, mark in enumerate(parked[:3]))
+    drawn = "".join(
+        f'<a href="{escape(mark.href)}" aria-label="{escape(mark.name)}, {mark.standing.word}">'
+        f'<use href="#{shape_of(mark.standing)}" x="{2.2 + 4.0 * (index % 3):.1f}%" y="{BASE_PX - 7}"/></a>'
+        for index, mark in enumerate(parked[:3])
+    )
     if not parked:
         return ""
-    words = parked[0].name if len(parked) == 1 else f"{len(parked)} silent" if all(
-        mark.standing is Standing.NO_READING for mark in parked) else f"{len(parked)} unplaced"
+    words = (
+        parked[0].name
+        if len(parked) == 1
+        else f"{len(parked)} silent"
+        if all(mark.standing is Standing.NO_READING for mark in parked)
+        else f"{len(parked)} unplaced"
+    )
     return f'<g class="rail-gutter">{drawn}<text x="0" y="{BASE_PX - 20}">{escape(words)}</text></g>'
 
 
@@ -104,10 +121,18 @@ def _named_marks(placed: Sequence[Mark]) -> str:
         anchor = "end" if x > 88 else "start" if x < 24 else "middle"
         level = _free_level(wide, x, len(text) * WIDE_LETTER_PERCENT, anchor)
         fits_narrow = level is not None and _takes(narrow[level], x, len(text) * NARROW_LETTER_PERCENT, anchor)
-        name = "" if level is None else (f'<text class="{"" if fits_narrow else "wide-only"}" x="{x:.1f}%" y="{heights[level]}" '
-                                         f'text-anchor="{anchor}">{escape(text)}</text>')
-        drawn.append(f'<a class="rail-{mark.standing}" href="{escape(mark.href)}"><title>{escape(text)}, {mark.standing.word}</title>'
-                     f'<use href="#{shape_of(mark.standing, is_doubtful=mark.is_doubtful)}" x="{x:.1f}%" y="{BASE_PX - 7}"/>{name}</a>')
+        name = (
+            ""
+            if level is None
+            else (
+                f'<text class="{"" if fits_narrow else "wide-only"}" x="{x:.1f}%" y="{heights[level]}" '
+                f'text-anchor="{anchor}">{escape(text)}</text>'
+            )
+        )
+        drawn.append(
+            f'<a class="rail-{mark.standing}" href="{escape(mark.href)}" aria-label="{escape(text)}, {mark.standing.word}">'
+            f'<use href="#{shape_of(mark.standing, is_doubtful=mark.is_doubtful)}" x="{x:.1f}%" y="{BASE_PX - 7}"/>{name}</a>'
+        )
     return "".join(reversed(drawn))
 
 
@@ -129,6 +154,8 @@ def axis() -> str:
     """The scale under the rails, in words and dB."""
     marks = [(db, f"{'+' if db > 0 else '−' if db < 0 else ''}{abs(db)}") for db in (-4, 4, 8)]
     texts = "".join(f'<text x="{x_percent(db):.2f}%" y="14" text-anchor="middle">{text}</text>' for db, text in marks)
-    return ('<svg class="rail-axis" aria-hidden="true" height="20"><text x="0" y="14" class="wide-only">no reading</text>'
-            f'{texts}<text class="rail-axis-limit" x="{LIMIT_PERCENT:.2f}%" y="14" text-anchor="middle">limit</text>'
-            f'<text x="99%" y="14" text-anchor="end">+{HIGH_DB:g} dB</text></svg>')
+    return (
+        '<svg class="rail-axis" aria-hidden="true" height="20"><text x="0" y="14" class="wide-only">no reading</text>'
+        f'{texts}<text class="rail-axis-limit" x="{LIMIT_PERCENT:.2f}%" y="14" text-anchor="middle">limit</text>'
+        f'<text x="99%" y="14" text-anchor="end">+{HIGH_DB:g} dB</text></svg>'
+    )

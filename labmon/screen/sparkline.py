@@ -1,11 +1,19 @@
-"""The day's margin as a small SVG path, on one dB span for all benches, hanging from the limit line. Pure."""
+"""A row's own rail and the day's margin as one small SVG path, on one dB span for all benches. Pure.
+
+Left part: a tick where a calm bench stands on its rail. Right part: the course of the margin, hanging from the limit
+line. One path a row keeps 200 rows light; the lines behind it are the cell's background.
+"""
 
 from collections.abc import Sequence
 
-from labmon.screen.rail import HIGH_DB, LOW_DB
+from labmon.screen.rail import HIGH_DB, LOW_DB, x_percent
 
 STEP = 0.25
 HEIGHT = int((HIGH_DB - LOW_DB) / STEP)
+POINTS = 48
+RAIL_WIDTH, COURSE_START = 57, 61
+WIDTH = COURSE_START + POINTS
+NO_TICK = "M0 0"
 
 
 def y_of(margin_db: float) -> int:
@@ -13,25 +21,27 @@ def y_of(margin_db: float) -> int:
     return round((HIGH_DB - min(max(margin_db, LOW_DB), HIGH_DB)) / STEP)
 
 
-def path_of(margins_db: Sequence[float | None]) -> str:
-    """Path of equally spaced margins; a missing one breaks the line, a lone one is drawn as a dot."""
+def tick_of(margin_db: float | None) -> str:
+    """The tick of a calm bench on its rail; nothing visible without a margin."""
+    return NO_TICK if margin_db is None else f"M{x_percent(margin_db) * RAIL_WIDTH / 100:.1f} 18v28"
+
+
+def course_of(margins_db: Sequence[float | None]) -> str:
+    """The newest ``POINTS`` equally spaced margins; a missing one breaks the line, a lone one is drawn as a dot."""
+    shown = list(margins_db)[-POINTS:]
     parts: list[str] = []
     previous: int | None = None
-    for index, margin_db in enumerate(margins_db):
+    for index, margin_db in enumerate(shown, COURSE_START + POINTS - len(shown)):
         if margin_db is None or margin_db != margin_db:  # NaN differs from itself
             previous = None
             continue
         y = y_of(margin_db)
-        if previous is None:
-            parts.append(f"M{index} {y}h.5")
-            parts.append(f"L{index} {y}")
-        else:
-            parts.append(f"l1 {y - previous}".replace(" -", "-"))
+        parts.append(
+            f"M{index} {y}h.5"
+            if previous is None
+            else f"L{index} {y}"
+            if parts[-1].startswith("M")
+            else f"l1 {y - previous}".replace(" -", "-")
+        )
         previous = y
     return "".join(parts)
-
-
-def sparkline(margins_db: Sequence[float | None]) -> str:
-    """The SVG of a row; its limit line is the cell's background."""
-    return (f'<svg class="spark" aria-hidden="true" viewBox="0 0 {max(len(margins_db), 1)} {HEIGHT}" preserveAspectRatio="none">'
-            f'<path d="{path_of(margins_db)}"/></svg>')

@@ -28,14 +28,26 @@ class Standing(StrEnum):
         return list(Standing).index(self)
 
     @property
+    def has_shape(self) -> bool:
+        """True where a bench's mark is a shape of its own, not a plain tick."""
+        return self not in {Standing.WITHIN, Standing.NO_LIMIT}
+
+    @property
     def wants_a_look(self) -> bool:
         """True where the bench is named on the rail."""
         return self not in {Standing.WITHIN, Standing.NO_LIMIT, Standing.NEVER_HEARD}
 
 
-WORDS = {Standing.BELOW: "below limit", Standing.NO_READING: "no reading", Standing.UNTRUSTED: "untrusted",
-         Standing.UNDECIDED: "undecided", Standing.THIN: "thin", Standing.WITHIN: "in spec",
-         Standing.NO_LIMIT: "no limit", Standing.NEVER_HEARD: "never heard"}
+WORDS = {
+    Standing.BELOW: "below limit",
+    Standing.NO_READING: "no reading",
+    Standing.UNTRUSTED: "untrusted",
+    Standing.UNDECIDED: "undecided",
+    Standing.THIN: "thin",
+    Standing.WITHIN: "in spec",
+    Standing.NO_LIMIT: "no limit",
+    Standing.NEVER_HEARD: "never heard",
+}
 _BY_WORD = {word: standing for standing, word in WORDS.items()}
 
 
@@ -75,8 +87,12 @@ def lab_sentence(standings: Sequence[Standing], *, unacknowledged: int = 0, thin
 def _bad_parts(counts: Counter[Standing]) -> list[str]:
     below = counts[Standing.BELOW]
     parts = [f"{below} bench{'es' if below > 1 else ''} below {'their' if below > 1 else 'its'} limit"] if below else []
-    for standing, word in ((Standing.THIN, "thin"), (Standing.NO_READING, "silent"), (Standing.UNTRUSTED, "untrusted"),
-                           (Standing.UNDECIDED, "undecided")):
+    for standing, word in (
+        (Standing.THIN, "thin"),
+        (Standing.NO_READING, "silent"),
+        (Standing.UNTRUSTED, "untrusted"),
+        (Standing.UNDECIDED, "undecided"),
+    ):
         if counts[standing]:
             noun = "" if parts else f" bench{'es' if counts[standing] > 1 else ''}"
             parts.append(f"{counts[standing]}{noun} {word}")

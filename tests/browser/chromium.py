@@ -5,11 +5,22 @@ from typing import Any
 
 from playwright.sync_api import Browser, Playwright
 
-FLAGS = ["--no-sandbox", "--disable-gpu", "--disable-background-networking", "--disable-component-update",
-         "--disable-sync", "--disable-default-apps", "--no-first-run", "--disable-extensions",
-         "--disable-domain-reliability", "--disable-client-side-phishing-detection", "--metrics-recording-only",
-         "--no-default-browser-check", "--disable-features=OptimizationHints,MediaRouter,Translate",
-         "--host-resolver-rules=MAP * ~NOTFOUND, EXCLUDE 127.0.0.1, EXCLUDE localhost"]
+FLAGS = [
+    "--no-sandbox",
+    "--disable-gpu",
+    "--disable-background-networking",
+    "--disable-component-update",
+    "--disable-sync",
+    "--disable-default-apps",
+    "--no-first-run",
+    "--disable-extensions",
+    "--disable-domain-reliability",
+    "--disable-client-side-phishing-detection",
+    "--metrics-recording-only",
+    "--no-default-browser-check",
+    "--disable-features=OptimizationHints,MediaRouter,Translate",
+    "--host-resolver-rules=MAP * ~NOTFOUND, EXCLUDE 127.0.0.1, EXCLUDE localhost",
+]
 
 
 def chromium_path() -> str | None:

@@ -30,8 +30,11 @@ def rules_of_bundle(bundle: Path) -> list[str]:
 
 
 def main() -> None:
-    SHEET.write_text("/* Made by tests/browser/plotly_css.py from plotly-cartesian.min.js; MIT, see plotly.LICENSE. */\n"
-                     + "\n".join(rules_of_bundle(BUNDLE)) + "\n")
+    SHEET.write_text(
+        "/* Made by tests/browser/plotly_css.py from plotly-cartesian.min.js; MIT, see plotly.LICENSE. */\n"
+        + "\n".join(rules_of_bundle(BUNDLE))
+        + "\n"
+    )
 
 
 if __name__ == "__main__":

@@ -1,0 +1,155 @@
+"""Experiments: the list, a new one, and one with its limits."""
+
+from django.contrib import messages
+from django.http import HttpRequest, HttpResponse
+from django.shortcuts import get_object_or_404, redirect, render
+from django.utils import timezone
+from django.views.decorators.http import require_http_methods, require_POST, require_safe
+
+from ingest.models import Tap
+from labmon.alarms.queries import alarm_rows
+from labmon.errors import NotAllowed, WriteError
+from labmon.experiments.actions import create_experiment, retire_limit, set_limit
+from labmon.experiments.models import Experiment
+from labmon.experiments.queries import experiment_facts, experiment_rows
+from labmon.people.models import Person, Role
+from labmon.people.rights import Action, may, require, role_of, taps_visible_to
+from labmon.screen.alarm_view import alarm_view
+from labmon.screen.door import for_people, put_refusal, say_refusal
+from labmon.screen.experiment_view import experiment_sentence, experiments_sentence, ladder, limit_view
+from labmon.screen.forms import ExperimentForm, LimitForm
+from labmon.screen.named import visible_experiment
+from labmon.screen.present import age_text
+
+RECENT_ALARMS = 30
+USUAL_SILENCE_S = 60.0
+
+
+@require_safe
+@for_people
+def experiments_page(request: HttpRequest) -> HttpResponse:
+    """All experiments the reader may see."""
+    rows = experiment_rows(request.user)
+    return render(
+        request,
+        "screen/experiments.html",
+        {"rows": rows, "sentence": experiments_sentence(rows), "may_make": bool(_own_taps(request.user))},
+    )
+
+
+@require_http_methods(["GET", "HEAD", "POST"])
+@for_people
+def new_experiment_page(request: HttpRequest) -> HttpResponse:
+    """The form for a new experiment: managers any taps, owners those of their benches."""
+    taps = _own_taps(request.user)
+    if not taps:
+        raise NotAllowed("You may not make an experiment. Ask a bench's owner or a lab manager.")
+    form = ExperimentForm(request.POST or None, taps=list(taps))
+    if request.method == "POST" and form.is_valid():
+        typed = form.cleaned_data
+        try:
+            made = create_experiment(
+                typed["name"],
+                [taps[name] for name in typed["taps"]],
+                by=request.user,
+                no_reading_after_s=typed["no_reading_after_s"],
+                untrusted_after_s=typed["untrusted_after_s"],
+            )
+        except WriteError as error:
+            put_refusal(form, error)
+        else:
+            messages.success(request, f"{made.name} is made. Now set its limits.")
+            return redirect("experiment", experiment_id=made.pk)
+    return render(request, "screen/experiment_new.html", {"form": form}, status=422 if request.method == "POST" else 200)
+
+
+@require_safe
+@for_people
+def experiment_page(request: HttpRequest, experiment_id: int) -> HttpResponse:
+    """One experiment: how it stands, its limits with their history, its alarms."""
+    found = visible_experiment(request.user, experiment_id)
+    return _show(request, found, _limit_form(found) if may(request.user, Action.SET_LIMIT, found) else None)
+
+
+@require_POST
+@for_people
+def set_limit_page(request: HttpRequest, experiment_id: int) -> HttpResponse:
+    """A new version of a limit, or the first."""
+    found = visible_experiment(request.user, experiment_id)
+    require(request.user, Action.SET_LIMIT, found)
+    form = _limit_form(found, request.POST)
+    if form.is_valid():
+        typed = dict(form.cleaned_data)
+        tap = _taps_of(found)[typed.pop("tap")]
+        try:
+            set_limit(found, tap, typed.pop("quantity"), **typed, by=request.user)
+        except WriteError as error:
+            put_refusal(form, error)
+        else:
+            messages.success(request, "The limit is in force from now on.")
+            return redirect("experiment", experiment_id=found.pk)
+    return _show(request, found, form, status=422)
+
+
+@require_POST
+@for_people
+def retire_limit_page(request: HttpRequest, experiment_id: int, limit_id: int) -> HttpResponse:
+    """End a limit; its history stays."""
+    found = visible_experiment(request.user, experiment_id)
+    require(request.user, Action.SET_LIMIT, found)
+    limit = get_object_or_404(found.limits, pk=limit_id)
+    try:
+        retire_limit(limit, by=request.user, reason=request.POST.get("reason", "").strip()[:500])
+    except WriteError as error:
+        say_refusal(request, error)
+    else:
+        messages.success(request, "The limit is retired.")
+    return redirect("experiment", experiment_id=found.pk)
+
+
+def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, status: int = 200) -> HttpResponse:
+    facts = experiment_facts(experiment)
+    now = timezone.now()
+    alarms = [alarm_view(row, now) for row in alarm_rows(request.user, experiment=experiment.pk, limit=RECENT_ALARMS)]
+    taps = list(_taps_of(experiment).values())
+    return render(
+        request,
+        "screen/experiment.html",
+        {
+            "experiment": experiment,
+            "limits": [limit_view(limit) for limit in facts.limits],
+            "taps": taps,
+            "form": form,
+            "sentence": experiment_sentence(experiment.name, facts.limits, alarms),
+            "may_set": form is not None,
+            "may_acknowledge": may(request.user, Action.ACKNOWLEDGE, experiment),
+            "tap_ids": " ".join(str(tap.pk) for tap in taps),
+            "waiting": [view for view in alarms if view.is_waiting],
+            "alarms": [view for view in alarms if not view.is_waiting],
+            "ladder": ladder(),
+            "silence": age_text(experiment.no_reading_after_s or USUAL_SILENCE_S),
+            "untrusted": age_text(experiment.untrusted_after_s),
+        },
+        status=status,
+    )
+
+
+def _limit_form(experiment: Experiment, typed=None) -> LimitForm:
+    return LimitForm(typed, taps=[name for name, tap in _taps_of(experiment).items() if tap.kind != "climate"])
+
+
+def _taps_of(experiment: Experiment) -> dict[str, Tap]:
+    return {
+        f"{tap.station.name}/{tap.name}": tap
+        for tap in experiment.taps.select_related("station").order_by("station__name", "name")
+    }
+
+
+def _own_taps(person: Person) -> dict[str, Tap]:
+    """Taps this person may put into a new experiment."""
+    taps = taps_visible_to(person).select_related("station").order_by("station__name", "name")
+    if role_of(person) is Role.OWNER:
+        taps = taps.filter(station__bench__owner=person)
+    elif role_of(person) is not Role.MANAGER:
+        return {}
+    return {f"{tap.station.name}/{tap.name}": tap for tap in taps}

@@ -1,0 +1,84 @@
+"""The station page."""
+
+from typing import Any
+
+from django.http import HttpRequest, HttpResponse
+from django.shortcuts import render
+from django.utils import timezone
+from django.views.decorators.http import require_safe
+
+from ingest.models import Station
+from labmon.alarms.queries import alarm_rows
+from labmon.benches.queries import StationFacts, station_facts
+from labmon.people.rights import Action, may
+from labmon.screen.alarm_view import alarm_view
+from labmon.screen.door import for_people
+from labmon.screen.named import visible_station
+from labmon.screen.quantity import QUANTITIES, quantities_of
+from labmon.screen.series import history_rows
+from labmon.screen.span import shown_span, ways
+from labmon.screen.station_view import clock_words, station_sentence, tap_view
+
+RECENT_ALARMS = 12
+
+
+@require_safe
+@for_people
+def station_page(request: HttpRequest, station: str) -> HttpResponse:
+    """One bench: how it stands, its alarms, its values, one tap's history, and the facts behind them."""
+    found = visible_station(request.user, station)
+    facts = station_facts(found)
+    now = timezone.now()
+    alarms = [alarm_view(row, now) for row in alarm_rows(request.user, station=found.name, limit=RECENT_ALARMS)]
+    waiting = [view for view in alarms if view.is_waiting]
+    return render(
+        request,
+        "screen/station.html",
+        {
+            "station": found,
+            "facts": facts,
+            "sentence": station_sentence(found.name, facts, len(waiting)),
+            "taps": [tap_view(tap, now) for tap in facts.taps],
+            "clock": clock_words(facts.boots),
+            "waiting": waiting,
+            "alarms": [view for view in alarms if not view.is_waiting],
+            "tap_ids": " ".join(str(tap.id) for tap in facts.taps),
+            "rights": _rights(request, found),
+        }
+        | _shown(request, facts, found, now),
+    )
+
+
+def _rights(request: HttpRequest, station: Station) -> dict[str, bool]:
+    wanted = {
+        "acknowledge": Action.ACKNOWLEDGE,
+        "calibrate": Action.CALIBRATE,
+        "keys": Action.MAKE_STATION_KEY,
+        "import": Action.IMPORT_FILE,
+    }
+    return {name: may(request.user, action, station) for name, action in wanted.items()}
+
+
+def _shown(request: HttpRequest, facts: StationFacts, station: Station, now) -> dict[str, Any]:
+    """Which tap, quantity and span the history shows, and its table."""
+    if not facts.taps:
+        return {"shown": None}
+    by_name = {tap.name: tap for tap in facts.taps}
+    first_light = next((tap for tap in facts.taps if tap.kind != "climate"), facts.taps[0])
+    shown = by_name.get(request.GET.get("tap", ""), first_light)
+    choices = quantities_of(shown.kind)
+    quantity = request.GET.get("quantity", "")
+    quantity = quantity if quantity in choices else choices[0]
+    span = shown_span(request.GET.get("span"), now)
+    tap = station.taps.get(pk=shown.id)
+    is_part = "X-Labmon-Part" in request.headers
+    return {
+        "shown": shown,
+        "quantity": quantity,
+        "quantity_name": QUANTITIES[quantity].name,
+        "unit": QUANTITIES[quantity].unit,
+        "choices": [(name, QUANTITIES[name].name) for name in choices],
+        "span": span,
+        "ways": ways(span.span, now),
+        "rows": [] if is_part else history_rows(tap, quantity, span.span),
+    }

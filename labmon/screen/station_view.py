@@ -1,0 +1,223 @@
+"""A station as its page shows it: one sentence, then taps with their values in words. Pure."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from datetime import datetime
+
+from labmon.benches.queries import NowSample, StationFacts, TapFacts
+from labmon.screen.level_words import level_words
+from labmon.screen.present import (
+    MISSING,
+    age_text,
+    angle_text,
+    count_text,
+    dop_text,
+    er_text,
+    margin_db_text,
+    margin_deg_text,
+    number_text,
+    power_text,
+    temperature_text,
+    time_text,
+)
+from labmon.screen.standing import Standing, standing_of
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Fact:
+    """A name with its value in words; ``is_doubtful`` draws it hollow."""
+
+    name: str
+    text: str
+    is_doubtful: bool = False
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class TapView:
+    """One tap in words."""
+
+    id: int
+    name: str
+    kind: str
+    unit: str
+    standing: Standing
+    values: list[Fact]
+    reasons: list[str]
+    limits: list[str]
+    calibration: list[Fact]
+    unknown_columns: list[str]
+    heard_ms: int | None
+    heard: str
+    measures_light: bool
+    has_stokes: bool
+
+
+def station_sentence(name: str, facts: StationFacts, unacknowledged: int) -> str:
+    """What a person came to know: how its worst tap stands, and whether someone has taken it."""
+    if not facts.taps:
+        return f"{name} has no tap yet."
+    worst = min(facts.taps, key=_place)
+    standing = standing_of(worst.state)
+    tap = f"{name}/{worst.name}"
+    said = {
+        Standing.NEVER_HEARD: f"{tap} has not been heard yet",
+        Standing.NO_READING: f"{tap} has sent no reading for {age_text(worst.silent_s)}",
+        Standing.UNTRUSTED: f"{tap} cannot be trusted now{_because(worst)}",
+        Standing.UNDECIDED: f"{tap} is at the detector's floor, cannot tell",
+        Standing.BELOW: f"{tap} is {_margins(worst, below=True)} below its limit",
+        Standing.THIN: f"{tap} is thin: {_margins(worst)} to its limit",
+        Standing.WITHIN: f"{tap} is {_margins(worst)} inside its limit",
+        Standing.NO_LIMIT: f"{tap} sends readings and has no limit",
+    }[standing]
+    waits = (
+        f" {count_text(unacknowledged, 'alarm')} wait{'s' if unacknowledged == 1 else ''} for someone." if unacknowledged else ""
+    )
+    return f"{said}.{waits}"
+
+
+def tap_view(tap: TapFacts, now: datetime) -> TapView:
+    """One tap in words."""
+    heard_at = tap.last_heard_at
+    return TapView(
+        id=tap.id,
+        name=tap.name,
+        kind=tap.kind,
+        unit=tap.unit,
+        standing=standing_of(tap.state),
+        values=_values(tap),
+        reasons=list(tap.now.trust_reasons) if tap.now else [],
+        limits=[level_words(limit) for limit in tap.limits],
+        calibration=calibration_words(tap),
+        unknown_columns=list(tap.unknown_columns),
+        heard_ms=None if heard_at is None else int(heard_at.timestamp() * 1000),
+        heard=age_text(None if heard_at is None else (now - heard_at).total_seconds()),
+        measures_light=tap.kind != "climate",
+        has_stokes=tap.has_stokes,
+    )
+
+
+def _values(tap: TapFacts) -> list[Fact]:
+    """The newest values; what is untrusted is missing and its last trusted value stands beside, with its time."""
+    sample = tap.now
+    if sample is None:
+        return []
+    air = [
+        Fact(name=name, text=text)
+        for name, text, value in (
+            ("Temperature", temperature_text(sample.temperature_c), sample.temperature_c),
+            ("Humidity", number_text(sample.humidity_pct, 1, "%"), sample.humidity_pct),
+            ("Pressure", number_text(sample.pressure_hpa, 1, "hPa"), sample.pressure_hpa),
+        )
+        if value is not None
+    ]
+    return air if tap.kind == "climate" else [*_light_values(sample, is_old=tap.is_silent), *_margin_values(tap), *air]
+
+
+def _light_values(sample: NowSample, *, is_old: bool) -> list[Fact]:
+    def doubtful(quantity: str) -> bool:
+        return is_old or sample.trust_by_quantity.get(quantity, {}).get("trust") == "doubtful"
+
+    er = f"{'≤' if sample.is_upper_bound else ''}{er_text(sample.er_db, is_lower_bound=sample.is_lower_bound)}"
+    if sample.er_sigma_db is not None:
+        er += f" ± {number_text(sample.er_sigma_db, 2)}"
+    facts = [
+        Fact(name="Extinction ratio", text=er, is_doubtful=doubtful("er_db")),
+        Fact(
+            name="Angle from wanted",
+            text=angle_text(sample.angle_deg, is_upper_bound=sample.angle_is_upper_bound),
+            is_doubtful=doubtful("angle_deg"),
+        ),
+        Fact(name="Power", text=power_text(sample.power_w), is_doubtful=doubtful("power_w")),
+    ]
+    if sample.sop is not None:
+        facts += [
+            Fact(name="Degree of polarization", text=dop_text(sample.dop), is_doubtful=doubtful("dop")),
+            Fact(name="Azimuth, ellipticity", text=f"{angle_text(sample.azimuth_deg)}, {angle_text(sample.ellipticity_deg)}"),
+        ]
+    names = {
+        "er_db": ("extinction ratio", er_text),
+        "angle_deg": ("angle", angle_text),
+        "dop": ("DOP", dop_text),
+        "power_w": ("power", power_text),
+    }
+    return facts + [
+        Fact(
+            name=f"Last trusted {names[quantity][0]}",
+            text=f"{names[quantity][1](last['value'])} at {time_text(_moment(last['at']))}",
+            is_doubtful=True,
+        )
+        for quantity, last in (sample.last_trusted or {}).items()
+        if quantity in names and getattr(sample, quantity) is None and last
+    ]
+
+
+def _margin_values(tap: TapFacts) -> list[Fact]:
+    if tap.margin is None:
+        return []
+    return [Fact(name="Margin", text=_margins(tap, signed=True), is_doubtful=tap.is_silent)]
+
+
+def _margins(tap: TapFacts, *, below: bool = False, signed: bool = False) -> str:
+    """Both margins, degrees first; ``below`` drops the sign, for the word says it."""
+    margin = tap.margin
+    if margin is None:
+        return MISSING
+    texts = [
+        margin_deg_text(margin.margin_deg, is_bound=margin.is_bound),
+        margin_db_text(margin.margin_db, is_bound=margin.is_bound),
+    ]
+    known = [text for text, value in zip(texts, (margin.margin_deg, margin.margin_db), strict=True) if value is not None]
+    joined = " (".join(known) + (")" if len(known) == 2 else "") if known else MISSING
+    if below:
+        return joined.replace("−", "")
+    return joined if signed else joined.replace("+", "")
+
+
+def _because(tap: TapFacts) -> str:
+    reasons = list(tap.now.trust_reasons) if tap.now else []
+    return f": {', '.join(reasons)}" if reasons else ""
+
+
+def _place(tap: TapFacts) -> tuple[int, float]:
+    margin = tap.margin.margin_db if tap.margin is not None and tap.margin.margin_db is not None else float("inf")
+    standing = standing_of(tap.state)
+    return (99 if tap.kind == "climate" and standing is Standing.NO_LIMIT else standing.rank), margin
+
+
+def calibration_words(tap: TapFacts) -> list[Fact]:
+    """The version in force, each set field in words."""
+    version = tap.calibration
+    if version is None:
+        return []
+    unit = "W" if tap.unit == "dBm" else tap.unit
+    facts = [
+        ("In force since", time_text(version.valid_from)),
+        ("Zero of port 1", number_text(version.zero1, 9, unit)),
+        ("Zero of port 2", number_text(version.zero2, 9, unit)),
+        ("Gain of port 1 over port 2", number_text(version.gain_ratio, 4)),
+        ("Floor (1 σ) of port 1", number_text(version.floor1, 9, unit)),
+        ("Floor (1 σ) of port 2", number_text(version.floor2, 9, unit)),
+        ("Saturation of port 1", number_text(version.saturation1, 6, unit)),
+        ("Saturation of port 2", number_text(version.saturation2, 6, unit)),
+    ]
+    if tap.kind == "stokes":
+        wanted = ", ".join(number_text(part, 3) for part in version.wanted_state) if version.wanted_state else "not set"
+        facts = [facts[0], ("Wanted state (s1, s2, s3)", wanted), ("Handedness as sent", version.handedness)]
+    else:
+        facts.append(("Wanted port", str(version.wanted_port)))
+    return [Fact(name=name, text=_trimmed(text)) for name, text in facts]
+
+
+def _trimmed(text: str) -> str:
+    """Without zeros behind the last digit that says something."""
+    number, gap, unit = text.partition("\N{NO-BREAK SPACE}")
+    return (number.rstrip("0").rstrip(".") if "." in number else number) + gap + unit
+
+
+def clock_words(boots: Sequence[object]) -> list[str]:
+    """What the newest boot's clock is worth, in words; nothing when it is good."""
+    return [boot.clock_fault for boot in boots[:1] if boot.clock_fault]
+
+
+def _moment(value: object) -> datetime | None:
+    return datetime.fromisoformat(value.replace("Z", "+00:00")) if isinstance(value, str) else value

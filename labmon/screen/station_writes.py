@@ -1,0 +1,96 @@
+"""Writes from the station page: keys and calibrations."""
+
+from datetime import UTC
+
+from django.contrib import messages
+from django.http import Http404, HttpRequest, HttpResponse
+from django.shortcuts import redirect, render
+from django.utils import timezone
+from django.views.decorators.cache import never_cache
+from django.views.decorators.http import require_http_methods, require_POST
+
+from labmon.benches.actions import make_bench_key, revoke_bench_key
+from labmon.benches.calibration import calibration_history, set_calibration
+from labmon.errors import WriteError
+from labmon.people.rights import Action, require
+from labmon.screen.door import for_people, put_refusal, say_refusal
+from labmon.screen.forms import CalibrationForm
+from labmon.screen.named import visible_station, visible_tap
+from labmon.screen.present import time_text
+
+
+@require_POST
+@never_cache
+@for_people
+def make_key(request: HttpRequest, station: str) -> HttpResponse:
+    """A new key, shown on this answer and never again."""
+    found = visible_station(request.user, station)
+    require(request.user, Action.MAKE_STATION_KEY, found)
+    _, key = make_bench_key(found, by=request.user)
+    return render(
+        request,
+        "screen/key_once.html",
+        {
+            "key": key,
+            "name": found.name,
+            "station": found,
+            "address": request.build_absolute_uri("/api/v1/readings"),
+            "tap": found.taps.order_by("pk").first(),
+        },
+    )
+
+
+@require_POST
+@for_people
+def revoke_key(request: HttpRequest, station: str, key_id: int) -> HttpResponse:
+    """End a key of this station now."""
+    found = visible_station(request.user, station)
+    require(request.user, Action.MAKE_STATION_KEY, found)
+    if not found.keys.filter(pk=key_id).exists():
+        raise Http404("This station has no such key.")
+    try:
+        revoke_bench_key(key_id, by=request.user)
+    except WriteError as error:
+        say_refusal(request, error)
+    else:
+        messages.success(request, "The key is revoked. Readings sent with it are refused from now on.")
+    return redirect("station", station=found.name)
+
+
+@require_http_methods(["GET", "HEAD", "POST"])
+@for_people
+def calibration_page(request: HttpRequest, station: str, tap: str) -> HttpResponse:
+    """The versions of a tap's calibration, and the form for a new one."""
+    found = visible_tap(request.user, station, tap)
+    require(request.user, Action.CALIBRATE, found)
+    initial = {"valid_from": timezone.now().strftime("%Y-%m-%d %H:%M")}
+    form = CalibrationForm(request.POST or None, kind=found.kind, initial=initial)
+    if request.method == "POST" and form.is_valid():
+        try:
+            set_calibration(
+                found,
+                form.cleaned_data["valid_from"].astimezone(UTC),
+                form.changes(),
+                by=request.user,
+                reason=form.cleaned_data["reason"],
+            )
+        except WriteError as error:
+            put_refusal(form, error)
+        else:
+            messages.success(
+                request, f"The new calibration of {station}/{tap} holds from {time_text(form.cleaned_data['valid_from'])}."
+            )
+            return redirect("station", station=station)
+    status = 422 if request.method == "POST" else 200
+    return render(
+        request,
+        "screen/calibration.html",
+        {
+            "station": found.station,
+            "tap": found,
+            "form": form,
+            "versions": calibration_history(found),
+            "unit": "W" if found.unit == "dBm" else found.unit,
+        },
+        status=status,
+    )

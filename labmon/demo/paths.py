@@ -1,6 +1,7 @@
 """What a bench's fibre does to the light: PM cords and plain fibre, their temperature, walk, touches and ageing."""
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -127,6 +128,7 @@ def _nightly_walk(bench: str, at_s: FloatArray, rad_per_root_hour: float, ledger
     return walk
 
 
+@lru_cache(maxsize=64)
 def _day_path(bench: str, day: int, rad_per_root_hour: float, seed: int, *, fails: bool) -> FloatArray:
     """A day's walk in steps of a minute, shape (1441, 2): drawn again until it ends as the ledger says."""
     step_count = int(DAY_S / _WALK_STEP_S)

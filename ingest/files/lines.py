@@ -5,6 +5,7 @@ import gzip
 import io
 import zlib
 from collections.abc import Iterator
+from contextlib import suppress
 from dataclasses import dataclass
 from typing import BinaryIO
 
@@ -67,7 +68,8 @@ def text_lines(raw: BinaryIO, encoding: str) -> Iterator[tuple[int, str]]:
     except UnicodeError as fault:
         raise FileFault(f"after line {number} the text is not {encoding} ({fault}); say the right file.encoding") from fault
     finally:
-        text.detach()
+        with suppress(ValueError):                 # the file may be closed already
+            text.detach()                          # else the wrapper would close it
 
 
 def cells_of(text: str, delimiter: str) -> list[str]:

@@ -103,7 +103,7 @@ BENCHES = (
     BenchPlan(name="S1", room="South Hall", experiment="Cold-atom trap light", owner=MANAGER, experiment_owner=RESEARCHER,
               tap="trap-light", laser="S1 laser", power_w=2.0e-3,
               path=_pm(25.6, 28.4, length_m=5.0, wavelength_m=780e-9, phase0_rad=0.4, lag_s=90.0),
-              head=Ports(unit="mW", units_per_w=1e3, zero1=0.0021, zero2=0.0004, noise1=2e-4, noise2=8e-6, top=20.0,
+              head=Ports(unit="mW", units_per_w=1e3, zero1=0.0008, zero2=0.00008, noise1=2e-4, noise2=8e-6, top=20.0,
                          leakage=((0.97, 0.0005), (0.0006, 0.96))),
               limit=LimitPlan(quantity="er_db", alarm=20.0, warning=23.0), firmware="bench pc 1.2", flicker=0.004),
     BenchPlan(name="S2", room="South Hall", experiment="Gyro coil ageing", owner=STUDENT, experiment_owner=STUDENT,

@@ -51,7 +51,8 @@ def db_from_ratio(ratio: Any) -> FloatArray:
 
 def ratio_from_db(level_db: Any) -> FloatArray:
     """Power ratio of a level in dB."""
-    return np.power(10.0, np.asarray(level_db, dtype=np.float64) / 10.0)
+    with np.errstate(over="ignore"):
+        return np.power(10.0, np.asarray(level_db, dtype=np.float64) / 10.0)
 
 
 def er_db_from_leak(leak: Any) -> FloatArray:
@@ -69,7 +70,8 @@ def angle_rad_from_er_db(er_db: Any) -> FloatArray:
 
     Negative ER gives angles above pi/2; 0 at +inf, pi at -inf; NaN for NaN.
     """
-    return 2.0 * np.arctan(np.power(10.0, -np.asarray(er_db, dtype=np.float64) / 20.0))
+    with np.errstate(over="ignore"):
+        return 2.0 * np.arctan(np.power(10.0, -np.asarray(er_db, dtype=np.float64) / 20.0))
 
 
 def er_db_from_angle_rad(angle_rad: Any) -> FloatArray:

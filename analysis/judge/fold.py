@@ -13,7 +13,7 @@ import numpy as np
 from analysis.judge.rule import LimitRule
 from analysis.judge.seconds import Seconds, Status, statuses
 from analysis.judge.timer import Timer
-from analysis.quantities import US_PER_S, IntArray
+from analysis.quantities import US_PER_S, FloatArray, IntArray
 
 HOLD_INTERVALS = 3.0
 
@@ -66,16 +66,26 @@ class FoldState:
 
     def as_json(self) -> dict[str, Any]:
         return {
-            "at_us": self.at_us, "level": self.level and self.level.value, "began_us": self.began_us, "raised_us": self.raised_us,
-            "alarm": self.alarm_timer.as_json(), "warning": self.warning_timer.as_json(), "clear": self.clear_timer.as_json(),
+            "at_us": self.at_us,
+            "level": self.level and self.level.value,
+            "began_us": self.began_us,
+            "raised_us": self.raised_us,
+            "alarm": self.alarm_timer.as_json(),
+            "warning": self.warning_timer.as_json(),
+            "clear": self.clear_timer.as_json(),
         }
 
     @classmethod
     def from_json(cls, values: dict[str, Any]) -> "FoldState":
         level = values["level"]
         return cls(
-            values["at_us"], Level(level) if level else None, values["began_us"], values["raised_us"],
-            Timer.from_json(values["alarm"]), Timer.from_json(values["warning"]), Timer.from_json(values["clear"]),
+            values["at_us"],
+            Level(level) if level else None,
+            values["began_us"],
+            values["raised_us"],
+            Timer.from_json(values["alarm"]),
+            Timer.from_json(values["warning"]),
+            Timer.from_json(values["clear"]),
         )
 
     def copy(self) -> "FoldState":
@@ -92,14 +102,14 @@ def start_state(before: FoldState | None = None) -> FoldState:
     return FoldState(before.at_us, before.level, before.began_us, before.raised_us)
 
 
-def fold(rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: float) -> tuple[FoldState, list[Event]]:
+def fold(rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: FloatArray | float) -> tuple[FoldState, list[Event]]:
     """Fold seconds (or plain samples) that follow ``state``.
 
     Args:
         rule: The limit in force for all of them; its quantity must be that of ``seconds``.
         state: Left unchanged.
-        interval_s: The tap's nominal interval between readings, s: breaks of up to three of them do not reset a delay
-            (of three entries, where those are longer).
+        interval_s: The tap's nominal interval between readings, s, one or one per entry: breaks of up to three of them do
+            not reset a delay (of three entries, where those are longer).
     Returns:
         The state after the last second, and the events in order of time. Cutting ``seconds`` anywhere and folding the
         parts one after the other gives the same.
@@ -112,19 +122,20 @@ def fold(rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: float)
     return step.state, step.events
 
 
-def hold_us_of(seconds: Seconds, interval_s: float) -> int:
-    """Longest break between entries that does not reset a delay, µs."""
-    return round(HOLD_INTERVALS * max(interval_s, seconds.entry_s) * US_PER_S)
+def hold_us_of(seconds: Seconds, interval_s: FloatArray | float) -> IntArray:
+    """Longest break before each entry that does not reset a delay, µs, shape (M,); an unknown interval (NaN) counts as none."""
+    longest_s = HOLD_INTERVALS * np.fmax(interval_s, seconds.entry_s)
+    return np.broadcast_to(np.round(longest_s * US_PER_S).astype(np.int64), len(seconds))
 
 
 class _Step:
     """One run of the fold over an array of seconds."""
 
-    def __init__(self, rule: LimitRule, state: FoldState, hold_us: int) -> None:
+    def __init__(self, rule: LimitRule, state: FoldState, hold_us: IntArray) -> None:
         self.rule, self.state, self.hold_us, self.events = rule, state, hold_us, list[Event]()
         self.on_us, self.off_us = round(rule.on_delay_s * US_PER_S), round(rule.off_delay_s * US_PER_S)
         sign = -1.0 if rule.quantity.is_bad_above else 1.0
-        outer = rule.alarm if rule.warning is None else rule.warning
+        outer = rule.alarm if rule.warning is None else sign * max(sign * rule.alarm, sign * rule.warning)
         self.clear_level = outer + sign * rule.deadband
 
     def run(self, seconds: Seconds) -> None:
@@ -140,7 +151,9 @@ class _Step:
                 position = _next(interesting, position, end)
                 if position == end:
                     break
-            self._one(int(at_us[position]), below_alarm[position], below_warning[position], clear[position], float(shown[position]))
+            hold_us = int(self.hold_us[position])
+            statuses_here = (below_alarm[position], below_warning[position], clear[position])
+            self._one(int(at_us[position]), hold_us, *statuses_here, float(shown[position]))
             position += 1
         self.state.at_us = int(at_us[-1])
 
@@ -148,18 +161,18 @@ class _Step:
         state = self.state
         return state.level is None and state.alarm_timer.first_us is None and state.warning_timer.first_us is None
 
-    def _one(self, at_us: int, to_alarm: int, to_warning: int, to_clear: int, value: float) -> None:
+    def _one(self, at_us: int, hold_us: int, to_alarm: int, to_warning: int, to_clear: int, value: float) -> None:
         state = self.state
         if state.level is not Level.ALARM:
-            held_us = state.alarm_timer.step(at_us, _is(Status.BELOW, to_alarm), self.hold_us)
+            held_us = state.alarm_timer.step(at_us, _is(Status.BELOW, to_alarm), hold_us)
             if held_us is not None and held_us >= self.on_us:
                 self._raise(Level.ALARM, at_us, state.alarm_timer, value)
         if state.level is None and self.rule.warning is not None:
-            held_us = state.warning_timer.step(at_us, _is(Status.BELOW, to_warning), self.hold_us)
+            held_us = state.warning_timer.step(at_us, _is(Status.BELOW, to_warning), hold_us)
             if held_us is not None and held_us >= self.on_us:
                 self._raise(Level.WARNING, at_us, state.warning_timer, value)
         if state.level is not None:
-            held_us = state.clear_timer.step(at_us, _is(Status.INSIDE, to_clear), self.hold_us)
+            held_us = state.clear_timer.step(at_us, _is(Status.INSIDE, to_clear), hold_us)
             if held_us is not None and held_us >= self.off_us:
                 self._return(at_us, value)
 
@@ -224,7 +237,9 @@ def episodes_of(events: Iterable[Event]) -> list[Episode]:
             episodes.append(Episode(event.began_us, event.at_us, event.level, alarm_us, None, None))
             continue
         if not episodes or episodes[-1].returned_us is not None:
-            raise ValueError(f"{event.kind.value} at {event.at_us} without an open episode; give the events from the fold's start.")
+            raise ValueError(
+                f"{event.kind.value} at {event.at_us} without an open episode; give the events from the fold's start."
+            )
         last = episodes[-1]
         if event.kind is EventKind.ROSE:
             episodes[-1] = Episode(last.began_us, last.raised_us, Level.ALARM, event.at_us, None, None)

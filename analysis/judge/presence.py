@@ -52,7 +52,10 @@ def presences(
     shown_us = SHOWN_AFTER_INTERVALS * np.asarray(interval_s) * US_PER_S
     called_us = np.maximum(np.asarray(call_after_s) * US_PER_S, shown_us)
     late, silent = silence_us > shown_us, silence_us >= called_us
-    return [Presence.SILENT if s else Presence.LATE if l else Presence.PRESENT for s, l in zip(silent & late, late, strict=True)]
+    return [
+        Presence.SILENT if called else Presence.LATE if shown else Presence.PRESENT
+        for called, shown in zip(silent & late, late, strict=True)
+    ]
 
 
 def cadence_s(arrival_us: IntArray, declared_s: float | None = None) -> float | None:

@@ -68,7 +68,9 @@ _ARRAYS = ("at_us", "worst", "best_sure", "mean", "is_judged", "is_doubtful", "c
 
 def concatenate(parts: Sequence[Seconds]) -> Seconds:
     """Spans one after the other."""
-    return Seconds(parts[0].quantity, parts[0].entry_s, *(np.concatenate([getattr(part, name) for part in parts]) for name in _ARRAYS))
+    return Seconds(
+        parts[0].quantity, parts[0].entry_s, *(np.concatenate([getattr(part, name) for part in parts]) for name in _ARRAYS)
+    )
 
 
 def seconds_of(reduced: Reduced, quantity: Quantity) -> Seconds:
@@ -130,15 +132,32 @@ def _grouped(reduced: Reduced, quantity: Quantity, first: IntArray, entry_s: flo
     low = np.where(open_below, -np.inf, goodness)
     if not len(first):
         empty = np.zeros(0)
-        return Seconds(quantity, entry_s, np.zeros(0, np.int64), empty, empty, empty, np.zeros(0, bool), np.zeros(0, bool), np.zeros(0, np.int64))
+        return Seconds(
+            quantity,
+            entry_s,
+            np.zeros(0, np.int64),
+            empty,
+            empty,
+            empty,
+            np.zeros(0, bool),
+            np.zeros(0, bool),
+            np.zeros(0, np.int64),
+        )
     judged = np.add.reduceat(usable.astype(np.int64), first)
     is_judged = judged > 0
     worst = np.where(is_judged, np.minimum.reduceat(np.where(usable, high, np.inf), first), np.nan)
     best = np.where(is_judged, np.maximum.reduceat(np.where(usable, low, -np.inf), first), np.nan)
     trusted = np.add.reduceat((usable & (trust == Trust.TRUSTED)).astype(np.int64), first)
     return Seconds(
-        quantity, entry_s, reduced.at_us[first], sign * worst, sign * best, _means(reduced, quantity, value, usable, first, judged),
-        is_judged, is_judged & (trusted == 0), np.diff(first, append=len(value)),
+        quantity,
+        entry_s,
+        reduced.at_us[first],
+        sign * worst,
+        sign * best,
+        _means(reduced, quantity, value, usable, first, judged),
+        is_judged,
+        is_judged & (trusted == 0),
+        np.diff(first, append=len(value)),
     )
 
 

@@ -7,7 +7,7 @@ from typing import Any
 from analysis.judge.fold import hold_us_of
 from analysis.judge.seconds import Seconds
 from analysis.judge.timer import Timer
-from analysis.quantities import US_PER_S
+from analysis.quantities import US_PER_S, FloatArray
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -49,7 +49,7 @@ class UntrustedState:
 
 
 def fold_untrusted(
-    rule: UntrustedRule, state: UntrustedState, seconds: Seconds, interval_s: float
+    rule: UntrustedRule, state: UntrustedState, seconds: Seconds, interval_s: FloatArray | float
 ) -> tuple[UntrustedState, list[UntrustedEvent]]:
     """Fold seconds (or plain samples) that follow ``state``; a bound that cannot decide is not untrusted.
 
@@ -58,11 +58,11 @@ def fold_untrusted(
     """
     state = UntrustedState.from_json(state.as_json())
     events: list[UntrustedEvent] = []
-    hold_us = hold_us_of(seconds, interval_s)
+    holds_us = hold_us_of(seconds, interval_s)
     on_us, off_us = round(rule.on_delay_s * US_PER_S), round(rule.off_delay_s * US_PER_S)
     if not state.is_open and not state.bad_timer.is_running and seconds.is_judged.all():
         return state, events
-    for at_us, is_judged in zip(seconds.at_us.tolist(), seconds.is_judged.tolist(), strict=True):
+    for at_us, is_judged, hold_us in zip(seconds.at_us.tolist(), seconds.is_judged.tolist(), holds_us.tolist(), strict=True):
         if not state.is_open:
             timer = state.bad_timer
             held_us = timer.step(at_us, not is_judged, hold_us)

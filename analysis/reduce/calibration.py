@@ -73,7 +73,9 @@ def _stacked(name: str, values: list[Any]) -> Any:
         return None
     rows = [_WHEN_NONE[name] if value is None else np.asarray(value, dtype=np.float64) for value in values]
     if any(row.shape != _SHAPES[name] for row in rows):
-        raise ValueError(f"{name} has shapes {sorted({row.shape for row in rows})}; stack takes single versions of shape {_SHAPES[name]}.")
+        raise ValueError(
+            f"{name} has shapes {sorted({row.shape for row in rows})}; stack takes single versions of shape {_SHAPES[name]}."
+        )
     return np.stack(rows)
 
 

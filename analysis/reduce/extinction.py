@@ -60,8 +60,8 @@ def extinction(
     wanted_sigma, other_sigma = np.broadcast_to(wanted_sigma, count), np.broadcast_to(other_sigma, count)
     finite = np.isfinite(wanted) & np.isfinite(other)
     is_dark = (np.abs(wanted) <= DARK_SIGMA * wanted_sigma) & (np.abs(other) <= DARK_SIGMA * other_sigma)
-    sees_wanted = (wanted > 0.0) & (wanted >= DETECTION_SIGMA * wanted_sigma)
-    sees_other = (other > 0.0) & (other >= DETECTION_SIGMA * other_sigma)
+    sees_wanted = finite & (wanted > 0.0) & (wanted >= DETECTION_SIGMA * wanted_sigma)
+    sees_other = finite & (other > 0.0) & (other >= DETECTION_SIGMA * other_sigma)
     is_lower = sees_wanted & ~sees_other & (other_sigma > 0.0) & (other >= -NEGATIVE_SIGMA * other_sigma) & ~is_dark
     is_upper = sees_other & ~sees_wanted & (wanted_sigma > 0.0) & (wanted >= -NEGATIVE_SIGMA * wanted_sigma) & ~is_dark
     is_value = sees_wanted & sees_other & ~is_dark
@@ -76,15 +76,24 @@ def extinction(
         top[~has_ratio] = bottom[~has_ratio] = np.nan
     er_db = 10.0 * np.log10(top / bottom)
     reasons = marked(
-        count, (is_lower | is_upper, Reason.FLOOR), (is_dark, Reason.DARK),
-        (~has_ratio & ~is_dark & finite, Reason.NEGATIVE), (~finite, Reason.UNDEFINED),
+        count,
+        (is_lower | is_upper, Reason.FLOOR),
+        (is_dark, Reason.DARK),
+        (~has_ratio & ~is_dark & finite, Reason.NEGATIVE),
+        (~finite, Reason.UNDEFINED),
     )
-    return Extinction(er_db, _sigma_db(wanted, other, wanted_sigma, other_sigma, covariance, is_value), is_lower, is_upper, reasons)
+    return Extinction(
+        er_db, _sigma_db(wanted, other, wanted_sigma, other_sigma, covariance, is_value), is_lower, is_upper, reasons
+    )
 
 
 def _sigma_db(
-    wanted: FloatArray, other: FloatArray, wanted_sigma: FloatArray, other_sigma: FloatArray,
-    covariance: FloatArray | float, is_value: BoolArray,
+    wanted: FloatArray,
+    other: FloatArray,
+    wanted_sigma: FloatArray,
+    other_sigma: FloatArray,
+    covariance: FloatArray | float,
+    is_value: BoolArray,
 ) -> FloatArray:
     """First-order uncertainty of the decibel ratio (F-05), dB; NaN where there is no value or no known noise."""
     is_known = is_value & ((wanted_sigma > 0.0) | (other_sigma > 0.0))

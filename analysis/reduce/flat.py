@@ -46,7 +46,11 @@ class FlatState:
 def start_flat(taps: int, channels: int) -> FlatState:
     """State before the first reading."""
     shape = (taps, channels)
-    return FlatState(np.full(shape, np.nan), *(np.zeros(shape, np.int64), np.full(shape, np.inf)), *(np.zeros(shape, np.int64) for _ in range(3)))
+    return FlatState(
+        np.full(shape, np.nan),
+        *(np.zeros(shape, np.int64), np.full(shape, np.inf)),
+        *(np.zeros(shape, np.int64) for _ in range(3)),
+    )
 
 
 def flat_from_json(taps: Sequence[Any], channels: int) -> FlatState:
@@ -117,7 +121,9 @@ def _trace(value: FloatArray, first: IntArray, tap: IntArray, state: FlatState, 
     ended = np.where(is_move, np.minimum(run_before, FLAT_AFTER), 0)
     large = is_move & (change > STEP_ROUNDING * step)
     return _Trace(
-        value, run, step,
+        value,
+        run,
+        step,
         _running_sum(ended, first, tap, state.pairs[:, channel]),
         _running_sum(is_move, first, tap, state.moves[:, channel]),
         _running_sum(large, first, tap, state.large_moves[:, channel]),
@@ -139,7 +145,7 @@ def _running_minimum(amount: FloatArray, first: IntArray, tap: IntArray, at_star
         owner = tap[index]
         if amount[index] < lowest[owner]:
             lowest[owner] = amount[index]
-            result[index:ends[owner]] = amount[index]
+            result[index : ends[owner]] = amount[index]
     return result
 
 

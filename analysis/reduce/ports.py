@@ -6,8 +6,15 @@ from typing import Any
 
 import numpy as np
 
-from analysis.quantities import DB_PER_NEPER_OF_POWER, BoolArray, FloatArray, angle_rad_from_er_db, linear_from_raw, watts_per_unit
 from analysis.judge.rule import Quantity
+from analysis.quantities import (
+    DB_PER_NEPER_OF_POWER,
+    BoolArray,
+    FloatArray,
+    angle_rad_from_er_db,
+    linear_from_raw,
+    watts_per_unit,
+)
 from analysis.reduce.calibration import TapCalibration, as_optional
 from analysis.reduce.extinction import extinction
 from analysis.reduce.trust import Reason, ReasonArray, marked
@@ -66,7 +73,9 @@ def reduce_dark_port(columns: Columns, unit: str, cal: TapCalibration) -> tuple[
         dark = (dark - leakage[..., 1, 0] * bright) / leakage[..., 1, 1]
         dark_sigma = np.hypot(dark_sigma, leakage[..., 1, 0] * bright_sigma) / np.abs(leakage[..., 1, 1])
     is_saturated = _is_saturated(columns, ((raw_monitor, cal.saturation1), (raw2, cal.saturation2)))
-    fields, reasons = _quantities(PortNets(bright, dark, bright_sigma, dark_sigma, 0.0), unit, cal, is_saturated, is_declared=is_declared)
+    fields, reasons = _quantities(
+        PortNets(bright, dark, bright_sigma, dark_sigma, 0.0), unit, cal, is_saturated, is_declared=is_declared
+    )
     return fields, reasons
 
 
@@ -132,11 +141,16 @@ def _quantities(
         missing = (er_reasons & np.uint32(Reason.NO_BRIGHT)) != 0
         er_reasons[missing] &= ~np.uint32(Reason.UNDEFINED)
     fields = {
-        "wanted_power": wanted, "other_power": other, "power_w": total * scale_w,
-        "er_db": ratio.er_db, "er_sigma_db": ratio.er_sigma_db,
-        "is_lower_bound": ratio.is_lower_bound, "is_upper_bound": ratio.is_upper_bound,
+        "wanted_power": wanted,
+        "other_power": other,
+        "power_w": total * scale_w,
+        "er_db": ratio.er_db,
+        "er_sigma_db": ratio.er_sigma_db,
+        "is_lower_bound": ratio.is_lower_bound,
+        "is_upper_bound": ratio.is_upper_bound,
         "angle_rad": angle_rad_from_er_db(ratio.er_db),
-        "angle_is_upper_bound": ratio.is_lower_bound, "angle_is_lower_bound": ratio.is_upper_bound,
+        "angle_is_upper_bound": ratio.is_lower_bound,
+        "angle_is_lower_bound": ratio.is_upper_bound,
     }
     return fields, {Quantity.ER_DB: er_reasons, Quantity.ANGLE_DEG: er_reasons.copy(), Quantity.POWER_W: power_reasons}
 
@@ -148,6 +162,8 @@ def _by_wanted_port(nets: PortNets, wanted_port: Any) -> tuple[FloatArray, Float
         return wanted, other, wanted_sigma, other_sigma
     is_second = np.asarray(wanted_port) == 2
     return (
-        np.where(is_second, nets.second, nets.first), np.where(is_second, nets.first, nets.second),
-        np.where(is_second, nets.second_sigma, nets.first_sigma), np.where(is_second, nets.first_sigma, nets.second_sigma),
+        np.where(is_second, nets.second, nets.first),
+        np.where(is_second, nets.first, nets.second),
+        np.where(is_second, nets.second_sigma, nets.first_sigma),
+        np.where(is_second, nets.first_sigma, nets.second_sigma),
     )

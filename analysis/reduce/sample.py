@@ -100,12 +100,27 @@ def empty_fields(at_us: IntArray) -> dict[str, Any]:
     """Fields of `Reduced` with nothing measured yet: NaN, False and trust *none*."""
     count = len(at_us)
     nothing, never = np.full(count, np.nan), np.zeros(count, dtype=bool)
-    floats = ("wanted_power", "other_power", "power_w", "er_db", "er_sigma_db", "angle_rad", "polarized_er_db", "dop",
-              "azimuth_rad", "ellipticity_rad", "temperature_c", "humidity_pct", "pressure_hpa")
+    floats = (
+        "wanted_power",
+        "other_power",
+        "power_w",
+        "er_db",
+        "er_sigma_db",
+        "angle_rad",
+        "polarized_er_db",
+        "dop",
+        "azimuth_rad",
+        "ellipticity_rad",
+        "temperature_c",
+        "humidity_pct",
+        "pressure_hpa",
+    )
     bools = ("is_lower_bound", "is_upper_bound", "angle_is_upper_bound", "angle_is_lower_bound")
     return {
-        "at_us": at_us, "sop": None,
-        **dict.fromkeys(floats, nothing), **dict.fromkeys(bools, never),
+        "at_us": at_us,
+        "sop": None,
+        **dict.fromkeys(floats, nothing),
+        **dict.fromkeys(bools, never),
         "trust": {quantity: np.zeros(count, dtype=np.uint8) for quantity in QUANTITIES},
         "reasons": {quantity: np.zeros(count, dtype=np.uint32) for quantity in QUANTITIES},
     }

@@ -6,7 +6,15 @@ from typing import Any, Final
 import numpy as np
 
 from analysis.judge.rule import Quantity
-from analysis.quantities import BoolArray, FloatArray, angle_between_rad, db_from_ratio, sop_from_angles, watts_per_unit, linear_from_raw
+from analysis.quantities import (
+    BoolArray,
+    FloatArray,
+    angle_between_rad,
+    er_db_from_angle_rad,
+    linear_from_raw,
+    sop_from_angles,
+    watts_per_unit,
+)
 from analysis.reduce.calibration import IEEE, TapCalibration
 from analysis.reduce.extinction import extinction
 from analysis.reduce.trust import Reason, ReasonArray, marked
@@ -42,15 +50,20 @@ def reduce_stokes(columns: Columns, unit: str, cal: TapCalibration) -> tuple[dic
     odd_dop = marked(count, (dop > 1.0 + DOP_ROUNDING, Reason.DOP_ABOVE_ONE))
     scale_w = watts_per_unit(unit or "V")
     fields: dict[str, Any] = {
-        "power_w": total * scale_w, "dop": dop, "sop": sop, "azimuth_rad": azimuth_rad, "ellipticity_rad": ellipticity_rad,
+        "power_w": total * scale_w,
+        "dop": dop,
+        "sop": sop,
+        "azimuth_rad": azimuth_rad,
+        "ellipticity_rad": ellipticity_rad,
     }
-    reasons = {
-        Quantity.DOP: shared | odd_dop | marked(count, (np.isnan(dop) & ~lost, Reason.NEGATIVE if "s0" in columns else Reason.UNDEFINED)),
-        Quantity.POWER_W: shared | (np.uint32(Reason.NO_POWER_UNIT) if np.isnan(scale_w) else np.uint32(0))
-        | marked(count, (~np.isfinite(total) & ~lost, Reason.UNDEFINED)),
-    }
+    no_dop = marked(count, (np.isnan(dop) & ~lost, Reason.NEGATIVE if "s0" in columns else Reason.NO_DOP))
+    no_power = marked(
+        count, (np.full(count, np.isnan(scale_w)), Reason.NO_POWER_UNIT), (~np.isfinite(total) & ~lost, Reason.UNDEFINED)
+    )
+    reasons = {Quantity.DOP: shared | odd_dop | no_dop, Quantity.POWER_W: shared | no_power}
     on_axis, axis_reasons = _on_wanted_axis(total, sop, dop, cal)
     reasons |= {quantity: axis_reasons[quantity] | shared | odd_dop for quantity in axis_reasons}
+    reasons[Quantity.ER_DB] |= no_dop
     return fields | on_axis, reasons
 
 
@@ -93,7 +106,7 @@ def _angles_of(sop: FloatArray) -> tuple[FloatArray, FloatArray]:
 def _on_wanted_axis(
     total: FloatArray, sop: FloatArray, dop: FloatArray, cal: TapCalibration
 ) -> tuple[dict[str, Any], dict[Quantity, ReasonArray]]:
-    """Port powers, ER and angle on the axis of the wanted state; F-13."""
+    """Port powers (for a total of 1 where no power was sent), ER and angle on the axis of the wanted state; F-13."""
     count = len(sop)
     if cal.wanted_state is None:
         unset = np.full(count, np.uint32(Reason.NO_WANTED_STATE))
@@ -110,17 +123,20 @@ def _on_wanted_axis(
     unset = marked(count, (is_unset, Reason.NO_WANTED_STATE))
     er_reasons = np.where(is_unset, unset, ratio.reasons)
     fields = {
-        "wanted_power": np.where(np.isfinite(total), wanted, np.nan), "other_power": np.where(np.isfinite(total), other, np.nan),
-        "er_db": ratio.er_db, "er_sigma_db": ratio.er_sigma_db,
-        "is_lower_bound": ratio.is_lower_bound, "is_upper_bound": ratio.is_upper_bound,
-        "angle_rad": angle_rad, "polarized_er_db": _polarized_er_db(angle_rad),
+        "wanted_power": wanted,
+        "other_power": other,
+        "er_db": ratio.er_db,
+        "er_sigma_db": ratio.er_sigma_db,
+        "is_lower_bound": ratio.is_lower_bound,
+        "is_upper_bound": ratio.is_upper_bound,
+        "angle_rad": angle_rad,
+        "polarized_er_db": _polarized_er_db(angle_rad),
     }
     undefined_angle: BoolArray = np.isnan(angle_rad) & ~is_unset
     return fields, {Quantity.ER_DB: er_reasons, Quantity.ANGLE_DEG: unset | marked(count, (undefined_angle, Reason.UNDEFINED))}
 
 
 def _polarized_er_db(angle_rad: FloatArray) -> FloatArray:
-    """ER of the polarized part alone, dB: cot^2 of half the angle; NaN where exactly on the axis or opposite."""
-    half_rad = 0.5 * angle_rad
-    sine, cosine = np.sin(half_rad) ** 2, np.cos(half_rad) ** 2
-    return db_from_ratio(np.where(sine > 0.0, cosine / np.where(sine > 0.0, sine, 1.0), np.nan))
+    """ER of the polarized part alone, dB; NaN where exactly on the axis or opposite to it."""
+    er_db = er_db_from_angle_rad(angle_rad)
+    return np.where(np.isfinite(er_db), er_db, np.nan)

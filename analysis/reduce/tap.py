@@ -35,8 +35,13 @@ class TrustContext:
 
 
 def reduce_tap(
-    kind: str, unit: str, at_us: IntArray, columns: Mapping[str, FloatArray], cal: TapCalibration,
-    *, trust_context: TrustContext | None = None,
+    kind: str,
+    unit: str,
+    at_us: IntArray,
+    columns: Mapping[str, FloatArray],
+    cal: TapCalibration,
+    *,
+    trust_context: TrustContext | None = None,
 ) -> Reduced:
     """Reduce N readings of taps of one kind and unit.
 

@@ -51,6 +51,7 @@ class Reason(IntFlag):
     NO_BRIGHT = 1 << 15
     NO_POWER_UNIT = 1 << 16
     UNDECIDED = 1 << 17
+    NO_DOP = 1 << 18
 
     @property
     def code(self) -> str:
@@ -82,6 +83,7 @@ _WORDS: Final = {
     Reason.NO_BRIGHT: "No bright power known: set the monitor ratio or the bright power",
     Reason.NO_POWER_UNIT: "The tap's unit is not a power",
     Reason.UNDECIDED: "At floor, cannot tell",
+    Reason.NO_DOP: "Degree of polarization not measured",
 }
 
 # Reasons that forbid judging, and those that only cast doubt. The reducers put a reason on a quantity only where it
@@ -90,10 +92,15 @@ UNTRUSTED_REASONS: Final = (
     Reason.SATURATED | Reason.DARK | Reason.NEGATIVE | Reason.FLAT | Reason.TWO_DEVICES | Reason.UNDEFINED | Reason.IMPOSSIBLE
 )
 DOUBTFUL_REASONS: Final = (
-    Reason.DOP_ABOVE_ONE | Reason.CLOCK_FUTURE | Reason.CLOCK_UNSET | Reason.DECLARED_BRIGHT | Reason.OLD_ZERO | Reason.HUM
+    Reason.DOP_ABOVE_ONE
+    | Reason.CLOCK_FUTURE
+    | Reason.CLOCK_UNSET
+    | Reason.DECLARED_BRIGHT
+    | Reason.OLD_ZERO
+    | Reason.HUM
     | Reason.UNDECIDED
 )
-NONE_REASONS: Final = Reason.NO_WANTED_STATE | Reason.NO_BRIGHT | Reason.NO_POWER_UNIT
+NONE_REASONS: Final = Reason.NO_WANTED_STATE | Reason.NO_BRIGHT | Reason.NO_POWER_UNIT | Reason.NO_DOP
 
 
 def trust_of(reasons: ReasonArray) -> TrustArray:

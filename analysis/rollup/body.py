@@ -18,7 +18,12 @@ def bytes_of(cells: Cells) -> bytes:
     """Cells of one tap as compressed bytes; their ``tap`` index is not kept."""
     histogram = cells.er_histogram
     head = _HEADER.pack(_MAGIC, _VERSION, CELL.itemsize, cells.level_s, len(cells), len(histogram.bin))
-    columns = [cells.bucket_us.astype("<i8"), histogram.cell.astype("<u4"), histogram.bin.astype("<i2"), histogram.count.astype("<u4")]
+    columns = [
+        cells.bucket_us.astype("<i8"),
+        histogram.cell.astype("<u4"),
+        histogram.bin.astype("<i2"),
+        histogram.count.astype("<u4"),
+    ]
     # Column by column: like beside like compresses best.
     columns += [np.ascontiguousarray(cells.values[name]) for name in CELL.names or ()]
     return head + zstandard.ZstdCompressor(level=3).compress(b"".join(column.tobytes() for column in columns))
@@ -35,8 +40,10 @@ def cells_from(body: bytes, tap: int = 0) -> Cells:
         raise ValueError(f"{len(body)} bytes are too few for rollup cells; recompute them from the readings.")
     magic, version, size, level_s, count, bins = _HEADER.unpack_from(body)
     if magic != _MAGIC or version != _VERSION or size != CELL.itemsize:
-        raise ValueError(f"rollup cells of version {version} and size {size} are not {_VERSION} and {CELL.itemsize}; recompute them.")
-    raw = zstandard.ZstdDecompressor().decompress(body[_HEADER.size:])
+        raise ValueError(
+            f"rollup cells of version {version} and size {size} are not {_VERSION} and {CELL.itemsize}; recompute them."
+        )
+    raw = zstandard.ZstdDecompressor().decompress(body[_HEADER.size :])
     position = 0
 
     def read(dtype: np.dtype, rows: int) -> np.ndarray:

@@ -14,8 +14,8 @@ from numpy.typing import NDArray
 from analysis.judge.rule import Quantity
 from analysis.quantities import US_PER_S, BoolArray, FloatArray, IntArray
 from analysis.reduce.sample import Reduced
-from analysis.reduce.trust import QUANTITIES, Trust, is_usable
-from analysis.rollup.histogram import Histogram, merge_histograms, histogram_of
+from analysis.reduce.trust import QUANTITIES, UNTRUSTED_REASONS, Reason, Trust, is_usable
+from analysis.rollup.histogram import Histogram, histogram_of, merge_histograms
 
 LEVELS_S: Final = (10, 60, 3600, 86400)
 HOLD_INTERVALS: Final = 3.0
@@ -25,21 +25,45 @@ _MOMENTS: Final = ("power_w", *AIR)
 _SUMS: Final = ("wanted_sum", "other_sum", "angle_deg_sum", "dop_sum")
 _RANGES: Final = ("er_db", "angle_deg", "dop", "power_w", *AIR)
 
-CELL: Final = np.dtype([
-    ("count", "<i8"),
-    ("trusted", "<i8", 4), ("doubtful", "<i8", 4), ("untrusted", "<i8", 4),  # by quantity, in the order of QUANTITIES
-    ("trusted_us", "<i8", 4), ("covered_us", "<i8"),
-    ("lower_bounds", "<i8"), ("upper_bounds", "<i8"),
-    ("er_count", "<i8"), ("angle_count", "<i8"), ("dop_count", "<i8"), ("sop_count", "<i8"),
-    *((name, "<f8") for name in _SUMS),
-    *((f"{name}_{end}", "<f8") for name in _RANGES for end in ("min", "max")),
-    *((f"{name}_count", "<i8") for name in _MOMENTS),
-    *((f"{name}_{part}", "<f8") for name in _MOMENTS for part in ("mean", "m2")),
-    ("sop_sum", "<f8", 3), ("stokes_sum", "<f8", 3),
-])
+CELL: Final = np.dtype(
+    [
+        ("count", "<i8"),
+        ("trusted", "<i8", 4),
+        ("doubtful", "<i8", 4),
+        ("untrusted", "<i8", 4),  # by quantity, in the order of QUANTITIES
+        ("trusted_us", "<i8", 4),
+        ("covered_us", "<i8"),
+        ("lower_bounds", "<i8"),
+        ("upper_bounds", "<i8"),
+        ("er_count", "<i8"),
+        ("angle_count", "<i8"),
+        ("dop_count", "<i8"),
+        ("sop_count", "<i8"),
+        *((name, "<f8") for name in _SUMS),
+        *((f"{name}_{end}", "<f8") for name in _RANGES for end in ("min", "max")),
+        *((f"{name}_count", "<i8") for name in _MOMENTS),
+        *((f"{name}_{part}", "<f8") for name in _MOMENTS for part in ("mean", "m2")),
+        ("sop_sum", "<f8", 3),
+        ("stokes_sum", "<f8", 3),
+    ]
+)
+_SPOILS_DIRECTION: Final = np.uint32(UNTRUSTED_REASONS & ~Reason.UNDEFINED & ~Reason.NEGATIVE)
 _ADDED: Final = (
-    "count", "trusted", "doubtful", "untrusted", "trusted_us", "covered_us", "lower_bounds", "upper_bounds",
-    "er_count", "angle_count", "dop_count", "sop_count", *_SUMS, "sop_sum", "stokes_sum",
+    "count",
+    "trusted",
+    "doubtful",
+    "untrusted",
+    "trusted_us",
+    "covered_us",
+    "lower_bounds",
+    "upper_bounds",
+    "er_count",
+    "angle_count",
+    "dop_count",
+    "sop_count",
+    *_SUMS,
+    "sop_sum",
+    "stokes_sum",
 )
 
 
@@ -155,10 +179,15 @@ def concatenate(parts: Sequence[Cells]) -> Cells:
     histograms = [part.er_histogram for part in parts]
     offsets = np.cumsum([0, *(len(part) for part in parts)])
     joined = Cells(
-        parts[0].level_s, np.concatenate([part.tap for part in parts]), np.concatenate([part.bucket_us for part in parts]),
-        np.concatenate([part.values for part in parts]), Histogram(
+        parts[0].level_s,
+        np.concatenate([part.tap for part in parts]),
+        np.concatenate([part.bucket_us for part in parts]),
+        np.concatenate([part.values for part in parts]),
+        Histogram(
             np.concatenate([one.cell + offset for one, offset in zip(histograms, offsets, strict=False)]),
-            np.concatenate([one.bin for one in histograms]), np.concatenate([one.count for one in histograms])),
+            np.concatenate([one.bin for one in histograms]),
+            np.concatenate([one.count for one in histograms]),
+        ),
     )
     return merge(joined)
 
@@ -256,9 +285,10 @@ def _merge_moments(values: NDArray[Any], old: NDArray[Any], name: str, groups: _
 def _sum_directions(values: NDArray[Any], reduced: Reduced, groups: _Groups) -> None:
     if reduced.sop is None:
         return
-    usable = is_usable(reduced.trust[Quantity.DOP], reduced.dop) & np.isfinite(reduced.sop[:, 0])
+    usable = np.isfinite(reduced.sop[:, 0]) & ((reduced.reasons[Quantity.DOP] & _SPOILS_DIRECTION) == 0)
     sop = np.where(usable[:, None], reduced.sop, 0.0)
-    weight = np.where(usable & np.isfinite(reduced.power_w), reduced.power_w * reduced.dop, np.where(usable, 1.0, 0.0))
+    polarized_w = reduced.power_w * reduced.dop
+    weight = np.where(np.isfinite(polarized_w), polarized_w, 1.0)
     values["sop_count"] = groups.sums(usable)
     values["sop_sum"] = groups.sums(sop)
     values["stokes_sum"] = groups.sums(sop * weight[:, None])

@@ -30,7 +30,11 @@ class Histogram:
     def take(self, index: IntArray) -> "Histogram":
         """Bins of chosen cells (rising ``index``), renumbered 0, 1, …."""
         found = np.searchsorted(index, self.cell)
-        keep = (found < len(index)) & (index[np.minimum(found, max(len(index) - 1, 0))] == self.cell) if len(index) else np.zeros(len(found), bool)
+        keep = (
+            (found < len(index)) & (index[np.minimum(found, max(len(index) - 1, 0))] == self.cell)
+            if len(index)
+            else np.zeros(len(found), bool)
+        )
         return Histogram(found[keep], self.bin[keep], self.count[keep])
 
 

@@ -1,9 +1,13 @@
-"""What holds for every test: UTC, the real engines (engines_plugin.py), no network beyond this machine."""
+"""What holds for every test: UTC, the real engines (engines_plugin.py), collected static files, no network beyond here."""
 
+import fcntl
+import shutil
 import socket
+from pathlib import Path
 
 import pytest
 
+BUILD = Path(__file__).resolve().parents[1] / ".build"
 NEAR = {"localhost", "127.0.0.1", "::1", "0.0.0.0", ""}
 
 
@@ -24,3 +28,26 @@ def no_network():
     with pytest.MonkeyPatch.context() as patch:
         patch.setattr(socket.socket, "connect", near_connect)
         yield
+
+
+@pytest.fixture(autouse=True, scope="session")
+def collected_static():
+    """The static files as they are served, collected once for each state of them, outside any data folder."""
+    from django.core.management import call_command
+    from django.test import override_settings
+
+    from labmon.engines.prepare import static_state
+
+    kept = BUILD / "static"
+    kept.mkdir(parents=True, exist_ok=True)
+    root = kept / static_state()[:16]
+    with (kept / "lock").open("w") as lock:
+        fcntl.flock(lock, fcntl.LOCK_EX)
+        if not root.is_dir():
+            part = kept / "part"
+            shutil.rmtree(part, ignore_errors=True)
+            with override_settings(STATIC_ROOT=part):
+                call_command("collectstatic", verbosity=0, interactive=False)
+            part.rename(root)
+    with override_settings(STATIC_ROOT=root):
+        yield root

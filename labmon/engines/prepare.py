@@ -51,12 +51,11 @@ def migrate(say: Say) -> int:
 
 
 def static_state() -> str:
-    """A digest of every static file's name, size and time."""
+    """A digest of every static file's name and content, and of the storage that renames them."""
     digest = hashlib.sha256(settings.STORAGES["staticfiles"]["BACKEND"].encode())
     for finder in get_finders():
         for name, storage in sorted(finder.list(ignore_patterns=[]), key=lambda found: found[0]):
-            state = Path(storage.path(name)).stat()
-            digest.update(f"{name} {state.st_size} {state.st_mtime_ns}\n".encode())
+            digest.update(name.encode() + b"\0" + hashlib.sha256(Path(storage.path(name)).read_bytes()).digest())
     return digest.hexdigest()
 
 

@@ -13,9 +13,18 @@ class Command(LabCommand):
 
     def add_arguments(self, parser: ArgumentParser) -> None:
         super().add_arguments(parser)
+        parser.add_argument("--static", action="store_true", help="collect static files only; needs no database")
         parser.add_argument("--demo", action="store_true", help="fill it with the invented laboratory")
 
+    def execute(self, *args: Any, **options: Any) -> str | None:
+        """The static files can be collected while an image is built, where no database is."""
+        self.needs_database = not options["static"]
+        return super().execute(*args, **options)
+
     def handle(self, *args: Any, **options: Any) -> None:
+        if options["static"]:
+            prepare.collect_static(self._say)
+            return
         prepare.tell_checks(self._say)
         prepare.migrate(self._say)
         prepare.collect_static(self._say)

@@ -56,11 +56,11 @@ def _note(db: psycopg.Connection[Any], tap_id: int, tap_boot: int, readings: Rea
     held = ranges_of(readings.sequence[readings.sequence != NO_SEQUENCE])
     last_arrival_us = int(readings.arrival_us.max())
     cursor = psycopg.Cursor(db)
+    cursor.execute("UPDATE ingest_tap SET slot_s = %s WHERE id = %s AND slot_s <> %s", (slot_s, tap_id, slot_s))
     cursor.execute(
         "UPDATE ingest_tapboot SET held = held + %s::int8multirange, first_at_us = least(first_at_us, %s), "
         "last_at_us = greatest(last_at_us, %s), lowest_sequence = least(lowest_sequence, %s) WHERE id = %s",
         (multirange_text(held), first_us, last_us, held[0][0] if held else None, tap_boot))
-    cursor.execute("UPDATE ingest_tap SET slot_s = %s WHERE id = %s AND slot_s <> %s", (slot_s, tap_id, slot_s))
     cursor.execute(
         "INSERT INTO ingest_tapheard (tap_id, last_arrival_us, last_at_us) VALUES (%s, %s, %s) "
         "ON CONFLICT (tap_id) DO UPDATE SET last_at_us = greatest(ingest_tapheard.last_at_us, excluded.last_at_us), "

@@ -19,7 +19,7 @@ from ingest.store.columns import NO_SEQUENCE, NO_TIME, Readings
 
 _BATCH = struct.Struct("<2sHIqqHH")  # mark, bytes of names, readings, first sequence, sent_us, columns, what is inside
 _BLOCK = struct.Struct("<2sHII")  # mark, 0, bytes of header, crc of header
-SEQUENCE_STEPS, SEQUENCE_NONE, OWN_SAME, OWN_NONE, TIMED_ALL, TIMED_SOME, HAS_UNKNOWN = (1 << bit for bit in range(7))
+SEQUENCE_STEPS, SEQUENCE_NONE, OWN_SAME, OWN_NONE, SERVER_TIMED, HAS_UNKNOWN = (1 << bit for bit in range(6))
 _SEPARATOR = "\x1f"
 
 
@@ -34,7 +34,7 @@ class Batch:
     sequence: Array
     own_at_us: Array
     sent_us: int
-    is_server_timed: Array
+    is_server_timed: bool
     unknown: Array | None = None
 
 
@@ -54,12 +54,8 @@ def pack_batch(batch: Batch) -> bytes:
         inside |= OWN_NONE
     else:
         parts.append(batch.own_at_us.tobytes())
-    if batch.is_server_timed.any():
-        if batch.is_server_timed.all():
-            inside |= TIMED_ALL
-        else:
-            inside |= TIMED_SOME
-            parts.append(batch.is_server_timed.astype(np.uint8).tobytes())
+    if batch.is_server_timed:
+        inside |= SERVER_TIMED
     parts.append(batch.values.tobytes())
     if batch.unknown is not None:
         inside |= HAS_UNKNOWN
@@ -98,17 +94,12 @@ def unpack_batch(body: bytes, crc: int) -> Batch:
     else:
         own_at_us = np.frombuffer(body, np.int64, count, place)
         place += 8 * count
-    if inside & TIMED_SOME:
-        is_server_timed = np.frombuffer(body, np.bool_, count, place)
-        place += count
-    else:
-        is_server_timed = np.full(count, bool(inside & TIMED_ALL))
     values = np.frombuffer(body, np.float64, width * count, place).reshape(width, count)
     place += 8 * width * count
     unknown = None
     if inside & HAS_UNKNOWN:
         unknown = _objects(msgspec.msgpack.decode(body[place:]))
-    return Batch(at_us, names, values, sequence, own_at_us, sent_us, is_server_timed, unknown)
+    return Batch(at_us, names, values, sequence, own_at_us, sent_us, bool(inside & SERVER_TIMED), unknown)
 
 
 def pack_block(readings: Readings) -> bytes:

@@ -117,7 +117,7 @@ def readings_of_rows(tap: int, rows: list[tuple[Any, ...]], wanted: frozenset[st
         own_at_us=np.concatenate([batch.own_at_us for batch in batches]),
         arrival_us=np.repeat(np.array([row[3] for row in rows], np.int64), counts),
         sent_us=np.repeat(np.array([batch.sent_us for batch in batches], np.int64), counts),
-        is_server_timed=np.concatenate([batch.is_server_timed for batch in batches]),
+        is_server_timed=np.repeat(np.array([batch.is_server_timed for batch in batches], np.bool_), counts),
         unknown=_joined_unknown(batches))
 
 

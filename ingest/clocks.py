@@ -6,12 +6,12 @@ estimated and shown, never applied. Otherwise the whole boot is placed by the se
 """
 
 from dataclasses import dataclass, replace
+from datetime import UTC, datetime
 
 import numpy as np
 
 from ingest.store.columns import NO_TIME, BoolArray, IntArray
 from ingest.times import SECOND_US, rfc3339_of, us_of
-from datetime import UTC, datetime
 
 CLOCK_TOLERANCE_US = 60 * SECOND_US
 EARLIEST_LIVE_US = us_of(datetime(2020, 1, 1, tzinfo=UTC))

@@ -175,10 +175,14 @@ class DoorApplication:
         headers = dict(scope["headers"])
         key = _bearer(headers.get(b"authorization"))
         await self.door.station_of(key)
-        form = form_of(headers.get(b"content-type", b"").decode("latin-1"), headers.get(b"content-encoding", b"").decode("latin-1"))
+        form = form_of(_header(headers, b"content-type"), _header(headers, b"content-encoding"))
         body = await _body(headers, receive)
         remote = scope["client"][0] if scope.get("client") else ""
         return await self.door.take(body, form, key, remote)
+
+
+def _header(headers: dict[bytes, bytes], name: bytes) -> str:
+    return headers.get(name, b"").decode("latin-1")
 
 
 class _Gone(Exception):

@@ -108,14 +108,12 @@ def _is_number(value: Any) -> bool:
 
 def _shown(value: Any) -> str:
     """A value in a message, short."""
-    if isinstance(value, bool):
-        return "true" if value else "false"
+    if value is None or isinstance(value, bool):
+        return {None: "null", True: "true", False: "false"}[value]
     if isinstance(value, float):
-        return "not a number" if math.isnan(value) else ("infinity" if value > 0 else "-infinity") if math.isinf(value) else f"{value:g}"
+        return f"{value:g}".replace("nan", "not a number").replace("inf", "infinity")
     if isinstance(value, int):
         return str(value) if abs(value) < 10**20 else "a huge number"
     if isinstance(value, str):
         return repr(value if len(value) <= 40 else value[:40] + "…")
-    if value is None:
-        return "null"
-    return "a list" if isinstance(value, list) else "a map" if isinstance(value, dict) else "a binary string" if isinstance(value, bytes) else "this"
+    return {list: "a list", dict: "a map", bytes: "a binary string"}.get(type(value), "this")

@@ -148,9 +148,8 @@ class Transaction:
     def _lock_taps(self, taps: list[int]) -> None:
         """Readings known by time are compared with all of a tap: one at a time."""
         fetch(self.db, "SELECT id FROM ingest_tap WHERE id = ANY(%s::bigint[]) ORDER BY id FOR NO KEY UPDATE", taps)
-        self.last_at_us = dict(fetch(self.db, "SELECT tap_id, last_at_us FROM ingest_tapheard WHERE tap_id = ANY(%s::bigint[])", taps))
-        for tap, boot in fetch(self.db, "SELECT tap_id, boot.id FROM ingest_tapboot AS boot JOIN ingest_stationboot AS station "
-                                        "ON station.id = station_boot_id WHERE tap_id = ANY(%s::bigint[]) AND station.boot = ''", taps):
+        self.last_at_us = dict(fetch(self.db, _LAST_TIMES, taps))
+        for tap, boot in fetch(self.db, _BOOTLESS, taps):
             self.bootless.setdefault(tap, set()).add(boot)
 
     def _take(self, body: Body, station_boot: int) -> Answer:
@@ -299,7 +298,8 @@ def note_refused(db: psycopg.Connection[Any], station_id: int, boot: str, lowest
     rows = sorted((row, lowest[tap]) for (tap, _), row in ids.items())
     psycopg.Cursor(db).execute(
         "UPDATE ingest_tapboot SET lowest_sequence = least(lowest_sequence, low) "
-        "FROM unnest(%s::bigint[], %s::bigint[]) AS row(boot, low) WHERE id = boot", [list(column) for column in zip(*rows, strict=True)])
+        "FROM unnest(%s::bigint[], %s::bigint[]) AS row(boot, low) WHERE id = boot",
+        [list(column) for column in zip(*rows, strict=True)])
 
 
 def _has_unnumbered(body: Body, part: Part) -> bool:
@@ -346,6 +346,10 @@ def _merged(gained: list[IntArray]) -> Ranges:
     return ranges_of(np.concatenate(gained)) if gained else []
 
 
+_LAST_TIMES: LiteralString = "SELECT tap_id, last_at_us FROM ingest_tapheard WHERE tap_id = ANY(%s::bigint[])"
+_BOOTLESS: LiteralString = """
+    SELECT tap_id, kept.id FROM ingest_tapboot AS kept JOIN ingest_stationboot AS station ON station.id = station_boot_id
+    WHERE tap_id = ANY(%s::bigint[]) AND station.boot = ''"""
 _INSERT_INBOX: LiteralString = """
     INSERT INTO ingest_inboxrow (tap_id, tap_boot_id, first_sequence, last_sequence, first_at_us, last_at_us, count,
                                  arrival_us, crc, body)
@@ -370,9 +374,11 @@ _UPDATE_CLOCKS: LiteralString = """
 _UPDATE_BOOTS: LiteralString = """
     UPDATE ingest_tapboot SET held = held + gained::int8multirange, first_at_us = least(first_at_us, low_us),
            last_at_us = greatest(last_at_us, high_us), lowest_sequence = least(lowest_sequence, lowest)
-    FROM unnest(%s::bigint[], %s::text[], %s::bigint[], %s::bigint[], %s::bigint[]) AS row(boot, gained, low_us, high_us, lowest)
+    FROM unnest(%s::bigint[], %s::text[], %s::bigint[], %s::bigint[], %s::bigint[])
+         AS row(boot, gained, low_us, high_us, lowest)
     WHERE id = boot
-    RETURNING id, CASE WHEN lower(held) <= lowest_sequence THEN (SELECT upper(first) - 1 FROM unnest(held) AS first LIMIT 1) END"""
+    RETURNING id, CASE WHEN lower(held) <= lowest_sequence
+                       THEN (SELECT upper(first) - 1 FROM unnest(held) AS first LIMIT 1) END"""
 _INSERT_ASIDE: LiteralString = """
     INSERT INTO ingest_setaside (station_id, tap_id, boot, sequence, arrival_us, field, why, "do", reading, digest)
     SELECT station, tap, boot, sequence, arrival_us, field, why, what, reading::jsonb, digest

@@ -121,7 +121,9 @@ class Committer:
                 return None if self._is_closing else []
             group: list[Waiting] = []
             readings = 0
-            while self._queue and len(group) < MOST_BODIES and (not group or readings + self._queue[0].item.count <= MOST_READINGS):
+            while self._queue and len(group) < MOST_BODIES:
+                if group and readings + self._queue[0].item.count > MOST_READINGS:
+                    break
                 group.append(self._queue.popleft())
                 readings += group[-1].item.count
             self._readings -= readings
@@ -134,11 +136,12 @@ class Committer:
         except (psycopg.OperationalError, psycopg.ProgrammingError, psycopg.InternalError) as error:
             self._note_away(error)
             results = [come_again(503, "the database is away", 5)] * len(group)
-        except Exception:
+        except Exception:  # one body must not take the others with it, whatever is wrong with it
             if len(group) > 1:
                 return [told for waiting in group for told in self._commit_group([waiting])]
             log.exception("body_not_stored", extra=_facts(group[0].item))
-            results = [bad_form("this body could not be stored", "Keep it and tell the person who runs labmon; the log names the fault.")]
+            results = [bad_form("this body could not be stored",
+                                "Keep it and tell the person who runs labmon; the log names the fault.")]
         else:
             if any(isinstance(result, Answer) and result.stored for result in results):
                 announce()

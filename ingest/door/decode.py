@@ -34,7 +34,8 @@ def form_of(content_type: str, content_encoding: str) -> Form:
     charset = next((part.split("=", 1)[1].strip(' "').lower() for part in rest.split(";")
                     if part.strip().lower().startswith("charset=")), "utf-8")
     if kind not in JSON_TYPES | MSGPACK_TYPES:
-        raise bad_form(f"Content-Type {kind[:80]!r} is not known", "Send application/json or application/msgpack.", "Content-Type")
+        raise bad_form(f"Content-Type {kind[:80]!r} is not known",
+                       "Send application/json or application/msgpack.", "Content-Type")
     if kind in JSON_TYPES and charset not in {"utf-8", "utf8", "us-ascii"}:
         raise bad_form(f"charset {charset[:40]!r} is not known", "Send JSON in UTF-8.", "Content-Type")
     if encoding not in {"", "identity", "gzip", "x-gzip"}:
@@ -135,7 +136,8 @@ def _without_twins(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
     if len(found) < len(pairs):
         names = [name for name, _ in pairs]
         twin = next(name for name in names if names.count(name) > 1)
-        raise bad_form(f"the name {twin[:80]!r} is given twice in one map", "Give each name once; put its readings into one list.")
+        raise bad_form(f"the name {twin[:80]!r} is given twice in one map",
+                       "Give each name once; put its readings into one list.")
     return found
 
 

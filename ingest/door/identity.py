@@ -154,19 +154,19 @@ def _known_twins(lot: Lot, twins: IntArray, sequence: IntArray, new: IntArray, f
         return 0
     firsts = new[_index_of(sequence[new], sequence[twins])]
     same = _equal(lot, twins, _as_readings(lot, firsts))
-    faulty |= {place: OTHER_VALUES for place in twins[~same].tolist()}
+    faulty |= dict.fromkeys(twins[~same].tolist(), OTHER_VALUES)
     return int(same.sum())
 
 
 def _compare(lot: Lot, asked: IntArray, index: IntArray, stored: Readings, faulty: dict[int, Fault],
              other: Fault, absent: Fault) -> int:
     """Count the readings that equal the stored ones at ``index`` (-1: none); the others become faulty."""
-    faulty |= {place: absent for place in asked[index < 0].tolist()}
+    faulty |= dict.fromkeys(asked[index < 0].tolist(), absent)
     asked, index = asked[index >= 0], index[index >= 0]
     if not len(asked):
         return 0
     same = _equal(lot, asked, stored.pick(index))
-    faulty |= {place: other for place in asked[~same].tolist()}
+    faulty |= dict.fromkeys(asked[~same].tolist(), other)
     return int(same.sum())
 
 

@@ -182,7 +182,8 @@ def _text(found: Mapping[str, Any], name: str, longest: int, *, is_cut: bool = F
     if text is None:
         return ""
     if not isinstance(text, str) or (len(text) > longest and not is_cut) or not text.isprintable():
-        raise bad_form(f"{name} is not a text of at most {longest} printable letters", f"Send {name} as short text or leave it out.", name)
+        raise bad_form(f"{name} is not a text of at most {longest} printable letters",
+                       f"Send {name} as short text or leave it out.", name)
     return text[:longest]
 
 
@@ -209,7 +210,8 @@ def _draft(tap: KnownTap, sent: Any, texts: list[str]) -> _Draft:
     count = _common_length(tap.name, sent)
     plan = plan_for(tap.kind, tap.unit, tuple(sent))
     if plan.missing:
-        raise bad_form(f"tap {tap.name!r}: {plan.missing}", "Send the raw value of each reading in columns of equal length.", place)
+        raise bad_form(f"tap {tap.name!r}: {plan.missing}",
+                       "Send the raw value of each reading in columns of equal length.", place)
     _check_unknown(plan, place)
     faults: Faults = {}
     sequence = _integers(sent, "sequence", count, NO_SEQUENCE, _GREATEST_SEQUENCE, faults)
@@ -236,7 +238,8 @@ def _common_length(tap: str, sent: Mapping[str, Any]) -> int:
             lengths.add(len(column) // 8)
         else:
             what = "a binary string of another length than 8 bytes a value" if isinstance(column, bytes) else "no list"
-            raise bad_form(f"tap {tap!r}: {name[:80]!r} is {what}", "Send a list with one value per reading.", f"taps.{tap}.{name[:80]}")
+            raise bad_form(f"tap {tap!r}: {name[:80]!r} is {what}", "Send a list with one value per reading.",
+                           f"taps.{tap}.{name[:80]}")
     if len(lengths) == 1:
         return lengths.pop()
     if not lengths:
@@ -250,7 +253,8 @@ def _common_length(tap: str, sent: Mapping[str, Any]) -> int:
 
 def _check_unknown(plan: Plan, place: str) -> None:
     if len(plan.unknown) > MOST_UNKNOWN:
-        raise bad_form(f"{len(plan.unknown)} unknown columns", f"Send at most {MOST_UNKNOWN} columns beyond the known ones.", place)
+        raise bad_form(f"{len(plan.unknown)} unknown columns",
+                       f"Send at most {MOST_UNKNOWN} columns beyond the known ones.", place)
     for name in plan.unknown:
         if not 0 < len(name) <= 100 or not name.isprintable():
             raise bad_form("a column's name is empty, too long or not printable", "Use at most 100 printable letters.", place)
@@ -345,7 +349,8 @@ def _unknown(part: Part) -> ObjectArray:
     """Columns nobody knows, as one JSON map of text per usable reading."""
     made = np.empty(len(part.rows), object)
     for number, row in enumerate(part.rows.tolist()):
-        made[number] = reading_json({name: _element(part.sent[name], row, name, part.tap.unit) for name in part.unknown_names}).decode()
+        values = {name: _element(part.sent[name], row, name, part.tap.unit) for name in part.unknown_names}
+        made[number] = reading_json(values).decode()
     return made
 
 

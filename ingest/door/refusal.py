@@ -39,5 +39,5 @@ def no_entry(title: str, detail: str, *, error: str = "invalid_token") -> Refusa
 
 def come_again(status: int, title: str, retry_after_s: int) -> Refusal:
     """Status 429 or 503 with Retry-After."""
-    return Refusal(status, title, f"Keep the readings and send them again in {retry_after_s} s or later, with back-off and jitter.",
-                   headers={"retry-after": str(retry_after_s)})
+    detail = f"Keep the readings and send them again in {retry_after_s} s or later, with back-off and jitter."
+    return Refusal(status, title, detail, headers={"retry-after": str(retry_after_s)})

@@ -33,9 +33,9 @@ def merge_into_blocks(db: psycopg.Connection[Any], tap_id: int, readings: Readin
     if not len(readings):
         return 600
     first_us, last_us = int(readings.at_us[0]), int(readings.at_us[-1])
-    taken = {start: span for start, span in fetch(
+    taken = dict(fetch(
         db, "SELECT slot_us, span_us FROM ingest_block WHERE tap_id = %s AND slot_us > %s AND slot_us <= %s "
-            "ORDER BY slot_us", tap_id, first_us - LONGEST_SLOT_US, last_us + LONGEST_SLOT_US)}
+            "ORDER BY slot_us", tap_id, first_us - LONGEST_SLOT_US, last_us + LONGEST_SLOT_US))
     length_s = slot_length_s(readings.at_us)
     starts, spans = slots_of(readings.at_us, length_s, sorted(taken.items()))
     new: list[tuple[int, int, Readings]] = []

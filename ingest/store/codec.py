@@ -13,8 +13,17 @@ import msgspec
 import numpy as np
 
 from ingest.store.arrays import (
-    Array, DamagedBody, compress, decompress, pack_integers, pack_numbers, pack_runs, unpack_integers, unpack_numbers,
-    unpack_runs)
+    Array,
+    DamagedBody,
+    compress,
+    decompress,
+    pack_integers,
+    pack_numbers,
+    pack_runs,
+    unpack_integers,
+    unpack_numbers,
+    unpack_runs,
+)
 from ingest.store.columns import NO_SEQUENCE, NO_TIME, Readings
 
 _BATCH = struct.Struct("<2sHIqqHH")  # mark, bytes of names, readings, first sequence, sent_us, columns, what is inside

@@ -13,7 +13,7 @@ from analysis.reduce.calibration import TapCalibration
 from analysis.reduce.tap import reduce_tap
 from analysis.rollup.cells import cells_of, holds_us, merge
 from analysis.rollup.history import history_of
-from tests.realdata.folder import table
+from tests.realdata.sets import table
 
 pytestmark = pytest.mark.realdata
 INTERVAL_S = 13.317

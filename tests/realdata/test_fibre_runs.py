@@ -18,7 +18,7 @@ from analysis.reduce.calibration import TapCalibration
 from analysis.reduce.tap import reduce_tap
 from analysis.reduce.trust import Trust
 from analysis.rollup.cells import cells_of, holds_us
-from tests.realdata.folder import table
+from tests.realdata.sets import table
 
 pytestmark = pytest.mark.realdata
 RUNS = "abcd"

@@ -10,7 +10,7 @@ from analysis.judge.rule import Quantity
 from analysis.reduce.calibration import TapCalibration
 from analysis.reduce.tap import reduce_tap
 from analysis.reduce.trust import Reason, Trust
-from tests.realdata.folder import table
+from tests.realdata.sets import table
 
 pytestmark = pytest.mark.realdata
 

@@ -48,8 +48,8 @@ class LabConsumer(AsyncJsonWebsocketConsumer):
             with suppress(asyncio.CancelledError):
                 await job
 
-    async def receive_json(self, content: Any, **_kwargs: Any) -> None:
-        """A page has nothing to say here; it writes by HTTP."""
+    async def receive(self, text_data: str | None = None, bytes_data: bytes | None = None, **_kwargs: Any) -> None:
+        """A page has nothing to say here, whatever it is; it writes by HTTP."""
 
     async def lab_changed(self, event: dict[str, Any]) -> None:
         """Collect a change; the first goes out at once, those behind it together."""

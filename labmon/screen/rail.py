@@ -65,6 +65,18 @@ def room_rail(room: str, marks: Sequence[Mark]) -> str:
     )
 
 
+def own_rail(mark: Mark) -> str:
+    """One tap's own rail for its page: the same scale, its mark or tick, and the axis under it."""
+    parked = mark.margin_db is None or mark.standing is Standing.NO_READING
+    ticks = [] if mark.standing.has_shape or mark.margin_db is None else [mark.margin_db]
+    placed = [] if parked or not mark.standing.has_shape else [mark]
+    gutter = _gutter([mark]) if parked and mark.standing.has_shape else ""
+    return (
+        f'<svg class="rail is-own" role="group" aria-label="{escape(_spoken(mark.name, [mark]))}" height="{RAIL_HEIGHT_PX + 14}">'
+        f"{_scale(ticks)}{gutter}{_named_marks(placed)}{_axis_texts(RAIL_HEIGHT_PX + 8)}</svg>"
+    )
+
+
 def _spoken(room: str, marks: Sequence[Mark]) -> str:
     looks = [
         f"{mark.name} {mark.standing.word}" + (f" {mark.label}" if mark.label else "")
@@ -152,10 +164,14 @@ def _takes(taken: list[tuple[float, float]], x: float, width: float, anchor: str
 
 def axis() -> str:
     """The scale under the rails, in words and dB."""
+    return f'<svg class="rail-axis" aria-hidden="true" height="20">{_axis_texts(14)}</svg>'
+
+
+def _axis_texts(y: int) -> str:
     marks = [(db, f"{'+' if db > 0 else '−' if db < 0 else ''}{abs(db)}") for db in (-4, 4, 8)]
-    texts = "".join(f'<text x="{x_percent(db):.2f}%" y="14" text-anchor="middle">{text}</text>' for db, text in marks)
+    texts = "".join(f'<text x="{x_percent(db):.2f}%" y="{y}" text-anchor="middle">{text}</text>' for db, text in marks)
     return (
-        '<svg class="rail-axis" aria-hidden="true" height="20"><text x="0" y="14" class="wide-only">no reading</text>'
-        f'{texts}<text class="rail-axis-limit" x="{LIMIT_PERCENT:.2f}%" y="14" text-anchor="middle">limit</text>'
-        f'<text x="99%" y="14" text-anchor="end">+{HIGH_DB:g} dB</text></svg>'
+        f'<text x="0" y="{y}" class="wide-only">no reading</text>{texts}'
+        f'<text class="rail-axis-limit" x="{LIMIT_PERCENT:.2f}%" y="{y}" text-anchor="middle">limit</text>'
+        f'<text x="99%" y="{y}" text-anchor="end">+{HIGH_DB:g} dB</text>'
     )

@@ -4,6 +4,8 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import datetime
 
+from django.utils.safestring import SafeString, mark_safe
+
 from labmon.benches.queries import NowSample, StationFacts, TapFacts
 from labmon.screen.level_words import level_words
 from labmon.screen.present import (
@@ -20,6 +22,7 @@ from labmon.screen.present import (
     temperature_text,
     time_text,
 )
+from labmon.screen.rail import Mark, own_rail
 from labmon.screen.standing import Standing, standing_of
 
 
@@ -50,6 +53,7 @@ class TapView:
     heard: str
     measures_light: bool
     has_stokes: bool
+    rail: SafeString
 
 
 def station_sentence(name: str, facts: StationFacts, unacknowledged: int) -> str:
@@ -90,10 +94,21 @@ def tap_view(tap: TapFacts, now: datetime) -> TapView:
         calibration=calibration_words(tap),
         unknown_columns=list(tap.unknown_columns),
         heard_ms=None if heard_at is None else int(heard_at.timestamp() * 1000),
+        rail=_rail(tap),
         heard=age_text(None if heard_at is None else (now - heard_at).total_seconds()),
         measures_light=tap.kind != "climate",
         has_stokes=tap.has_stokes,
     )
+
+
+def _rail(tap: TapFacts) -> SafeString:
+    """The tap's own margin rail; nothing where no margin is known and none is awaited."""
+    margin_db = tap.margin.margin_db if tap.margin is not None else None
+    standing = standing_of(tap.state)
+    if margin_db is None and not (tap.limits and standing is Standing.NO_READING):
+        return mark_safe("")
+    mark = Mark(name=tap.name, href=f"#tap-{tap.id}", standing=standing, margin_db=margin_db, label=_margins(tap, signed=True))
+    return mark_safe(own_rail(mark))
 
 
 def _values(tap: TapFacts) -> list[Fact]:

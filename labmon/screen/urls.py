@@ -2,7 +2,7 @@
 
 from django.urls import path
 
-from labmon.screen import account, alarms, aside, audit, experiments, lab, people, series, station, station_writes, trail
+from labmon.screen import account, alarms, aside, audit, experiments, imports, lab, people, series, station, station_writes, trail
 
 urlpatterns = [
     path("", lab.lab_page, name="lab"),
@@ -14,6 +14,8 @@ urlpatterns = [
     path("you/keys/<int:key_id>/revoke/", account.revoke_own_key, name="revoke-own-key"),
     path("stations/<slug:station>/", station.station_page, name="station"),
     path("stations/<slug:station>/set-aside/", aside.aside_page, name="set-aside"),
+    path("stations/<slug:station>/import/", imports.imports_page, name="imports"),
+    path("stations/<slug:station>/import/<int:import_id>/", imports.import_page, name="import-file"),
     path("stations/<slug:station>/keys/", station_writes.make_key, name="make-key"),
     path("stations/<slug:station>/keys/<int:key_id>/revoke/", station_writes.revoke_key, name="revoke-key"),
     path("stations/<slug:station>/taps/<slug:tap>/history.json", series.history_json, name="history-json"),

@@ -1,8 +1,9 @@
 // The history plot: envelope, mean, limit lines, alarm spans as brackets on the limit line, gaps hatched and named.
-// Zooming and moving ask the server again.
+// Zooming and moving ask the server again. For Stokes taps the trail shares its span.
 
 import { angleFromEr, changedSpan, erFromAngle, parseSpan, spanText } from './format.js';
 import { noteTruth, onChange, serverNowMs } from './live.js';
+import { startTrail } from './trail.js';
 import { envelope, rangeOf, timesOf, valuesOf } from './runs.js';
 
 const DEBOUNCE_MS = 120;
@@ -212,7 +213,7 @@ class History {
 }
 
 /** Draws the history under `root`; gives it back so that other views share its span. */
-export function startHistory(root) {
+function startHistory(root) {
   const view = new History(root);
   view.draw();
   for (const way of root.querySelectorAll('[data-way]')) {
@@ -228,3 +229,9 @@ export function startHistory(root) {
   return view;
 }
 
+const root = document.querySelector('[data-history]');
+if (root) {
+  const view = startHistory(root);
+  const trail = document.querySelector('[data-trail]');
+  if (trail) startTrail(trail, view);
+}

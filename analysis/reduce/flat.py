@@ -1,8 +1,9 @@
 """Frozen channels: a fold over each channel's raw values, the same live and in replay.
 
 A channel is flat from its 30th equal reading on, if it usually flickers by more than one of its steps (the step is the
-smallest change ever seen). A channel that was never seen to move is flat from the 300th equal reading on, if the tap's
-other channel moves meanwhile. A calm channel that toggles by one step is never flat. Rule: docs/formulas.md, F-14.
+smallest change ever seen). The weaker channel, if it was never seen to move, is flat from the 300th equal reading on when
+the stronger one moves meanwhile (a bright port that never moves may well be steady light on a coarse converter). A calm
+channel that toggles by one step is never flat. Rule: docs/formulas.md, F-14.
 """
 
 from collections.abc import Sequence
@@ -17,6 +18,7 @@ FLAT_AFTER: Final = 30
 NEVER_MOVED_AFTER: Final = 300
 FEWEST_MOVES: Final = 10
 STEP_ROUNDING: Final = 1.5
+PEER_READINGS_PER_MOVE: Final = 10
 
 
 @dataclass(frozen=True, slots=True)
@@ -87,7 +89,8 @@ def mark_flat(values: FloatArray, first: IntArray, state: FlatState) -> tuple[Bo
     if channels > 1:
         for c, t in enumerate(traced):
             others = np.max([traced[o].moves for o in range(channels) if o != c], axis=0)
-            flat[:, c] |= (t.moves == 0) & (t.run >= NEVER_MOVED_AFTER) & (others * FEWEST_MOVES >= t.run)
+            is_weaker = t.value < np.max([traced[o].value for o in range(channels) if o != c], axis=0)
+            flat[:, c] |= (t.moves == 0) & (t.run >= NEVER_MOVED_AFTER) & (others * PEER_READINGS_PER_MOVE >= t.run) & is_weaker
     last = np.append(first[1:], count) - 1
     names = ("value", "run", "step", "pairs", "moves", "large_moves")
     return flat, FlatState(*(np.stack([getattr(t, name)[last] for t in traced], axis=-1) for name in names))

@@ -26,10 +26,12 @@ def body_of(request: HttpRequest, kind: type[T]) -> T:
     Raises:
         Problem: 413 too large, 415 not JSON by its type, 400 not decodable (with the field).
     """
-    if request.content_type not in {"application/json", "application/merge-patch+json"}:
-        raise Problem(415, "The body is not announced as JSON.", "Send Content-Type: application/json.")
     if int(request.META.get("CONTENT_LENGTH") or 0) > LARGEST_BODY:
         raise Problem(413, "The body is too large.", f"Send at most {LARGEST_BODY} bytes.")
+    if not request.body:
+        raise Problem(400, "The body is missing.", "Send one JSON object; /api/v1/openapi.json has its form.")
+    if request.content_type not in {"application/json", "application/merge-patch+json"}:
+        raise Problem(415, "The body is not announced as JSON.", "Send Content-Type: application/json.")
     try:
         return msgspec.json.decode(request.body, type=kind)
     except msgspec.ValidationError as error:

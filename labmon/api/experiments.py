@@ -3,6 +3,7 @@
 import math
 from collections.abc import Iterable
 from datetime import datetime
+from itertools import pairwise
 from typing import Any, Literal
 
 from django.http import HttpRequest, HttpResponse
@@ -79,10 +80,8 @@ def version_facts(versions: Iterable[LimitVersion]) -> list[dict[str, Any]]:
     Args:
         versions: Ordered by limit and number, with ``limit.tap.station`` and ``set_by`` loaded.
     """
-    rows = list(versions)
-    following = [*rows[1:], None]
     return [_version_facts(row, after.valid_from if after and after.limit_id == row.limit_id else None)
-            for row, after in zip(rows, following, strict=True)]
+            for row, after in pairwise([*versions, None])]
 
 
 def _version_facts(row: LimitVersion, valid_until: datetime | None) -> dict[str, Any]:

@@ -21,7 +21,8 @@ def written(form: str, schema: pa.Schema, tables: Tables, about: dict[str, Any])
     noted = schema.with_metadata({"labmon": msgspec.json.encode(about)})
     match form:
         case "csv":
-            return _drained(lambda sink: pa.csv.CSVWriter(sink, _with_texts(schema.empty_table()).schema), map(_with_texts, tables))
+            texts = _with_texts(schema.empty_table()).schema
+            return _drained(lambda sink: pa.csv.CSVWriter(sink, texts), map(_with_texts, tables))
         case "json":
             return _as_json(tables, about)
         case "parquet":

@@ -10,9 +10,9 @@ from django.db import connection
 from django.db.migrations.loader import MigrationLoader
 from django.http import HttpRequest, HttpResponse
 
+from ingest.database import conninfo_of
 from labmon.api.answer import json_answer
 from labmon.api.problem import Problem
-from labmon.services import conninfo_of
 
 PATIENCE_S = 2
 

@@ -5,13 +5,17 @@ from collections.abc import AsyncIterator, Iterator
 from datetime import datetime
 from typing import Any
 
+import numpy as np
 import pyarrow as pa
 from asgiref.sync import sync_to_async
 from django.core.handlers.asgi import ASGIRequest
 from django.http import HttpRequest, StreamingHttpResponse
 
-from analysis.record.reduce_span import reduced_samples
+from analysis.models import TapCheckpoint
+from analysis.record.reduce_span import Knowledge, knowledge_of, reduce_many
+from analysis.reduce.sample import Reduced
 from ingest.models import Tap, TapBoot
+from ingest.store.columns import Readings, no_readings
 from ingest.store.read import read_readings
 from labmon.api.chunks import chunks_of
 from labmon.api.formats import TYPES, written
@@ -41,20 +45,34 @@ def get_readings(request: HttpRequest, person: Person, station: str, tap: str) -
 
 
 def tables_of(tap: Tap, span: Span, as_of: datetime | None) -> Iterator[pa.Table]:
-    """The span's samples in pieces; the first may be empty and shows the columns."""
+    """The span's samples in pieces; the first is empty and shows the columns.
+
+    The fold of frozen values runs through all pieces, from the last checkpoint before the span, so that a sample looks the
+    same whatever span it is read in.
+    """
+    knowledge = knowledge_of([tap.pk], as_of)
     names: dict[int, str] = {}
-    yield _table(tap, span.from_us, span.from_us, as_of, names)
-    for from_us, until_us in chunks_of(tap.pk, span.from_us, span.until_us):
-        yield _table(tap, from_us, until_us, as_of, names)
+    before = TapCheckpoint.objects.filter(tap=tap, at_us__lte=span.from_us).order_by("-at_us").first()
+    start_us, flat = (before.at_us, before.state["flat"]) if before else (span.from_us, None)
+    yield _table(tap, no_readings(), _reduced(tap, no_readings(), knowledge, None)[0], names)
+    for from_us, until_us in chunks_of(tap.pk, start_us, span.until_us):
+        readings = read_readings(tap.pk, from_us, until_us)
+        reduced, flat = _reduced(tap, readings, knowledge, flat)
+        wanted = slice(int(np.searchsorted(readings.at_us, span.from_us)), None)
+        if until_us > span.from_us:
+            yield _table(tap, readings.pick(wanted), reduced.take(wanted), names)
 
 
-def _table(tap: Tap, from_us: int, until_us: int, as_of: datetime | None, names: dict[int, str]) -> pa.Table:
-    readings = read_readings(tap.pk, from_us, until_us)
+def _reduced(tap: Tap, readings: Readings, knowledge: Knowledge, flat: Any) -> tuple[Reduced, Any]:
+    made = reduce_many([tap], {tap.pk: readings}, knowledge, {tap.pk: flat})
+    return made.samples_of(tap.pk), made.flat[tap.pk][-1]
+
+
+def _table(tap: Tap, readings: Readings, reduced: Reduced, names: dict[int, str]) -> pa.Table:
     missing = set(readings.boot_id.tolist()) - names.keys()
     if missing:
-        rows = TapBoot.objects.filter(pk__in=missing)
-        names.update(rows.values_list("pk", "station_boot__boot"))
-    return table_of(tap, readings, reduced_samples(tap, from_us, until_us, as_of), names)
+        names.update(TapBoot.objects.filter(pk__in=missing).values_list("pk", "station_boot__boot"))
+    return table_of(tap, readings, reduced, names)
 
 
 def _for_server(request: HttpRequest, parts: Iterator[bytes]) -> Any:

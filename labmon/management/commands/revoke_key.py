@@ -23,7 +23,7 @@ class Command(LabCommand):
         whose.add_argument("--person", metavar="NAME")
         which = parser.add_mutually_exclusive_group(required=True)
         which.add_argument("--id", type=int, metavar="N", help="the key_id that make_key printed")
-        which.add_argument("--ends", metavar="TEXT", help="the last letters of the key, as the station page shows them")
+        which.add_argument("--hint", metavar="TEXT", help="the letters of the key that the station page shows")
         which.add_argument("--all", action="store_true", help="every key that is not revoked yet")
 
     def handle(self, *args: Any, **wish: Any) -> str:
@@ -34,7 +34,7 @@ class Command(LabCommand):
         chosen = [key.pk for key in keys.filter(revoked_at=None).order_by("pk") if _is_meant(key, wish)]
         if not chosen:
             raise CommandError(f"{wish['person'] or wish['station']} has no such key in force. Check the name, and the key_id or "
-                               "last letters on the station page.")
+                               "the letters on the station page.")
         for key_id in chosen:
             revoke(key_id, by=None)
         whose = {"person": wish["person"]} if wish["person"] else {"station": wish["station"]}
@@ -44,4 +44,4 @@ class Command(LabCommand):
 def _is_meant(key: StationKey | PersonKey, wish: dict[str, Any]) -> bool:
     if wish["all"]:
         return True
-    return key.pk == wish["id"] if wish["id"] is not None else key.hint == wish["ends"][-len(key.hint):]
+    return key.pk == wish["id"] if wish["id"] is not None else key.hint == wish["hint"]

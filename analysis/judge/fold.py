@@ -4,7 +4,7 @@ What it does with warnings, gaps and bounds is written down in docs/decisions/00
 """
 
 from collections.abc import Iterable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from enum import StrEnum
 from typing import Any
 
@@ -13,9 +13,10 @@ import numpy as np
 from analysis.judge.rule import LimitRule
 from analysis.judge.seconds import Seconds, Status, statuses
 from analysis.judge.timer import Timer
-from analysis.quantities import US_PER_S, FloatArray, IntArray
+from analysis.quantities import US_PER_S, FloatArray
 
 HOLD_INTERVALS = 3.0
+_BELOW, _INSIDE = bytes([Status.BELOW]), bytes([Status.INSIDE])
 
 
 class Level(StrEnum):
@@ -89,7 +90,8 @@ class FoldState:
         )
 
     def copy(self) -> "FoldState":
-        return FoldState.from_json(self.as_json())
+        timers = (replace(timer) for timer in (self.alarm_timer, self.warning_timer, self.clear_timer))
+        return FoldState(self.at_us, self.level, self.began_us, self.raised_us, *timers)
 
 
 def start_state(before: FoldState | None = None) -> FoldState:
@@ -108,73 +110,87 @@ def fold(rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: FloatA
     Args:
         rule: The limit in force for all of them; its quantity must be that of ``seconds``.
         state: Left unchanged.
-        interval_s: The tap's nominal interval between readings, s, one or one per entry: breaks of up to three of them do
-            not reset a delay (of three entries, where those are longer).
+        interval_s: The tap's nominal interval between readings, s, one or one per entry (NaN: not known, counts as none):
+            breaks of up to three of them do not reset a delay (of three entries, where those are longer).
     Returns:
         The state after the last second, and the events in order of time. Cutting ``seconds`` anywhere and folding the
         parts one after the other gives the same.
     """
     if seconds.quantity is not rule.quantity:
         raise ValueError(f"seconds are of {seconds.quantity.value}, the rule is for {rule.quantity.value}.")
-    step = _Step(rule, state.copy(), hold_us_of(seconds, interval_s))
+    step = _Step(rule, state.copy())
     if len(seconds):
-        step.run(seconds)
+        step.run(seconds, holds_us(seconds, interval_s))
     return step.state, step.events
 
 
-def hold_us_of(seconds: Seconds, interval_s: FloatArray | float) -> IntArray:
-    """Longest break before each entry that does not reset a delay, µs, shape (M,); an unknown interval (NaN) counts as none."""
+def holds_us(seconds: Seconds, interval_s: FloatArray | float) -> list[int]:
+    """Longest break before each entry that does not reset a delay, µs; an unknown interval (NaN) counts as none."""
+    count = len(seconds)
+    if np.ndim(interval_s) == 0:
+        longest_s = max(seconds.entry_s, float(interval_s))  # max keeps the first where the other is NaN
+        return [round(HOLD_INTERVALS * longest_s * US_PER_S)] * count
     longest_s = HOLD_INTERVALS * np.fmax(interval_s, seconds.entry_s)
-    return np.broadcast_to(np.round(longest_s * US_PER_S).astype(np.int64), len(seconds))
+    return np.round(longest_s * US_PER_S).astype(np.int64).tolist()
 
 
 class _Step:
     """One run of the fold over an array of seconds."""
 
-    def __init__(self, rule: LimitRule, state: FoldState, hold_us: IntArray) -> None:
-        self.rule, self.state, self.hold_us, self.events = rule, state, hold_us, list[Event]()
+    def __init__(self, rule: LimitRule, state: FoldState) -> None:
+        self.rule, self.state, self.events = rule, state, list[Event]()
         self.on_us, self.off_us = round(rule.on_delay_s * US_PER_S), round(rule.off_delay_s * US_PER_S)
         sign = -1.0 if rule.quantity.is_bad_above else 1.0
         outer = rule.alarm if rule.warning is None else sign * max(sign * rule.alarm, sign * rule.warning)
         self.clear_level = outer + sign * rule.deadband
 
-    def run(self, seconds: Seconds) -> None:
-        rule = self.rule
-        below_alarm = statuses(seconds, rule.alarm)
-        below_warning = below_alarm if rule.warning is None else statuses(seconds, rule.warning)
-        clear = statuses(seconds, self.clear_level)
-        interesting = np.flatnonzero((below_alarm == Status.BELOW) | (below_warning == Status.BELOW))
-        at_us, shown = seconds.at_us, seconds.shown()
-        position, end = 0, len(seconds)
+    def run(self, seconds: Seconds, hold_us: list[int]) -> None:
+        at_us, end = seconds.at_us.tolist(), len(seconds)
+        to_alarm = _codes(seconds, self.rule.alarm)
+        to_warning = to_alarm if self.rule.warning is None else _codes(seconds, self.rule.warning)
+        to_clear: bytes | None = None
+        position = 0
         while position < end:
-            if self._is_idle():
-                position = _next(interesting, position, end)
-                if position == end:
-                    break
-            hold_us = int(self.hold_us[position])
-            statuses_here = (below_alarm[position], below_warning[position], clear[position])
-            self._one(int(at_us[position]), hold_us, *statuses_here, float(shown[position]))
+            if self.state.level is not None and to_clear is None:
+                to_clear = _codes(seconds, self.clear_level)
+            position = self._next_interesting(position, end, to_alarm, to_warning, to_clear)
+            if position == end:
+                break
+            at, hold = at_us[position], hold_us[position]
+            self._below(at, hold, to_alarm[position], to_warning[position], seconds, position)
+            if self.state.level is not None:
+                to_clear = _codes(seconds, self.clear_level) if to_clear is None else to_clear
+                self._clear(at, hold, to_clear[position], seconds, position)
             position += 1
-        self.state.at_us = int(at_us[-1])
+        self.state.at_us = at_us[-1]
 
-    def _is_idle(self) -> bool:
+    def _next_interesting(self, position: int, end: int, to_alarm: bytes, to_warning: bytes, to_clear: bytes | None) -> int:
+        """The next entry that can start a delay, while none runs; else the very next."""
         state = self.state
-        return state.level is None and state.alarm_timer.first_us is None and state.warning_timer.first_us is None
+        if state.alarm_timer.is_running or state.warning_timer.is_running or state.clear_timer.is_running:
+            return position
+        starts = [] if to_clear is None or state.level is None else [to_clear.find(_INSIDE, position)]
+        if state.level is not Level.ALARM:
+            starts.append(to_alarm.find(_BELOW, position))
+        if state.level is None:
+            starts.append(to_warning.find(_BELOW, position))
+        return min((start for start in starts if start >= 0), default=end)
 
-    def _one(self, at_us: int, hold_us: int, to_alarm: int, to_warning: int, to_clear: int, value: float) -> None:
+    def _below(self, at_us: int, hold_us: int, to_alarm: int, to_warning: int, seconds: Seconds, position: int) -> None:
         state = self.state
         if state.level is not Level.ALARM:
-            held_us = state.alarm_timer.step(at_us, _is(Status.BELOW, to_alarm), hold_us)
+            held_us = state.alarm_timer.step(at_us, _is(_BELOW[0], to_alarm), hold_us)
             if held_us is not None and held_us >= self.on_us:
-                self._raise(Level.ALARM, at_us, state.alarm_timer, value)
+                self._raise(Level.ALARM, at_us, state.alarm_timer, _shown(seconds, position))
         if state.level is None and self.rule.warning is not None:
-            held_us = state.warning_timer.step(at_us, _is(Status.BELOW, to_warning), hold_us)
+            held_us = state.warning_timer.step(at_us, _is(_BELOW[0], to_warning), hold_us)
             if held_us is not None and held_us >= self.on_us:
-                self._raise(Level.WARNING, at_us, state.warning_timer, value)
-        if state.level is not None:
-            held_us = state.clear_timer.step(at_us, _is(Status.INSIDE, to_clear), hold_us)
-            if held_us is not None and held_us >= self.off_us:
-                self._return(at_us, value)
+                self._raise(Level.WARNING, at_us, state.warning_timer, _shown(seconds, position))
+
+    def _clear(self, at_us: int, hold_us: int, to_clear: int, seconds: Seconds, position: int) -> None:
+        held_us = self.state.clear_timer.step(at_us, _is(_INSIDE[0], to_clear), hold_us)
+        if held_us is not None and held_us >= self.off_us:
+            self._return(at_us, _shown(seconds, position))
 
     def _raise(self, level: Level, at_us: int, timer: Timer, value: float) -> None:
         state = self.state
@@ -199,14 +215,18 @@ class _Step:
         state.alarm_timer.reset()
 
 
-def _is(wanted: Status, status: int) -> bool | None:
+def _is(wanted: int, status: int) -> bool | None:
     """Whether a second has the wanted status; None where it cannot tell."""
-    return status == wanted if status >= Status.BELOW else None
+    return status == wanted if status >= _BELOW[0] else None
 
 
-def _next(indices: IntArray, position: int, end: int) -> int:
-    found = int(np.searchsorted(indices, position))
-    return int(indices[found]) if found < len(indices) else end
+def _codes(seconds: Seconds, level: float) -> bytes:
+    """`Status` of each second against a level, one byte each, so that long stretches are searched at once."""
+    return statuses(seconds, level).tobytes()
+
+
+def _shown(seconds: Seconds, position: int) -> float:
+    return float(seconds.take(slice(position, position + 1)).shown()[0])
 
 
 @dataclass(frozen=True, slots=True)

@@ -108,12 +108,13 @@ def statuses(seconds: Seconds, level: float) -> NDArray[np.int8]:
 
     Below if any certain value is below; else inside if any judged one certainly is not; else undecided.
     """
-    sign = -1.0 if seconds.quantity.is_bad_above else 1.0
-    status = np.full(len(seconds), Status.UNDECIDED, dtype=np.int8)
-    status[sign * seconds.best_sure >= sign * level] = Status.INSIDE
-    status[sign * seconds.worst < sign * level] = Status.BELOW
-    status[~seconds.is_judged] = Status.UNTRUSTED
-    return status
+    if seconds.quantity.is_bad_above:
+        is_inside, is_below = seconds.best_sure <= level, seconds.worst > level
+    else:
+        is_inside, is_below = seconds.best_sure >= level, seconds.worst < level
+    # Untrusted 0, undecided 1, below 2, inside 3: below goes before inside.
+    judged = seconds.is_judged.astype(np.int8)
+    return judged * (1 + is_below + 2 * (is_inside & ~is_below)).astype(np.int8)
 
 
 def is_undecided(reduced: Reduced, rule: LimitRule) -> BoolArray:

@@ -4,7 +4,7 @@ from dataclasses import dataclass, field
 from enum import StrEnum
 from typing import Any
 
-from analysis.judge.fold import hold_us_of
+from analysis.judge.fold import holds_us
 from analysis.judge.seconds import Seconds
 from analysis.judge.timer import Timer
 from analysis.quantities import US_PER_S, FloatArray
@@ -58,11 +58,11 @@ def fold_untrusted(
     """
     state = UntrustedState.from_json(state.as_json())
     events: list[UntrustedEvent] = []
-    holds_us = hold_us_of(seconds, interval_s)
+    longest_us = holds_us(seconds, interval_s)
     on_us, off_us = round(rule.on_delay_s * US_PER_S), round(rule.off_delay_s * US_PER_S)
     if not state.is_open and not state.bad_timer.is_running and seconds.is_judged.all():
         return state, events
-    for at_us, is_judged, hold_us in zip(seconds.at_us.tolist(), seconds.is_judged.tolist(), holds_us.tolist(), strict=True):
+    for at_us, is_judged, hold_us in zip(seconds.at_us.tolist(), seconds.is_judged.tolist(), longest_us, strict=True):
         if not state.is_open:
             timer = state.bad_timer
             held_us = timer.step(at_us, not is_judged, hold_us)

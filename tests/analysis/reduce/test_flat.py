@@ -40,6 +40,19 @@ def test_job_example_of_a_frozen_dark_port():
     assert not found[:298, 1].any()
 
 
+def test_steady_bright_port_is_no_frozen_port():
+    """Steady light on a coarse converter repeats for hours while the dark port moves."""
+    port2 = np.random.default_rng(1).normal(1e-6, 1e-8, 5000)
+    assert not marks(np.full(5000, 1e-3), port2).any()
+
+
+def test_job_example_of_delays_is_not_a_frozen_value():
+    """Job paper, delays: long stretches of one or two values are a test bench's light, and must stay judged."""
+    er_db = np.concatenate([np.full(100, 25.0), np.full(61, 19.5), np.tile([19.9, 20.1], 1800), np.full(120, 21.1)])
+    port1 = np.full(len(er_db), 1e-3)
+    assert not marks(port1, port1 * 10 ** (-er_db / 10)).any()
+
+
 def test_flat_from_the_30th_equal_reading_on():
     rng = np.random.default_rng(2)
     values = np.concatenate([rng.normal(size=100), np.full(40, 0.5), rng.normal(size=20)])

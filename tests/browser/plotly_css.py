@@ -6,7 +6,7 @@ A strict content security policy blocks written-in styles, so the page brings th
 
 from pathlib import Path
 
-from playwright.sync_api import sync_playwright
+from playwright.sync_api import Browser, sync_playwright
 
 from tests.browser.chromium import launch
 
@@ -17,22 +17,24 @@ SHEET = VENDOR / "plotly.css"
 HIDES_FOCUS = "focus"
 
 
-def rules_of_bundle(bundle: Path) -> list[str]:
+def rules_in(browser: Browser, bundle: Path) -> list[str]:
     """The rules, as Chromium reads them back, without the one that hides the focus ring."""
-    with sync_playwright() as playwright:
-        browser = launch(playwright)
-        page = browser.new_page()
-        page.set_content("<!doctype html><title>plotly</title>")
-        page.add_script_tag(path=str(bundle))
-        rules = page.evaluate("[...document.getElementById('plotly.js-style-global').sheet.cssRules].map(r => r.cssText)")
-        browser.close()
+    page = browser.new_page()
+    page.set_content("<!doctype html><title>plotly</title>")
+    page.add_script_tag(path=str(bundle))
+    rules = page.evaluate("[...document.getElementById('plotly.js-style-global').sheet.cssRules].map(r => r.cssText)")
+    page.close()
     return [rule for rule in rules if not (HIDES_FOCUS in rule.split("{")[0] and "outline" in rule)]
 
 
 def main() -> None:
+    with sync_playwright() as playwright:
+        browser = launch(playwright)
+        rules = rules_in(browser, BUNDLE)
+        browser.close()
     SHEET.write_text(
         "/* Made by tests/browser/plotly_css.py from plotly-cartesian.min.js; MIT, see plotly.LICENSE. */\n"
-        + "\n".join(rules_of_bundle(BUNDLE))
+        + "\n".join(rules)
         + "\n"
     )
 

@@ -106,7 +106,7 @@ function figure(answer, isNarrow) {
   const layout = {
     paper_bgcolor: paint.sheet, plot_bgcolor: paint.sheet, showlegend: false, dragmode: isNarrow ? 'pan' : 'zoom', hovermode: 'x',
     font: { family: '"DejaVu Sans Condensed", "Noto Sans", "DejaVu Sans", sans-serif', size: 13, color: paint.ink },
-    margin: { l: isNarrow ? 44 : 62, r: isNarrow ? 40 : 62, t: 12, b: 40 }, height: temperature ? 540 : 400,
+    margin: { l: isNarrow ? 44 : 62, r: isNarrow ? 40 : 62, t: 12, b: 40 }, height: (temperature ? 540 : 400) * (isNarrow ? 0.8 : 1),
     xaxis: { ...axis, type: 'date', range: span, fixedrange: false, ticks: 'outside', anchor: temperature ? 'y2' : 'y' },
     yaxis: { ...axis, range, domain: temperature ? [0.32, 1] : [0, 1], title: { text: isNarrow ? '' : NAMES[series.quantity] } },
     annotations: gapWords(series, span, paint),
@@ -165,6 +165,7 @@ class History {
     this.fault.hidden = true;
     const { traces, layout } = figure(answer, this.plot.clientWidth < 560);
     this.answer = answer;
+    this.plot.style.height = `${layout.height}px`;
     window.Plotly.react(this.plot, traces, layout, CONFIG).then(() => {
       if (!this.isListening) this.listen();
       this.root.dataset.drawn = spanText(...this.span);

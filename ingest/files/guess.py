@@ -17,7 +17,7 @@ from ingest.files.units import units_for
 
 LINES_LOOKED_AT = 200
 _COMMENT_SIGNS = ("#", "%", "//", "!")
-_TIME_LIKE = re.compile(r"\d{1,4}[-./]\d{1,2}[-./]\d{1,4}.*|\d{1,2}:\d\d.*", re.ASCII)
+_TIME_LIKE = re.compile(r"(?=.)(?:\d{1,4}[-./]\d{1,2}[-./]\d{1,4}[T ]?)?(?:\d{1,2}:\d\d[\d:.,+\-Z ]*(?:[AP]M)?)?", re.ASCII)
 _UNIT_IN_NAME = re.compile(r"[\s_(\[/]*([A-Za-zµ°%]+)[)\]]?\s*$")
 _UNIT_WORDS = {"mw": "mW", "uw": "uW", "µw": "uW", "nw": "nW", "w": "W", "dbm": "dBm", "v": "V", "c": "degC", "°c": "degC",
                "degc": "degC", "k": "K", "f": "degF", "°f": "degF", "hpa": "hPa", "mbar": "mbar", "pa": "Pa", "kpa": "kPa",
@@ -95,7 +95,8 @@ def _signs(lines: Sequence[str]) -> tuple[str, str]:
         width, count = Counter(len(cells) for cells in cut).most_common(1)[0]
         cells = [cell for row in cut if len(row) == width for cell in row if cell]
         is_value = _are_values(cells, decimal)
-        return (count / len(cut) * (sum(is_value) / len(cells) if cells else 0.0), delimiter != " " and width > 1, width)
+        share = count / len(cut) * (sum(is_value) / len(cells) if cells else 0.0)
+        return (share if width > 1 else 0.0, delimiter != " ", width)
 
     pairs = [(";", "."), (";", ","), ("\t", "."), ("\t", ","), (",", "."), ("|", "."), ("|", ","), (" ", "."), (" ", ",")]
     return max(pairs, key=score) if lines else (",", ".")
@@ -165,5 +166,6 @@ def _unit(name: str, ours: str, tap_unit: str) -> str:
 
 
 def _number_places(rows: Sequence[Sequence[str]], decimal: str) -> list[int]:
+    """Columns in which most cells are numbers."""
     width = min((len(row) for row in rows), default=0)
-    return [place for place in range(width) if np.all(np.isfinite(numbers_of([row[place] for row in rows], decimal)))]
+    return [place for place in range(width) if np.mean(np.isfinite(numbers_of([row[place] for row in rows], decimal))) > 0.7]

@@ -70,11 +70,24 @@ def mapping_of(rules: AnyMapping[str, Any], *, kind: str, unit: str) -> Mapping:
     time = check_time(top.table("time"))
     columns = _columns(top.table("columns"), kind, unit)
     top.end()
-    if layout and not layout.has_header:
+    if not layout.has_header:
         _check_numbers(top, time, columns)
-    if top.faults or layout is None or time is None:
+    if top.faults or time is None:
         raise MappingError(top.faults)
     return Mapping(layout=layout, time=time, columns=columns)
+
+
+def layout_of(table: AnyMapping[str, Any]) -> FileLayout:
+    """The layout of a [file] table alone.
+
+    Raises:
+        MappingError: With its faults.
+    """
+    rules = Rules(table, "file")
+    layout = _layout(rules)
+    if rules.faults:
+        raise MappingError(rules.faults)
+    return layout
 
 
 def rules_of(mapping: Mapping) -> dict[str, Any]:
@@ -94,7 +107,7 @@ def rules_of(mapping: Mapping) -> dict[str, Any]:
     return rules
 
 
-def _layout(rules: Rules) -> FileLayout | None:
+def _layout(rules: Rules) -> FileLayout:
     delimiter = rules.text("delimiter", default=",")
     delimiter = DELIMITERS.get(delimiter, delimiter)
     if len(delimiter) != 1 or delimiter in '".\r\n\0' or delimiter.isalnum():
@@ -157,4 +170,4 @@ def _check_numbers(top: Rules, time: TimeRule | None, columns: tuple[ColumnRule,
 
 
 __all__ = ["COUNTED", "DELIMITERS", "TURN_BACK", "ColumnName", "ColumnRule", "FileLayout", "Mapping", "MappingError",
-           "TimeRule", "mapping_from_toml", "mapping_of", "rules_of"]
+           "TimeRule", "layout_of", "mapping_from_toml", "mapping_of", "rules_of"]

@@ -1,7 +1,7 @@
 import io
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from ingest.files.faults import FileFault
@@ -33,6 +33,11 @@ def test_a_logger_with_local_habits():
     assert seen.interval_s == 2.0
     rules = seen.rules | {"time": seen.rules["time"] | {"zone": "Europe/Berlin"}}
     assert mapping_of(rules, kind="two-port", unit="mW").layout.skip_lines == 3
+
+
+def test_a_line_that_is_no_reading_does_not_change_the_delimiter():
+    seen = proposed(LOGGER.replace("1,26;0,0013;21,4", "x;0,0013;21,4"))
+    assert seen.rules["file"]["delimiter"] == ";" and seen.rules["time"]["columns"] == ["Datum", "Zeit"]
 
 
 def test_a_zone_is_never_guessed():
@@ -80,6 +85,7 @@ def test_encodings():
     assert guess_encoding("°C;1".encode("cp1252")) == "cp1252"
 
 
+@settings(deadline=None)
 @given(st.binary(max_size=300) | st.text(alphabet="0123456789.,;:-/ \t\n\"ab#", max_size=200).map(str.encode))
 def test_any_start_of_a_file_gives_a_proposal(content):
     try:

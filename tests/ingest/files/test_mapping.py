@@ -2,7 +2,7 @@ import copy
 import json
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from ingest.files.mapping import ColumnRule, MappingError, mapping_from_toml, mapping_of, rules_of
@@ -120,6 +120,7 @@ values = st.recursive(st.none() | st.booleans() | st.integers() | st.floats() | 
                       max_leaves=6)
 
 
+@settings(deadline=None)
 @given(st.sampled_from(["file", "time", "columns"]), st.sampled_from(
     ["encoding", "delimiter", "decimal", "skip_lines", "header", "missing", "comment", "column", "columns", "format", "since",
      "zone", "at_turn_back", "port1", "port2", "unit"]), values)
@@ -136,6 +137,7 @@ def test_any_value_anywhere_gives_a_mapping_or_faults(table, key, value):
     assert faults and all(fault.key and fault.why and fault.do for fault in faults)
 
 
+@settings(deadline=None)
 @given(st.text(max_size=60))
 def test_any_text_gives_a_mapping_or_faults(text):
     assert faults_of(text)

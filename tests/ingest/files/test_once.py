@@ -3,7 +3,7 @@
 from collections import Counter
 
 import numpy as np
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from ingest.files.once import FileSoFar, Keys, judge_part, keys_of
@@ -29,18 +29,21 @@ def imported(held: list[tuple[int, int]], file: list[tuple[int, int]], part_size
     return held
 
 
+@settings(deadline=None, max_examples=60)
 @given(files, files, st.integers(1, 5))
 def test_the_larger_count_is_held(first, second, part_size):
     held = imported(imported([], first, part_size), second, part_size)
     assert Counter(held) == Counter(first) | Counter(second)          # Counter's | takes the larger count
 
 
+@settings(deadline=None, max_examples=60)
 @given(files, st.integers(1, 5), st.integers(1, 5))
 def test_again_changes_nothing(file, part_size, other_size):
     held = imported([], file, part_size)
     assert imported(held, file, other_size) == held
 
 
+@settings(deadline=None, max_examples=60)
 @given(files, st.integers(0, 12), st.integers(0, 12), st.integers(1, 5))
 def test_grown_and_rotated_files_add_only_what_is_new(file, grown_from, cut_to, part_size):
     held = imported(imported([], file[:grown_from], part_size), file, part_size)

@@ -3,7 +3,7 @@
 from datetime import UTC, datetime, timedelta
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from ingest.files.times import EARLIEST_US, LATEST_US, NO_TIME, TimeRule, times_of, zone_of
@@ -94,6 +94,7 @@ def test_offsets_are_zones():
     assert zone_of("Nowhere/City") is None and zone_of("../etc/passwd") is None and zone_of("+99:00") is None
 
 
+@settings(deadline=None)
 @given(st.lists(st.text(max_size=30), max_size=5), st.sampled_from(
     ["iso", "seconds since", "days since", "%d.%m.%Y %H:%M:%S", "%Y-%m-%d %H:%M:%S.%f%z"]))
 def test_any_text_is_a_time_or_has_a_reason(texts, codes):
@@ -103,6 +104,7 @@ def test_any_text_is_a_time_or_has_a_reason(texts, codes):
         assert at_us == NO_TIME or EARLIEST_US <= at_us < LATEST_US
 
 
+@settings(deadline=None)
 @given(st.timedeltas(timedelta(days=365), timedelta(days=80_000)))
 def test_times_agree_with_the_standard_library(since_epoch):
     moment, at_us = (EPOCH + since_epoch).replace(tzinfo=None), since_epoch // timedelta(microseconds=1)

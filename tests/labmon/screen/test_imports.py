@@ -19,10 +19,10 @@ pytestmark = pytest.mark.django_db
 FILE = ("Bench 3\n\nDay;Hour;P1 (uW);P2 (uW);Temp (°C)\n"
         "04.03.2031;12:00:00;1000,0;1,0;21,3\n04.03.2031;12:00:01;1000,0;10,0;21,3\n04.03.2031;12:00:02;x;1,0;21,4\n"
         "04.03.2031;12:00:03;1000,0;1,0;21,4\n")
-SAID = {"delimiter": "semicolon", "decimal": ",", "encoding": "utf-8", "skip_lines": "2", "header": "on", "skip_after_header": "0",
-        "comment": "", "missing": "", "time1": "1", "time2": "2", "format": "own", "codes": "%d.%m.%Y %H:%M:%S", "zone": "UTC",
-        "at_turn_back": "set aside", "port1-column": "3", "port1-unit": "uW", "port1-factor": "", "port2-column": "4",
-        "port2-unit": "uW", "port2-factor": "1", "act": "look"}
+SAID = {"delimiter": "semicolon", "decimal": ",", "encoding": "utf-8", "skip_lines": "2", "header": "on",
+        "skip_after_header": "0", "comment": "", "missing": "", "time1": "1", "time2": "2", "format": "own",
+        "codes": "%d.%m.%Y %H:%M:%S", "zone": "UTC", "at_turn_back": "set aside", "port1-column": "3", "port1-unit": "uW",
+        "port1-factor": "", "port2-column": "4", "port2-unit": "uW", "port2-factor": "1", "act": "look"}
 
 
 @pytest.fixture(autouse=True)

@@ -17,7 +17,7 @@ class TapState:
         upto_us: A whole second: every sample before it is folded. None before the first.
         flat: State of the frozen-value fold, as `FlatState.as_json` gives it for one tap.
         interval: Spacings of the recent samples.
-        untrusted: State of the untrusted-reading fold.
+        untrusted: State of the untrusted-reading fold, which never goes back; ``untrusted_upto_us`` where it stands.
         arrivals_us: Recent arrivals on the server's clock, oldest first.
         snapshots: Earlier (time, flat), oldest first, at rollup bounds: where rolling up starts without looking back.
     """
@@ -28,17 +28,19 @@ class TapState:
     untrusted: UntrustedState = field(default_factory=UntrustedState)
     arrivals_us: tuple[int, ...] = ()
     snapshots: tuple[tuple[int, Any], ...] = ()
+    untrusted_upto_us: int | None = None
 
     def as_json(self) -> dict[str, Any]:
         return {"upto_us": self.upto_us, "flat": self.flat, "interval": self.interval.as_json(), "untrusted": self.untrusted.as_json(),
-                "arrivals_us": list(self.arrivals_us), "snapshots": [list(one) for one in self.snapshots]}
+                "arrivals_us": list(self.arrivals_us), "snapshots": [list(one) for one in self.snapshots],
+                "untrusted_upto_us": self.untrusted_upto_us}
 
     @classmethod
     def from_json(cls, values: dict[str, Any] | None) -> "TapState":
         if not values:
             return cls()
         return cls(values["upto_us"], values["flat"], IntervalState.from_json(values["interval"]), UntrustedState.from_json(values["untrusted"]),
-                   tuple(values["arrivals_us"]), tuple((at_us, flat) for at_us, flat in values["snapshots"]))
+                   tuple(values["arrivals_us"]), tuple((at_us, flat) for at_us, flat in values["snapshots"]), values["untrusted_upto_us"])
 
     def with_snapshot(self, at_us: int, flat: Any) -> "TapState":
         """The same with one more snapshot, the oldest left out."""

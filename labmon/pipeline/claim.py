@@ -11,11 +11,14 @@ from django.db import connection
 JUDGING, ROLLING, BEAT = 0x6C61, 0x6C62, 0x6C63
 
 
-def claim_taps(kind: int, tap_ids: Iterable[int]) -> list[int]:
-    """Those of ``tap_ids`` that nobody else holds, locked until the transaction ends; sorted."""
+def claim_taps(kind: int, tap_ids: Iterable[int], most: int) -> list[int]:
+    """At most ``most`` of ``tap_ids``, first come first, that nobody else holds: locked until the transaction ends; sorted.
+
+    Taking never waits, so the order in which they are taken cannot lock two workers against each other.
+    """
     with connection.cursor() as cursor:
-        cursor.execute("SELECT id FROM unnest(%s::bigint[]) AS t(id) WHERE pg_try_advisory_xact_lock(%s, (id %% 2147483647)::int)",
-                       [sorted(tap_ids), kind])
+        cursor.execute("SELECT id FROM unnest(%s::bigint[]) AS t(id) WHERE pg_try_advisory_xact_lock(%s, (id %% 2147483647)::int) LIMIT %s",
+                       [list(tap_ids), kind, most])
         return sorted(row[0] for row in cursor.fetchall())
 
 

@@ -1,0 +1,52 @@
+"""The untrusted-reading alarm: one a tap, on the server's clock; an untrusted reading never raises anything else."""
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+from ingest.models import Tap
+from ingest.times import at_of
+from labmon.alarms.calls import RAISED, call_people
+from labmon.alarms.models import Alarm, AlarmKind, AlarmLevel
+from labmon.alarms.states import state_of
+from labmon.alarms.words import untrusted_sentence
+
+
+@dataclass(frozen=True, slots=True)
+class UntrustedFinding:
+    """Where a watched tap's untrusted fold stands, and why its newest sample is not trusted (in words)."""
+
+    tap: Tap
+    experiment_id: int | None
+    is_open: bool
+    is_current: bool
+    reasons: list[str]
+
+
+def settle_untrusted(findings: Iterable[UntrustedFinding], now_us: int) -> list[int]:
+    """Raise and return alarms as the findings say; returns the ids of those that changed."""
+    wanted = {finding.tap.pk: finding for finding in findings}
+    if not wanted:
+        return []
+    open_alarms = {alarm.tap_id: alarm for alarm in Alarm.objects.select_for_update(of=("self",)).filter(
+        tap_id__in=wanted, kind=AlarmKind.UNTRUSTED, returned_at=None, is_withdrawn=False).order_by("pk")}
+    now = at_of(now_us)
+    raised = [_new_alarm(one, now) for one in wanted.values() if one.is_open and one.is_current and one.tap.pk not in open_alarms]
+    returned = [alarm for tap_id, alarm in open_alarms.items() if not wanted[tap_id].is_open]
+    for alarm in returned:
+        alarm.returned_at, alarm.changed = now, alarm.changed + 1
+        alarm.state = state_of(alarm)
+    if returned:
+        Alarm.objects.bulk_update(returned, ["returned_at", "state", "changed"])
+    if raised:
+        Alarm.objects.bulk_create(raised)
+        call_people([(alarm, RAISED) for alarm in raised], {pk: _name(one.tap) for pk, one in wanted.items()})
+    return [alarm.pk for alarm in (*raised, *returned)]
+
+
+def _new_alarm(finding: UntrustedFinding, now) -> Alarm:  # type: ignore[no-untyped-def]
+    return Alarm(kind=AlarmKind.UNTRUSTED, experiment_id=finding.experiment_id, tap=finding.tap, level=AlarmLevel.ALARM, raised_at=now,
+                 cause="; ".join(finding.reasons)[:100], message=untrusted_sentence(_name(finding.tap), finding.reasons))
+
+
+def _name(tap: Tap) -> str:
+    return f"{tap.station.name}/{tap.name}"

@@ -10,6 +10,7 @@ from django.core.files.uploadedfile import SimpleUploadedFile
 from ingest.models import FileImport, TapKind, Unit
 from ingest.store.read import read_readings
 from labmon.audit.models import AuditEntry
+from labmon.celery import app
 from labmon.people.models import Role
 from labmon.pipeline.imports import import_upload, take_up_left_imports_task
 from tests.factories import make_person, make_station, make_tap
@@ -129,6 +130,11 @@ def test_an_import_that_no_task_finished_is_taken_up(page, monkeypatch):
     FileImport.objects.update(started_at="2020-01-01T00:00Z")
     take_up_left_imports_task()
     assert taken == [FileImport.objects.get().pk]
+
+
+def test_the_worker_knows_the_tasks():
+    app.loader.import_default_modules()
+    assert {"labmon.pipeline.import_upload", "labmon.pipeline.take_up_left_imports"} <= set(app.tasks)
 
 
 def test_an_upload_nobody_reads_in_is_let_go(page):

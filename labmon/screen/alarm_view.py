@@ -5,7 +5,8 @@ from dataclasses import dataclass
 from datetime import datetime
 
 from labmon.alarms.queries import AlarmRow
-from labmon.screen.present import age_text, angle_text, count_text, dop_text, er_text, power_text, time_text
+from labmon.screen.level_words import both_units
+from labmon.screen.present import age_text, count_text, time_text
 
 STATE_WORDS = {
     "unacknowledged": "unacknowledged",
@@ -16,7 +17,6 @@ STATE_WORDS = {
     "suppressed": "suppressed",
     "out-of-service": "out of service",
 }
-_TEXTS = {"er_db": er_text, "angle_deg": angle_text, "dop": dop_text, "power_w": power_text}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -89,10 +89,9 @@ def alarm_title(row: AlarmRow) -> str:
         return f"{row.tap}: no reading"
     if row.kind == "untrusted":
         return f"{row.tap}: readings untrusted" + (f", {row.cause}" if row.cause else "")
-    text = _TEXTS.get(row.quantity, lambda value: str(value))
     crossed = "above" if row.quantity == "angle_deg" else "below"
     level = "limit" if row.level == "alarm" else "warning level"
-    return f"{row.tap}: worst {text(row.value)}, {crossed} its {level} {text(row.limit)}"
+    return f"{row.tap}: worst {both_units(row.quantity, row.value)}, {crossed} its {level} {both_units(row.quantity, row.limit)}"
 
 
 def alarms_sentence(views: Sequence[AlarmView], *, is_filtered: bool) -> str:

@@ -7,7 +7,7 @@ from labmon.experiments.queries import ExperimentRow, LimitFacts
 from labmon.screen.alarm_view import AlarmView
 from labmon.screen.level_words import NAMES, both_units, level_words
 from labmon.screen.present import age_text, count_text, number_text, time_text
-from labmon.screen.quantity import angle_of_er, er_of_angle
+from labmon.screen.quantity import angle_of_er
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -46,10 +46,8 @@ def limit_view(limit: LimitFacts) -> LimitView:
         station=limit.tap_name.split("/")[0],
         name=NAMES[limit.quantity],
         words=level_words(limit),
-        alarm=both_units(limit.quantity, limit.alarm, limit.alarm_in_degrees, limit.alarm_in_db),
-        warning="none"
-        if limit.warning is None
-        else both_units(limit.quantity, limit.warning, limit.warning_in_degrees, limit.warning_in_db),
+        alarm=both_units(limit.quantity, limit.alarm),
+        warning="none" if limit.warning is None else both_units(limit.quantity, limit.warning),
         delays=f"on {age_text(limit.on_delay_s)}, off {age_text(limit.off_delay_s)}, deadband {number_text(limit.deadband, 2)}",
         is_retired=bool(limit.versions and limit.versions[0].is_retired),
         versions=[_version_view(limit.quantity, version) for version in limit.versions],
@@ -57,9 +55,9 @@ def limit_view(limit: LimitFacts) -> LimitView:
 
 
 def _version_view(quantity: str, version) -> VersionView:
-    levels = _both(quantity, version.alarm)
+    levels = both_units(quantity, version.alarm)
     if version.warning is not None:
-        levels += f", warning {_both(quantity, version.warning)}"
+        levels += f", warning {both_units(quantity, version.warning)}"
     return VersionView(
         number=version.number,
         since=time_text(version.valid_from),
@@ -68,12 +66,6 @@ def _version_view(quantity: str, version) -> VersionView:
         set_by=_name(version.set_by),
         is_retired=version.is_retired,
     )
-
-
-def _both(quantity: str, level: float) -> str:
-    in_degrees = angle_of_er(level) if quantity == "er_db" else None
-    in_db = er_of_angle(level) if quantity == "angle_deg" and 0 < level < 180 else None
-    return both_units(quantity, level, in_degrees, in_db)
 
 
 def _name(person: object) -> str:

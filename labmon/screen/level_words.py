@@ -1,7 +1,8 @@
 """A limit in one line, degrees and dB side by side. Pure."""
 
 from labmon.experiments.queries import LimitFacts
-from labmon.screen.present import age_text, number_text, power_text
+from labmon.screen.present import MISSING, age_text, angle_text, dop_text, er_text, power_text
+from labmon.screen.quantity import level_in_db, level_in_degrees
 
 NAMES = {
     "er_db": "extinction ratio at least",
@@ -13,16 +14,20 @@ NAMES = {
 
 def level_words(limit: LimitFacts) -> str:
     """E.g. ``extinction ratio at least 20.0 dB (11.4°), warning at 23.0 dB (8.1°), after 1 min``."""
-    said = f"{NAMES[limit.quantity]} {both_units(limit.quantity, limit.alarm, limit.alarm_in_degrees, limit.alarm_in_db)}"
+    said = f"{NAMES[limit.quantity]} {both_units(limit.quantity, limit.alarm)}"
     if limit.warning is not None:
-        said += f", warning at {both_units(limit.quantity, limit.warning, limit.warning_in_degrees, limit.warning_in_db)}"
+        said += f", warning at {both_units(limit.quantity, limit.warning)}"
     return f"{said}, after {age_text(limit.on_delay_s)}"
 
 
-def both_units(quantity: str, level: float, in_degrees: float | None, in_db: float | None) -> str:
-    """A level in its own unit with the other beside it."""
+def both_units(quantity: str, value: float | None) -> str:
+    """A value in its own unit; extinction ratios with their angle beside them, angles with their ratio."""
     if quantity == "er_db":
-        return f"{number_text(level, 1, 'dB')} ({number_text(in_degrees, 1, '°')})"
+        return er_text(value) + _beside(angle_text(level_in_degrees(quantity, value)))
     if quantity == "angle_deg":
-        return f"{number_text(level, 1, '°')} ({number_text(in_db, 1, 'dB')})"
-    return power_text(level) if quantity == "power_w" else number_text(level, 3)
+        return angle_text(value) + _beside(er_text(level_in_db(quantity, value)))
+    return power_text(value) if quantity == "power_w" else dop_text(value)
+
+
+def _beside(text: str) -> str:
+    return "" if text == MISSING else f" ({text})"

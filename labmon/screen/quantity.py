@@ -57,3 +57,13 @@ def converted_level(quantity: str, level: float, shown: str) -> float | None:
     if (quantity, shown) == ("angle_deg", "er_db"):
         return er_of_angle(level) if 0 < level < 180 else None
     return None
+
+
+def level_in_degrees(quantity: str, level: float | None) -> float | None:
+    """An ER as its angle; None for other quantities."""
+    return angle_of_er(level) if quantity == "er_db" and level is not None else None
+
+
+def level_in_db(quantity: str, level: float | None) -> float | None:
+    """An angle as its ER; None for other quantities and outside 0° to 180°."""
+    return er_of_angle(level) if quantity == "angle_deg" and level is not None and 0 < level < 180 else None

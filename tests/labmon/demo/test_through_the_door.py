@@ -26,7 +26,8 @@ pytestmark = pytest.mark.django_db(transaction=True)
 @pytest.fixture
 def address():
     port = free_port()
-    server = uvicorn.Server(uvicorn.Config(DoorApplication(), host="127.0.0.1", port=port, log_config=None, ws="none", lifespan="on"))
+    config = uvicorn.Config(DoorApplication(), host="127.0.0.1", port=port, log_config=None, ws="none", lifespan="on")
+    server = uvicorn.Server(config)
     thread = threading.Thread(target=server.run)
     thread.start()
     while not server.started:

@@ -32,11 +32,11 @@ class Life:
 
     @property
     def clock_fault(self) -> str:
-        """In words; empty when the clock is good."""
+        """In the door's words; empty when the clock is good."""
         if self.unset_s:
-            return "clock unset at boot: its first stamps lie before 2020"
+            return "The clock was not set: a reading is stamped 1970-01-01T00:00:01.000000Z."
         if self.clock_ahead_s:
-            return f"clock {self.clock_ahead_s / 60.0:.0f} min ahead"
+            return f"The clock is {self.clock_ahead_s / 60.0:.0f} min ahead of the server's."
         return ""
 
 

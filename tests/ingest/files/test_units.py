@@ -1,8 +1,7 @@
 import numpy as np
 import pytest
 
-from ingest.files.columns import COLUMNS, NEEDED, needed_words
-from ingest.files.units import QUANTITY_OF, conversion, is_difference, units_for
+from ingest.files.units import conversion, is_difference, units_for
 
 
 @pytest.mark.parametrize(("column", "unit", "tap_unit", "theirs", "ours"), [
@@ -34,17 +33,3 @@ def test_volts_counts_and_dbm_are_taken_as_they_are(tap_unit):
     assert units_for("port1", tap_unit) == [tap_unit]
     with pytest.raises(KeyError):
         conversion("port1", "mW", tap_unit)
-
-
-def test_every_column_has_a_quantity_and_every_need_is_a_column():
-    for kind, columns in COLUMNS.items():
-        assert set(columns) <= QUANTITY_OF.keys()
-        assert all(group <= set(columns) for group in NEEDED[kind])
-    assert needed_words("two-port") == "port1 and port2"
-    assert needed_words("climate") == "temperature_c, or humidity_pct, or pressure_hpa"
-
-
-def test_kinds_are_those_of_the_taps():
-    from ingest.models import TapKind
-
-    assert set(COLUMNS) == set(NEEDED) == set(TapKind.values)

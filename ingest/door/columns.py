@@ -44,10 +44,12 @@ def _is_far(integers: IntArray) -> bool:
 
 def integers_of(column: Any, name: str, count: int, absent: int, greatest: int, faults: Faults) -> IntArray:
     """A stamp column (sequence, uptime_ms): whole numbers from 0, ``absent`` where null; shape (count,)."""
+    plain = _plain_integers(column, name, greatest)
+    if plain is not None:
+        return plain
     do = f"send whole numbers from 0 in {name}, or null"
-    values = words_of(column, name, "").tolist() if is_binary(column) else column
     made = np.full(count, absent, np.int64)
-    for row, value in enumerate(values):
+    for row, value in enumerate(words_of(column, name, "").tolist() if is_binary(column) else column):
         if value is None:
             continue
         if not _is_number(value) or (name == "sequence" and value != int(value)):
@@ -59,11 +61,29 @@ def integers_of(column: Any, name: str, count: int, absent: int, greatest: int, 
     return made
 
 
+def _plain_integers(column: Any, name: str, greatest: int) -> IntArray | None:
+    """The column at once where all its values are whole numbers in range."""
+    if is_binary(column):
+        numbers = words_of(column, name, "")
+    elif column and set(map(type, column)) == {int}:
+        try:
+            numbers = np.array(column, np.int64)
+        except OverflowError:
+            return None
+    else:
+        return None
+    return numbers if numbers.dtype == np.int64 and len(numbers) and 0 <= numbers.min() and numbers.max() <= greatest else None
+
+
 def stamps_of(column: Any, count: int, faults: Faults) -> IntArray:
     """The column ``at``: text, whole microseconds or null; NO_TIME where null or at fault; shape (count,)."""
     made = np.full(count, NO_TIME, np.int64)
     if column is None:
         return made
+    if is_binary(column):
+        words = words_of(column, "at", "")
+        if words.dtype == np.int64 and len(words) and words.min() >= YEAR_1_US and words.max() < YEAR_10000_US:
+            return words
     for row, value in enumerate(words_of(column, "at", "").tolist() if is_binary(column) else column):
         if value is None:
             continue

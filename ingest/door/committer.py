@@ -16,10 +16,11 @@ import psycopg
 
 from ingest.announce import announce
 from ingest.database import connect
-from ingest.door.commit import Answer, Ids, StaleIds, Transaction, note_refused
+from ingest.door.commit import Answer, Ids, StaleIds, Transaction
 from ingest.door.payload import Body
 from ingest.door.presence import Presence
 from ingest.door.refusal import Refusal, bad_form, come_again
+from ingest.door.rows import note_refused
 from ingest.times import now_us
 
 log = logging.getLogger(__name__)

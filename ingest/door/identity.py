@@ -4,6 +4,7 @@ Identity is (tap, boot, sequence); without boot or sequence it is (tap, at). Whe
 either, a reading is known if the same values stand near the same moment. The first reading of an identity stays.
 """
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
@@ -11,7 +12,7 @@ import numpy as np
 import psycopg
 
 from ingest.door.payload import Part
-from ingest.store.columns import NO_SEQUENCE, NO_TIME, BoolArray, FloatArray, IntArray, ObjectArray, Readings, concatenate
+from ingest.store.columns import NO_SEQUENCE, NO_TIME, BoolArray, IntArray, Readings, concatenate
 from ingest.store.find import are_same, numbered_readings, readings_near
 
 SERVER_TIMED_TOLERANCE_US = 60_000_000
@@ -34,15 +35,18 @@ class Lot:
     is_server_timed: bool
     is_numbered: bool
 
-    def column_values(self, places: IntArray) -> FloatArray:
-        """Values with the uptime beside them, shape (columns + 1, N), as ``stored_names`` names them."""
-        uptime_ms = self.part.uptime_ms[places].astype(np.float64)
-        uptime_ms[uptime_ms < 0] = np.nan
-        return np.vstack([self.part.values[:, places], uptime_ms])
-
-    def unknown(self, places: IntArray) -> ObjectArray | None:
-        """Unknown columns of the readings as text."""
-        return None if self.part.unknown is None else self.part.unknown[places]
+    def as_readings(self, chosen: IntArray, boot_id: int = 0) -> Readings:
+        """The chosen ones in the form of stored readings; the uptime is kept as it came, arrival and sending are not set."""
+        places = self.places[chosen]
+        columns = {name: values[places] for name, values in zip(self.part.names, self.part.values, strict=True)}
+        if self.part.uptime_ms is not None:
+            uptime_ms = self.part.uptime_ms[places].astype(np.float64)
+            uptime_ms[uptime_ms < 0] = np.nan
+            columns["uptime_ms"] = uptime_ms
+        zeros = np.zeros(len(places), np.int64)
+        unknown = None if self.part.unknown is None else self.part.unknown[places]
+        return Readings(self.at_us[chosen], columns, np.full(len(places), boot_id, np.int64), self.part.sequence[places],
+                        self.part.own_at_us[places], zeros, zeros, np.zeros(len(places), np.bool_), unknown)
 
 
 @dataclass(slots=True)
@@ -54,13 +58,8 @@ class Verdict:
     faulty: dict[int, Fault]
 
 
-def stored_names(part: Part) -> tuple[str, ...]:
-    """Names of a part's stored columns: the uptime is kept as it came."""
-    return (*part.names, "uptime_ms")
-
-
 def judge_numbered(db: psycopg.Connection[Any], lot: Lot, tap_boot: int, held: list[tuple[int, int]],
-                   pending: list[Readings]) -> Verdict:
+                   pending: list[Callable[[], Readings]]) -> Verdict:
     """Readings with boot and sequence.
 
     Args:
@@ -84,13 +83,14 @@ def judge_numbered(db: psycopg.Connection[Any], lot: Lot, tap_boot: int, held: l
     known = _known_twins(lot, order[~is_first & ~is_held], sequence, new, faulty)
     asked = order[is_held]
     if len(asked):
-        stored = concatenate([numbered_readings(db, lot.part.tap.id, tap_boot, sequence[asked]), *pending])
+        stored = concatenate([numbered_readings(db, lot.part.tap.id, tap_boot, sequence[asked]),
+                              *(make() for make in pending)])
         known += _compare(lot, asked, _index_of(stored.sequence, sequence[asked]), stored, faulty, OTHER_VALUES, WAS_ASIDE)
     return Verdict(new, known, faulty)
 
 
 def judge_by_time(db: psycopg.Connection[Any], lot: Lot, last_at_us: int | None, bootless: set[int],
-                  pending: list[Readings]) -> Verdict:
+                  pending: list[Callable[[], Readings]]) -> Verdict:
     """Readings known by their time only.
 
     Args:
@@ -109,15 +109,14 @@ def judge_by_time(db: psycopg.Connection[Any], lot: Lot, last_at_us: int | None,
     faulty: dict[int, Fault] = {}
     known = 0
     for place in twins:
-        if bool(_equal(lot, np.array([place]), _as_readings(lot, np.array([seen[keys[place]]])))[0]):  # type: ignore[index]
+        if bool(_equal(lot, np.array([place]), lot.as_readings(np.array([seen[keys[place]]])))[0]):  # type: ignore[index]
             known += 1
         else:
             faulty[place] = OTHER_AT
     tolerance_us = SERVER_TIMED_TOLERANCE_US if lot.is_server_timed else 0
-    waits = [each for each in pending if len(each)]
-    if not waits and (last_at_us is None or int(lot.at_us.min()) - tolerance_us > last_at_us):
+    if not pending and (last_at_us is None or int(lot.at_us.min()) - tolerance_us > last_at_us):
         return Verdict(np.array(firsts, np.int64), known, faulty)
-    stored = concatenate([readings_near(db, lot.part.tap.id, lot.at_us, tolerance_us), *waits])
+    stored = concatenate([readings_near(db, lot.part.tap.id, lot.at_us, tolerance_us), *(make() for make in pending)])
     by_time = (stored.sequence == NO_SEQUENCE) | np.isin(stored.boot_id, list(bootless))
     stored = stored.pick(by_time)
     found = {key: place for place, key in reversed(list(enumerate(_stored_keys(stored))))}
@@ -136,7 +135,7 @@ def judge_by_time(db: psycopg.Connection[Any], lot: Lot, last_at_us: int | None,
 def _time_keys(lot: Lot) -> list[tuple[int, int, int] | None]:
     """(own stamp, uptime where there is no stamp, sequence); None where there is nothing to know a reading by."""
     own = lot.part.own_at_us[lot.places].tolist()
-    uptime = lot.part.uptime_ms[lot.places].tolist()
+    uptime = lot.part.uptimes()[lot.places].tolist()
     sequence = lot.part.sequence[lot.places].tolist()
     return [(at, -1, number) if at != NO_TIME else ((NO_TIME, up, number) if up >= 0 or number >= 0 else None)
             for at, up, number in zip(own, uptime, sequence, strict=True)]
@@ -153,7 +152,7 @@ def _known_twins(lot: Lot, twins: IntArray, sequence: IntArray, new: IntArray, f
     if not len(twins):
         return 0
     firsts = new[_index_of(sequence[new], sequence[twins])]
-    same = _equal(lot, twins, _as_readings(lot, firsts))
+    same = _equal(lot, twins, lot.as_readings(firsts))
     faulty |= dict.fromkeys(twins[~same].tolist(), OTHER_VALUES)
     return int(same.sum())
 
@@ -172,20 +171,7 @@ def _compare(lot: Lot, asked: IntArray, index: IntArray, stored: Readings, fault
 
 def _equal(lot: Lot, places: IntArray, stored: Readings) -> BoolArray:
     """Where the lot's readings equal the stored ones, stamps included."""
-    own = lot.places[places]
-    same = are_same(stored_names(lot.part), lot.column_values(own), lot.unknown(own), stored)
-    same &= lot.part.own_at_us[own] == stored.own_at_us
-    return same
-
-
-def _as_readings(lot: Lot, places: IntArray) -> Readings:
-    """Readings of the lot in the form of stored ones, for comparing."""
-    own = lot.places[places]
-    values = lot.column_values(own)
-    zeros = np.zeros(len(own), np.int64)
-    return Readings(lot.at_us[places], dict(zip(stored_names(lot.part), values, strict=True)), zeros,
-                    lot.part.sequence[own], lot.part.own_at_us[own], zeros, zeros, np.zeros(len(own), np.bool_),
-                    lot.unknown(own))
+    return are_same(lot.as_readings(places), stored)
 
 
 def _index_of(have: IntArray, wanted: IntArray) -> IntArray:

@@ -54,18 +54,29 @@ class Part:
     """The columns as they came."""
     count: int
     """Readings sent."""
-    rows: IntArray
-    """Places of the usable ones in the columns, shape (N,)."""
+    rows: IntArray | None
+    """Places of the usable ones in the columns, shape (N,); None where all are usable."""
     names: tuple[str, ...]
     values: FloatArray
     """Shape (columns, N)."""
     sequence: IntArray
+    steps_from: int | None
+    """First number, where the usable ones are numbered without a hole and in order."""
     own_at_us: IntArray
-    uptime_ms: IntArray
+    uptime_ms: IntArray | None
+    """None where no reading has one."""
     unknown: ObjectArray | None
     unknown_names: tuple[str, ...]
     aside: list[Aside]
     aside_sequences: list[int]
+
+    def __len__(self) -> int:
+        """Usable readings."""
+        return len(self.own_at_us)
+
+    def uptimes(self) -> IntArray:
+        """Uptimes as sent, NO_UPTIME where none, shape (N,)."""
+        return np.full(len(self), NO_UPTIME, np.int64) if self.uptime_ms is None else self.uptime_ms
 
 
 @dataclass(slots=True)
@@ -78,7 +89,6 @@ class Body:
     sending: Sending
     parts: list[Part]
     own_at_us: IntArray
-    uptime_ms: IntArray
     """Stamps of the usable readings of all parts, one after the other."""
     count: int
     """Readings sent."""
@@ -99,7 +109,8 @@ class _Draft:
     count: int
     values: FloatArray
     sequence: IntArray
-    uptime_ms: IntArray
+    steps_from: int | None
+    uptime_ms: IntArray | None
     own_at_us: IntArray | None
     faults: Faults = field(default_factory=dict)
 
@@ -136,9 +147,8 @@ def check_body(found: Mapping[str, Any], station: KnownStation, arrival_us: int,
     _give_stamps(drafts, texts)
     parts = [_part(draft, boot, now_uptime_ms) for draft in drafts]
     own_at_us = np.concatenate([part.own_at_us for part in parts]) if parts else np.empty(0, np.int64)
-    uptime_ms = np.concatenate([part.uptime_ms for part in parts]) if parts else np.empty(0, np.int64)
     sending = Sending(arrival_us, now_at_us, now_uptime_ms, bool(boot), _oldest(own_at_us))
-    return Body(station, boot, firmware, sending, parts, own_at_us, uptime_ms, total, remote_address)
+    return Body(station, boot, firmware, sending, parts, own_at_us, total, remote_address)
 
 
 def _oldest(own_at_us: IntArray) -> int | None:
@@ -214,8 +224,10 @@ def _draft(tap: KnownTap, sent: Any, texts: list[str]) -> _Draft:
                        "Send the raw value of each reading in columns of equal length.", place)
     _check_unknown(plan, place)
     faults: Faults = {}
-    sequence = _integers(sent, "sequence", count, NO_SEQUENCE, _GREATEST_SEQUENCE, faults)
-    uptime_ms = _integers(sent, "uptime_ms", count, NO_UPTIME, LONGEST_UPTIME_MS, faults)
+    sequence, steps_from = _sequence(sent.get("sequence"), count, faults)
+    uptime_ms = None
+    if sent.get("uptime_ms") is not None:
+        uptime_ms = integers_of(sent["uptime_ms"], "uptime_ms", count, NO_UPTIME, LONGEST_UPTIME_MS, faults)
     column = sent.get("at")
     own_at_us: IntArray | None = None
     if type(column) is list and count and set(map(type, column)) == {str}:
@@ -225,7 +237,7 @@ def _draft(tap: KnownTap, sent: Any, texts: list[str]) -> _Draft:
     values = _plain_values(sent, plan, count)
     if values is None:
         values = numbers_of(sent, plan, count, tap.kind, tap.unit, faults)
-    return _Draft(tap, sent, plan, count, values, sequence, uptime_ms, own_at_us, faults)
+    return _Draft(tap, sent, plan, count, values, sequence, steps_from, uptime_ms, own_at_us, faults)
 
 
 def _common_length(tap: str, sent: Mapping[str, Any]) -> int:
@@ -260,21 +272,18 @@ def _check_unknown(plan: Plan, place: str) -> None:
             raise bad_form("a column's name is empty, too long or not printable", "Use at most 100 printable letters.", place)
 
 
-def _integers(sent: Mapping[str, Any], name: str, count: int, absent: int, greatest: int, faults: Faults) -> IntArray:
-    column = sent.get(name)
-    if column is None:
-        return np.full(count, absent, np.int64)
-    if type(column) is list and count and set(map(type, column)) == {int}:
+def _sequence(column: Any, count: int, faults: Faults) -> tuple[IntArray, int | None]:
+    """Numbers of the readings, NO_SEQUENCE where none, and the first where they count up one by one."""
+    if column is None or not count:
+        return np.full(count, NO_SEQUENCE, np.int64), None
+    if type(column) is list and type(column[0]) is int and set(map(type, column)) == {int}:
         first = column[0]
-        if 0 <= first <= greatest - count and column == list(range(first, first + count)):
-            return np.arange(first, first + count)
-        try:
-            numbers = np.array(column, np.int64)
-        except OverflowError:
-            return integers_of(column, name, count, absent, greatest, faults)
-        if numbers.min() >= 0 and numbers.max() <= greatest:
-            return numbers
-    return integers_of(column, name, count, absent, greatest, faults)
+        if 0 <= first <= _GREATEST_SEQUENCE - count and column == list(range(first, first + count)):
+            return np.arange(first, first + count), first
+    numbers = integers_of(column, "sequence", count, NO_SEQUENCE, _GREATEST_SEQUENCE, faults)
+    first, last = int(numbers[0]), int(numbers[-1])
+    is_even = not faults and first >= 0 and last - first == count - 1 and bool((numbers[1:] > numbers[:-1]).all())
+    return numbers, first if is_even else None
 
 
 def _plain_values(sent: Mapping[str, Any], plan: Plan, count: int) -> FloatArray | None:
@@ -296,6 +305,8 @@ def _plain_values(sent: Mapping[str, Any], plan: Plan, count: int) -> FloatArray
             values = np.frombuffer(array("d", flat), np.float64).reshape(len(columns), count)
         except OverflowError:
             return None
+    if plan.low_for_all <= values.min() and values.max() <= plan.high_for_all:
+        return values
     return values if bool(((values >= plan.low) & (values <= plan.high)).all()) else None
 
 
@@ -313,18 +324,18 @@ def _give_stamps(drafts: list[_Draft], texts: list[str]) -> None:
 
 def _part(draft: _Draft, boot: str, now_uptime_ms: int | None) -> Part:
     """Usable and unusable readings apart."""
-    tap, faults = draft.tap, draft.faults
-    rows = np.arange(draft.count, dtype=np.int64)
+    faults = draft.faults
     assert draft.own_at_us is not None
-    part = Part(tap, draft.sent, draft.count, rows, draft.plan.values, draft.values, draft.sequence, draft.own_at_us,
-                draft.uptime_ms, None, draft.plan.unknown, [], [])
+    part = Part(draft.tap, draft.sent, draft.count, None, draft.plan.values, draft.values, draft.sequence, draft.steps_from,
+                draft.own_at_us, draft.uptime_ms, None, draft.plan.unknown, [], [])
     if faults:
         part.aside = [aside_of(part, row, boot, faults[row]) for row in sorted(faults)]
         part.aside_sequences = [aside.sequence for aside in part.aside if aside.sequence is not None]
         good = np.ones(draft.count, np.bool_)
         good[list(faults)] = False
-        part.rows, part.values = rows[good], np.ascontiguousarray(draft.values[:, good])
-        part.sequence, part.own_at_us, part.uptime_ms = draft.sequence[good], draft.own_at_us[good], draft.uptime_ms[good]
+        part.rows, part.values = np.flatnonzero(good), np.ascontiguousarray(draft.values[:, good])
+        part.sequence, part.own_at_us, part.steps_from = draft.sequence[good], draft.own_at_us[good], None
+        part.uptime_ms = None if draft.uptime_ms is None else draft.uptime_ms[good]
     _check_times(part, now_uptime_ms)
     if draft.plan.unknown:
         part.unknown = _unknown(part)
@@ -333,13 +344,13 @@ def _part(draft: _Draft, boot: str, now_uptime_ms: int | None) -> Part:
 
 def _check_times(part: Part, now_uptime_ms: int | None) -> None:
     """Enough is known to place each reading."""
-    if not len(part.rows) or (part.own_at_us != NO_TIME).all():
+    if not len(part) or int(part.own_at_us.min()) != NO_TIME:
         return
-    has_none = part.own_at_us == NO_TIME
-    if now_uptime_ms is None and bool((has_none & (part.uptime_ms != NO_UPTIME)).any()):
+    has_none, uptime_ms = part.own_at_us == NO_TIME, part.uptimes()
+    if now_uptime_ms is None and bool((has_none & (uptime_ms != NO_UPTIME)).any()):
         raise bad_form(f"tap {part.tap.name!r} has readings without at, and now.uptime_ms is missing",
                        "Send now.uptime_ms with every attempt, or at with every reading.", "now.uptime_ms")
-    nameless = has_none & (part.uptime_ms == NO_UPTIME) & (part.sequence == NO_SEQUENCE)
+    nameless = has_none & (uptime_ms == NO_UPTIME) & (part.sequence == NO_SEQUENCE)
     if int(nameless.sum()) > 1:
         raise bad_form(f"tap {part.tap.name!r} has several readings without at, uptime_ms and sequence",
                        "Give each reading at, uptime_ms or sequence, or send one reading at a time.", f"taps.{part.tap.name}.at")
@@ -347,8 +358,8 @@ def _check_times(part: Part, now_uptime_ms: int | None) -> None:
 
 def _unknown(part: Part) -> ObjectArray:
     """Columns nobody knows, as one JSON map of text per usable reading."""
-    made = np.empty(len(part.rows), object)
-    for number, row in enumerate(part.rows.tolist()):
+    made = np.empty(len(part), object)
+    for number, row in enumerate(range(part.count) if part.rows is None else part.rows.tolist()):
         values = {name: _element(part.sent[name], row, name, part.tap.unit) for name in part.unknown_names}
         made[number] = reading_json(values).decode()
     return made

@@ -38,6 +38,9 @@ class Plan:
     low: npt.NDArray[np.float64]
     high: npt.NDArray[np.float64]
     """Possible range of each, shape (columns, 1)."""
+    low_for_all: float
+    high_for_all: float
+    """Values within these are possible in every column."""
     has_whole: bool
     """One of the columns may come as whole numbers."""
     unknown: tuple[str, ...]
@@ -54,6 +57,7 @@ def plan_for(kind: str, unit: str, names: tuple[str, ...]) -> Plan:
     ranges = [possible_range(name, unit) for name in values]
     low, high = (np.array([limits[end] for limits in ranges]).reshape(-1, 1) for end in (0, 1))
     return Plan(values, tuple(name in needed for name in values), low, high,
+                float(low.max(initial=-np.inf)), float(high.min(initial=np.inf)),
                 unit == "count" or bool({"averaged", "clipped"} & set(values)),
                 tuple(name for name in names if name not in known and name not in STAMPS), missing)
 

@@ -7,6 +7,7 @@ exactly what went in, and say so if they cannot.
 import struct
 import zlib
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
 
 import msgspec
@@ -69,8 +70,20 @@ def pack_batch(batch: Batch) -> bytes:
     if batch.unknown is not None:
         inside |= HAS_UNKNOWN
         parts.append(msgspec.msgpack.encode(batch.unknown.tolist()))
-    names = _SEPARATOR.join(batch.names).encode()
+    names = _joined_names(batch.names)
     return b"".join((_BATCH.pack(b"i1", len(names), count, first, batch.sent_us, len(batch.names), inside), names, *parts))
+
+
+def pack_even_batch(at_us: Array, names: tuple[str, ...], values: Array, first_sequence: int, sent_us: int) -> bytes:
+    """The body of the usual batch: numbered without a hole, placed by the station's own stamps."""
+    joined = _joined_names(names)
+    head = _BATCH.pack(b"i1", len(joined), len(at_us), first_sequence, sent_us, len(names), SEQUENCE_STEPS | OWN_SAME)
+    return b"".join((head, joined, at_us.tobytes(), values.tobytes()))
+
+
+@lru_cache(maxsize=4096)
+def _joined_names(names: tuple[str, ...]) -> bytes:
+    return _SEPARATOR.join(names).encode()
 
 
 def unpack_batch(body: bytes, crc: int) -> Batch:

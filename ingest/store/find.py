@@ -1,6 +1,5 @@
 """Finds stored readings by their identity, in bounded time."""
 
-from collections.abc import Sequence
 from typing import Any, LiteralString
 
 import numpy as np
@@ -9,7 +8,7 @@ import psycopg
 from ingest.database import fetch
 from ingest.store.arrays import DamagedBody
 from ingest.store.codec import unpack_block
-from ingest.store.columns import FloatArray, IntArray, ObjectArray, Readings, concatenate
+from ingest.store.columns import BoolArray, IntArray, Readings, concatenate
 from ingest.store.read import DamagedStore, read_spans, readings_of_rows
 
 _NEAR_NUMBERS = 5_000
@@ -49,21 +48,16 @@ def readings_near(db: psycopg.Connection[Any], tap_id: int, at_us: IntArray, tol
     return concatenate(read_spans(db, [(tap_id, low - tolerance_us, high + tolerance_us + 1) for low, high in spans]))
 
 
-def are_same(names: Sequence[str], values: FloatArray, unknown: ObjectArray | None, stored: Readings) -> Any:
-    """Where readings equal stored ones value by value (absent equals absent), shape (N,).
-
-    Args:
-        names, values: Columns of the readings, values of shape (columns, N).
-        stored: The N readings to compare with, one for one.
-    """
-    same = np.ones(len(stored), np.bool_)
-    for name in {*names, *stored.columns}:
-        one = values[names.index(name)] if name in names else np.full(len(stored), np.nan)
-        other = stored.column(name)
+def are_same(some: Readings, others: Readings) -> BoolArray:
+    """Where two sets of N readings are equal one for one: own stamp and every value (absent equals absent), shape (N,)."""
+    same = some.own_at_us == others.own_at_us
+    for name in {*some.columns, *others.columns}:
+        one, other = some.column(name), others.column(name)
         same &= (one == other) | (np.isnan(one) & np.isnan(other))
-    if unknown is not None or stored.unknown is not None:
-        empty = np.full(len(stored), "", object)
-        same &= (empty if unknown is None else unknown) == (empty if stored.unknown is None else stored.unknown)
+    if some.unknown is not None or others.unknown is not None:
+        empty = np.full(len(some), "", object)
+        same &= ((empty if some.unknown is None else some.unknown)
+                 == (empty if others.unknown is None else others.unknown)).astype(np.bool_)
     return same
 
 

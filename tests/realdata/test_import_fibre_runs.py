@@ -132,7 +132,8 @@ def test_run_c_motion_of_1_s_means(tap):
     second = np.floor(t_s(reduced, "c")).astype(int)
     sums = np.stack([np.bincount(second, readings.column(name)) for name in ("s1", "s2", "s3")], axis=-1)
     angle_deg = np.degrees(angle_between_rad(sums[:-1], sums[1:]))
-    assert [np.sqrt(np.mean(angle_deg**2)), angle_deg.max(), angle_deg.sum()] == pytest.approx([8.1490, 30.877, 704.366], abs=1e-3)
+    rms_deg = np.sqrt(np.mean(angle_deg**2))
+    assert [rms_deg, angle_deg.max(), angle_deg.sum()] == pytest.approx([8.1490, 30.877, 704.366], abs=1e-3)
 
 
 def test_run_d_has_undefined_er_and_two_kinds_of_it(tap):

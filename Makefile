@@ -25,7 +25,7 @@ dev: $(VENV)/.done-dev
 
 $(BIN)/python:
 	@$(PYTHON) -c 'import sys; sys.exit(sys.version_info < (3, 11))' 2>/dev/null || { \
-	  echo "labmon needs Python 3.11 or newer; $(PYTHON) is $$($(PYTHON) -V 2>&1 || echo missing)."; \
+	  echo "labmon needs Python 3.11 or newer; $(PYTHON) is $$($(PYTHON) -V 2>/dev/null || echo missing)."; \
 	  echo "Name another one: make $(MAKECMDGOALS) PYTHON=python3.12"; exit 1; }
 	@echo "making $(VENV)"
 	@$(PYTHON) -m venv $(VENV) || { rm -rf $(VENV); \
@@ -63,7 +63,9 @@ slow: dev chromium servers
 	@marks='slow'; .ci/has chromium || marks='slow and not browser'; $(BIN)/python -m pytest -m "$$marks" $(TESTS)
 
 js:
-	@if command -v node >/dev/null; then node --test $$(find tests/js -name '*.test.mjs' 2>/dev/null); \
+	@if command -v node >/dev/null; then \
+	  said=$$(node --test $$(find tests/js -name '*.test.mjs') 2>&1) || { echo "$$said"; exit 1; }; \
+	  echo "JavaScript: $$(echo "$$said" | sed -n 's/^# pass //p') tests passed"; \
 	  else echo "JavaScript tests were left out: node is missing (on Debian: apt install nodejs)."; fi
 
 lint: dev

@@ -13,6 +13,8 @@ import urllib.request
 from collections.abc import Sequence
 from pathlib import Path
 
+from labmon.engines import child
+
 PROJECT = Path(__file__).resolve().parents[1]
 READY_WITHIN_S = 120.0
 STOP_WITHIN_S = 30.0
@@ -70,8 +72,9 @@ class RunningLab:
         self.port = free_port()
         self.lines: list[str] = []
         self.process = subprocess.Popen(
-            [*prefix, sys.executable, str(PROJECT / "manage.py"), "run_lab", "--data", str(folder), "--port", str(self.port),
-             *words], cwd=PROJECT, env=environ or clean_environ(), stdin=subprocess.DEVNULL, stdout=subprocess.PIPE,
+            child.launched([*prefix, sys.executable, PROJECT / "manage.py", "run_lab", "--data", folder, "--port", str(self.port),
+                            *words]),
+            cwd=PROJECT, env=environ or clean_environ(), stdin=subprocess.DEVNULL, stdout=subprocess.PIPE,
             stderr=subprocess.STDOUT, text=True, start_new_session=True)
 
     def __enter__(self) -> "RunningLab":

@@ -28,6 +28,10 @@ def place():
     shutil.rmtree(path)
 
 
+def people_in(database):
+    return [name for (name,) in database.execute("select username from labmon_person order by id")]
+
+
 def test_start_stop_and_quick_restart_keep_the_lab(place, capsys):
     """First start makes everything; Ctrl-C stops everything; the second start finds it again."""
     with RunningLab(place) as lab:
@@ -35,7 +39,7 @@ def test_start_stop_and_quick_restart_keep_the_lab(place, capsys):
         assert lab.read_until("Sign in as manager")
         assert lab.status("/health/process") == 200
         assert lab.status("/health/services") == 200
-        manage("add_station", "bench-a", "--two-port", "in=mW", folder=place)
+        manage("add_person", "kept", "--role", "guest", folder=place)
         first_stop_s = lab.stop()
         assert lab.process.returncode == 0
     assert processes_of(place) == []
@@ -44,7 +48,7 @@ def test_start_stop_and_quick_restart_keep_the_lab(place, capsys):
         second_s = lab.await_ready()
         assert "Sign in as" not in lab.said, "the password is shown once"
         with psycopg.connect(lab.services["database_url"]) as database:
-            assert database.execute("select name from ingest_station").fetchall() == [("bench-a",)]
+            assert people_in(database) == ["manager", "kept"]
         second_stop_s = lab.stop(signal.SIGTERM)
         assert lab.process.returncode == 0
     assert processes_of(place) == []
@@ -166,7 +170,7 @@ def test_backup_by_the_wheels_own_program_restores(place, tmp_path):
     programs = find_postgres().folder
     with RunningLab(place) as lab:
         lab.await_ready()
-        manage("add_station", "bench-a", "--two-port", "in=mW", folder=place)
+        manage("add_person", "kept", "--role", "guest", folder=place)
         url, dump = lab.services["database_url"], tmp_path / "labmon.dump"
         subprocess.run([programs / "pg_dump", "--format=custom", f"--file={dump}", url], check=True)
         with psycopg.connect(url, autocommit=True) as database:
@@ -174,5 +178,5 @@ def test_backup_by_the_wheels_own_program_restores(place, tmp_path):
         target = url.replace("/labmon?", "/restored?")
         subprocess.run([programs / "pg_restore", "--no-owner", f"--dbname={target}", dump], check=True)
         with psycopg.connect(target) as database:
-            assert database.execute("select name from ingest_station").fetchall() == [("bench-a",)]
+            assert people_in(database) == ["manager", "kept"]
         lab.stop()

@@ -1,10 +1,14 @@
 """Cells as bytes, for storage, and back."""
 
 import struct
-from typing import Final
+from collections.abc import Sequence
+from typing import Any, Final
 
 import numpy as np
 import zstandard
+from numpy.typing import NDArray
+
+from analysis.quantities import IntArray
 
 from analysis.rollup.cells import CELL, Cells
 from analysis.rollup.histogram import Histogram
@@ -29,21 +33,23 @@ def bytes_of(cells: Cells) -> bytes:
     return head + zstandard.ZstdCompressor(level=3).compress(b"".join(column.tobytes() for column in columns))
 
 
+def _opened(body: bytes) -> tuple[int, int, int, bytes]:
+    """Level, number of cells and of histogram bins, and the columns behind one another."""
+    if len(body) < _HEADER.size:
+        raise ValueError(f"{len(body)} bytes are too few for rollup cells; recompute them from the readings.")
+    magic, version, size, level_s, count, bins = _HEADER.unpack_from(body)
+    if magic != _MAGIC or version != _VERSION or size != CELL.itemsize:
+        raise ValueError(f"rollup cells of version {version} and size {size} are not {_VERSION} and {CELL.itemsize}; recompute them.")
+    return level_s, count, bins, zstandard.ZstdDecompressor().decompress(body[_HEADER.size:])
+
+
 def cells_from(body: bytes, tap: int = 0) -> Cells:
     """Cells that `bytes_of` wrote, given the index ``tap``.
 
     Raises:
         ValueError: The bytes are no cells, or of another version (recompute the rollup from raw readings).
     """
-    body = bytes(body)
-    if len(body) < _HEADER.size:
-        raise ValueError(f"{len(body)} bytes are too few for rollup cells; recompute them from the readings.")
-    magic, version, size, level_s, count, bins = _HEADER.unpack_from(body)
-    if magic != _MAGIC or version != _VERSION or size != CELL.itemsize:
-        raise ValueError(
-            f"rollup cells of version {version} and size {size} are not {_VERSION} and {CELL.itemsize}; recompute them."
-        )
-    raw = zstandard.ZstdDecompressor().decompress(body[_HEADER.size :])
+    level_s, count, bins, raw = _opened(bytes(body))
     position = 0
 
     def read(dtype: np.dtype, rows: int) -> np.ndarray:
@@ -58,3 +64,22 @@ def cells_from(body: bytes, tap: int = 0) -> Cells:
     for name in CELL.names or ():
         values[name] = read(CELL[name], count)
     return Cells(level_s, np.full(count, tap, dtype=np.int64), bucket_us, values, histogram)
+
+
+def columns_from(body: bytes, names: Sequence[str]) -> tuple[IntArray, dict[str, NDArray[Any]]]:
+    """Bucket starts and chosen columns of what `bytes_of` wrote: all that a picture of one quantity needs.
+
+    Raises:
+        ValueError: As `cells_from`.
+    """
+    body = bytes(body)
+    count, bins, raw = _opened(body)[1:]
+    found: dict[str, NDArray[Any]] = {}
+    position = count * 8 + bins * (4 + 2 + 4)
+    for name in CELL.names or ():
+        kind = CELL[name]
+        width = kind.shape[0] if kind.shape else 1
+        if name in names:
+            found[name] = np.frombuffer(raw, kind.base, count * width, position).reshape(count, *kind.shape)
+        position += count * kind.itemsize
+    return np.frombuffer(raw, "<i8", count), found

@@ -6,9 +6,11 @@ from django.http import HttpRequest, HttpResponse
 from django.shortcuts import render
 from django.views.decorators.http import require_safe
 
+from ingest.times import at_of
 from labmon.benches.queries import aside_rows
 from labmon.screen.door import for_people
 from labmon.screen.named import visible_station
+from labmon.screen.present import time_text
 
 PAGE_SIZE = 100
 
@@ -20,7 +22,7 @@ def aside_page(request: HttpRequest, station: str) -> HttpResponse:
     found = visible_station(request.user, station)
     before = request.GET.get("before", "")
     rows = aside_rows(found, before_id=int(before) if before.isdecimal() else None, limit=PAGE_SIZE)
-    shown = [(row, json.dumps(row.reading, ensure_ascii=False)) for row in rows]
+    shown = [(row, time_text(at_of(row.arrival_us)), json.dumps(row.reading, ensure_ascii=False)) for row in rows]
     return render(
         request,
         "screen/aside.html",

@@ -1,4 +1,4 @@
-"""The day of a bench as margins in dB, ready for its sparkline. Pure."""
+"""The day of a bench as margins in dB, ready for its small curve. Pure."""
 
 import math
 from collections.abc import Sequence

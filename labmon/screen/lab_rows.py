@@ -67,8 +67,8 @@ class LabView:
 
 
 def lab_view(benches: Sequence[BenchRow], now: datetime) -> LabView:
-    """The page of ``benches``, worst first, then the thinnest margin."""
-    rows = sorted((_row(bench, now) for bench in benches), key=_place)
+    """The page of ``benches``, which come worst first, then by margin."""
+    rows = [_row(bench, now) for bench in benches]
     sentence = lab_sentence(
         [row.standing for row in rows], thinnest=_thinnest(rows), unacknowledged=sum(bench.unacknowledged for bench in benches)
     )
@@ -139,11 +139,6 @@ def margin_text(bench: BenchRow) -> str:
         f"{margin_deg_text(bench.margin_deg, is_bound=bench.margin_is_bound)} · "
         f"{margin_db_text(bench.margin_db, is_bound=bench.margin_is_bound)}"
     )
-
-
-def _place(row: LabRow) -> tuple[int, float, str]:
-    margin_db = row.mark.margin_db
-    return row.standing.rank, float("inf") if margin_db is None else margin_db, row.station
 
 
 def _thinnest(rows: Sequence[LabRow]) -> str:

@@ -10,9 +10,9 @@ from labmon.screen.rail import HIGH_DB, LOW_DB, x_percent
 
 STEP = 0.25
 HEIGHT = int((HIGH_DB - LOW_DB) / STEP)
-POINTS = 48
+POINTS, STEP_X = 24, 2  # one an hour
 RAIL_WIDTH, COURSE_START = 57, 61
-WIDTH = COURSE_START + POINTS
+WIDTH = COURSE_START + POINTS * STEP_X
 NO_TICK = "M0 0"
 
 
@@ -27,21 +27,15 @@ def tick_of(margin_db: float | None) -> str:
 
 
 def course_of(margins_db: Sequence[float | None]) -> str:
-    """The newest ``POINTS`` equally spaced margins; a missing one breaks the line, a lone one is drawn as a dot."""
+    """The newest ``POINTS`` equally spaced margins; a missing one breaks the line, a lone one is drawn as a dash."""
     shown = list(margins_db)[-POINTS:]
     parts: list[str] = []
     previous: int | None = None
-    for index, margin_db in enumerate(shown, COURSE_START + POINTS - len(shown)):
+    for index, margin_db in enumerate(shown, POINTS - len(shown)):
         if margin_db is None or margin_db != margin_db:  # NaN differs from itself
             previous = None
             continue
-        y = y_of(margin_db)
-        parts.append(
-            f"M{index} {y}h.5"
-            if previous is None
-            else f"L{index} {y}"
-            if parts[-1].startswith("M")
-            else f"l1 {y - previous}".replace(" -", "-")
-        )
+        x, y = COURSE_START + STEP_X * index, y_of(margin_db)
+        parts.append(f"M{x} {y}h1" if previous is None else f"L{x} {y}" if parts[-1][0] == "M" else f"l{STEP_X} {y - previous}")
         previous = y
     return "".join(parts)

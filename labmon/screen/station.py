@@ -17,7 +17,7 @@ from labmon.screen.named import visible_station
 from labmon.screen.quantity import QUANTITIES, quantities_of
 from labmon.screen.series import history_rows
 from labmon.screen.span import shown_span, ways
-from labmon.screen.station_view import clock_words, station_sentence, tap_view
+from labmon.screen.station_view import boot_words, clock_words, station_sentence, tap_view
 
 RECENT_ALARMS = 12
 
@@ -40,6 +40,7 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
             "sentence": station_sentence(found.name, facts, len(waiting)),
             "taps": [tap_view(tap, now) for tap in facts.taps],
             "clock": clock_words(facts.boots),
+            "boots": [boot_words(boot) for boot in facts.boots],
             "waiting": waiting,
             "alarms": [view for view in alarms if not view.is_waiting],
             "tap_ids": " ".join(str(tap.id) for tap in facts.taps),

@@ -6,6 +6,8 @@ from datetime import datetime
 
 from django.utils.safestring import SafeString, mark_safe
 
+from ingest.models import StationBoot
+from ingest.times import at_of
 from labmon.benches.queries import NowSample, StationFacts, TapFacts
 from labmon.screen.level_words import level_words
 from labmon.screen.present import (
@@ -229,9 +231,25 @@ def _trimmed(text: str) -> str:
     return (number.rstrip("0").rstrip(".") if "." in number else number) + gap + unit
 
 
-def clock_words(boots: Sequence[object]) -> list[str]:
+def clock_words(boots: Sequence[StationBoot]) -> list[str]:
     """What the newest boot's clock is worth, in words; nothing when it is good."""
     return [boot.clock_fault for boot in boots[:1] if boot.clock_fault]
+
+
+def boot_words(boot: StationBoot) -> str:
+    """One boot: firmware, when it was heard, and how its clock stood to the server's."""
+    said = f"Boot {boot.boot or 'without id'}"
+    if boot.firmware:
+        said += f", firmware {boot.firmware}"
+    said += f": heard {time_text(at_of(boot.first_arrival_us))} to {time_text(at_of(boot.last_arrival_us))} UTC"
+    if boot.clock_fault:
+        return f"{said}. Clock: {boot.clock_fault}."
+    if boot.is_server_timed:
+        return f"{said}. Readings are placed by their arrival."
+    if boot.clock_offset_us is None:
+        return f"{said}. Its clock was not told."
+    offset = number_text(boot.clock_offset_us / 1e6, 2, "s", always_signed=True)
+    return f"{said}. Its clock and the way to the server differ by {offset}."
 
 
 def _moment(value: object) -> datetime | None:

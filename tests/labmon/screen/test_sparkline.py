@@ -6,7 +6,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from labmon.screen.rail import HIGH_DB, LOW_DB
-from labmon.screen.sparkline import COURSE_START, HEIGHT, NO_TICK, POINTS, WIDTH, course_of, tick_of, y_of
+from labmon.screen.sparkline import COURSE_START, HEIGHT, NO_TICK, POINTS, STEP_X, WIDTH, course_of, tick_of, y_of
 
 
 def drawn(path: str) -> dict[int, int]:
@@ -22,8 +22,8 @@ def drawn(path: str) -> dict[int, int]:
 @given(st.lists(st.none() | st.floats(-30, 60), max_size=POINTS))
 def test_every_value_is_drawn_at_its_place_and_no_gap_is_bridged(margins):
     path = course_of(margins)
-    start = COURSE_START + POINTS - len(margins)
-    assert drawn(path) == {start + index: y_of(value) for index, value in enumerate(margins) if value is not None}
+    start = COURSE_START + STEP_X * (POINTS - len(margins))
+    assert drawn(path) == {start + STEP_X * index: y_of(value) for index, value in enumerate(margins) if value is not None}
     runs = len(re.findall(r"1+", "".join("0" if value is None else "1" for value in margins)))
     assert path.count("M") == runs
 
@@ -34,7 +34,7 @@ def test_the_limit_is_at_three_quarters_for_every_bench():
 
 
 def test_only_the_newest_points_are_shown():
-    assert max(drawn(course_of([1.0] * 200))) == WIDTH - 1
+    assert max(drawn(course_of([1.0] * 200))) == WIDTH - STEP_X
     assert len(drawn(course_of([1.0] * 200))) == POINTS
 
 

@@ -1,7 +1,5 @@
 """Arrays to whole numbers for the browser: small on the wire, null for a gap, never NaN. Pure."""
 
-from collections.abc import Sequence
-
 import numpy as np
 from numpy.typing import NDArray
 
@@ -34,26 +32,18 @@ def dbm_of(power_w: FloatArray) -> FloatArray:
     return 10.0 * np.log10(np.where(power > 0, power, np.nan) * 1e3)
 
 
-def on_grid(at_us: NDArray[np.int64], columns: Sequence[FloatArray], bucket_us: int) -> tuple[int, list[FloatArray]]:
-    """Buckets onto an even grid from the first to the last, NaN where there is none.
-
-    Returns:
-        The grid's start, µs, and the columns, each of the grid's length.
-    """
-    if len(at_us) == 0:
-        return 0, [np.empty(0) for _ in columns]
-    first_us = int(at_us[0])
-    places = (np.asarray(at_us) - first_us) // bucket_us
-    count = int(places[-1]) + 1
-    grids = []
-    for column in columns:
-        grid = np.full(count, np.nan)
-        grid[places] = column
-        grids.append(grid)
-    return first_us, grids
-
-
 def gaps_of(is_known: NDArray[np.bool_], x0_ms: float, dx_ms: float) -> list[tuple[float, float]]:
     """Runs without value as (from, until), ms."""
     edges = np.flatnonzero(np.diff(np.concatenate(([True], is_known, [True])).astype(np.int8)))
     return [(x0_ms + start * dx_ms, x0_ms + end * dx_ms) for start, end in zip(edges[::2], edges[1::2], strict=True)]
+
+
+def held(values: FloatArray, most: int) -> FloatArray:
+    """Each value holds until the next, over at most ``most`` empty places; the rest of a gap stays NaN. Shape (N,)."""
+    known = np.isfinite(values)
+    if most <= 0 or known.all() or not known.any():
+        return values
+    places = np.arange(len(values))
+    last = np.maximum.accumulate(np.where(known, places, -1))
+    is_held = (last >= 0) & (places - last <= most)
+    return np.where(is_held, values[np.maximum(last, 0)], np.nan)

@@ -15,7 +15,7 @@ from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people
 from labmon.screen.named import visible_station
 from labmon.screen.quantity import QUANTITIES, quantities_of
-from labmon.screen.series import history_rows
+from labmon.screen.shown import history_rows
 from labmon.screen.span import shown_span, ways
 from labmon.screen.station_view import boot_words, clock_words, station_sentence, tap_view
 

@@ -1,4 +1,4 @@
-"""Arrays for the browser: whole numbers, null for gaps, an even grid."""
+"""Arrays for the browser: whole numbers, null for gaps, values held a while."""
 
 import json
 
@@ -8,7 +8,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 
-from labmon.screen.scaled import dbm_of, gaps_of, on_grid, whole_numbers
+from labmon.screen.scaled import dbm_of, gaps_of, held, whole_numbers
 
 
 @given(arrays(np.float64, st.integers(0, 50), elements=st.floats(allow_nan=True, allow_infinity=True, width=64)))
@@ -29,10 +29,11 @@ def test_dbm_by_its_definition():
     assert np.isnan(dbm_of(np.array([0.0, -1e-6]))).all()
 
 
-def test_missing_buckets_are_holes_in_the_grid():
-    first_us, (grid,) = on_grid(np.array([1000, 2000, 5000]), [np.array([1.0, 2.0, 5.0])], 1000)
-    assert first_us == 1000
-    np.testing.assert_array_equal(grid, [1, 2, np.nan, np.nan, 5])
+def test_a_value_holds_a_while_and_no_longer():
+    values = np.array([np.nan, 1.0, np.nan, np.nan, np.nan, 2.0, np.nan])
+    np.testing.assert_array_equal(held(values, 2), [np.nan, 1, 1, 1, np.nan, 2, 2])
+    np.testing.assert_array_equal(held(values, 0), values)
+    assert np.isnan(held(np.full(3, np.nan), 5)).all()
 
 
 @pytest.mark.parametrize(

@@ -33,8 +33,8 @@ function gapTraces(series, [low, high], paint) {
 }
 
 function gapWords(series, [from, until], paint) {
-  return series.gaps.filter(([start, end]) => (end - start) / (until - from) > 0.03).map(([start, end]) => ({
-    x: (Math.max(start, from) + Math.min(end, until)) / 2, xref: 'x', y: 0.66, yref: 'paper', text: 'no reading', showarrow: false,
+  return series.gaps.filter(([start, end]) => (end - start) / (until - from) > 0.03).map(([start, end, word]) => ({
+    x: (Math.max(start, from) + Math.min(end, until)) / 2, xref: 'x', y: 0.66, yref: 'paper', text: word, showarrow: false,
     textangle: -90, font: { color: paint.ink, size: 12 }, bgcolor: paint.sheet }));
 }
 

@@ -83,7 +83,7 @@ def main() -> None:
                 lanes = lanes_of(stations, 10, 150, first, as_msgpack=False)
                 run = checked(asyncio.run(send_all(port, lanes)))
                 as_json.append(run.readings / run.duration_s)
-                lanes = lanes_of(stations, 100, 40, first // 10 + 1000, as_msgpack=True)
+                lanes = lanes_of(stations, 100, 40, first // 10 + 5000, as_msgpack=True)
                 run = checked(asyncio.run(send_all(port, lanes)))
                 as_msgpack.append(run.readings / run.duration_s)
                 first += 2000

@@ -7,7 +7,7 @@ from typing import Any
 import numpy as np
 
 from analysis.judge.fold import EventKind
-from analysis.judge.interval import intervals_s
+from analysis.judge.interval import intervals_s, steadied_s
 from analysis.judge.rule import Quantity
 from analysis.judge.seconds import Seconds, seconds_of_many
 from analysis.judge.untrusted import UntrustedRule, UntrustedState, fold_untrusted
@@ -123,11 +123,11 @@ def _seconds_of_group(group: Group, members: Sequence[Progress]) -> list[_TapSec
 
 
 def _intervals(step: Progress, at_us: Any) -> FloatArray:
-    """Nominal interval at each second: declared, else by the fold over all samples (1 s and less are alike)."""
+    """Nominal interval at each second: declared, else by the fold over all samples, steadied."""
     if step.tap.interval_s is not None:
         return np.full(len(at_us), step.tap.interval_s)
     samples_us = step.readings.at_us
-    known = intervals_s(step.work.state.interval, samples_us)
+    known = steadied_s(intervals_s(step.work.state.interval, samples_us))
     return known[np.searchsorted(samples_us, at_us)]
 
 

@@ -40,11 +40,12 @@ class Polarimeter:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class LimitPlan:
-    """The experiment's limit: ``er_db`` below or ``angle_deg`` above is an alarm."""
+    """The experiment's limit: ``er_db`` below or ``angle_deg`` above is an alarm; deadband in the quantity's unit."""
 
     quantity: str
     alarm: float
     warning: float
+    deadband: float | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -110,7 +111,7 @@ BENCHES = (
               tap="coil-out", laser="S2 laser", power_w=0.5e-3,
               path=_pm(29.05, 31.0, length_m=8.0, wavelength_m=1550e-9, phase0_rad=1.1, lag_s=200.0),
               head=Ports(unit="uW", units_per_w=1e6, zero1=0.5, zero2=0.12, noise1=0.03, noise2=0.004, top=1500.0),
-              limit=LimitPlan(quantity="er_db", alarm=25.0, warning=27.0), firmware="bench board 1.4",
+              limit=LimitPlan(quantity="er_db", alarm=25.0, warning=27.0, deadband=2.0), firmware="bench board 1.4",
               buffer_s=2 * 3600.0 + 2400.0),
     BenchPlan(name="N4", room="North Hall", experiment="Hydrophone interferometer leads", owner=STUDENT,
               experiment_owner=STUDENT, tap="lead-end", laser="N4 laser", power_w=0.8e-3,

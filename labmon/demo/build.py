@@ -1,5 +1,6 @@
 """Builds the Skerry Fibre Laboratory: people, benches, limits, two weeks of readings, and what follows from them."""
 
+import logging
 import secrets
 import time
 from dataclasses import dataclass
@@ -66,6 +67,7 @@ def _fill(notes: DemoNotes, progress: Say) -> None:
     count = write_history(world, axis, progress)
     progress(f"{count:,} readings written in {time.monotonic() - before_s:.0f} s; now reducing and judging them")
     before_s = time.monotonic()
+    logging.getLogger("labmon.pipeline").setLevel(logging.WARNING)  # one line a chunk would drown the progress
     judged = process_touched()
     progress(f"{judged.readings:,} readings reduced and judged in {time.monotonic() - before_s:.0f} s; now rolling them up")
     before_s = time.monotonic()

@@ -32,20 +32,30 @@ class Door:
     connection: http.client.HTTPConnection | None = None
 
     def send(self, batch: dict[str, Any]) -> Answer:
-        """POST one batch.
+        """POST one batch; a kept connection that the lab has closed meanwhile is opened anew, once.
 
         Raises:
             NoAnswer: Nothing (whole) came back; the same batch may be sent again.
         """
         body = json.dumps(batch, allow_nan=False, separators=(",", ":")).encode()
+        was_open = self.connection is not None
         try:
-            connection = self._connected()
-            connection.request("POST", PATH, body, {"Authorization": f"Bearer {self.key}", "Content-Type": "application/json"})
-            response = connection.getresponse()
-            text = response.read()
+            try:
+                return self._post(body)
+            except (ConnectionError, http.client.RemoteDisconnected):
+                if not was_open:
+                    raise
+                self.close()
+                return self._post(body)
         except (OSError, http.client.HTTPException) as fault:
             self.close()
             raise NoAnswer(f"{type(fault).__name__}: {fault}") from fault
+
+    def _post(self, body: bytes) -> Answer:
+        connection = self._connected()
+        connection.request("POST", PATH, body, {"Authorization": f"Bearer {self.key}", "Content-Type": "application/json"})
+        response = connection.getresponse()
+        text = response.read()
         return Answer(response.status, _as_object(text), _seconds(response.headers.get("Retry-After")))
 
     def close(self) -> None:

@@ -28,7 +28,7 @@ _S1_HOPS = tuple((moment(9, 3, 10) + 3600.0 * hour, moment(9, 3, 10) + 3600.0 * 
                  for hour in (0.0, 3.3, 7.1, 10.4, 14.0, 17.6, 20.5, 21.8))
 
 LEDGER = Ledger((
-    ClockOffset(subjects=("V1",), start_s=moment(2, 8), offset_s=420.0, expected="clock, by arrival"),
+    ClockOffset(subjects=("V1",), start_s=moment(2, 8), offset_s=422.0, expected="clock, by arrival"),
     Touch(subjects=("N1",), start_s=moment(3, 11, 42), peak_deg=14.0, stays_deg=6.0, end_s=moment(8, 9),
           expected="touched, N1 only"),
     RoomLight(subjects=("N2", "N4"), start_s=moment(4, 5, 30), end_s=moment(4, 5, 50), added_w=0.25e-6,

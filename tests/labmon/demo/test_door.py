@@ -1,6 +1,7 @@
 """The station's way through HTTP: what is sent, what comes back, what happens when nothing comes back."""
 
 import json
+import socket
 import threading
 from http.server import BaseHTTPRequestHandler, ThreadingHTTPServer
 
@@ -50,6 +51,17 @@ def test_batches_go_through_one_connection_with_the_key(lab):
     assert [entry[:3] for entry in heard] == [("/api/v1/readings", "Bearer secret", "application/json")] * 3
     assert [entry[3] for entry in heard] == [{"number": 0}, {"number": 1}, {"number": 2}]
     assert len({entry[4] for entry in heard}) == 1
+
+
+def test_a_connection_that_the_lab_closed_is_opened_anew(lab):
+    address, heard = lab
+    door = Door(address, "secret")
+    door.send({"number": 0})
+    door.connection.sock.shutdown(socket.SHUT_RDWR)
+    assert door.send({"number": 1}).status == 200
+    door.close()
+    assert [entry[3] for entry in heard] == [{"number": 0}, {"number": 1}]
+    assert len({entry[4] for entry in heard}) == 2
 
 
 def test_a_lab_that_is_away_is_no_answer(lab):

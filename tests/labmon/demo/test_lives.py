@@ -35,10 +35,10 @@ def test_day_2_the_clock_of_v1_is_seven_minutes_ahead_to_the_end():
     first, second, third = _deliveries("V1")
     np.testing.assert_array_equal(first.own_s, first.at_s)
     for later in (second, third):
-        np.testing.assert_allclose(later.own_s - later.at_s, 420.0)
+        np.testing.assert_allclose(later.own_s - later.at_s, 420.0, atol=3.0)
         assert later.life.clock_fault == "The clock is 7 min ahead of the server's."
     assert second.at_s[0] == pytest.approx(moment(2, 8), abs=30)
-    assert ahead_at(bench_named("V1"), moment(20, 0), LEDGER) == 420.0
+    assert ahead_at(bench_named("V1"), moment(20, 0), LEDGER) == pytest.approx(420.0, abs=3.0)
 
 
 def test_day_8_v1_restarts_with_new_firmware():

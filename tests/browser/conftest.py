@@ -1,19 +1,22 @@
-"""A whole labmon under test: hashed static files, uvicorn on a free port, the session's database, and chromium."""
+"""A whole labmon under test: its web process on a free port, the session's engines, and chromium."""
 
 import os
 import socket
-import threading
+import subprocess
+import sys
 import time
 from collections.abc import Iterator
+from contextlib import suppress
 from dataclasses import dataclass
+from urllib.parse import urlsplit, urlunsplit
 
+import httpx
 import pytest
-from django.core.management import call_command
-from django.test import override_settings
+from django.conf import settings
+from django.db import connection
 
 from tests.browser.chromium import chromium_path, launch
 
-PLAIN = {"default": {"BACKEND": "django.core.files.storage.FileSystemStorage"}}
 WATCH = """
 window.violations = [];
 document.addEventListener('securitypolicyviolation',
@@ -43,15 +46,6 @@ def browser():
         chromium.close()
 
 
-@pytest.fixture(scope="session")
-def hashed_static() -> dict:
-    """Static files collected once, without compressing them."""
-    storages = PLAIN | {"staticfiles": {"BACKEND": "tests.labmon.screen.test_assets.Uncompressed"}}
-    with override_settings(STORAGES=storages):
-        call_command("collectstatic", interactive=False, verbosity=0)
-    return storages
-
-
 @dataclass
 class Lab:
     """Where the lab answers, and how to sign in to it."""
@@ -63,36 +57,46 @@ class Lab:
 
 
 @pytest.fixture
-def lab(transactional_db, hashed_static) -> Iterator[Lab]:
-    """labmon served by uvicorn from this process, on the test's database."""
-    import uvicorn
-
-    with override_settings(STORAGES=hashed_static):
-        from channels.auth import AuthMiddlewareStack
-        from channels.routing import URLRouter
-        from django.core.asgi import get_asgi_application
-
-        from labmon.asgi import Dispatcher, DoorApplication
-        from labmon.live.routing import websocket_urlpatterns
-
-        application = Dispatcher(
-            door=DoorApplication(), pages=get_asgi_application(), live=AuthMiddlewareStack(URLRouter(websocket_urlpatterns))
+def lab(transactional_db, collected_static) -> Iterator[Lab]:
+    """labmon's web process as users run it, on the test's database, broker and static files."""
+    with socket.create_server(("127.0.0.1", 0)) as listener:
+        environ = os.environ | {
+            "LABMON_DATABASE_URL": database_url_of_test(),
+            "LABMON_STATIC": str(collected_static),
+            "LABMON_LOG_LEVEL": "ERROR",
+        }
+        process = subprocess.Popen(
+            [sys.executable, "-m", "labmon.web", "--socket", str(listener.fileno())],
+            env=environ,
+            pass_fds=[listener.fileno()],
+            cwd=settings.BASE_DIR,
         )
-        with socket.create_server(("127.0.0.1", 0)) as listener:
-            port = listener.getsockname()[1]
-            server = uvicorn.Server(
-                uvicorn.Config(application, log_level="error", ws="websockets-sansio", timeout_graceful_shutdown=1)
-            )
-            thread = threading.Thread(target=server.run, kwargs={"sockets": [listener]}, daemon=True)
-            thread.start()
-            until = time.monotonic() + 10
-            while not server.started and time.monotonic() < until:
-                time.sleep(0.02)
-            assert server.started
-            yield Lab(f"http://127.0.0.1:{port}")
-            server.should_exit = True
-            thread.join(timeout=15)
-            assert not thread.is_alive()
+        address = f"http://127.0.0.1:{listener.getsockname()[1]}"
+        try:
+            wait_for(f"{address}/login/", process)
+            yield Lab(address)
+        finally:
+            process.terminate()
+            process.wait(timeout=20)
+
+
+def database_url_of_test() -> str:
+    """The session's database address with the name of the test database."""
+    parts = urlsplit(os.environ["LABMON_DATABASE_URL"])
+    return urlunsplit(parts._replace(path=f"/{connection.settings_dict['NAME']}"))
+
+
+def wait_for(address: str, process: subprocess.Popen) -> None:
+    """Until the page answers."""
+    until = time.monotonic() + 30
+    while time.monotonic() < until:
+        assert process.poll() is None, "the web process ended"
+        with suppress(httpx.TransportError):
+            answer = httpx.get(address, timeout=5)
+            assert answer.status_code == 200, answer.text
+            return
+        time.sleep(0.05)
+    pytest.fail(f"{address} did not answer within 30 s")
 
 
 @pytest.fixture

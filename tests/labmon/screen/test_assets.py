@@ -5,35 +5,15 @@ from pathlib import Path
 
 import brotli
 import pytest
-from django.contrib.staticfiles.management.commands.collectstatic import Command
-from django.test import override_settings
 from plotly.offline import get_plotlyjs_version
 
 STATIC = Path(__file__).resolve().parents[3] / "labmon" / "static" / "labmon"
 
 
-@pytest.fixture(scope="module")
-def served(tmp_path_factory) -> Path:
-    """The folder that collectstatic makes; uncompressed here, for brotli at its best takes seconds."""
-    folder = tmp_path_factory.mktemp("static")
-    command = Command()
-    with override_settings(STATIC_ROOT=str(folder), STORAGES={
-            "default": {"BACKEND": "django.core.files.storage.FileSystemStorage"},
-            "staticfiles": {"BACKEND": "tests.labmon.screen.test_assets.Uncompressed"}}):
-        from django.core.management import call_command
-
-        call_command(command, interactive=False, verbosity=0)
-    return folder / "labmon"
-
-
-from labmon.screen.assets import HashedStorage  # noqa: E402
-
-
-class Uncompressed(HashedStorage):
-    """The same storage without its last step."""
-
-    def compress_files(self, paths):
-        return iter(())
+@pytest.fixture
+def served(collected_static) -> Path:
+    """The folder that collectstatic makes."""
+    return collected_static / "labmon"
 
 
 def test_every_served_module_imports_hashed_names_only(served):
@@ -51,7 +31,7 @@ def test_modules_are_at_most_two_imports_deep():
     def depth(name: str) -> int:
         return 1 + max((depth(other) for other in imports[name]), default=0)
 
-    assert max(depth(name) for name in imports) <= 3          # the entry and two below it
+    assert max(depth(name) for name in imports) <= 3  # the entry and two below it
 
 
 def test_own_scripts_of_a_page_stay_small():

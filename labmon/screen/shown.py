@@ -1,6 +1,7 @@
 """The history of one tap as it is shown: in the drawn unit, values held as long as the contract lets them, gaps named."""
 
-from dataclasses import dataclass, replace
+from collections.abc import Callable
+from dataclasses import dataclass
 from datetime import UTC, datetime
 
 import numpy as np
@@ -49,19 +50,20 @@ class Gap:
 
 def shown_history(tap: Tap, quantity: str, span: Span, points: int) -> Shown:
     """Curves of at most ``points`` buckets, none finer than the tap measures."""
+    return _curves(tap, quantity, span, points, dbm_of if quantity == "power_w" else np.asarray)
+
+
+def _curves(tap: Tap, quantity: str, span: Span, points: int, drawn: Callable[[FloatArray], FloatArray]) -> Shown:
+    """The history, its values turned by ``drawn`` into what is drawn, each held until the next."""
     interval_s = interval_of(tap)
     span_s = (span.until_us - span.from_us) / 1e6
-    most = max(1, min(points, int(span_s / interval_s)))
-    found = history(tap.pk, quantity, span.from_us, span.until_us, most)
-    columns = [found.min, found.mean, found.max]
-    if quantity == "power_w":
-        columns = [dbm_of(column) for column in columns]
+    found = history(tap.pk, quantity, span.from_us, span.until_us, max(1, min(points, int(span_s / interval_s))))
     hold = int(HOLD_INTERVALS * interval_s / found.bucket_s)
-    low, mean, high, share = (
-        held(column, hold) for column in (*columns, np.where(np.isfinite(found.mean), found.trusted_share, np.nan))
-    )
+    trusted = np.where(np.isfinite(found.mean), found.trusted_share, np.nan)
+    low, mean, high, share = (held(column, hold) for column in (drawn(found.min), drawn(found.mean), drawn(found.max), trusted))
     x0_ms = float(found.at_us[0]) / 1e3 if len(found.at_us) else span.from_us / 1e3
-    return Shown(quantity=quantity, x0_ms=x0_ms, dx_ms=found.bucket_s * 1e3, low=low, mean=mean, high=high, trusted_share=share)
+    dx_ms = found.bucket_s * 1e3
+    return Shown(quantity=quantity, x0_ms=x0_ms, dx_ms=dx_ms, low=low, mean=mean, high=high, trusted_share=share)
 
 
 def gaps_in(shown: Shown, tap: Tap, span: Span, points: int, now: datetime) -> list[Gap]:
@@ -83,7 +85,7 @@ def _heard(shown: Shown, tap: Tap, span: Span, points: int) -> Shown:
     """Where anything came at all: power is there in the dark and in saturation too."""
     if tap.kind == TapKind.CLIMATE or shown.quantity in {"power_w", "temperature_c"} or tap.unit in _WITHOUT_WATTS:
         return shown
-    return replace(shown_history(tap, "power_w", span, points), quantity=shown.quantity)
+    return _curves(tap, "power_w", span, points, np.asarray)
 
 
 def _word(heard: Shown, tap: Tap, from_ms: float, until_ms: float) -> str:
@@ -101,7 +103,8 @@ def history_sentence(shown: Shown, gaps: list[Gap]) -> str:
     if not shown.is_known.any():
         return f"{gaps[0].word[0].upper()}{gaps[0].word[1:]} in this span." if gaps else "No reading in this span."
     low, high = float(np.nanmin(shown.low)), float(np.nanmax(shown.high))
-    said = f"{quantity.name} between {number_text(low, quantity.places, quantity.unit)} and {number_text(high, quantity.places, quantity.unit)}"
+    ends = [number_text(value, quantity.places, quantity.unit) for value in (low, high)]
+    said = f"{quantity.name} between {ends[0]} and {ends[1]}"
     for word in dict.fromkeys(gap.word for gap in gaps):
         spans_s = [(gap.until_ms - gap.from_ms) / 1e3 for gap in gaps if gap.word == word]
         said += f"; {count_text(len(spans_s), 'gap')} with {word}, {age_text(sum(spans_s))} in all"

@@ -7,6 +7,8 @@ import brotli
 import pytest
 from plotly.offline import get_plotlyjs_version
 
+from labmon.screen.assets import HashedStorage
+
 STATIC = Path(__file__).resolve().parents[3] / "labmon" / "static" / "labmon"
 
 
@@ -49,3 +51,17 @@ def test_no_script_evaluates_text_or_reaches_out():
     for path in (STATIC / "js").glob("*.js"):
         text = path.read_text().replace("'http://www.w3.org/2000/svg'", "")
         assert not re.search(r"\beval\(|new Function|https?://|innerHTML = `", text), path.name
+
+
+def test_a_file_that_was_not_collected_does_not_break_a_page():
+    assert HashedStorage(location="/nowhere").stored_name("labmon/css/none.css") == "labmon/css/none.css"
+
+
+def test_templates_name_collected_files_only(collected_static):
+    """What `stored_name` forgives at night is found here."""
+    templates = STATIC.parents[2] / "templates"
+    named = {
+        name for page in templates.rglob("*.html") for name in re.findall(r"""{% static ['"]([^'"]+)['"] %}""", page.read_text())
+    }
+    assert len(named) >= 6
+    assert [name for name in named if not (collected_static / name).is_file()] == []

@@ -3,6 +3,8 @@
 from django.urls import URLPattern, URLResolver, include, path
 
 urlpatterns: list[URLPattern | URLResolver] = [
+    path("api/v1/", include("labmon.api.urls")),
+    path("health/", include("labmon.api.health_urls")),
     path("", include("labmon.screen.urls")),
 ]
 

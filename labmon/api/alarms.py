@@ -32,11 +32,13 @@ def get_alarms(request: HttpRequest, person: Person) -> HttpResponse:
 
 def alarm_facts(row: AlarmRow) -> dict[str, Any]:
     """An alarm as the contract names it."""
-    times = ("raised_at", "alarm_at", "returned_at", "acknowledged_at", "noticed_at")
+    times = ("raised_at", "alarm_at", "returned_at", "acknowledged_at")
     return ({"id": row.id, "kind": row.kind, "experiment": row.experiment_id, "tap": row.tap,
              "quantity": row.quantity or None, "level": row.level, "state": row.state,
              "acknowledged_by": row.acknowledged_by or None, "note": row.note, "value": row.value, "limit": row.limit,
-             "cause": row.cause or None, "message": row.message, "is_late": row.is_late, "is_withdrawn": row.is_withdrawn}
+             "cause": row.cause or None, "message": row.message, "is_late": row.is_late, "is_withdrawn": row.is_withdrawn,
+             "earlier_bounds": [{"raised_at": rfc3339(raised_at), "returned_at": rfc3339(returned_at)}
+                                for raised_at, returned_at in row.earlier_bounds]}
             | {name: rfc3339(getattr(row, name)) for name in times})
 
 
@@ -46,10 +48,10 @@ class Acknowledgement(Body):
     note: Text = ""
 
 
-def post_acknowledge(request: HttpRequest, person: Person, id: int) -> HttpResponse:
+def post_acknowledge(request: HttpRequest, person: Person, alarm_id: int) -> HttpResponse:
     """Say that the alarm was seen; a second time changes nothing."""
     known_only(request.GET)
-    alarm = alarms_visible_to(person).filter(pk=id).first()
+    alarm = alarms_visible_to(person).filter(pk=alarm_id).first()
     if alarm is None:
         raise not_found("There is no such alarm for you.", "GET /api/v1/alarms lists those that you may see.")
     require(person, Action.ACKNOWLEDGE, alarm)

@@ -6,7 +6,7 @@ from django.db.models import Max
 
 from ingest.models import Block, InboxRow
 
-READINGS_A_CHUNK = 50_000
+READINGS_A_CHUNK = 25_000
 ROWS_LOOKED_AT = 1000
 
 

@@ -62,10 +62,10 @@ def _may_make(person: Person, taps: list[Tap]) -> None:
         require(person, Action.MAKE_EXPERIMENT, tap)
 
 
-def get_limits(request: HttpRequest, person: Person, id: int) -> HttpResponse:
+def get_limits(request: HttpRequest, person: Person, experiment_id: int) -> HttpResponse:
     """Limits in force, and every version that there was."""
     known_only(request.GET)
-    experiment = experiment_named(person, id)
+    experiment = experiment_named(person, experiment_id)
     versions = version_facts(LimitVersion.objects.filter(limit__experiment=experiment)
                              .select_related("limit__tap__station", "set_by").order_by("limit", "number"))
     now = rfc3339(timezone.now())
@@ -117,10 +117,10 @@ class NewLimit(Body):
     reason: Text = ""
 
 
-def post_limit(request: HttpRequest, person: Person, id: int) -> HttpResponse:
+def post_limit(request: HttpRequest, person: Person, experiment_id: int) -> HttpResponse:
     """A new limit, or the next version of the one on this tap and quantity."""
     known_only(request.GET)
-    experiment = experiment_named(person, id)
+    experiment = experiment_named(person, experiment_id)
     require(person, Action.SET_LIMIT, experiment)
     wish = body_of(request, NewLimit)
     tap = tap_in_body(person, wish.tap, field="tap")

@@ -69,15 +69,17 @@ LAST_TRUSTED = shape({"value": NUMBER, "at": TIME})
 NOW = shape({
     "tap": TAP_PATH, "kind": TEXT, "taken_at": or_null(TIME), "age_s": or_null(NUMBER),
     "er_db": or_null(NUMBER), "er_sigma_db": or_null(NUMBER), "is_lower_bound": YES_NO, "is_upper_bound": YES_NO,
-    "angle_deg": or_null(NUMBER), "angle_is_upper_bound": YES_NO, "polarized_er_db": or_null(NUMBER),
+    "angle_deg": or_null(NUMBER), "angle_is_upper_bound": YES_NO,
+    "angle_is_lower_bound": YES_NO, "polarized_er_db": or_null(NUMBER),
     "dop": or_null(NUMBER), "azimuth_deg": or_null(NUMBER), "ellipticity_deg": or_null(NUMBER),
     "sop": or_null({"type": "array", "items": NUMBER, "minItems": 3, "maxItems": 3}), "power_w": or_null(NUMBER),
     "temperature_c": or_null(NUMBER), "humidity_pct": or_null(NUMBER), "pressure_hpa": or_null(NUMBER),
     "trust": TRUST, "trust_reasons": TEXTS,
-    **{f"{name}_trust": TRUST for name in MEASURED}, **{f"{name}_reasons": TEXTS for name in MEASURED},
-    "last_trusted": shape({name: or_null(LAST_TRUSTED) for name in MEASURED}),
+    **{f"{name}_trust": TRUST for name in LIMITED}, **{f"{name}_reasons": TEXTS for name in LIMITED},
+    **{f"{name}_codes": TEXTS for name in LIMITED}, "last_trusted": shape({name: or_null(LAST_TRUSTED) for name in LIMITED}),
 }, text="The newest sample by data time. An untrusted or undefined quantity is null with its reasons; last_trusted has "
-        "its last trusted value. Where is_lower_bound is true, er_db is a 95 % bound: the ratio is at least this.")
+        "its last trusted value. trust and trust_reasons are those of er_db; reasons are phrases, codes their fixed names. "
+        "Where is_lower_bound is true, er_db is a 95 % bound: the ratio is at least this.")
 
 HISTORY = shape({
     "tap": TAP_PATH, "quantity": {"type": "string", "enum": list(MEASURED)}, "span": TEXT, "bucket_s": NUMBER,
@@ -109,8 +111,10 @@ ALARM = shape({
     "level": {"type": "string", "enum": ["warning", "alarm"]}, "state": {"type": "string", "enum": list(ALARM_STATES)},
     "raised_at": TIME, "alarm_at": or_null(TIME), "returned_at": or_null(TIME), "acknowledged_at": or_null(TIME),
     "acknowledged_by": or_null(TEXT), "note": TEXT, "value": or_null(NUMBER), "limit": or_null(NUMBER),
-    "cause": or_null(TEXT), "message": TEXT, "noticed_at": TIME, "is_late": YES_NO, "is_withdrawn": YES_NO,
-}, text="value: the worst while open; limit: the level that it is held against. Times of limit alarms are data times.")
+    "cause": or_null(TEXT), "message": TEXT, "is_late": YES_NO, "is_withdrawn": YES_NO,
+    "earlier_bounds": many(shape({"raised_at": TIME, "returned_at": or_null(TIME)})),
+}, text="value: the worst while open; limit: the level that it is held against. Times of limit alarms are data times. "
+        "earlier_bounds: as it was told before late data moved it.")
 
 CALIBRATION = shape({
     "tap": TAP_PATH, "valid_from": TIME, "entered_at": TIME, "entered_by": TEXT, "zero1": NUMBER, "zero2": NUMBER,
@@ -159,7 +163,7 @@ NAMED: dict[str, Schema] = {
     "Stations": shape({"stations": many(ref("Station"))}),
     "Experiments": shape({"experiments": many(ref("Experiment"))}),
     "Alarms": shape({"alarms": many(ref("Alarm")), "before": or_null(ID)},
-                    text="Newest first; where more may follow, before is what to ask for next."),
+                    text="Newest raised first; where more may follow, before is what to ask for next."),
     "ProcessUp": shape({"process": TEXT}),
     "ServicesUp": shape({"database": TEXT, "broker": TEXT, "migrations": TEXT, "missing": TEXTS}),
 }

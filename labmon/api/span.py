@@ -3,7 +3,7 @@
 import calendar
 import re
 from dataclasses import dataclass
-from datetime import datetime, timedelta
+from datetime import UTC, datetime, timedelta
 
 from ingest.times import us_of
 from labmon.api.times import parse_time, rfc3339
@@ -13,6 +13,8 @@ _DURATION = re.compile(
     rf"P(?=[0-9T])(?:(?P<years>[0-9]{{1,4}})Y)?(?:(?P<months>[0-9]{{1,5}})M)?(?:(?P<weeks>{_NUMBER})W)?"
     rf"(?:(?P<days>{_NUMBER})D)?"
     rf"(?:T(?=[0-9])(?:(?P<hours>{_NUMBER})H)?(?:(?P<minutes>{_NUMBER})M)?(?:(?P<seconds>{_NUMBER})S)?)?")
+#: No reading of an optical bench lies outside; buckets that begin before the span still have a date.
+FIRST_YEAR, LAST_YEAR = 1900, 2199
 _HOW = "write start/end or start/duration, such as 2031-03-04T00:00:00Z/P1D"
 
 
@@ -50,6 +52,8 @@ def parse_span(text: str) -> Span:
     until_at = add_duration(from_at, parts[1]) if parts[1].strip()[:1].upper() == "P" else parse_time(parts[1])
     if not from_at < until_at:
         raise ValueError(f"the interval {text[:80]!r} has no length; {_HOW}")
+    if from_at.year < FIRST_YEAR or until_at > datetime(LAST_YEAR + 1, 1, 1, tzinfo=UTC):
+        raise ValueError(f"the interval {text[:80]!r} leaves the years {FIRST_YEAR} to {LAST_YEAR}; {_HOW}")
     return Span(from_at, until_at)
 
 

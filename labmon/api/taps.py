@@ -10,14 +10,15 @@ from django.utils import timezone
 from msgspec import UNSET, UnsetType
 
 from analysis.models import Calibration
-from analysis.record.rollups import history
+from analysis.record.rollups import History, history
 from ingest.models import Tap
 from labmon.api.answer import json_answer
 from labmon.api.body import Body, Text, body_of
 from labmon.api.named import tap_named, tap_path
 from labmon.api.problem import wrong_field
 from labmon.api.query import known_only, one_of, span_of, whole_number
-from labmon.api.schemas import MEASURED
+from labmon.api.schemas import LIMITED, MEASURED
+from labmon.api.span import Span
 from labmon.api.times import parse_time, rfc3339, rfc3339_many
 from labmon.benches.calibration import set_calibration
 from labmon.benches.queries import now_of
@@ -41,19 +42,16 @@ def now_facts(tap: Tap) -> dict[str, Any]:
     sample = now_of(tap)
     verdicts = sample.trust_by_quantity if sample else {}
     trusted = sample.last_trusted if sample else {}
-    bounds = ("is_lower_bound", "is_upper_bound", "angle_is_upper_bound")
+    bounds = ("is_lower_bound", "is_upper_bound", "angle_is_upper_bound", "angle_is_lower_bound")
     return ({"tap": tap_path(tap), "kind": tap.kind, "taken_at": rfc3339(sample.taken_at) if sample else None,
              "age_s": sample.age_s if sample else None}
             | {name: getattr(sample, name, None) for name in NO_SAMPLE}
             | {name: bool(getattr(sample, name, False)) for name in bounds}
             | {"trust": sample.trust if sample else "none", "trust_reasons": list(sample.trust_reasons) if sample else []}
-            | {f"{name}_trust": verdicts.get(name, {}).get("trust", "none") for name in MEASURED}
-            | {f"{name}_reasons": verdicts.get(name, {}).get("reasons", []) for name in MEASURED}
-            | {"last_trusted": {name: _last_trusted(trusted.get(name)) for name in MEASURED}})
-
-
-def _last_trusted(held: dict[str, Any] | None) -> dict[str, Any] | None:
-    return {"value": held["value"], "at": rfc3339(held["at"])} if held else None
+            | {f"{name}_trust": verdicts.get(name, {}).get("trust", "none") for name in LIMITED}
+            | {f"{name}_reasons": verdicts.get(name, {}).get("reasons", []) for name in LIMITED}
+            | {f"{name}_codes": verdicts.get(name, {}).get("codes", []) for name in LIMITED}
+            | {"last_trusted": {name: trusted.get(name) for name in LIMITED}})
 
 
 def get_history(request: HttpRequest, person: Person, station: str, tap: str) -> HttpResponse:
@@ -63,11 +61,19 @@ def get_history(request: HttpRequest, person: Person, station: str, tap: str) ->
     points = whole_number(request.GET, "points", default=1000, most=MOST_POINTS)
     quantity = one_of(request.GET, "quantity", MEASURED, default="er_db")
     row = tap_named(person, station, tap)
-    found = history(row.pk, quantity, span.from_us, span.until_us, points)
+    found = at_most(points, row.pk, quantity, span)
     return json_answer({"tap": tap_path(row), "quantity": quantity, "span": str(span), "bucket_s": found.bucket_s,
                         "at": rfc3339_many(found.at_us).tolist(), "min": _or_null(found.min),
                         "mean": _or_null(found.mean), "max": _or_null(found.max),
                         "trusted_share": _or_null(found.trusted_share)})
+
+
+def at_most(points: int, tap_id: int, quantity: str, span: Span) -> History:
+    """The history in at most so many buckets: one fewer is asked for where the span begins within a bucket."""
+    found = history(tap_id, quantity, span.from_us, span.until_us, points)
+    if len(found.at_us) > points > 1:
+        return history(tap_id, quantity, span.from_us, span.until_us, points - 1)
+    return found
 
 
 def _or_null(values: np.ndarray) -> list[float | None]:

@@ -48,9 +48,9 @@ urlpatterns = [
     path(TAP + "readings", by_method(GET=get_readings), name="readings"),
     path(TAP + "calibration", by_method(PATCH=patch_calibration), name="calibration"),
     path("experiments", by_method(GET=get_experiments, POST=post_experiment), name="experiments"),
-    path("experiments/<row:id>/limits", by_method(GET=get_limits, POST=post_limit), name="limits"),
+    path("experiments/<row:experiment_id>/limits", by_method(GET=get_limits, POST=post_limit), name="limits"),
     path("alarms", by_method(GET=get_alarms), name="alarms"),
-    path("alarms/<row:id>/acknowledge", by_method(POST=post_acknowledge), name="acknowledge"),
+    path("alarms/<row:alarm_id>/acknowledge", by_method(POST=post_acknowledge), name="acknowledge"),
     path("openapi.json", open_to_all(GET=get_openapi), name="openapi"),
     re_path(r"", unknown_address, name="unknown"),
 ]

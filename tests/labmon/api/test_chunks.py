@@ -8,7 +8,7 @@ from labmon.api.chunks import cut_us
 
 
 def test_a_piece_ends_before_the_row_that_would_make_it_too_large():
-    rows = [(0, 30_000), (10, 15_000), (20, 10_000), (30, 1)]
+    rows = [(0, 15_000), (10, 9_000), (20, 5_000), (30, 1)]
     assert cut_us([rows, []], 0, 100) == 20
 
 

@@ -17,7 +17,7 @@ SCHEMA = pa.schema([("at", TIME), ("er_db", pa.float64()), ("is_lower_bound", pa
 
 def piece(first, count):
     return pa.table({"at": pa.array(np.arange(first, first + count) * 1_000_000, TIME),
-                     "er_db": pa.array([None if row % 3 == 0 else row + 0.5 for row in range(first, first + count)], pa.float64()),
+                     "er_db": pa.array([row + 0.5 if row % 3 else None for row in range(first, first + count)], pa.float64()),
                      "is_lower_bound": [row % 2 == 0 for row in range(first, first + count)],
                      "boot": [f'a,"{row}' for row in range(first, first + count)]}, schema=SCHEMA)
 

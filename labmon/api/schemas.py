@@ -135,6 +135,10 @@ NEW_CALIBRATION = shape({name: schema for name, schema in CALIBRATION["propertie
                         text="A missing field is taken from the version valid at valid_from (now, where that is missing).")
 ACKNOWLEDGEMENT = shape({"note": TEXT}, optional=("note",))
 
+COLUMNS = ("By tap name, columns of equal length. Any tap: sequence, at (RFC 3339 or microseconds since 1970), uptime_ms, "
+           "temperature_c, humidity_pct, drive_ma. Two-port: port1, port2, each with _min, _max, _sd, and averaged, clipped. "
+           "Dark-port: port2, monitor. Stokes: s0 s1 s2 s3, or azimuth_deg ellipticity_deg dop power. Climate: temperature_c, "
+           "humidity_pct, pressure_hpa. Values as measured, in the tap's unit; other columns are kept and reported.")
 BATCH: Schema = {
     "type": "object", "required": ["taps"],
     "properties": {
@@ -142,7 +146,7 @@ BATCH: Schema = {
         "now": {"type": "object", "properties": {"at": {"type": ["string", "integer", "null"]},
                                                  "uptime_ms": {"type": ["integer", "null"]}}},
         "taps": {"type": "object", "additionalProperties": {
-            "type": "object", "description": "Columns of equal length; see docs/stations.md for their names.",
+            "type": "object", "description": COLUMNS,
             "additionalProperties": {"type": "array"}}},
     },
 }

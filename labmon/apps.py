@@ -6,5 +6,8 @@ class LabmonConfig(AppConfig):
     default_auto_field = "django.db.models.BigAutoField"
 
     def ready(self) -> None:
-        """Register the system checks."""
-        import labmon.checks  # noqa: F401  (its import registers them)
+        """Connect the one listener to what the door announces."""
+        from ingest.announce import listen
+        from labmon.pipeline.hint import ask_for_judging
+
+        listen(ask_for_judging)

@@ -7,7 +7,7 @@ from django.conf import settings
 from labmon.alarms.models import Alarm, AlarmKind
 from labmon.experiments.models import Experiment
 from labmon.people.models import Person, Role
-from labmon.tell.outbox import queue_mail
+from labmon.tell.outbox import Mail, queue_mails
 
 #: What a mail may be about; with the alarm's number it is the event's key.
 RAISED, ROSE = "raised", "rose"
@@ -22,20 +22,21 @@ def call_people(alarms: Iterable[tuple[Alarm, str]], names: Mapping[int, str]) -
     events = list(alarms)
     if not events:
         return
-    owners = _addresses_by_experiment(events)
+    experiments = Experiment.objects.select_related("owner").in_bulk({alarm.experiment_id for alarm, _ in events if alarm.experiment_id})
     managers: list[str] | None = None
+    mails = []
     for alarm, event in events:
-        recipients = owners.get(alarm.experiment_id or 0, [])
+        recipients = _owner_address(experiments.get(alarm.experiment_id))
         if not recipients:
             managers = _manager_addresses() if managers is None else managers
             recipients = managers
-        queue_mail(f"alarm-{alarm.pk}-{event}", recipients, _subject(alarm), _body(alarm, names[alarm.tap_id]))
+        mails.append(Mail(f"alarm-{alarm.pk}-{event}", recipients, _subject(alarm), _body(alarm, names[alarm.tap_id], experiments)))
+    queue_mails(mails)
 
 
-def _addresses_by_experiment(events: list[tuple[Alarm, str]]) -> dict[int, list[str]]:
-    asked = {alarm.experiment_id for alarm, _ in events if alarm.experiment_id}
-    rows = Experiment.objects.filter(pk__in=asked, owner__is_active=True).exclude(owner__email="").values_list("pk", "owner__email")
-    return {pk: [address] for pk, address in rows}
+def _owner_address(experiment: Experiment | None) -> list[str]:
+    owner = experiment.owner if experiment else None
+    return [owner.email] if owner and owner.is_active and owner.email else []
 
 
 def _manager_addresses() -> list[str]:
@@ -47,9 +48,9 @@ def _subject(alarm: Alarm) -> str:
     return f"{alarm.level}: {alarm.message}"
 
 
-def _body(alarm: Alarm, name: str) -> str:
-    what = {AlarmKind.LIMIT: "Raised", AlarmKind.NO_READING: "Silent since", AlarmKind.UNTRUSTED: "Noticed"}[AlarmKind(alarm.kind)]
+def _body(alarm: Alarm, name: str, experiments: Mapping[int, Experiment]) -> str:
+    what = {AlarmKind.LIMIT: "Raised", AlarmKind.NO_READING: "Noticed", AlarmKind.UNTRUSTED: "Noticed"}[AlarmKind(alarm.kind)]
     lines = [f"{alarm.message}.", "", f"{what}: {alarm.raised_at:%Y-%m-%d %H:%M:%S} UTC",
-             f"Experiment: {alarm.experiment.name}" if alarm.experiment else "", f"Bench: {settings.PUBLIC_URL}/stations/{name.split('/')[0]}/",
+             *([f"Experiment: {experiments[alarm.experiment_id].name}"] if alarm.experiment_id else []), f"Bench: {settings.PUBLIC_URL}/stations/{name.split('/')[0]}/",
              f"Alarms: {settings.PUBLIC_URL}/alarms/", "", "labmon watches and advises; it changes nothing on the bench."]
-    return "\n".join(line for line in lines if line is not None)
+    return "\n".join(lines)

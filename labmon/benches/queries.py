@@ -30,6 +30,8 @@ from labmon.people.rights import stations_visible_to
 
 #: Door spans older than this do not count for silence any more.
 DOOR_MEMORY_US: Final = 8 * 86_400 * SECOND_US
+#: A door gives a sign of life each second; one whose last is no older than this is up.
+DOOR_SIGN_US: Final = 3 * SECOND_US
 
 
 @dataclass(frozen=True, slots=True)
@@ -263,6 +265,8 @@ def door_spans(now_us: int) -> Any:
             joined[-1][1] = max(joined[-1][1], until_us)
         else:
             joined.append([from_us, until_us])
+    if joined and joined[-1][1] >= now_us - DOOR_SIGN_US:
+        joined[-1][1] = max(joined[-1][1], now_us)
     return np.array(joined, dtype=np.int64).reshape(-1, 2)
 
 

@@ -17,6 +17,8 @@ from ingest.times import at_of
 from labmon.alarms.words import span_text
 
 DEFAULT_SILENCE_S = 60.0
+#: A tap that is heard more often counts as heard this often: a short hiccup of a fast one is no silence.
+LEAST_USUAL_S = 1.0
 
 
 class BenchState(StrEnum):
@@ -165,7 +167,7 @@ def silences_of(taps: Sequence[tuple[Tap, TapState | None, int]], call_after_s: 
 def usual_arrival_s(tap: Tap, state: TapState | None) -> float:
     """Usual time between arrivals, s: a station that sends batches is heard less often than it measures."""
     interval_s = tap.interval_s or (state.interval.interval_s if state else None)
-    return cadence_s(np.array(state.arrivals_us if state else (), dtype=np.int64), interval_s) or 1.0
+    return max(cadence_s(np.array(state.arrivals_us if state else (), dtype=np.int64), interval_s) or LEAST_USUAL_S, LEAST_USUAL_S)
 
 
 def state_of_tap(margins: Sequence[ShownMargin], sample: NowSample | None, silence: Silence | None) -> BenchState:

@@ -1,5 +1,6 @@
 """Rollups that are due: claimed by tap, made anew, forgotten. Safe to run twice and by several workers."""
 
+import time
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Final
@@ -26,15 +27,18 @@ class _Due:
     span: Span
 
 
-def roll_up_due(now_us: int | None = None) -> int:
-    """Make all due 10 s and 1 min rollups; returns how many taps were visited."""
-    visited = 0
-    while step := _fine_chunk(server_now_us() if now_us is None else now_us):
+def roll_up_due(now_us: int | None = None, *, for_s: float = float("inf")) -> int:
+    """Make all due 10 s and 1 min rollups (or as many as ``for_s`` seconds allow); returns how many taps were visited."""
+    visited, began = 0, time.monotonic()
+    while time.monotonic() - began < for_s:
+        step = _fine_chunk(server_now_us() if now_us is None else now_us)
+        if not step:
+            break
         visited += step
     return visited
 
 
-def roll_up_coarse_due(now_us: int | None = None) -> int:
+def roll_up_coarse_due() -> int:
     """Make all due hours and days; returns how many taps were visited."""
     visited = 0
     while step := _coarse_chunk():

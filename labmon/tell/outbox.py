@@ -2,7 +2,8 @@
 
 import logging
 import smtplib
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
 from datetime import timedelta
 from hashlib import sha256
 
@@ -19,14 +20,30 @@ LONGEST_WAIT_S = 3600.0
 log = logging.getLogger(__name__)
 
 
-def queue_mail(event: str, recipients: Iterable[str], subject: str, body: str) -> None:
-    """Write a mail in the transaction of its event; the same ``event`` again changes nothing.
+@dataclass(frozen=True, slots=True)
+class Mail:
+    """A mail to be sent; ``event`` makes it one mail an event."""
 
-    Without recipients it goes to the lab's own mailbox (LABMON_MAIL_FROM), so that no event is told to nobody.
+    event: str
+    recipients: Sequence[str]
+    subject: str
+    body: str
+
+
+def queue_mail(event: str, recipients: Sequence[str], subject: str, body: str) -> None:
+    """Write a mail in the transaction of its event; the same ``event`` again changes nothing."""
+    queue_mails([Mail(event, recipients, subject, body)])
+
+
+def queue_mails(mails: Iterable[Mail]) -> None:
+    """As `queue_mail` for many, in one statement.
+
+    Without recipients a mail goes to the lab's own mailbox (LABMON_MAIL_FROM), so that no event is told to nobody.
     """
-    addresses = list(dict.fromkeys(recipients)) or [settings.DEFAULT_FROM_EMAIL]
-    mail = OutboxMail(event=event, recipients=addresses, subject=one_line(subject), body=body)
-    OutboxMail.objects.bulk_create([mail], ignore_conflicts=True)
+    rows = [OutboxMail(event=mail.event, recipients=list(dict.fromkeys(mail.recipients)) or [settings.DEFAULT_FROM_EMAIL],
+                       subject=one_line(mail.subject), body=mail.body) for mail in mails]
+    if rows:
+        OutboxMail.objects.bulk_create(rows, ignore_conflicts=True)
 
 
 def one_line(text: str) -> str:

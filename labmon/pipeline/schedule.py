@@ -1,0 +1,25 @@
+"""What beat sends, and how often.
+
+``expires`` lets a task that waited longer than its own period fall away: a stopped worker finds no pile, and what a lost
+one would have done the next one does.
+"""
+
+from typing import Any
+
+from celery.schedules import crontab
+
+
+def _every(name: str, seconds: float, *, expires: float | None = None) -> dict[str, Any]:
+    return {"task": f"labmon.pipeline.{name}", "schedule": seconds, "options": {"expires": expires or max(2 * seconds, 3.0)}}
+
+
+BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
+    "judge what no hint told of": _every("process", 1.0),
+    "look for silence": _every("silence", 1.0),
+    "send mails": _every("send_mails", 5.0),
+    "roll up": _every("roll_up", 10.0),
+    "roll up hours and days": _every("roll_up_coarse", 120.0),
+    "seal": _every("seal", 60.0),
+    "take up left imports": _every("take_up_left_imports", 300.0),
+    "compact closed days": {"task": "labmon.pipeline.compact", "schedule": crontab(hour="1", minute="20"), "options": {"expires": 6 * 3600}},
+}

@@ -1,0 +1,64 @@
+"""Celery's doors: each calls one function. All may run twice and side by side; a broken broker only delays them."""
+
+from celery import shared_task
+from django.db import OperationalError
+
+from ingest.store.seal import seal_inbox
+from labmon.pipeline.process import process_touched
+from labmon.pipeline.prune import prune_checkpoints
+from labmon.pipeline.rolling import compact_closed_days, roll_up_coarse_due, roll_up_due
+from labmon.pipeline.silence import judge_silence
+from labmon.tell.outbox import send_waiting
+
+#: A run of judging ends after this and leaves the rest to the next, so that no task is long.
+PROCESS_FOR_S = 20.0
+
+
+def _task(name: str, time_limit: int):  # type: ignore[no-untyped-def]
+    return shared_task(name=f"labmon.pipeline.{name}", acks_late=True, ignore_result=True, time_limit=time_limit,
+                       autoretry_for=(OperationalError,), retry_backoff=1, max_retries=3)
+
+
+@_task("process", 120)
+def process_task() -> None:
+    """Judge what is touched."""
+    process_touched(for_s=PROCESS_FOR_S)
+
+
+@_task("silence", 60)
+def silence_task() -> None:
+    """Look for taps that have fallen silent."""
+    judge_silence()
+
+
+@_task("roll_up", 120)
+def roll_up_task() -> None:
+    """Make due rollups of 10 s and 1 min anew."""
+    roll_up_due(for_s=PROCESS_FOR_S)
+
+
+@_task("roll_up_coarse", 120)
+def roll_up_coarse_task() -> None:
+    """Make due hours and days anew."""
+    roll_up_coarse_due()
+
+
+@_task("seal", 300)
+def seal_task() -> None:
+    """Move readings that have waited long enough into blocks."""
+    while seal_inbox() > 0:
+        pass
+
+
+@_task("send_mails", 300)
+def send_mails_task() -> None:
+    """Send what waits in the outbox."""
+    send_waiting()
+
+
+@_task("compact", 1800)
+def compact_task() -> None:
+    """Put closed days into their buffers, thin old checkpoints."""
+    while compact_closed_days():
+        pass
+    prune_checkpoints()

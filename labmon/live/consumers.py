@@ -11,6 +11,7 @@ from typing import Any
 from channels.db import database_sync_to_async
 from channels.generic.websocket import AsyncJsonWebsocketConsumer
 
+from labmon.live.changes import changes
 from labmon.live.publish import LAB_GROUP
 from labmon.people.models import Person, Role
 from labmon.people.rights import has_access, role_of
@@ -56,6 +57,7 @@ class LabConsumer(AsyncJsonWebsocketConsumer):
         if not self.is_watching:
             return
         change = event["change"]
+        changes.note(str(change["kind"]))
         ids = self.waiting.setdefault(str(change["kind"]), set())
         ids.update(change.get("ids", ()))
         if not self.is_sending:

@@ -15,6 +15,7 @@ from labmon.people.rights import Action, may
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people
 from labmon.screen.lab_rows import as_json, lab_view, title_of
+from labmon.screen.snapshot import snapshot
 
 MOST_WAITING = 5
 
@@ -31,7 +32,7 @@ def lab_page(request: HttpRequest) -> HttpResponse:
 @for_people
 def lab_json(request: HttpRequest) -> HttpResponse:
     """The same truth for the open page; ``course=1`` adds the day's course."""
-    view = lab_view(bench_rows(request.user), timezone.now())
+    view = lab_view(snapshot.rows_for(request.user), timezone.now())
     body = as_json(view, with_course=request.GET.get("course") == "1")
     body["waiting"] = render_to_string("screen/_lab_waiting.html", _waiting(request) | {"back": reverse("lab")}, request)
     return JsonResponse(

@@ -29,9 +29,9 @@ def er_text(er_db: float | None, *, is_lower_bound: bool = False) -> str:
     return number_text(er_db, 1, "dB", sign="≥" if is_lower_bound else "")
 
 
-def angle_text(angle_deg: float | None, *, is_upper_bound: bool = False) -> str:
-    """Angle on the sphere, ``6.4°``; a bound ``≤ 2.1°``."""
-    return number_text(angle_deg, 1, "°", sign="≤" if is_upper_bound else "")
+def angle_text(angle_deg: float | None, *, is_upper_bound: bool = False, is_lower_bound: bool = False) -> str:
+    """Angle on the sphere, ``6.4°``; a bound ``≤ 2.1°`` or ``≥ 12.0°``."""
+    return number_text(angle_deg, 1, "°", sign="≤" if is_upper_bound else "≥" if is_lower_bound else "")
 
 
 def margin_db_text(margin_db: float | None, *, is_bound: bool = False) -> str:

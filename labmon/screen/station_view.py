@@ -88,7 +88,7 @@ def tap_view(tap: TapFacts, now: datetime) -> TapView:
         id=tap.id,
         name=tap.name,
         kind=tap.kind,
-        unit=tap.unit,
+        unit=unit_text(tap.unit),
         standing=standing_of(tap.state),
         values=_values(tap),
         reasons=list(tap.now.trust_reasons) if tap.now else [],
@@ -101,6 +101,11 @@ def tap_view(tap: TapFacts, now: datetime) -> TapView:
         measures_light=tap.kind != "climate",
         has_stokes=tap.has_stokes,
     )
+
+
+def unit_text(unit: str) -> str:
+    """The unit as it is written, with µ."""
+    return unit.replace("uW", "µW")
 
 
 def _rail(tap: TapFacts) -> SafeString:
@@ -141,11 +146,14 @@ def _light_values(sample: NowSample, *, is_old: bool) -> list[Fact]:
         Fact(name="Extinction ratio", text=er, is_doubtful=doubtful("er_db")),
         Fact(
             name="Angle from wanted",
-            text=angle_text(sample.angle_deg, is_upper_bound=sample.angle_is_upper_bound),
+            text=angle_text(
+                sample.angle_deg, is_upper_bound=sample.angle_is_upper_bound, is_lower_bound=sample.angle_is_lower_bound
+            ),
             is_doubtful=doubtful("angle_deg"),
         ),
-        Fact(name="Power", text=power_text(sample.power_w), is_doubtful=doubtful("power_w")),
     ]
+    if sample.power_w is not None:
+        facts.append(Fact(name="Power", text=power_text(sample.power_w), is_doubtful=doubtful("power_w")))
     if sample.sop is not None:
         facts += [
             Fact(name="Degree of polarization", text=dop_text(sample.dop), is_doubtful=doubtful("dop")),
@@ -206,7 +214,7 @@ def calibration_words(tap: TapFacts) -> list[Fact]:
     version = tap.calibration
     if version is None:
         return []
-    unit = "W" if tap.unit == "dBm" else tap.unit
+    unit = "W" if tap.unit == "dBm" else unit_text(tap.unit)
     facts = [
         ("In force since", time_text(version.valid_from)),
         ("Zero of port 1", number_text(version.zero1, 9, unit)),

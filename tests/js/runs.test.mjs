@@ -1,6 +1,6 @@
 import assert from 'node:assert/strict';
 import { test } from 'node:test';
-import { envelope, rangeOf, runsOf, timesOf, valuesOf } from '../../labmon/static/labmon/js/runs.js';
+import { doubtfulPlaces, envelope, rangeOf, runsOf, timesOf, valuesOf } from '../../labmon/static/labmon/js/runs.js';
 
 const series = { x0_ms: 0, dx_ms: 10, scale: 100, mean: [100, 200, null, 300], min: [90, 190, null, 290], max: [110, 210, null, 310] };
 
@@ -30,4 +30,8 @@ test('the range holds the envelope and the limits', () => {
   const [low, high] = rangeOf(series, [0.5]);
   assert.ok(low < 0.5 && high > 3.1);
   assert.equal(rangeOf({ ...series, min: [null], max: [null] }), null);
+});
+
+test('doubt is known where there is a value only', () => {
+  assert.deepEqual(doubtfulPlaces({ ...series, trusted: [100, 20, 0, null] }), [false, true, false, false]);
 });

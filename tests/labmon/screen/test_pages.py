@@ -13,6 +13,7 @@ from labmon.audit.models import AuditEntry
 from labmon.experiments.actions import set_limit
 from labmon.experiments.models import Limit
 from labmon.people.models import Person, PersonKey, Role
+from labmon.screen.snapshot import snapshot
 from tests.factories import NOON, NOON_US, make_experiment, make_person, make_station, make_tap
 
 pytestmark = pytest.mark.django_db
@@ -363,9 +364,8 @@ def test_no_page_has_inline_style_or_script(client, lab):
 
 
 def queries_of(client, address: str) -> int:
-    with CaptureQueriesContext(
-        connection,
-    ) as captured:
+    snapshot.forget()
+    with CaptureQueriesContext(connection) as captured:
         assert client.get(address).status_code == 200
     return len(captured)
 

@@ -4,13 +4,14 @@
 import { angleFromEr, changedSpan, erFromAngle, parseSpan, spanText } from './format.js';
 import { noteTruth, onChange, serverNowMs } from './live.js';
 import { startTrail } from './trail.js';
-import { envelope, rangeOf, timesOf, valuesOf } from './runs.js';
+import { doubtfulPlaces, envelope, rangeOf, timesOf, valuesOf } from './runs.js';
 
 const DEBOUNCE_MS = 120;
 const FOLLOW_EVERY_MS = 5000;
 const CONFIG = { displaylogo: false, displayModeBar: false, showSendToCloud: false, plotlyServerURL: '', topojsonURL: '',
   responsive: true, scrollZoom: false, doubleClick: false };
 const ANGLES = [1, 2, 3, 5, 7, 10, 15, 20, 30, 45, 60, 90, 120, 150];
+const RATIOS = [0, 1, 2, 3, 4, 6, 8, 10, 12, 15, 17, 20, 23, 25, 27, 30, 35, 40];
 const NAMES = { er_db: 'extinction ratio (dB)', angle_deg: 'angle from the wanted state (°)', dop: 'degree of polarization',
   power_w: 'power (dBm)', temperature_c: 'temperature (°C)', humidity_pct: 'humidity (%)', pressure_hpa: 'pressure (hPa)' };
 
@@ -66,20 +67,34 @@ function alarmTraces(series, [from, until], paint) {
 function mainTraces(series, name, axes, paint) {
   const band = envelope(series);
   const times = timesOf(series);
+  const isDoubtful = doubtfulPlaces(series);
   const low = valuesOf(series, 'min');
   const high = valuesOf(series, 'max');
   const hover = times.map((_, index) => (low[index] === null ? '' : `${low[index].toFixed(2)} to ${high[index].toFixed(2)}`));
   return [
     { ...axes, x: band.x, y: band.y, type: 'scatter', mode: 'lines', fill: 'toself', fillcolor: paint.band, line: { width: 0.5, color: paint.rule }, hoverinfo: 'skip' },
-    { ...axes, x: times, y: valuesOf(series, 'mean'), type: 'scatter', mode: 'lines', connectgaps: false, name, line: { color: paint.ink, width: 1.6 },
-      text: hover, hovertemplate: '%{x|%d %b %H:%M:%S}  %{y:.2f} (%{text})<extra></extra>' },
+    { ...axes, x: times, y: valuesOf(series, 'mean').map((value, index) => (isDoubtful[index] ? null : value)), type: 'scatter', mode: 'lines',
+      connectgaps: false, hoverinfo: 'skip', line: { color: paint.ink, width: 1.6 } },
+    { ...axes, x: times, y: valuesOf(series, 'mean'), type: 'scatter', mode: 'markers', marker: { opacity: 0 }, name, text: hover,
+      hovertemplate: '%{x|%d %b %H:%M:%S}  %{y:.2f} (%{text})<extra></extra>' },
   ];
 }
 
+/** The mean where less than half of a bucket is trusted: dotted, joined to its neighbours. */
 function doubtTrace(series, paint) {
-  const y = valuesOf(series, 'mean').map((value, index) => (series.trusted[index] !== null && series.trusted[index] < 50 ? value : null));
-  return { x: timesOf(series), y, type: 'scatter', mode: 'markers', hoverinfo: 'skip',
-    marker: { symbol: 'circle-open', size: 5, color: paint.ink, line: { width: 1 } } };
+  const y = valuesOf(series, 'mean');
+  const isDoubtful = doubtfulPlaces(series);
+  return { x: timesOf(series), y: y.map((value, index) => (isDoubtful[index] || isDoubtful[index - 1] || isDoubtful[index + 1] ? value : null)),
+    type: 'scatter', mode: 'lines', connectgaps: false, hoverinfo: 'skip', line: { color: paint.ink, width: 1.4, dash: 'dot' } };
+}
+
+/** Those whose places on an axis of this height are not too close for their words; the first of a crowd stays. */
+function apart(values, placeOf, height) {
+  const kept = [];
+  for (const value of values) {
+    if (kept.every((other) => Math.abs(placeOf(other) - placeOf(value)) > height * 0.055)) kept.push(value);
+  }
+  return kept;
 }
 
 /** Right-hand scale: the same axis in degrees (for ER) or in dB (for angles). */
@@ -87,11 +102,11 @@ function twinAxis(quantity, [low, high], paint) {
   const inside = (value) => value >= low && value <= high;
   const base = { overlaying: 'y', side: 'right', showgrid: false, range: [low, high], fixedrange: true, color: paint.soft, ticks: 'outside' };
   if (quantity === 'er_db') {
-    const angles = ANGLES.filter((angle) => inside(erFromAngle(angle)));
+    const angles = apart(ANGLES.filter((angle) => inside(erFromAngle(angle))), erFromAngle, high - low);
     return { ...base, tickvals: angles.map(erFromAngle), ticktext: angles.map((angle) => `${angle}°`), title: { text: 'angle on the sphere' } };
   }
   if (quantity === 'angle_deg') {
-    const ers = [40, 35, 30, 27, 25, 23, 20, 17, 15, 12, 10, 8, 6, 4, 3, 2, 1, 0].filter((er) => inside(angleFromEr(er)));
+    const ers = apart(RATIOS.filter((er) => inside(angleFromEr(er))), angleFromEr, high - low);
     return { ...base, tickvals: ers.map(angleFromEr), ticktext: ers.map((er) => `${er} dB`), title: { text: 'extinction ratio' } };
   }
   return null;
@@ -121,7 +136,8 @@ function figure(answer, isNarrow) {
   }
   if (temperature) {
     layout.yaxis2 = { ...axis, domain: [0, 0.24], range: rangeOf(temperature) || [0, 1], title: { text: isNarrow ? '' : 'temperature (°C)' }, nticks: 5 };
-    traces.push(...mainTraces(temperature, NAMES.temperature_c, { yaxis: 'y2' }, paint));
+    const steady = { ...temperature, trusted: temperature.trusted.map(() => null) };
+    traces.push(...mainTraces(steady, NAMES.temperature_c, { yaxis: 'y2' }, paint));
   }
   return { traces, layout };
 }

@@ -57,3 +57,8 @@ export function rangeOf(series, also = []) {
   const room = Math.max((high - low) * 0.08, Math.abs(high) * 1e-3, 1e-6);
   return [low - room, high + room];
 }
+
+/** Per bucket whether less than half of it is trusted (a bucket without value is not doubtful, it is a gap). */
+export function doubtfulPlaces(series) {
+  return series.trusted.map((share, index) => series.mean[index] !== null && share !== null && share < 50);
+}

@@ -14,12 +14,12 @@ import psycopg
 
 from ingest.aside import Aside
 from ingest.clocks import ClockState, Placed, observe, place
+from ingest.door.body import Body, Part
 from ingest.door.identity import AFTER_NOW, Fault, Lot, judge_by_time, judge_numbered
-from ingest.door.payload import Body, Part, aside_of
 from ingest.door.rows import Harvest, Ranges, lock_boots, lock_clocks, lock_taps, touches_of, write_harvest
 from ingest.store.boots import StationBootKey, TapBootKey, multirange_text, ranges_of, station_boot_ids, tap_boot_ids
 from ingest.store.codec import Batch, pack_batch, pack_even_batch
-from ingest.store.columns import NO_SEQUENCE, NO_TIME, IntArray, Readings
+from ingest.store.columns import NO_SEQUENCE, IntArray, Readings
 
 _NO_FIRST_US, _NO_LAST_US = (1 << 63) - 1, -(1 << 63)
 
@@ -141,7 +141,7 @@ class Transaction:
         """Decide about one body."""
         state = self.clocks[station_boot] = observe(self.clocks[station_boot], body.sending)
         answer, start = Answer(body.boot), 0
-        is_plain = not state.is_server_timed and bool(len(body.own_at_us)) and int(body.own_at_us.min()) != NO_TIME
+        is_plain = not state.is_server_timed and body.is_stamped
         placed = None if is_plain else place(state, body.sending, body.own_at_us, _uptimes(body))
         for part in body.parts:
             boot_id = self.tap_boots[part.tap.id, station_boot]
@@ -222,7 +222,7 @@ class Transaction:
         asides = part.aside
         if faults:
             rows = {place: place if part.rows is None else int(part.rows[place]) for place in faults}
-            asides = asides + [aside_of(part, rows[place], body.boot, fault) for place, fault in faults.items()]
+            asides = asides + [part.aside_of(rows[place], body.boot, fault) for place, fault in faults.items()]
             asides.sort(key=lambda aside: aside.row)
         answer.aside += asides
         offered = _offered(body, part)

@@ -16,8 +16,8 @@ import psycopg
 
 from ingest.announce import announce
 from ingest.database import connect
+from ingest.door.body import Body
 from ingest.door.commit import Answer, Ids, StaleIds, Transaction
-from ingest.door.payload import Body
 from ingest.door.presence import Presence
 from ingest.door.refusal import Refusal, bad_form, come_again
 from ingest.door.rows import note_refused

@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 import psycopg
 
-from ingest.door.payload import Part
+from ingest.door.body import Part
 from ingest.store.columns import NO_SEQUENCE, NO_TIME, BoolArray, IntArray, Readings, concatenate
 from ingest.store.find import are_same, numbered_readings, readings_near
 

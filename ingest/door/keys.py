@@ -8,7 +8,7 @@ from typing import Any, LiteralString
 import psycopg
 
 from ingest.database import connect, fetch
-from ingest.door.payload import KnownStation, KnownTap
+from ingest.door.body import KnownStation, KnownTap
 from ingest.stations import digest_of
 from ingest.times import now_us, us_of
 

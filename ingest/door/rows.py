@@ -7,7 +7,7 @@ from typing import Any, LiteralString
 import psycopg
 
 from ingest.clocks import ClockState
-from ingest.database import fetch
+from ingest.database import BigInts, columns_of, fetch
 from ingest.store.boots import multirange_text, station_boot_ids, tap_boot_ids
 
 Ranges = list[tuple[int, int]]
@@ -29,7 +29,7 @@ class Harvest:
 
 def lock_clocks(db: psycopg.Connection[Any], station_boots: Iterable[int]) -> dict[int, ClockState]:
     """Clock states of station boots, locked."""
-    return {row[0]: ClockState(*row[1:]) for row in fetch(db, _LOCK_CLOCKS, sorted(station_boots))}
+    return {row[0]: ClockState(*row[1:]) for row in fetch(db, _LOCK_CLOCKS, BigInts(sorted(station_boots)))}
 
 
 def lock_taps(db: psycopg.Connection[Any], taps: list[int]) -> tuple[dict[int, int], dict[int, set[int]]]:
@@ -44,7 +44,7 @@ def lock_taps(db: psycopg.Connection[Any], taps: list[int]) -> tuple[dict[int, i
 def lock_boots(db: psycopg.Connection[Any], offered: dict[int, Ranges]) -> dict[int, tuple[int, Ranges]]:
     """By TapBoot id, locked: its tap, and which of the offered numbers it holds already."""
     ids = sorted(offered)
-    rows = fetch(db, _LOCK_BOOTS, ids, [multirange_text(offered[each]) for each in ids])
+    rows = fetch(db, _LOCK_BOOTS, BigInts(ids), [multirange_text(offered[each]) for each in ids])
     return {row: (tap, ranges_in(text)) for row, tap, text in rows}
 
 
@@ -91,7 +91,7 @@ def ranges_in(text: str) -> Ranges:
 
 def _write(cursor: psycopg.Cursor[Any], statement: LiteralString, rows: Sequence[tuple[Any, ...]]) -> None:
     if rows:
-        cursor.execute(statement, [list(column) for column in zip(*rows, strict=True)], binary=True)
+        cursor.execute(statement, columns_of(rows), binary=True)
 
 
 _LOCK_CLOCKS: LiteralString = """

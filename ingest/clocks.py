@@ -19,6 +19,8 @@ LONGEST_UPTIME_MS = 100 * 366 * 86_400_000
 """A hundred years; more is no uptime."""
 UPTIME_WRAP_MS = 1 << 32
 _WRAP_TOLERANCE_MS = 3_600_000
+_LONGEST_ROUND_AGE_MS = 7 * 86_400_000
+"""A reading from before a counter's new round is believed up to this age; beyond, its uptime is a mistake."""
 _OSCILLATOR_PPM = 200
 """How fast the smallest offset may creep up again, so that it follows an oscillator that runs slow. Plain quartz keeps
 within about 100 parts in a million (common practice, no source)."""
@@ -135,7 +137,7 @@ def place(state: ClockState, sending: Sending, own_at_us: IntArray, uptime_ms: I
         by_uptime = uptime_ms != NO_UPTIME
         unwrapped_ms = unwrap(replace(state, last_arrival_us=None), sending)
         sent_server_us = state.uptime_zero_us + 1000 * unwrapped_ms
-        age_ms, impossible = _uptime_age_ms(sending.now_uptime_ms, unwrapped_ms, uptime_ms)
+        age_ms, impossible = _uptime_age_ms(sending.now_uptime_ms, uptime_ms)
         impossible &= by_uptime
         at_us = np.where(by_uptime, sent_server_us - 1000 * age_ms, at_us)
     if state.is_server_timed:
@@ -146,15 +148,15 @@ def place(state: ClockState, sending: Sending, own_at_us: IntArray, uptime_ms: I
     return Placed(np.where(has_own, own_at_us, at_us), ~has_own, impossible & ~has_own, sent_own_us, sent_server_us)
 
 
-def _uptime_age_ms(now_ms: int, unwrapped_ms: int, uptime_ms: IntArray) -> tuple[IntArray, BoolArray]:
-    """Age by uptime, and where it cannot be: an uptime well after now that no round of a 32-bit counter explains."""
+def _uptime_age_ms(now_ms: int, uptime_ms: IntArray) -> tuple[IntArray, BoolArray]:
+    """Age by uptime, and where it cannot be: an uptime well after now, unless a 32-bit counter began a new round lately."""
     age_ms = now_ms - uptime_ms
     is_after = age_ms < -CLOCK_TOLERANCE_US // 1000
     if not is_after.any():
         return age_ms, is_after
     if now_ms < UPTIME_WRAP_MS:
         age_ms = np.where(is_after, age_ms + UPTIME_WRAP_MS, age_ms)
-    return age_ms, is_after & ((age_ms < 0) | (age_ms > unwrapped_ms))
+    return age_ms, is_after & ((age_ms < 0) | (age_ms > _LONGEST_ROUND_AGE_MS))
 
 
 def _stamp_age_us(now_at_us: int | None, own_at_us: IntArray) -> IntArray:

@@ -13,8 +13,14 @@ from ingest.store.columns import Readings
 from ingest.store.read import read_readings
 
 EVER = (-(2**62), 2**62)
-ALL_KINDS = [NewTap("eom-in", "two-port", "W"), NewTap("dark", "dark-port", "V"), NewTap("sop", "stokes", "mW"),
-             NewTap("air", "climate"), NewTap("adc", "two-port", "count"), NewTap("meter", "two-port", "dBm")]
+ALL_KINDS = [
+    NewTap("eom-in", "two-port", "W"),
+    NewTap("dark", "dark-port", "V"),
+    NewTap("sop", "stokes", "mW"),
+    NewTap("air", "climate"),
+    NewTap("adc", "two-port", "count"),
+    NewTap("meter", "two-port", "dBm"),
+]
 
 
 class Sender:
@@ -24,8 +30,9 @@ class Sender:
         self.station, self.key = station, key
         self.app = app or DoorApplication()
         self.loop = asyncio.new_event_loop()
-        self.client = httpx.AsyncClient(transport=httpx.ASGITransport(self.app), base_url="http://lab",
-                                        headers={"Authorization": f"Bearer {key}"})
+        self.client = httpx.AsyncClient(
+            transport=httpx.ASGITransport(self.app), base_url="http://lab", headers={"Authorization": f"Bearer {key}"}
+        )
 
     def post(self, body: Any = None, **options: Any) -> httpx.Response:
         """POST a map as JSON, or bytes as they are."""
@@ -40,8 +47,10 @@ class Sender:
 
     def together(self, bodies: list[Any]) -> list[httpx.Response]:
         """POST all at once."""
+
         async def all_of_them() -> list[httpx.Response]:
             return list(await asyncio.gather(*(self.client.post("/api/v1/readings", json=body) for body in bodies)))
+
         return self.loop.run_until_complete(all_of_them())
 
     def tap(self, name: str = "eom-in") -> Tap:
@@ -58,11 +67,17 @@ class Sender:
         self.loop.close()
 
 
-def two_port(first: int = 0, count: int = 1, *, boot: str = "7f3a", start_us: int = 1_930_356_665_000_000, **more: Any) -> dict[str, Any]:
+def two_port(
+    first: int = 0, count: int = 1, *, boot: str = "7f3a", start_us: int = 1_930_356_665_000_000, **more: Any
+) -> dict[str, Any]:
     """A body of ``count`` readings one second apart, with values that tell their number."""
     numbers = list(range(first, first + count))
-    columns = {"sequence": numbers, "at": [start_us + 1_000_000 * number for number in numbers],
-               "port1": [1e-3 + 1e-9 * number for number in numbers], "port2": [1e-6 + 1e-12 * number for number in numbers]}
+    columns = {
+        "sequence": numbers,
+        "at": [start_us + 1_000_000 * number for number in numbers],
+        "port1": [1e-3 + 1e-9 * number for number in numbers],
+        "port2": [1e-6 + 1e-12 * number for number in numbers],
+    }
     return {"boot": boot, "taps": {"eom-in": columns | more}}
 
 

@@ -12,16 +12,54 @@ from hypothesis import strategies as st
 from ingest.models import SetAside
 from tests.ingest.conftest import ALL_KINDS
 
-QUIET = settings(max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow])
+QUIET = settings(
+    max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow]
+)
 TAPS = [tap.name for tap in ALL_KINDS]
-COLUMNS = ["sequence", "at", "uptime_ms", "port1", "port2", "port1_min", "port2_sd", "monitor", "s0", "s1", "s2", "s3", "azimuth_deg",
-           "ellipticity_deg", "dop", "power", "temperature_c", "humidity_pct", "pressure_hpa", "averaged", "clipped", "drive_ma", "odd"]
+COLUMNS = [
+    "sequence",
+    "at",
+    "uptime_ms",
+    "port1",
+    "port2",
+    "port1_min",
+    "port2_sd",
+    "monitor",
+    "s0",
+    "s1",
+    "s2",
+    "s3",
+    "azimuth_deg",
+    "ellipticity_deg",
+    "dop",
+    "power",
+    "temperature_c",
+    "humidity_pct",
+    "pressure_hpa",
+    "averaged",
+    "clipped",
+    "drive_ma",
+    "odd",
+]
 
-any_json = st.recursive(st.none() | st.booleans() | st.integers() | st.floats() | st.text(), lambda inner: st.lists(inner, max_size=4)
-                        | st.dictionaries(st.text(max_size=8), inner, max_size=4), max_leaves=12)
+any_json = st.recursive(
+    st.none() | st.booleans() | st.integers() | st.floats() | st.text(),
+    lambda inner: st.lists(inner, max_size=4) | st.dictionaries(st.text(max_size=8), inner, max_size=4),
+    max_leaves=12,
+)
 stamps = st.datetimes().map(lambda at: at.isoformat() + "Z")
-values = st.one_of(st.floats(), st.floats(0, 1e-3), st.integers(), st.integers(0, 100), st.none(), st.booleans(), st.text(max_size=5),
-                   stamps, st.integers(1_900_000_000_000_000, 1_960_000_000_000_000), any_json)
+values = st.one_of(
+    st.floats(),
+    st.floats(0, 1e-3),
+    st.integers(),
+    st.integers(0, 100),
+    st.none(),
+    st.booleans(),
+    st.text(max_size=5),
+    stamps,
+    st.integers(1_900_000_000_000_000, 1_960_000_000_000_000),
+    any_json,
+)
 
 
 @st.composite
@@ -36,8 +74,13 @@ def parts(draw):
 
 bodies = st.fixed_dictionaries(
     {"taps": st.dictionaries(st.sampled_from(TAPS), parts(), max_size=3)},
-    optional={"boot": st.sampled_from(["a", "b"]) | st.none() | any_json, "firmware": st.text(max_size=5) | any_json, "odd": any_json,
-              "now": st.fixed_dictionaries({}, optional={"at": values, "uptime_ms": st.integers(0, 2**33) | values}) | any_json})
+    optional={
+        "boot": st.sampled_from(["a", "b"]) | st.none() | any_json,
+        "firmware": st.text(max_size=5) | any_json,
+        "odd": any_json,
+        "now": st.fixed_dictionaries({}, optional={"at": values, "uptime_ms": st.integers(0, 2**33) | values}) | any_json,
+    },
+)
 
 
 def checked(sender, response, found=None):
@@ -79,27 +122,49 @@ def test_any_json(sender, body):
 
 
 @QUIET
-@given(body=st.fixed_dictionaries({"taps": st.dictionaries(st.sampled_from(TAPS) | st.text(max_size=5), any_json | parts(), max_size=3)}))
+@given(
+    body=st.fixed_dictionaries(
+        {"taps": st.dictionaries(st.sampled_from(TAPS) | st.text(max_size=5), any_json | parts(), max_size=3)}
+    )
+)
 def test_any_taps(sender, body):
     checked(sender, sender.post(json.dumps(body).encode(), headers={"Content-Type": "application/json"}))
 
 
 @QUIET
-@given(body=st.binary(max_size=200), kind=st.sampled_from(["application/json", "application/msgpack", "", "text/x"]),
-       encoding=st.sampled_from(["", "gzip", "br"]), is_packed=st.booleans())
+@given(
+    body=st.binary(max_size=200),
+    kind=st.sampled_from(["application/json", "application/msgpack", "", "text/x"]),
+    encoding=st.sampled_from(["", "gzip", "br"]),
+    is_packed=st.booleans(),
+)
 def test_any_bytes(sender, body, kind, encoding, is_packed):
-    checked(sender, sender.post(gzip.compress(body) if is_packed else body, headers={"Content-Type": kind, "Content-Encoding": encoding}))
+    checked(
+        sender,
+        sender.post(gzip.compress(body) if is_packed else body, headers={"Content-Type": kind, "Content-Encoding": encoding}),
+    )
 
 
 @st.composite
 def binary_bodies(draw):
     """MessagePack with binary columns of any words, and lists between them."""
     count = draw(st.integers(0, 4))
-    column = st.binary(min_size=8 * count, max_size=8 * count) | st.lists(st.floats() | st.integers(-2**63, 2**64 - 1), min_size=count, max_size=count) \
+    column = (
+        st.binary(min_size=8 * count, max_size=8 * count)
+        | st.lists(st.floats() | st.integers(-(2**63), 2**64 - 1), min_size=count, max_size=count)
         | st.lists(st.floats(0, 1), min_size=count, max_size=count).map(lambda found: np.array(found, "<f8").tobytes())
+    )
     taps = {}
     for tap in draw(st.lists(st.sampled_from(TAPS), max_size=2, unique=True)):
-        names = draw(st.lists(st.sampled_from(COLUMNS), max_size=5, unique=True)) + ["port1", "port2", "s0", "s1", "s2", "s3", "temperature_c"]
+        names = draw(st.lists(st.sampled_from(COLUMNS), max_size=5, unique=True)) + [
+            "port1",
+            "port2",
+            "s0",
+            "s1",
+            "s2",
+            "s3",
+            "temperature_c",
+        ]
         taps[tap] = {name: draw(column) for name in dict.fromkeys(names)}
     return {"boot": draw(st.sampled_from(["a", "b", None])), "now": {"uptime_ms": draw(st.integers(0, 2**34))}, "taps": taps}
 

@@ -116,7 +116,10 @@ def test_repeats_that_wait_together_are_told_apart(sender):
     bodies = [two_port(first, 10) for first in (0, 5, 0, 10, 3)] + [two_port(0, 12, boot="other")]
     answers = [response.json() for response in sender.together(bodies)]
     assert sum(answer["stored"] for answer in answers) == 20 + 12
-    assert all(answer["stored"] + answer["known"] == len(body["taps"]["eom-in"]["at"]) for answer, body in zip(answers, bodies, strict=True))
+    assert all(
+        answer["stored"] + answer["known"] == len(body["taps"]["eom-in"]["at"])
+        for answer, body in zip(answers, bodies, strict=True)
+    )
     assert len(sender.stored()) == 32
 
 

@@ -15,8 +15,10 @@ from django.db import connection
 
 from tests.ingest.conftest import two_port
 
-SERVE = ("import django; django.setup(); import uvicorn; from ingest.door.asgi import DoorApplication; "
-         "uvicorn.run(DoorApplication(), port={port}, log_level='warning')")
+SERVE = (
+    "import django; django.setup(); import uvicorn; from ingest.door.asgi import DoorApplication; "
+    "uvicorn.run(DoorApplication(), port={port}, log_level='warning')"
+)
 
 
 @contextmanager
@@ -24,8 +26,10 @@ def server(port):
     """The door in a process of its own, on the test database."""
     settings = connection.settings_dict
     url = f"postgresql://{settings['USER']}:{settings['PASSWORD']}@/{settings['NAME']}?host={settings['HOST']}&port={settings['PORT']}"
-    process = subprocess.Popen([sys.executable, "-c", SERVE.format(port=port)], env=os.environ | {
-        "LABMON_DATABASE_URL": url, "DJANGO_SETTINGS_MODULE": "labmon.settings", "LABMON_LOG_LEVEL": "ERROR"})
+    process = subprocess.Popen(
+        [sys.executable, "-c", SERVE.format(port=port)],
+        env=os.environ | {"LABMON_DATABASE_URL": url, "DJANGO_SETTINGS_MODULE": "labmon.settings", "LABMON_LOG_LEVEL": "ERROR"},
+    )
     try:
         for _ in range(200):
             with socket.socket() as probe:

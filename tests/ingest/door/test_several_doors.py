@@ -30,6 +30,7 @@ def in_threads(*works):
             faults.append(fault)
         finally:
             connection.close()
+
     threads = [threading.Thread(target=guarded, args=(work,)) for work in works]
     for thread in threads:
         thread.start()

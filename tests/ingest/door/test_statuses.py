@@ -24,7 +24,9 @@ def problem(response, status):
     return found
 
 
-@pytest.mark.parametrize("header", [None, "", "Bearer", "Bearer ", "Basic eDp5", "Bearer wrong", "Bearer \u00e4".encode("latin-1")])
+@pytest.mark.parametrize(
+    "header", [None, "", "Bearer", "Bearer ", "Basic eDp5", "Bearer wrong", "Bearer \u00e4".encode("latin-1")]
+)
 def test_without_a_good_key_nobody_gets_in(sender, header):
     sender.client.headers.pop("Authorization")
     response = sender.post(two_port(), headers={} if header is None else {"Authorization": header})
@@ -64,33 +66,60 @@ def test_a_tap_added_a_moment_ago_is_known(sender):
     sender.send({"boot": "a", "taps": {"new": two_port()["taps"]["eom-in"]}})
 
 
-@pytest.mark.parametrize(("body", "field"), [
-    ({"taps": []}, "taps"), ({}, "taps"), ({"taps": {"eom-in": 5}}, "taps.eom-in"),
-    ({"taps": {"nobody": {"port1": [1], "port2": [1]}}}, "taps.nobody"),
-    ({"taps": {"eom-in": {"port1": [1], "port2": [1, 2]}}}, "taps.eom-in.port2"),
-    ({"taps": {"eom-in": {"at": [None] * 3, "port1": [1, 2], "port2": [1, 2]}}}, "taps.eom-in.at"),
-    ({"taps": {"eom-in": {"port1": 1, "port2": 1}}}, "taps.eom-in.port1"),
-    ({"taps": {"eom-in": {"port1": "AAAAAAAAAAA=", "port2": [1]}}}, "taps.eom-in.port1"),
-    ({"taps": {"eom-in": {"port1": [1]}}}, "taps.eom-in"),
-    ({"taps": {"dark": {"port1": [1]}}}, "taps.dark"),
-    ({"taps": {"sop": {"s0": [1], "s1": [1], "s2": [1]}}}, "taps.sop"),
-    ({"taps": {"air": {"drive_ma": [1]}}}, "taps.air"),
-    ({"boot": 5, "taps": {}}, "boot"), ({"boot": "x" * 101, "taps": {}}, "boot"), ({"boot": "a\u0000b", "taps": {}}, "boot"),
-    ({"firmware": ["1"], "taps": {}}, "firmware"), ({"now": 5, "taps": {}}, "now"),
-    ({"now": {"at": "yesterday"}, "taps": {}}, "now.at"), ({"now": {"at": 1.5}, "taps": {}}, "now.at"),
-    ({"now": {"uptime_ms": -1}, "taps": {}}, "now.uptime_ms"), ({"now": {"uptime_ms": "5"}, "taps": {}}, "now.uptime_ms"),
-    ({"taps": {"eom-in": {"port1": [1], "port2": [1], "x" * 101: [1]}}}, "taps.eom-in"),
-    ({"taps": {"eom-in": {"port1": [1], "port2": [1]} | {f"extra{n}": [1] for n in range(51)}}}, "taps.eom-in"),
-])
+@pytest.mark.parametrize(
+    ("body", "field"),
+    [
+        ({"taps": []}, "taps"),
+        ({}, "taps"),
+        ({"taps": {"eom-in": 5}}, "taps.eom-in"),
+        ({"taps": {"nobody": {"port1": [1], "port2": [1]}}}, "taps.nobody"),
+        ({"taps": {"eom-in": {"port1": [1], "port2": [1, 2]}}}, "taps.eom-in.port2"),
+        ({"taps": {"eom-in": {"at": [None] * 3, "port1": [1, 2], "port2": [1, 2]}}}, "taps.eom-in.at"),
+        ({"taps": {"eom-in": {"port1": 1, "port2": 1}}}, "taps.eom-in.port1"),
+        ({"taps": {"eom-in": {"port1": "AAAAAAAAAAA=", "port2": [1]}}}, "taps.eom-in.port1"),
+        ({"taps": {"eom-in": {"port1": [1]}}}, "taps.eom-in"),
+        ({"taps": {"dark": {"port1": [1]}}}, "taps.dark"),
+        ({"taps": {"sop": {"s0": [1], "s1": [1], "s2": [1]}}}, "taps.sop"),
+        ({"taps": {"air": {"drive_ma": [1]}}}, "taps.air"),
+        ({"boot": 5, "taps": {}}, "boot"),
+        ({"boot": "x" * 101, "taps": {}}, "boot"),
+        ({"boot": "a\u0000b", "taps": {}}, "boot"),
+        ({"firmware": ["1"], "taps": {}}, "firmware"),
+        ({"now": 5, "taps": {}}, "now"),
+        ({"now": {"at": "yesterday"}, "taps": {}}, "now.at"),
+        ({"now": {"at": 1.5}, "taps": {}}, "now.at"),
+        ({"now": {"uptime_ms": -1}, "taps": {}}, "now.uptime_ms"),
+        ({"now": {"uptime_ms": "5"}, "taps": {}}, "now.uptime_ms"),
+        ({"taps": {"eom-in": {"port1": [1], "port2": [1], "x" * 101: [1]}}}, "taps.eom-in"),
+        ({"taps": {"eom-in": {"port1": [1], "port2": [1]} | {f"extra{n}": [1] for n in range(51)}}}, "taps.eom-in"),
+    ],
+)
 def test_what_is_not_of_the_form_is_refused_with_the_field_and_a_remedy(sender, body, field):
     assert problem(sender.post(body), 400)["field"] == field
 
 
-@pytest.mark.parametrize("body", [b"", b"{", b"[]", b"null", b"5", b'"x"', b"\xff\xfe", b"\xef\xbb\xbf{}", b"{'a': 1}", b'{"taps": {},}',
-                                  b'{"taps": NaN}', b'{"taps": {"eom-in": {"port1": [NaN], "port2": [1]}}}',
-                                  b'{"taps": {"eom-in": {"port1": [-Infinity], "port2": [1]}}}', b'{"boot": "\\ud800", "taps": {}}',
-                                  b'{"taps": {"eom-in": {"port1": [1], "port2": [1]}, "eom-in": {"port1": [2], "port2": [2]}}}',
-                                  b'{"taps": ' + b"[" * 100_000, b'{"taps": {"a": ' + b"9" * 10_000 + b"}}"])
+@pytest.mark.parametrize(
+    "body",
+    [
+        b"",
+        b"{",
+        b"[]",
+        b"null",
+        b"5",
+        b'"x"',
+        b"\xff\xfe",
+        b"\xef\xbb\xbf{}",
+        b"{'a': 1}",
+        b'{"taps": {},}',
+        b'{"taps": NaN}',
+        b'{"taps": {"eom-in": {"port1": [NaN], "port2": [1]}}}',
+        b'{"taps": {"eom-in": {"port1": [-Infinity], "port2": [1]}}}',
+        b'{"boot": "\\ud800", "taps": {}}',
+        b'{"taps": {"eom-in": {"port1": [1], "port2": [1]}, "eom-in": {"port1": [2], "port2": [2]}}}',
+        b'{"taps": ' + b"[" * 100_000,
+        b'{"taps": {"a": ' + b"9" * 10_000 + b"}}",
+    ],
+)
 def test_what_is_no_json_map_is_refused_whole(sender, body):
     problem(sender.post(body, headers=JSON), 400)
     assert not len(sender.stored())
@@ -114,7 +143,7 @@ def test_unknown_content_types_are_refused(sender, kind):
     assert problem(sender.post(b"{}", headers={"Content-Type": kind}), 400)["field"] == "Content-Type"
 
 
-@pytest.mark.parametrize("kind", ["application/json", "application/json; charset=utf-8", "Application/JSON;charset=\"UTF-8\"", ""])
+@pytest.mark.parametrize("kind", ["application/json", "application/json; charset=utf-8", 'Application/JSON;charset="UTF-8"', ""])
 def test_json_in_utf_8_is_taken(sender, kind):
     sender.send(json.dumps(two_port()).encode(), headers={"Content-Type": kind} if kind else {})
 
@@ -129,8 +158,16 @@ def test_gzip_in_several_members_is_taken(sender):
     sender.send(gzip.compress(text[:20]) + gzip.compress(text[20:]), headers=JSON | {"Content-Encoding": "gzip"})
 
 
-@pytest.mark.parametrize("damage", [lambda packed: packed[:-5], lambda packed: packed + b"x", lambda packed: b"x" + packed,
-                                    lambda packed: packed[:20] + b"\0\0" + packed[22:], lambda packed: b""])
+@pytest.mark.parametrize(
+    "damage",
+    [
+        lambda packed: packed[:-5],
+        lambda packed: packed + b"x",
+        lambda packed: b"x" + packed,
+        lambda packed: packed[:20] + b"\0\0" + packed[22:],
+        lambda packed: b"",
+    ],
+)
 def test_damaged_gzip_is_refused(sender, damage):
     packed = gzip.compress(json.dumps(two_port(0, 50)).encode())
     problem(sender.post(damage(packed), headers=JSON | {"Content-Encoding": "gzip"}), 400)
@@ -155,6 +192,7 @@ def test_a_body_above_8_mib_in_pieces_is_refused(sender):
     async def pieces():
         for _ in range(9):
             yield b" " * (1 << 20)
+
     problem(sender.loop.run_until_complete(sender.client.post("/api/v1/readings", content=pieces(), headers=JSON)), 413)
 
 
@@ -186,6 +224,7 @@ def test_when_the_database_is_away_stations_are_told_to_come_again(sender, monke
 
     def away(**options):
         raise psycopg.OperationalError("nobody listens")
+
     sender.app.door._committer._db.close()
     monkeypatch.setattr(committer, "connect", away)
     response = sender.post(two_port(1))
@@ -199,6 +238,7 @@ def test_when_the_database_is_away_stations_are_told_to_come_again(sender, monke
 def test_when_keys_cannot_be_looked_up_stations_are_told_to_come_again(sender, monkeypatch):
     def away(**options):
         raise psycopg.OperationalError("nobody listens")
+
     monkeypatch.setattr(keys, "connect", away)
     problem(sender.post(two_port()), 503)
 
@@ -218,6 +258,7 @@ def test_a_body_that_the_database_refuses_does_not_take_others_with_it(sender, m
         if any(body.boot == "poison" for body in self.bodies):
             raise psycopg.DataError("invalid byte sequence")
         return true_write(self, answers)
+
     monkeypatch.setattr(committer.Transaction, "_write", poisoned)
     sender.send(two_port(0, 1, boot="first"))
     responses = sender.together([two_port(0, 1, boot=boot) for boot in ("a", "poison", "b", "c")])

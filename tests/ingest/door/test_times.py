@@ -33,7 +33,9 @@ def test_the_offset_is_the_smallest_seen_in_the_boot(sender):
 
 
 def test_without_now_the_clock_is_not_checked(sender):
-    sender.send({"boot": "a", "taps": {"eom-in": {"sequence": [1], "at": ["2031-03-04T02:11:05.120Z"], "port1": [1], "port2": [2]}}})
+    sender.send(
+        {"boot": "a", "taps": {"eom-in": {"sequence": [1], "at": ["2031-03-04T02:11:05.120Z"], "port1": [1], "port2": [2]}}}
+    )
     assert sender.stored().at_us.tolist() == [1_930_356_665_120_000] and not StationBoot.objects.get().is_server_timed
 
 
@@ -95,7 +97,11 @@ def test_a_clock_off_by_less_is_not_at_fault(sender, offset_s):
 
 
 def test_a_boot_stays_server_timed_when_its_clock_is_set_right(sender):
-    sender.send(body({"sequence": [1], "uptime_ms": [12_000], "at": ["1970-01-01T00:00:12Z"]}, uptime_ms=13_000, at="1970-01-01T00:00:13Z"))
+    sender.send(
+        body(
+            {"sequence": [1], "uptime_ms": [12_000], "at": ["1970-01-01T00:00:12Z"]}, uptime_ms=13_000, at="1970-01-01T00:00:13Z"
+        )
+    )
     sender.send(body({"sequence": [2], "uptime_ms": [14_000], "at": [now_us()]}, uptime_ms=14_500, at=now_us()))
     stored, boot = sender.stored(), StationBoot.objects.get()
     assert stored.is_server_timed.all() and boot.is_server_timed and "not set" in boot.clock_fault
@@ -105,16 +111,30 @@ def test_a_boot_stays_server_timed_when_its_clock_is_set_right(sender):
 def test_1970_clock_with_uptimes_is_placed_within_1_s_by_arrival(sender):
     """JOB.md, section 7a: wall time 1970-01-01T00:00:12Z with uptimes, placed within 1 s by arrival; flagged."""
     expected = now_us() - 2 * S
-    sender.send(body({"sequence": [1], "at": ["1970-01-01T00:00:12Z"], "uptime_ms": [12_345]}, uptime_ms=14_345,
-                     at="1970-01-01T00:00:14Z"))
+    sender.send(
+        body(
+            {"sequence": [1], "at": ["1970-01-01T00:00:12Z"], "uptime_ms": [12_345]}, uptime_ms=14_345, at="1970-01-01T00:00:14Z"
+        )
+    )
     stored = sender.stored()
     assert abs(stored.at_us[0] - expected) < S and stored.is_server_timed[0] and stored.own_at_us[0] == 12 * S
     assert "1970-01-01T00:00:12" in StationBoot.objects.get().clock_fault
 
 
 def test_a_stamp_before_2020_makes_the_boot_server_timed_even_without_now(sender):
-    sender.send({"boot": "a", "taps": {"eom-in": {"sequence": [1, 2], "at": ["2019-12-31T23:59:58Z", "2019-12-31T23:59:59Z"],
-                                                  "port1": [1, 1], "port2": [2, 2]}}})
+    sender.send(
+        {
+            "boot": "a",
+            "taps": {
+                "eom-in": {
+                    "sequence": [1, 2],
+                    "at": ["2019-12-31T23:59:58Z", "2019-12-31T23:59:59Z"],
+                    "port1": [1, 1],
+                    "port2": [2, 2],
+                }
+            },
+        }
+    )
     stored = sender.stored()
     assert stored.is_server_timed.all() and abs(stored.at_us[1] - now_us()) < 2 * S and stored.at_us[1] - stored.at_us[0] == S
 

@@ -12,10 +12,17 @@ from ingest.store.arrays import DamagedBody, pack_integers, pack_numbers, pack_r
 from ingest.store.codec import Batch, pack_batch, pack_block, pack_even_batch, unpack_batch, unpack_block
 from ingest.store.columns import NO_SEQUENCE, NO_TIME, Readings
 
-int64s = hnp.arrays(np.int64, st.integers(1, 200), elements=st.one_of(
-    st.integers(-2**63, 2**63 - 1), st.integers(-5, 5), st.integers(1_930_000_000_000_000, 1_930_000_000_100_000)))
+int64s = hnp.arrays(
+    np.int64,
+    st.integers(1, 200),
+    elements=st.one_of(
+        st.integers(-(2**63), 2**63 - 1), st.integers(-5, 5), st.integers(1_930_000_000_000_000, 1_930_000_000_100_000)
+    ),
+)
 floats = st.one_of(st.floats(), st.floats(1e-9, 1e-3), st.sampled_from([0.0, -0.0, np.nan, np.inf]))
-numbers = hnp.arrays(np.float64, st.integers(1, 200), elements=floats) | hnp.arrays(np.float32, st.integers(1, 200), elements=st.floats(width=32))
+numbers = hnp.arrays(np.float64, st.integers(1, 200), elements=floats) | hnp.arrays(
+    np.float32, st.integers(1, 200), elements=st.floats(width=32)
+)
 
 
 @given(int64s)
@@ -36,9 +43,17 @@ def some_readings(count=500, columns=("port1", "port2"), seed=3):
     random = np.random.default_rng(seed)
     at_us = 1_930_000_000_000_000 + np.cumsum(random.integers(99_000, 101_000, count))
     arrival_us = np.repeat(at_us[::10] + 10**6, 10)[:count]
-    return Readings(at_us, {name: random.normal(1e-3, 1e-6, count) for name in columns}, np.repeat([4, 9], count)[::2].copy(),
-                    np.arange(count), np.where(np.arange(count) % 7 == 0, NO_TIME, at_us - 5), arrival_us, arrival_us - 3,
-                    np.arange(count) % 7 == 0, None)
+    return Readings(
+        at_us,
+        {name: random.normal(1e-3, 1e-6, count) for name in columns},
+        np.repeat([4, 9], count)[::2].copy(),
+        np.arange(count),
+        np.where(np.arange(count) % 7 == 0, NO_TIME, at_us - 5),
+        arrival_us,
+        arrival_us - 3,
+        np.arange(count) % 7 == 0,
+        None,
+    )
 
 
 def assert_same(one, other):
@@ -57,16 +72,28 @@ def test_a_block_comes_back():
 
 
 def test_a_block_of_one_reading_with_nothing_known_comes_back():
-    one = Readings(*(np.array([5]) if name != "columns" else {} for name in ("at", "columns", "boot", "sequence", "own", "arrival", "sent")),
-                   np.array([True]), np.array(['{"x":1}'], object))
+    one = Readings(
+        *(np.array([5]) if name != "columns" else {} for name in ("at", "columns", "boot", "sequence", "own", "arrival", "sent")),
+        np.array([True]),
+        np.array(['{"x":1}'], object),
+    )
     assert_same(one, unpack_block(pack_block(one)))
 
 
 def test_float32_is_kept_as_float32_and_read_as_float64():
     readings = some_readings(columns=())
     sent = np.random.default_rng(1).random(500, np.float32)
-    body = pack_block(Readings(**({name: getattr(readings, name) for name in (
-        "at_us", "boot_id", "sequence", "own_at_us", "arrival_us", "sent_us", "is_server_timed")} | {"columns": {"s0": sent}})))
+    body = pack_block(
+        Readings(
+            **(
+                {
+                    name: getattr(readings, name)
+                    for name in ("at_us", "boot_id", "sequence", "own_at_us", "arrival_us", "sent_us", "is_server_timed")
+                }
+                | {"columns": {"s0": sent}}
+            )
+        )
+    )
     assert unpack_block(body, as_sent=True).columns["s0"].dtype == np.float32
     np.testing.assert_array_equal(unpack_block(body).columns["s0"], sent.astype(np.float64))
 
@@ -107,12 +134,19 @@ def test_a_cut_block_is_seen():
 def test_a_batch_comes_back(data):
     count = data.draw(st.integers(1, 30))
     at_us = data.draw(hnp.arrays(np.int64, count, elements=st.integers(0, 2**51)))
-    sequence = data.draw(st.one_of(st.just(np.full(count, NO_SEQUENCE)), st.just(np.arange(7, 7 + count)),
-                                   hnp.arrays(np.int64, count, elements=st.integers(-1, 9))))
+    sequence = data.draw(
+        st.one_of(
+            st.just(np.full(count, NO_SEQUENCE)),
+            st.just(np.arange(7, 7 + count)),
+            hnp.arrays(np.int64, count, elements=st.integers(-1, 9)),
+        )
+    )
     own = data.draw(st.sampled_from([at_us, np.full(count, NO_TIME), at_us + 1]))
     names = tuple(data.draw(st.lists(st.sampled_from(["port1", "port2", "x"]), max_size=3, unique=True)))
     values = data.draw(hnp.arrays(np.float64, (len(names), count), elements=floats))
-    unknown = data.draw(st.none() | st.lists(st.text(), min_size=count, max_size=count).map(lambda texts: np.array([*texts, None], object)[:-1]))
+    unknown = data.draw(
+        st.none() | st.lists(st.text(), min_size=count, max_size=count).map(lambda texts: np.array([*texts, None], object)[:-1])
+    )
     batch = Batch(at_us, names, values, sequence, own, 99, data.draw(st.booleans()), unknown)
     body = pack_batch(batch)
     back = unpack_batch(body, zlib.crc32(body))

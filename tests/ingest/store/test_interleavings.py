@@ -17,14 +17,17 @@ COUNT = 60
 BOOTS = ("one", "two", None)  # None: known by their time only
 
 cut = st.tuples(st.just("send"), st.sampled_from(BOOTS), st.integers(0, COUNT - 1), st.integers(1, 25), st.integers(0, 2**16))
-steps = st.lists(st.one_of(cut, cut, cut, st.just(("seal",)), st.just(("restart",)), st.just(("together",))), min_size=1, max_size=14)
+steps = st.lists(
+    st.one_of(cut, cut, cut, st.just(("seal",)), st.just(("restart",)), st.just(("together",))), min_size=1, max_size=14
+)
 
 
 def reading(boot, number):
     """The one true reading of an identity; a second and a bit apart, so that slots change."""
     at_us = START_US + number * 37 * S + (0 if boot == "one" else 11 * S if boot == "two" else 23 * S)
-    return {"at": at_us, "port1": 1e-3 + number * 1e-9, "port2": 1e-6 * (1 + BOOTS.index(boot)) + number * 1e-12} \
-        | ({} if boot is None else {"sequence": number})
+    return {"at": at_us, "port1": 1e-3 + number * 1e-9, "port2": 1e-6 * (1 + BOOTS.index(boot)) + number * 1e-12} | (
+        {} if boot is None else {"sequence": number}
+    )
 
 
 def batch(step):

@@ -51,7 +51,10 @@ def test_a_late_batch_merges_into_its_block(sender):
     blocks = list(Block.objects.order_by("slot_us").values_list("slot_us", "span_us", "count"))
     assert blocks == [(START_US, 600 * S, 25), (START_US + 1200 * S, 600 * S, 10)]
     assert sender.stored().sequence.tolist() == [*range(25), *range(1200, 1210)]
-    assert [(row.sequences.lower, row.sequences.upper) for row in BlockBoot.objects.order_by("block__slot_us")] == [(0, 25), (1200, 1210)]
+    assert [(row.sequences.lower, row.sequences.upper) for row in BlockBoot.objects.order_by("block__slot_us")] == [
+        (0, 25),
+        (1200, 1210),
+    ]
 
 
 def test_faster_taps_get_shorter_slots_that_respect_what_is_there(sender):
@@ -90,7 +93,10 @@ def test_reading_many_taps_is_one_query(sender):
     finally:
         read_many.__globals__["fetch"] = true_fetch
     assert len(asked) == 1 and set(found) == set(taps)
-    assert {tap: len(readings) for tap, readings in found.items() if len(readings)} == {sender.tap().pk: 10, sender.tap("air").pk: 1}
+    assert {tap: len(readings) for tap, readings in found.items() if len(readings)} == {
+        sender.tap().pk: 10,
+        sender.tap("air").pk: 1,
+    }
     assert len(read_many({})) == 0
 
 
@@ -100,7 +106,10 @@ def test_the_newest_readings_by_data_time(sender, sealed):
     seal_tap(sender.tap().pk)
     sender.send(two_port(sealed, 20 - sealed) if sealed < 20 else {"taps": {}})
     tap, nothing = sender.tap().pk, sender.tap("air").pk
-    assert {key: found.sequence.tolist() for key, found in newest_readings([tap, nothing], count=3).items()} == {tap: [17, 18, 19], nothing: []}
+    assert {key: found.sequence.tolist() for key, found in newest_readings([tap, nothing], count=3).items()} == {
+        tap: [17, 18, 19],
+        nothing: [],
+    }
     assert newest_readings([tap])[tap].sequence.tolist() == [19]
 
 

@@ -10,8 +10,10 @@ from ingest.store.slots import LENGTHS_S, slot_length_s, slots_of
 S = 1_000_000
 
 
-@pytest.mark.parametrize(("interval_s", "length_s"), [(86_400, 86_400), (300, 86_400), (60, 3_600), (1, 600), (0.1, 600), (0.05, 300),
-                                                      (0.01, 60), (0.001, 5), (0.00001, 1)])
+@pytest.mark.parametrize(
+    ("interval_s", "length_s"),
+    [(86_400, 86_400), (300, 86_400), (60, 3_600), (1, 600), (0.1, 600), (0.05, 300), (0.01, 60), (0.001, 5), (0.00001, 1)],
+)
 def test_the_length_follows_the_rate(interval_s, length_s):
     assert slot_length_s((np.arange(50) * interval_s * S).astype(np.int64)) == length_s
 
@@ -24,8 +26,11 @@ def test_a_few_readings_say_nothing_about_the_rate():
     assert slot_length_s(np.array([0, 1])) == slot_length_s(np.array([5, 5, 5, 5, 5])) == 600
 
 
-batches = st.lists(st.tuples(st.lists(st.integers(-90_000 * S, 200_000 * S), min_size=1, max_size=8), st.sampled_from(LENGTHS_S)),
-                   min_size=1, max_size=8)
+batches = st.lists(
+    st.tuples(st.lists(st.integers(-90_000 * S, 200_000 * S), min_size=1, max_size=8), st.sampled_from(LENGTHS_S)),
+    min_size=1,
+    max_size=8,
+)
 
 
 @given(batches)

@@ -47,7 +47,7 @@ class TapView:
     unit: str
     standing: Standing
     values: list[Fact]
-    reasons: list[str]
+    doubt: str
     limits: list[str]
     calibration: list[Fact]
     unknown_columns: list[str]
@@ -91,7 +91,7 @@ def tap_view(tap: TapFacts, now: datetime) -> TapView:
         unit=unit_text(tap.unit),
         standing=standing_of(tap.state),
         values=_values(tap),
-        reasons=list(tap.now.trust_reasons) if tap.now else [],
+        doubt=doubt_words(tap.now),
         limits=[level_words(limit) for limit in tap.limits],
         calibration=calibration_words(tap),
         unknown_columns=list(tap.unknown_columns),
@@ -101,6 +101,14 @@ def tap_view(tap: TapFacts, now: datetime) -> TapView:
         measures_light=tap.kind != "climate",
         has_stokes=tap.has_stokes,
     )
+
+
+def doubt_words(sample: NowSample | None) -> str:
+    """``doubtful: clock unset``; empty where the sample is trusted or nothing is wrong with it."""
+    if sample is None or sample.trust == "trusted" or not sample.trust_reasons:
+        return ""
+    reasons = ", ".join(reason[:1].lower() + reason[1:] for reason in sample.trust_reasons)
+    return reasons if sample.trust == "none" else f"{sample.trust}: {reasons}"
 
 
 def unit_text(unit: str) -> str:
@@ -200,7 +208,7 @@ def _margins(tap: TapFacts, *, below: bool = False, signed: bool = False) -> str
 
 def _because(tap: TapFacts) -> str:
     reasons = list(tap.now.trust_reasons) if tap.now else []
-    return f": {', '.join(reasons)}" if reasons else ""
+    return ": " + ", ".join(reason[:1].lower() + reason[1:] for reason in reasons).rstrip(".") if reasons else ""
 
 
 def _place(tap: TapFacts) -> tuple[int, float]:
@@ -251,7 +259,7 @@ def boot_words(boot: StationBoot) -> str:
         said += f", firmware {boot.firmware}"
     said += f": heard {time_text(at_of(boot.first_arrival_us))} to {time_text(at_of(boot.last_arrival_us))} UTC"
     if boot.clock_fault:
-        return f"{said}. Clock: {boot.clock_fault}."
+        return f"{said}. {boot.clock_fault}"
     if boot.is_server_timed:
         return f"{said}. Readings are placed by their arrival."
     if boot.clock_offset_us is None:

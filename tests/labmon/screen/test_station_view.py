@@ -74,7 +74,7 @@ def facts(*taps) -> StationFacts:
         (tap(state="in spec", margin=(3.2, 2.1)), "n2/eom-in is 2.1° (3.2 dB) inside its limit."),
         (tap(state="thin", margin=(1.0, 0.9)), "n2/eom-in is thin: 0.9° (1.0 dB) to its limit."),
         (tap(state="no reading", silent_s=6240), "n2/eom-in has sent no reading for 1 h 44."),
-        (tap(state="untrusted", now=sample(trust_reasons=["saturated"])), "n2/eom-in cannot be trusted now: saturated."),
+        (tap(state="untrusted", now=sample(trust_reasons=["Saturated"])), "n2/eom-in cannot be trusted now: saturated."),
         (tap(state="undecided", margin=None), "n2/eom-in is at the detector's floor, cannot tell."),
         (tap(state="no limit", margin=None), "n2/eom-in sends readings and has no limit."),
         (tap(state="never heard", margin=None), "n2/eom-in has not been heard yet."),
@@ -142,12 +142,18 @@ def test_the_tap_has_its_own_rail():
 
 def test_clocks_in_words():
     heard = {"first_arrival_us": 0, "last_arrival_us": 60_000_000}
-    faulty = StationBoot(boot="7f3a", firmware="board 1.4", clock_fault="7 min ahead", **heard)
+    faulty = StationBoot(boot="7f3a", firmware="board 1.4", clock_fault="The clock is 7 min ahead.", **heard)
     assert (
         boot_words(faulty)
-        == "Boot 7f3a, firmware board 1.4: heard 1970-01-01 00:00:00 to 1970-01-01 00:01:00 UTC. Clock: 7 min ahead."
+        == "Boot 7f3a, firmware board 1.4: heard 1970-01-01 00:00:00 to 1970-01-01 00:01:00 UTC. The clock is 7 min ahead."
     )
-    assert clock_words([faulty]) == ["7 min ahead"]
+    assert clock_words([faulty]) == ["The clock is 7 min ahead."]
     good = StationBoot(boot="", clock_offset_us=-120_000, **heard)
     assert boot_words(good).replace("\xa0", " ").endswith("differ by −0.12 s.")
     assert clock_words([good, faulty]) == []
+
+
+def test_doubt_is_said_with_its_reason():
+    doubtful = sample(trust="doubtful", trust_reasons=["Clock unset: timed by the server"])
+    assert tap_view(tap(now=doubtful), NOW).doubt == "doubtful: clock unset: timed by the server"
+    assert tap_view(tap(), NOW).doubt == ""

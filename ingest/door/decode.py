@@ -43,13 +43,6 @@ def form_of(content_type: str, content_encoding: str) -> Form:
     return Form(kind in MSGPACK_TYPES, encoding in {"gzip", "x-gzip"})
 
 
-def guessed_form(body: bytes) -> Form:
-    """The form by the first bytes, for ways in that have no headers: gzip, JSON (an opening brace) or MessagePack."""
-    is_gzip = body[:2] == b"\x1f\x8b"
-    start = zlib.decompressobj(31).decompress(body, 64) if is_gzip else body[:64]
-    return Form(is_msgpack=not start.lstrip()[:1] == b"{", is_gzip=is_gzip)
-
-
 def decode(body: bytes, form: Form) -> dict[str, Any]:
     """The map that a body holds.
 

@@ -33,6 +33,7 @@ def throw_away_lab() -> Iterator[Path]:
 
         django.setup()
         call_command("migrate", verbosity=0)
+        call_command("collectstatic", verbosity=0, interactive=False)
         yield folder.path
     finally:
         for engine in reversed(engines):

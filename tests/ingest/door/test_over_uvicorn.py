@@ -42,10 +42,15 @@ def server(port):
         process.wait(10)
 
 
-@pytest.fixture
-def port():
+def free_port():
+    """A port nobody has now."""
     with socket.create_server(("127.0.0.1", 0)) as taken:
         return taken.getsockname()[1]
+
+
+@pytest.fixture
+def port():
+    return free_port()
 
 
 def client(port, key):

@@ -55,7 +55,7 @@ servers:
 
 test: dev chromium
 	@marks='not slow'; .ci/has chromium || marks='not slow and not browser'; \
-	  $(BIN)/python -m pytest -n $(WORKERS) -m "$$marks" $(TESTS)
+	  $(BIN)/python -m pytest -n $(WORKERS) --dist loadscope -m "$$marks" $(TESTS)
 	@$(MAKE) --no-print-directory js
 	@.ci/has chromium || echo "Browser tests were left out: chromium is missing (the lines at the start say how to get it)."
 

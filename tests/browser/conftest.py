@@ -31,16 +31,16 @@ def pytest_collection_modifyitems(items):
             item.add_marker(pytest.mark.browser)
 
 
-@pytest.fixture(scope="session")
+@pytest.fixture(scope="module")
 def browser():
-    """One chromium for all tests."""
+    """One chromium for a module's tests; Playwright's loop must be gone before a test of another module runs its own."""
     from playwright.sync_api import sync_playwright
 
     if chromium_path() is None:
         pytest.fail("chromium is missing: apt-get install chromium, or leave browser tests out with -m 'not browser'")
     # Playwright's own loop runs in this thread, and Django would take every query for one made inside a coroutine.
-    os.environ["DJANGO_ALLOW_ASYNC_UNSAFE"] = "true"
-    with sync_playwright() as playwright:
+    with pytest.MonkeyPatch.context() as environment, sync_playwright() as playwright:
+        environment.setenv("DJANGO_ALLOW_ASYNC_UNSAFE", "true")
         chromium = launch(playwright)
         yield chromium
         chromium.close()

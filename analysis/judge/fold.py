@@ -104,6 +104,11 @@ def start_state(before: FoldState | None = None) -> FoldState:
     return FoldState(before.at_us, before.level, before.began_us, before.raised_us)
 
 
+def is_idle(state: FoldState) -> bool:
+    """True where nothing is open and no delay is running: seconds that are not below change nothing then."""
+    return state.level is None and state.alarm_timer.first_us is None and state.warning_timer.first_us is None
+
+
 def fold(rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: FloatArray | float) -> tuple[FoldState, list[Event]]:
     """Fold seconds (or plain samples) that follow ``state``.
 

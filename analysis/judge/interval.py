@@ -1,6 +1,8 @@
 """A tap's nominal interval between readings: declared, else the median of the recent ones, as a fold over data time."""
 
 from dataclasses import dataclass
+from itertools import pairwise
+from statistics import median
 from typing import Any, Final
 
 import numpy as np
@@ -27,13 +29,19 @@ class IntervalState:
     @property
     def interval_s(self) -> float | None:
         """Median of the recent spacings, s; None before the second sample."""
-        return float(np.median(self.spacings_us)) / US_PER_S if self.spacings_us else None
+        return median(self.spacings_us) / US_PER_S if self.spacings_us else None
 
 
 def pass_samples(state: IntervalState, at_us: IntArray) -> IntervalState:
     """The state behind samples at ``at_us`` (sorted, shape (N,)); several at one instant count once."""
-    spacings_us = _spacings(state, at_us)
-    return IntervalState(int(at_us[-1]), tuple(spacings_us[-RECENT:].tolist())) if len(at_us) else state
+    if not len(at_us):
+        return state
+    if len(at_us) > 4 * RECENT:
+        return IntervalState(int(at_us[-1]), tuple(_spacings(state, at_us)[-RECENT:].tolist()))
+    times = at_us.tolist()
+    added = [] if state.last_us is None else [times[0] - state.last_us]
+    added += [later - earlier for earlier, later in pairwise(times)]
+    return IntervalState(times[-1], (*state.spacings_us, *(spacing for spacing in added if spacing > 0))[-RECENT:])
 
 
 def intervals_s(state: IntervalState, at_us: IntArray) -> FloatArray:
@@ -41,15 +49,24 @@ def intervals_s(state: IntervalState, at_us: IntArray) -> FloatArray:
 
     NaN before the second sample ever. Cutting the samples anywhere gives the same.
     """
-    if not len(at_us):
-        return np.empty(0)
+    if len(at_us) <= RECENT:
+        return np.array(_few_intervals_s(state, at_us.tolist()))
     known = _spacings(state, at_us)
     ends = len(state.spacings_us) + np.cumsum(_is_new(state, at_us))
-    padded = np.concatenate([np.full(RECENT - 1, np.nan), known.astype(np.float64)])
     if not len(known):
         return np.full(len(at_us), np.nan)
+    padded = np.concatenate([np.full(RECENT - 1, np.nan), known.astype(np.float64)])
     medians = np.nanmedian(np.lib.stride_tricks.sliding_window_view(padded, RECENT), axis=1)
     return np.where(ends > 0, medians[np.maximum(ends, 1) - 1], np.nan) / US_PER_S
+
+
+def _few_intervals_s(state: IntervalState, times_us: list[int]) -> list[float]:
+    found = []
+    for at_us in times_us:
+        spacing = 0 if state.last_us is None else at_us - state.last_us
+        state = IntervalState(at_us, (*state.spacings_us, spacing)[-RECENT:] if spacing > 0 else state.spacings_us)
+        found.append(state.interval_s if state.spacings_us else float("nan"))
+    return found
 
 
 def steadied_s(interval_s: FloatArray) -> FloatArray:

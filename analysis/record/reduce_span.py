@@ -3,7 +3,7 @@
 from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, fields
 from datetime import datetime, timedelta
-from typing import Any, Final
+from typing import Any, Final, Protocol
 
 import numpy as np
 
@@ -29,6 +29,17 @@ OVERLAP_LEAST_US: Final = 2_000_000
 OVERLAP_REACH_US: Final = 3_000_000
 _COLUMNS_OF = {TapKind.TWO_PORT: ("port1", "port2"), TapKind.DARK_PORT: ("port2",), TapKind.CLIMATE: ()}
 _ANGLES, _STOKES = ("azimuth_deg", "ellipticity_deg"), ("s0", "s1", "s2", "s3")
+
+
+class TapLike(Protocol):
+    """What reducing needs of a tap; a row of `Tap` has it."""
+
+    @property
+    def pk(self) -> int: ...
+    @property
+    def kind(self) -> str: ...
+    @property
+    def unit(self) -> str: ...
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,7 +75,7 @@ def reduced_samples(tap: Tap, from_us: int, until_us: int, as_of: datetime | Non
 class Group:
     """Samples of K taps of one kind and unit, one tap after the other: tap k has those from first[k] up to ends[k]."""
 
-    taps: list[Tap]
+    taps: list[TapLike]
     first: IntArray
     ends: IntArray
     samples: Reduced
@@ -86,7 +97,7 @@ class ManyReduced:
         return Reduced(**sample.empty_fields(np.empty(0, np.int64)))
 
 
-def reduce_many(taps: Sequence[Tap], readings: Mapping[int, Readings], knowledge: Knowledge, flat: Mapping[int, Any],
+def reduce_many(taps: Sequence[TapLike], readings: Mapping[int, Readings], knowledge: Knowledge, flat: Mapping[int, Any],
                 cuts: Mapping[int, Sequence[int]] | None = None) -> ManyReduced:
     """Reduce each tap's readings (sorted); taps of one kind and unit go through in one call.
 
@@ -104,16 +115,16 @@ def reduce_many(taps: Sequence[Tap], readings: Mapping[int, Readings], knowledge
     return ManyReduced(groups, flats)
 
 
-def _alike(taps: Iterable[Tap], readings: Mapping[int, Readings]) -> list[list[Tap]]:
+def _alike(taps: Iterable[TapLike], readings: Mapping[int, Readings]) -> list[list[TapLike]]:
     """Taps of one kind, unit and (polarimeters) form of reading together."""
-    groups: dict[tuple[str, str, bool], list[Tap]] = {}
+    groups: dict[tuple[str, str, bool], list[TapLike]] = {}
     for tap in taps:
         is_in_angles = tap.kind == TapKind.STOKES and "s0" not in readings[tap.pk].columns
         groups.setdefault((tap.kind, tap.unit, is_in_angles), []).append(tap)
     return list(groups.values())
 
 
-def _reduce_alike(taps: list[Tap], readings: Mapping[int, Readings], knowledge: Knowledge,
+def _reduce_alike(taps: list[TapLike], readings: Mapping[int, Readings], knowledge: Knowledge,
                   flat: Mapping[int, Any], cuts: Mapping[int, Sequence[int]] | None) -> tuple[Group, list[list[Any]]]:
     parts = [readings[tap.pk] for tap in taps]
     counts = np.array([len(part) for part in parts])
@@ -199,7 +210,7 @@ def _with_rows(part: Any, rows: IntArray, new: Any) -> Any:
     return changed
 
 
-def _version_index(taps: list[Tap], at_us: IntArray, first: IntArray, counts: IntArray,
+def _version_index(taps: list[TapLike], at_us: IntArray, first: IntArray, counts: IntArray,
                    calibrations: Mapping[int, list[Calibration]]) -> tuple[list[Calibration | None], IntArray]:
     """All versions in one list, and for each sample which of them holds."""
     versions: list[Calibration | None] = []
@@ -247,7 +258,7 @@ def _old_zeros(versions: list[Calibration | None], index: IntArray, at_us: IntAr
     return marks
 
 
-def _two_devices(taps: list[Tap], at_us: IntArray, first: IntArray, overlaps: Mapping[int, list[tuple[int, int]]]) -> ReasonArray:
+def _two_devices(taps: list[TapLike], at_us: IntArray, first: IntArray, overlaps: Mapping[int, list[tuple[int, int]]]) -> ReasonArray:
     marks = np.zeros(len(at_us), dtype=np.uint32)
     ends = np.append(first[1:], len(at_us))
     for tap, begin, end in zip(taps, first.tolist(), ends.tolist(), strict=True):

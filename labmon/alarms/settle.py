@@ -9,19 +9,43 @@ from typing import Final
 
 from analysis.judge.fold import Level
 from analysis.judge.rule import Quantity
-from ingest.models import Tap
 from ingest.times import SECOND_US, at_of, us_of
 from labmon.alarms.calls import RAISED, ROSE, call_people
 from labmon.alarms.models import Alarm, AlarmBounds, AlarmKind, AlarmState
 from labmon.alarms.states import state_of
 from labmon.alarms.words import limit_sentence
-from labmon.experiments.models import Limit
-from labmon.pipeline.phases import Episode, Phase
+from analysis.judge.phases import Episode, Phase
 
 #: An event whose reading is older than this when it is judged (by the station's own clock) is past: it calls nobody.
 CURRENT_WITHIN_US: Final = 60 * SECOND_US
 _CHANGED = ("version", "level", "state", "raised_at", "alarm_at", "returned_at", "acknowledged_at", "acknowledged_by", "value", "limit_value", "message",
             "is_late", "is_withdrawn", "changed")
+
+
+@dataclass(frozen=True, slots=True)
+class TapHere:
+    """What judging needs of a tap."""
+
+    pk: int
+    station_name: str
+    name: str
+    kind: str
+    unit: str
+    interval_s: float | None
+
+    @property
+    def full_name(self) -> str:
+        """``station/tap``."""
+        return f"{self.station_name}/{self.name}"
+
+
+@dataclass(frozen=True, slots=True)
+class LimitHere:
+    """What judging needs of a limit."""
+
+    pk: int
+    experiment_id: int
+    quantity: str
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -34,8 +58,8 @@ class Finding:
         existing: Alarms of the limit that overlap the stretch (live: the open one), oldest first.
     """
 
-    limit: Limit
-    tap: Tap
+    limit: LimitHere
+    tap: TapHere
     phases: Sequence[Phase]
     episodes: Sequence[Episode]
     window_us: tuple[int, int]
@@ -71,7 +95,7 @@ def settle(findings: Iterable[Finding]) -> list[int]:
     changes = _Changes()
     names: dict[int, str] = {}
     for finding in findings:
-        names[finding.tap.pk] = f"{finding.tap.station.name}/{finding.tap.name}"
+        names[finding.tap.pk] = finding.tap.full_name
         _settle_limit(finding, names[finding.tap.pk], changes)
     _write(changes)
     call_people(changes.calls, names)
@@ -134,7 +158,7 @@ def _belongs(alarm: Alarm, finding: Finding) -> bool:
 
 def _add(finding: Finding, episode: Episode, name: str, changes: _Changes) -> None:
     phase = _phase_of(finding, episode)
-    alarm = Alarm(kind=AlarmKind.LIMIT, experiment=finding.limit.experiment, limit=finding.limit, tap=finding.tap, quantity=finding.limit.quantity,
+    alarm = Alarm(kind=AlarmKind.LIMIT, experiment_id=finding.limit.experiment_id, limit_id=finding.limit.pk, tap_id=finding.tap.pk, quantity=finding.limit.quantity,
                   state=AlarmState.SUPPRESSED if phase.in_runs_only else AlarmState.UNACKNOWLEDGED, is_late=not phase.in_runs_only)
     _fill(alarm, finding, episode, name)
     if not phase.in_runs_only and _is_to_be_called(finding, episode):

@@ -2,11 +2,12 @@
 
 from collections.abc import Iterable
 from dataclasses import dataclass
+from datetime import datetime
 
-from ingest.models import Tap
 from ingest.times import at_of
 from labmon.alarms.calls import RAISED, call_people
 from labmon.alarms.models import Alarm, AlarmKind, AlarmLevel
+from labmon.alarms.settle import TapHere
 from labmon.alarms.states import state_of
 from labmon.alarms.words import untrusted_sentence
 
@@ -15,7 +16,7 @@ from labmon.alarms.words import untrusted_sentence
 class UntrustedFinding:
     """Where a watched tap's untrusted fold stands, and why its newest sample is not trusted (in words)."""
 
-    tap: Tap
+    tap: TapHere
     experiment_id: int | None
     is_open: bool
     is_current: bool
@@ -39,14 +40,10 @@ def settle_untrusted(findings: Iterable[UntrustedFinding], now_us: int) -> list[
         Alarm.objects.bulk_update(returned, ["returned_at", "state", "changed"])
     if raised:
         Alarm.objects.bulk_create(raised)
-        call_people([(alarm, RAISED) for alarm in raised], {pk: _name(one.tap) for pk, one in wanted.items()})
+        call_people([(alarm, RAISED) for alarm in raised], {pk: one.tap.full_name for pk, one in wanted.items()})
     return [alarm.pk for alarm in (*raised, *returned)]
 
 
-def _new_alarm(finding: UntrustedFinding, now) -> Alarm:  # type: ignore[no-untyped-def]
-    return Alarm(kind=AlarmKind.UNTRUSTED, experiment_id=finding.experiment_id, tap=finding.tap, level=AlarmLevel.ALARM, raised_at=now,
-                 cause="; ".join(finding.reasons)[:100], message=untrusted_sentence(_name(finding.tap), finding.reasons))
-
-
-def _name(tap: Tap) -> str:
-    return f"{tap.station.name}/{tap.name}"
+def _new_alarm(finding: UntrustedFinding, now: datetime) -> Alarm:
+    return Alarm(kind=AlarmKind.UNTRUSTED, experiment_id=finding.experiment_id, tap_id=finding.tap.pk, level=AlarmLevel.ALARM, raised_at=now,
+                 cause="; ".join(finding.reasons)[:100], message=untrusted_sentence(finding.tap.full_name, finding.reasons))

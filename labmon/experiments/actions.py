@@ -16,7 +16,7 @@ from labmon.experiments.models import Experiment, Limit, LimitVersion
 from labmon.experiments.rules import LimitWish, checked_quantity, checked_wish
 from labmon.live.publish import publish
 from labmon.people.models import Person
-from labmon.pipeline.claim import JUDGING, lock_tap
+from labmon.claims import JUDGING, lock_tap
 
 #: A tap's first limit also looks at the day before it was set: an excursion that is under way is then seen as what it is.
 FIRST_LIMIT_LOOKS_BACK = timedelta(days=1)

@@ -1,17 +1,18 @@
 """Judging a chunk of taps: seconds of all of them in few array calls, then each limit's fold."""
 
+from bisect import bisect_left
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
 
-from analysis.judge.fold import EventKind
+from analysis.judge.fold import EventKind, FoldState, is_idle
 from analysis.judge.interval import intervals_s, steadied_s
 from analysis.judge.rule import Quantity
 from analysis.judge.seconds import Seconds, seconds_of_many
 from analysis.judge.untrusted import UntrustedRule, UntrustedState, fold_untrusted
-from analysis.quantities import BoolArray, FloatArray
+from analysis.quantities import BoolArray, FloatArray, IntArray
 from analysis.record.reduce_span import Group, ManyReduced
 from analysis.reduce.trust import Trust, reasons_in
 from ingest.models import TapKind
@@ -20,7 +21,7 @@ from labmon.alarms.models import Alarm, AlarmKind
 from labmon.alarms.settle import Finding
 from labmon.alarms.untrusted import UntrustedFinding
 from labmon.pipeline.newest import newest_samples
-from labmon.pipeline.phases import Episode, Standing, episodes_in, fold_through, phase_at
+from analysis.judge.phases import Episode, Found, Standing, episodes_in, fold_through
 from labmon.pipeline.progress import Progress
 from labmon.pipeline.work import LimitWork
 from ingest.times import at_of
@@ -40,11 +41,16 @@ class Judged:
 
 @dataclass(frozen=True, slots=True)
 class _TapSeconds:
-    """One tap's seconds by quantity, the nominal interval at each, and where one of them was untrusted."""
+    """One tap's seconds by quantity, the nominal interval at each, and where one of them was untrusted.
+
+    ``worst`` is the worst certain value of the stretch by quantity (NaN where nothing was judged).
+    """
 
     by_quantity: Mapping[Quantity, Seconds]
-    interval_s: FloatArray
-    is_untrusted: BoolArray
+    worst: Mapping[Quantity, float]
+    at_us: list[int]
+    interval_s: FloatArray | None
+    is_untrusted: BoolArray | None
 
 
 def judge(steps: Sequence[Progress], reduced: ManyReduced, readings: Mapping[int, Readings]) -> Judged:
@@ -104,34 +110,49 @@ def _seconds_of_group(group: Group, members: Sequence[Progress]) -> list[_TapSec
         return None
     whole: dict[Quantity, Seconds] = {}
     doubted: dict[Quantity, BoolArray] = {}
-    bounds = np.empty(0, dtype=np.int64)
+    bounds: IntArray = np.empty(0, dtype=np.int64)
     for quantity in sorted(wanted):
         whole[quantity], bounds = seconds_of_many(group.samples, quantity, group.first)
         starts = np.concatenate([[0], np.cumsum(whole[quantity].count)[:-1]])
         lost = np.logical_or.reduceat(group.samples.trust[quantity] == Trust.UNTRUSTED, starts)
         doubted[quantity] = lost & ~whole[quantity].is_judged
     ends = np.append(bounds[1:], len(next(iter(whole.values()))))
+    worst = {quantity: _worst_of_taps(seconds, bounds) for quantity, seconds in whole.items()}
+    is_any_lost = {quantity: np.logical_or.reduceat(lost, bounds).tolist() for quantity, lost in doubted.items()}
+    at_us = next(iter(whole.values())).at_us.tolist()
     found = []
-    for step, begin, end in zip(members, bounds.tolist(), ends.tolist(), strict=True):
+    for number, (step, begin, end) in enumerate(zip(members, bounds.tolist(), ends.tolist(), strict=True)):
         span = slice(begin, end)
         own = {quantity: seconds.take(span) for quantity, seconds in whole.items()}
-        watched = {Quantity(limit.limit.quantity) for limit in step.work.limits} or {Quantity.ER_DB}
-        untrusted = np.logical_or.reduce([doubted[quantity][span] for quantity in watched]) if watched <= doubted.keys() else np.zeros(end - begin, dtype=bool)
-        at_us = next(iter(own.values())).at_us
-        found.append(_TapSeconds(own, _intervals(step, at_us), untrusted))
+        watched = _watched_quantities(step.work.limits) & doubted.keys()
+        is_lost = any(is_any_lost[quantity][number] for quantity in watched)
+        untrusted = np.logical_or.reduce([doubted[quantity][span] for quantity in watched]) if is_lost else None
+        found.append(_TapSeconds(own, {quantity: values[number] for quantity, values in worst.items()}, at_us[span],
+                                 _intervals(step, own), untrusted))
     return found
 
 
-def _intervals(step: Progress, at_us: Any) -> FloatArray:
-    """Nominal interval at each second: declared, else by the fold over all samples, steadied."""
-    if step.tap.interval_s is not None:
-        return np.full(len(at_us), step.tap.interval_s)
+def _watched_quantities(limits: Sequence[LimitWork]) -> set[Quantity]:
+    return {Quantity(limit.limit.quantity) for limit in limits} or {Quantity.ER_DB}
+
+
+def _worst_of_taps(seconds: Seconds, bounds: IntArray) -> list[float]:
+    fold = np.fmax if seconds.quantity.is_bad_above else np.fmin
+    return fold.reduceat(seconds.worst, bounds).tolist()
+
+
+def _intervals(step: Progress, own: Mapping[Quantity, Seconds]) -> FloatArray | None:
+    """Nominal interval at each second: declared, else by the fold over all samples, steadied; None where it is 1 s or less."""
+    declared_s, at_us = step.tap.interval_s, next(iter(own.values())).at_us
+    if declared_s is not None:
+        return None if declared_s <= 1.0 else np.full(len(at_us), declared_s)
     samples_us = step.readings.at_us
-    known = steadied_s(intervals_s(step.work.state.interval, samples_us))
-    return known[np.searchsorted(samples_us, at_us)]
+    known = intervals_s(step.work.state.interval, samples_us)
+    steady = steadied_s(known[np.searchsorted(samples_us, at_us)])
+    return None if np.nanmax(steady, initial=0.0) <= 1.0 else steady
 
 
-_NOTHING = _TapSeconds({}, np.empty(0), np.empty(0, dtype=bool))
+_NOTHING = _TapSeconds({}, {}, [], None, None)
 
 
 def _empty(quantity: Quantity) -> Seconds:
@@ -144,23 +165,43 @@ def _judge_limit(step: Progress, limit: LimitWork, own: _TapSeconds, existing: l
     quantity = Quantity(limit.limit.quantity)
     seconds = own.by_quantity.get(quantity) or _empty(quantity)
     before = limit.standing_or_start()
-    at_cut, found = fold_through(limit.phases, before, seconds, own.interval_s, step.cut_us)
-    at_end, more = fold_through(limit.phases, at_cut, seconds, own.interval_s, step.complete_us)
-    found += more
-    if step.stretch.is_newest and step.complete_us <= step.last_us:
-        # The second that is still open can only get worse, so it may raise; it may not return.
-        _, maybe = fold_through(limit.phases, at_end, seconds, own.interval_s, step.last_us + 1)
-        found += [one for one in maybe if one.event.kind is not EventKind.RETURNED]
+    if not existing and (calm := _calm(step, limit, own, before)) is not None:
+        at_cut, at_end = calm
+        found: list[Found] = []
+    else:
+        at_cut, found = fold_through(limit.phases, before, seconds, own.interval_s, step.cut_us)
+        at_end, more = fold_through(limit.phases, at_cut, seconds, own.interval_s, step.complete_us)
+        found += more
+        if step.stretch.is_newest and step.complete_us <= step.last_us:
+            # The second that is still open can only get worse, so it may raise; it may not return.
+            _, maybe = fold_through(limit.phases, at_end, seconds, own.interval_s, step.last_us + 1)
+            found += [one for one in maybe if one.event.kind is not EventKind.RETURNED]
     judged.newest.append((limit.limit.pk, at_end))
     if step.keeps_cut and at_cut.at_us == step.cut_us:
         judged.kept.append(at_cut)
-    episodes = episodes_in(found, before, seconds)
-    if existing or _is_news(episodes):
+    episodes = episodes_in(found, before, seconds) if found or before.state.level is not None else []
+    if existing or episodes:
         judged.findings.append(_finding(step, limit, episodes, existing))
 
 
-def _is_news(episodes: Sequence[Episode]) -> bool:
-    return bool(episodes)
+def _calm(step: Progress, limit: LimitWork, own: _TapSeconds, before: Standing) -> tuple[Standing, Standing] | None:
+    """Where an idle fold stands after seconds of which none is beyond a level; None where it must be folded.
+
+    The same as `fold_through` gives, found by one comparison: most limits are calm most of the time.
+    """
+    phase, state = limit.phases[-1], before.state
+    if phase.version_id != before.version_id or phase.from_us > before.at_us or not is_idle(state):
+        return None
+    rule, worst = phase.rule, own.worst.get(Quantity(limit.limit.quantity), float("nan"))
+    outer = rule.alarm if rule.warning is None else rule.warning
+    if not phase.is_retired and (worst > outer if rule.quantity.is_bad_above else worst < outer):
+        return None
+    ends = []
+    for until_us in (step.cut_us, step.complete_us):
+        last = bisect_left(own.at_us, until_us) - 1
+        at_us = own.at_us[last] if last >= 0 and own.at_us[last] >= before.at_us and not phase.is_retired else state.at_us
+        ends.append(Standing(before.version_id, max(before.at_us, until_us), FoldState(at_us=at_us)))
+    return ends[0], ends[1]
 
 
 def _finding(step: Progress, limit: LimitWork, episodes: Sequence[Episode], existing: list[Alarm]) -> Finding:
@@ -173,26 +214,31 @@ def _judge_trust(step: Progress, own: _TapSeconds, group: Group, number: int, ju
     work = step.work
     if work.untrusted_after_s is None or not own.by_quantity:
         return
-    seconds = next(iter(own.by_quantity.values()))
     from_us = max(work.state.untrusted_upto_us or 0, step.stretch.start_us)
-    low, high = np.searchsorted(seconds.at_us, [from_us, step.complete_us])
     state = work.state.untrusted
-    if high > low:
-        span = slice(int(low), int(high))
-        shown = seconds.take(span)
-        known = Seconds(shown.quantity, shown.entry_s, shown.at_us, shown.worst, shown.best_sure, shown.mean, ~own.is_untrusted[span],
-                        shown.is_doubtful, shown.count)
-        interval_s = float(np.nan_to_num(own.interval_s[int(high) - 1], nan=1.0))
-        state, _ = fold_untrusted(UntrustedRule(on_delay_s=work.untrusted_after_s), state, known, interval_s)
+    if own.is_untrusted is not None or state.is_open or state.bad_timer.is_running:
+        state = _folded_trust(own, state, from_us, step.complete_us, work.untrusted_after_s)
     judged.untrusted_states[step.tap.pk] = (state, max(from_us, step.complete_us))
-    judged.untrusted.append(UntrustedFinding(step.tap, work.experiment_id, state.is_open, step.is_current, _reasons_now(group, number, work.limits)))
+    if state.is_open or work.state.untrusted.is_open:
+        reasons = _reasons_now(group, number, work.limits)
+        judged.untrusted.append(UntrustedFinding(step.tap, work.experiment_id, state.is_open, step.is_current, reasons))
+
+
+def _folded_trust(own: _TapSeconds, state: UntrustedState, from_us: int, until_us: int, after_s: float) -> UntrustedState:
+    low, high = bisect_left(own.at_us, from_us), bisect_left(own.at_us, until_us)
+    if high <= low:
+        return state
+    span = slice(low, high)
+    shown = next(iter(own.by_quantity.values())).take(span)
+    is_judged = np.ones(high - low, dtype=bool) if own.is_untrusted is None else ~own.is_untrusted[span]
+    interval_s = 1.0 if own.interval_s is None else float(np.nan_to_num(own.interval_s[high - 1], nan=1.0))
+    return fold_untrusted(UntrustedRule(on_delay_s=after_s), state, replace(shown, is_judged=is_judged), interval_s)[0]
 
 
 def _reasons_now(group: Group, number: int, limits: Sequence[LimitWork]) -> list[str]:
     """Why the newest sample is not trusted, in words."""
     last = int(group.ends[number]) - 1
-    quantities = {Quantity(limit.limit.quantity) for limit in limits} or {Quantity.ER_DB}
-    masks = [int(group.samples.reasons[quantity][last]) for quantity in sorted(quantities) if group.samples.trust[quantity][last] == Trust.UNTRUSTED]
+    masks = [int(group.samples.reasons[quantity][last]) for quantity in sorted(_watched_quantities(limits)) if group.samples.trust[quantity][last] == Trust.UNTRUSTED]
     return [reason.words for reason in reasons_in(int(np.bitwise_or.reduce(masks)))] if masks else []
 
 

@@ -1,6 +1,7 @@
 """The newest reduced sample of a tap as the pages and the API show it."""
 
 from collections.abc import Sequence
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -11,9 +12,10 @@ from analysis.record.reduce_span import Group
 from analysis.reduce.sample import Reduced
 from analysis.reduce.trust import QUANTITIES, Reason, Trust, is_usable, reasons_in
 from ingest.times import rfc3339_of
-from labmon.pipeline.phases import phase_at
+from analysis.judge.phases import phase_at
 from labmon.pipeline.work import LimitWork, TapWork
 
+_FLOOR, _TRUSTED = int(Reason.FLOOR), int(Trust.TRUSTED)
 _PLAIN = ("er_sigma_db", "polarized_er_db", "temperature_c", "humidity_pct", "pressure_hpa")
 _DEGREES = (("azimuth_deg", "azimuth_rad"), ("ellipticity_deg", "ellipticity_rad"))
 _FLAGS = ("is_lower_bound", "is_upper_bound", "angle_is_upper_bound", "angle_is_lower_bound")
@@ -63,13 +65,18 @@ def _trusts(newest: Reduced, number: int, limits: Sequence[LimitWork], at_us: in
     trusts = {}
     for quantity in QUANTITIES:
         trust, mask = int(newest.trust[quantity][number]), int(newest.reasons[quantity][number])
-        if trust == Trust.TRUSTED and mask & Reason.FLOOR and _is_undecided(newest, quantity, number, limits, at_us):
-            trust, mask = Trust.DOUBTFUL, mask | Reason.UNDECIDED
+        if mask & _FLOOR and trust == _TRUSTED and _is_undecided(newest, quantity, number, limits, at_us):
+            trust, mask = int(Trust.DOUBTFUL), mask | int(Reason.UNDECIDED)
         if trust or mask:
-            reasons = reasons_in(mask)
-            trusts[quantity.value] = {"trust": Trust(trust).word, "reasons": [reason.words for reason in reasons],
-                                      "codes": [reason.code for reason in reasons]}
+            trusts[quantity.value] = _verdict(trust, mask)
     return trusts
+
+
+@lru_cache(maxsize=4096)
+def _verdict(trust: int, mask: int) -> dict[str, Any]:
+    """Trust and reasons in words; made once for each combination, so not to be changed."""
+    reasons = reasons_in(mask)
+    return {"trust": Trust(trust).word, "reasons": [reason.words for reason in reasons], "codes": [reason.code for reason in reasons]}
 
 
 def _is_undecided(newest: Reduced, quantity: Quantity, number: int, limits: Sequence[LimitWork], at_us: int) -> bool:

@@ -19,7 +19,7 @@ from ingest.times import now_us as server_now_us
 from labmon.alarms.settle import settle
 from labmon.alarms.untrusted import settle_untrusted
 from labmon.live.publish import publish
-from labmon.pipeline.claim import JUDGING, claim_taps
+from labmon.claims import JUDGING, claim_taps
 from labmon.pipeline.judge import Judged, judge
 from labmon.pipeline.progress import Progress, progress_of
 from labmon.pipeline.save import forget_kept, mark_rollups_due, save_now, save_standings, save_tap_checkpoints, settle_touches
@@ -84,7 +84,7 @@ def _candidates(now_us: int) -> list[int]:
         cursor.execute("""
             SELECT tap_id FROM (SELECT tap_id, min(id) AS since FROM ingest_touch GROUP BY tap_id
                                 UNION ALL SELECT tap_id, 0 FROM analysis_tapnow WHERE open_until_us <= %s) AS due
-            GROUP BY tap_id ORDER BY min(since) LIMIT %s""", [now_us, 4 * CHUNK_TAPS])
+            WHERE EXISTS (SELECT FROM ingest_tap WHERE id = tap_id) GROUP BY tap_id ORDER BY min(since) LIMIT %s""", [now_us, 4 * CHUNK_TAPS])
         return [row[0] for row in cursor.fetchall()]
 
 

@@ -9,10 +9,9 @@ import numpy as np
 from analysis.judge.interval import pass_samples
 from analysis.judge.presence import CADENCE_COUNT
 from analysis.record.tap_state import TapState
-from ingest.models import Tap
 from ingest.store.columns import Readings
 from ingest.times import SECOND_US
-from labmon.alarms.settle import CURRENT_WITHIN_US
+from labmon.alarms.settle import CURRENT_WITHIN_US, TapHere
 from labmon.pipeline.save import NowRow
 from labmon.pipeline.stretch import KEEP_EVERY_US, SNAPSHOT_EVERY_US, Stretch
 from labmon.pipeline.work import TapWork, floor_s
@@ -45,7 +44,7 @@ class Progress:
         return self.stretch.work
 
     @property
-    def tap(self) -> Tap:
+    def tap(self) -> TapHere:
         return self.stretch.work.tap
 
     @cached_property

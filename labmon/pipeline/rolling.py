@@ -11,7 +11,7 @@ from analysis.record.rollup_rows import DAY_US, HOUR_S, Span, compact_day, is_cl
 from ingest.models import Tap
 from ingest.times import SECOND_US
 from ingest.times import now_us as server_now_us
-from labmon.pipeline.claim import ROLLING, claim_taps
+from labmon.claims import ROLLING, claim_taps
 
 CHUNK_TAPS: Final = 256
 FINE_S: Final = 10
@@ -87,7 +87,8 @@ def _piece(span: Span, now_us: int) -> Span:
 def _claimed(level_s: int) -> list[_Due]:
     """Due spans of taps nobody else rolls up, each tap's marks as one span."""
     with connection.cursor() as cursor:
-        cursor.execute("SELECT tap_id FROM analysis_rollupdue WHERE level_s = %s GROUP BY tap_id ORDER BY min(id) LIMIT %s", [level_s, 4 * CHUNK_TAPS])
+        cursor.execute("""SELECT tap_id FROM analysis_rollupdue WHERE level_s = %s AND EXISTS (SELECT FROM ingest_tap WHERE id = tap_id)
+                          GROUP BY tap_id ORDER BY min(id) LIMIT %s""", [level_s, 4 * CHUNK_TAPS])
         tap_ids = claim_taps(ROLLING, [row[0] for row in cursor.fetchall()], CHUNK_TAPS)
         cursor.execute("""SELECT tap_id, array_agg(id), array_agg(first_at_us), array_agg(last_at_us) FROM analysis_rollupdue
                           WHERE level_s = %s AND tap_id = ANY(%s) GROUP BY tap_id ORDER BY tap_id""", [level_s, tap_ids])

@@ -8,7 +8,7 @@ import msgspec
 from django.db import connection
 
 from analysis.record.tap_state import TapState
-from labmon.pipeline.phases import Standing
+from analysis.judge.phases import Standing
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,17 +35,17 @@ def save_now(rows: Sequence[NowRow]) -> None:
         if with_sample:
             cursor.execute("""
                 INSERT INTO analysis_tapnow (tap_id, at_us, sample, trust_state, open_until_us)
-                SELECT tap, at_us, sample::jsonb, state::jsonb, open_until
-                FROM unnest(%s::bigint[], %s::bigint[], %s::text[], %s::text[], %s::bigint[]) AS t(tap, at_us, sample, state, open_until)
+                SELECT tap, at_us, sample, state, open_until FROM json_to_recordset(%s::json)
+                    AS t(tap bigint, at_us bigint, sample jsonb, state jsonb, open_until bigint)
                 ON CONFLICT (tap_id) DO UPDATE SET at_us = excluded.at_us, sample = excluded.sample, trust_state = excluded.trust_state,
                     open_until_us = excluded.open_until_us""",
-                [[row.tap_id for row in with_sample], [row.at_us for row in with_sample], [text_of(row.sample) for row in with_sample],
-                 [text_of(row.state.as_json()) for row in with_sample], [row.open_until_us for row in with_sample]])
+                [text_of([{"tap": row.tap_id, "at_us": row.at_us, "sample": row.sample, "state": row.state.as_json(),
+                           "open_until": row.open_until_us} for row in with_sample])])
         if others:
             cursor.execute("""
-                UPDATE analysis_tapnow SET trust_state = state::jsonb, open_until_us = open_until
-                FROM unnest(%s::bigint[], %s::text[], %s::bigint[]) AS t(tap, state, open_until) WHERE tap_id = tap""",
-                [[row.tap_id for row in others], [text_of(row.state.as_json()) for row in others], [row.open_until_us for row in others]])
+                UPDATE analysis_tapnow SET trust_state = state, open_until_us = open_until
+                FROM json_to_recordset(%s::json) AS t(tap bigint, state jsonb, open_until bigint) WHERE tap_id = tap""",
+                [text_of([{"tap": row.tap_id, "state": row.state.as_json(), "open_until": row.open_until_us} for row in others])])
 
 
 def save_tap_checkpoints(rows: Sequence[tuple[int, int, TapState]]) -> None:
@@ -54,9 +54,9 @@ def save_tap_checkpoints(rows: Sequence[tuple[int, int, TapState]]) -> None:
         with connection.cursor() as cursor:
             cursor.execute("""
                 INSERT INTO analysis_tapcheckpoint (tap_id, at_us, state)
-                SELECT tap, at_us, state::jsonb FROM unnest(%s::bigint[], %s::bigint[], %s::text[]) AS t(tap, at_us, state)
+                SELECT tap, at_us, state FROM json_to_recordset(%s::json) AS t(tap bigint, at_us bigint, state jsonb)
                 ON CONFLICT (tap_id, at_us) DO UPDATE SET state = excluded.state""",
-                [[row[0] for row in rows], [row[1] for row in rows], [text_of(row[2].as_json()) for row in rows]])
+                [text_of([{"tap": tap_id, "at_us": at_us, "state": state.as_json()} for tap_id, at_us, state in rows])])
 
 
 def save_standings(newest: Sequence[tuple[int, Standing]], kept: Sequence[Standing]) -> None:
@@ -69,18 +69,19 @@ def save_standings(newest: Sequence[tuple[int, Standing]], kept: Sequence[Standi
                 [[limit_id for limit_id, _ in newest], [one.version_id for _, one in newest]])
             cursor.execute("""
                 INSERT INTO labmon_foldcheckpoint (version_id, at_us, state, is_newest)
-                SELECT version, at_us, state::jsonb, true FROM unnest(%s::bigint[], %s::bigint[], %s::text[]) AS t(version, at_us, state)
+                SELECT version, at_us, state, true FROM json_to_recordset(%s::json) AS t(version bigint, at_us bigint, state jsonb)
                 ON CONFLICT (version_id) WHERE is_newest DO UPDATE SET at_us = excluded.at_us, state = excluded.state""",
-                _columns([one for _, one in newest]))
+                [_as_records([one for _, one in newest])])
         if kept:
             cursor.execute("""
                 INSERT INTO labmon_foldcheckpoint (version_id, at_us, state, is_newest)
-                SELECT version, at_us, state::jsonb, false FROM unnest(%s::bigint[], %s::bigint[], %s::text[]) AS t(version, at_us, state)
-                ON CONFLICT (version_id, at_us, is_newest) DO UPDATE SET state = excluded.state""", _columns(kept))
+                SELECT version, at_us, state, false FROM json_to_recordset(%s::json) AS t(version bigint, at_us bigint, state jsonb)
+                ON CONFLICT (version_id, at_us, is_newest) DO UPDATE SET state = excluded.state""",
+                [_as_records(kept)])
 
 
-def _columns(standings: Sequence[Standing]) -> list[list[Any]]:
-    return [[one.version_id for one in standings], [one.at_us for one in standings], [text_of(one.state.as_json()) for one in standings]]
+def _as_records(standings: Sequence[Standing]) -> str:
+    return text_of([{"version": one.version_id, "at_us": one.at_us, "state": one.state.as_json()} for one in standings])
 
 
 def forget_kept(spans: Sequence[tuple[int, int, int]]) -> None:

@@ -22,7 +22,7 @@ from labmon.alarms.words import no_reading_sentence
 from labmon.benches.queries import call_after_s, door_spans
 from labmon.benches.show import LEAST_USUAL_S, Silence, silences_of
 from labmon.live.publish import publish
-from labmon.pipeline.claim import claim_name
+from labmon.claims import claim_name
 
 SHOWN_AFTER_S = 3 * LEAST_USUAL_S
 

@@ -9,7 +9,7 @@ from django.db import connection
 from analysis.judge.fold import FoldState
 from analysis.record.tap_state import TapState
 from ingest.times import SECOND_US
-from labmon.pipeline.phases import Standing, phase_at
+from analysis.judge.phases import Standing, phase_at
 from labmon.pipeline.work import TapWork, floor_s, limits_within, newest_known_us, standing_from_text, state_from_text
 
 #: Checkpoints are kept at whole multiples of this; late data go back to one of them.

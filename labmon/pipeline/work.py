@@ -8,12 +8,11 @@ import msgspec
 from django.db import connection
 
 from analysis.judge.fold import FoldState
+from analysis.judge.phases import FOREVER_US, Phase, Standing, phases_of
+from analysis.judge.rule import LimitRule, Quantity
 from analysis.record.tap_state import TapState
-from ingest.models import Tap
 from ingest.times import SECOND_US, us_of
-from labmon.experiments.models import Limit, LimitVersion
-from labmon.experiments.rules import rule_of
-from labmon.pipeline.phases import FOREVER_US, Phase, Standing, phases_of
+from labmon.alarms.settle import LimitHere, TapHere
 
 DEFAULT_INTERVAL_S: Final = 1.0
 
@@ -33,7 +32,7 @@ class Touched:
 class LimitWork:
     """A limit with its phases, and where its fold stands (None: before its first second)."""
 
-    limit: Limit
+    limit: LimitHere
     phases: list[Phase]
     standing: Standing | None = None
 
@@ -50,6 +49,8 @@ class LimitWork:
         """True if a version ended before the point up to which it was folded."""
         if self.standing is None:
             return False
+        if self.phases[-1].version_id == self.standing.version_id:
+            return False
         phase = next((one for one in self.phases if one.version_id == self.standing.version_id), None)
         return phase is None or phase.until_us < self.standing.at_us
 
@@ -63,7 +64,7 @@ class LimitWork:
 class TapWork:
     """All about one tap that is to be judged."""
 
-    tap: Tap
+    tap: TapHere
     touched: Touched
     state: TapState
     now_us: int | None
@@ -83,36 +84,32 @@ class TapWork:
 def load_work(tap_ids: Sequence[int]) -> list[TapWork]:
     """The work of claimed taps, in the order of their ids."""
     ids = list(tap_ids)
-    taps = {tap.pk: tap for tap in Tap.objects.filter(pk__in=ids).select_related("station")}
-    touched, states, limits, watched = _touched(ids), _states(ids), _limits(ids), _watched(ids)
+    states, limits, watched = _states(ids), _limits(ids), _watched(ids)
     works = []
-    for tap_id in ids:
-        if tap_id not in taps:
-            continue
-        state, now_us, last_trusted = states.get(tap_id, (TapState(), None, {}))
-        work = TapWork(taps[tap_id], touched[tap_id], state, now_us, last_trusted, limits.get(tap_id, []))
-        if tap_id in watched:
-            work.experiment_id, work.untrusted_after_s = watched[tap_id]
-        works.append(work)
+    for tap, touched in _touched(ids):
+        state, now_us, last_trusted = states.get(tap.pk) or (TapState(), None, {})
+        experiment_id, after_s = watched.get(tap.pk, (None, None))
+        works.append(TapWork(tap, touched, state, now_us, last_trusted, limits.get(tap.pk, []), after_s, experiment_id))
     return works
 
 
-def _touched(tap_ids: list[int]) -> dict[int, Touched]:
+def _touched(tap_ids: list[int]) -> list[tuple[TapHere, Touched]]:
     with connection.cursor() as cursor:
         cursor.execute("""
-            SELECT asked.id, array_remove(array_agg(touch.id), NULL), min(touch.first_at_us), max(touch.last_at_us),
-                   max(heard.last_at_us), max(heard.last_arrival_us)
-            FROM unnest(%s::bigint[]) AS asked(id)
-            LEFT JOIN ingest_touch touch ON touch.tap_id = asked.id
-            LEFT JOIN ingest_tapheard heard ON heard.tap_id = asked.id
-            GROUP BY asked.id""", [tap_ids])
-        return {row[0]: Touched(*row[1:]) for row in cursor.fetchall()}
+            SELECT tap.id, station.name, tap.name, tap.kind, tap.unit, tap.interval_s, touch.ids, touch.first_us, touch.last_us,
+                   heard.last_at_us, heard.last_arrival_us
+            FROM ingest_tap tap JOIN ingest_station station ON station.id = tap.station_id
+            LEFT JOIN (SELECT tap_id, array_agg(id) AS ids, min(first_at_us) AS first_us, max(last_at_us) AS last_us
+                       FROM ingest_touch WHERE tap_id = ANY(%s) GROUP BY tap_id) AS touch ON touch.tap_id = tap.id
+            LEFT JOIN ingest_tapheard heard ON heard.tap_id = tap.id
+            WHERE tap.id = ANY(%s) ORDER BY tap.id""", [tap_ids, tap_ids])
+        return [(TapHere(*row[:6]), Touched(row[6] or [], *row[7:])) for row in cursor.fetchall()]
 
 
 def _states(tap_ids: list[int]) -> dict[int, tuple[TapState, int | None, dict[str, Any]]]:
     with connection.cursor() as cursor:
-        cursor.execute("""
-            SELECT tap_id, at_us, trust_state::text, (sample->'last_trusted')::text FROM analysis_tapnow WHERE tap_id = ANY(%s)""", [tap_ids])
+        cursor.execute("""SELECT tap_id, at_us, trust_state::text, (sample->'last_trusted')::text
+                          FROM analysis_tapnow WHERE tap_id = ANY(%s)""", [tap_ids])
         return {tap_id: (state_from_text(state), at_us, msgspec.json.decode(last) if last else {})
                 for tap_id, at_us, state, last in cursor.fetchall()}
 
@@ -123,29 +120,31 @@ def state_from_text(text: str) -> TapState:
 
 
 def _limits(tap_ids: list[int]) -> dict[int, list[LimitWork]]:
-    """Limits of the taps with their versions and newest checkpoints; limits whose life is over before any checkpoint stay in."""
-    limits = {limit.pk: limit for limit in Limit.objects.filter(tap_id__in=tap_ids).select_related("experiment__owner").order_by("pk")}
-    if not limits:
-        return {}
-    versions: dict[int, list[tuple[int, Any, int, bool, bool]]] = {}
-    for version in LimitVersion.objects.filter(limit_id__in=limits).order_by("limit_id", "number"):
-        rule = rule_of(version, limits[version.limit_id].quantity)
-        versions.setdefault(version.limit_id, []).append((version.pk, rule, us_of(version.valid_from), version.is_retired, version.in_runs_only))
-    standings = _newest_standings(list(limits))
+    """Limits of the taps with all their versions and their newest checkpoints."""
+    with connection.cursor() as cursor:
+        cursor.execute("""
+            SELECT lim.tap_id, lim.id, lim.experiment_id, lim.quantity, version.id, version.valid_from, version.is_retired,
+                   version.in_runs_only, version.alarm, version.warning, version.on_delay_s, version.off_delay_s, version.deadband,
+                   point.at_us, point.state::text
+            FROM labmon_limit lim JOIN labmon_limitversion version ON version.limit_id = lim.id
+            LEFT JOIN labmon_foldcheckpoint point ON point.version_id = version.id AND point.is_newest
+            WHERE lim.tap_id = ANY(%s) ORDER BY lim.id, version.number""", [tap_ids])
+        rows = cursor.fetchall()
+    by_limit: dict[int, list[tuple[Any, ...]]] = {}
+    for row in rows:
+        by_limit.setdefault(row[1], []).append(row)
     works: dict[int, list[LimitWork]] = {}
-    for limit_id, own in versions.items():
-        limit = limits[limit_id]
-        works.setdefault(limit.tap_id, []).append(LimitWork(limit, phases_of(own), standings.get(limit_id)))
+    for own in by_limit.values():
+        tap_id, limit_id, experiment_id, quantity = own[0][:4]
+        phases = phases_of([(row[4], _rule(quantity, row), us_of(row[5]), row[6], row[7]) for row in own])
+        points = [standing_from_text(row[4], row[13], row[14]) for row in own if row[13] is not None]
+        standing = max(points, key=lambda one: one.at_us, default=None)
+        works.setdefault(tap_id, []).append(LimitWork(LimitHere(limit_id, experiment_id, quantity), phases, standing))
     return works
 
 
-def _newest_standings(limit_ids: list[int]) -> dict[int, Standing]:
-    with connection.cursor() as cursor:
-        cursor.execute("""
-            SELECT version.limit_id, point.version_id, point.at_us, point.state::text
-            FROM labmon_foldcheckpoint point JOIN labmon_limitversion version ON version.id = point.version_id
-            WHERE point.is_newest AND version.limit_id = ANY(%s) ORDER BY point.at_us""", [limit_ids])
-        return {limit_id: standing_from_text(version_id, at_us, state) for limit_id, version_id, at_us, state in cursor.fetchall()}
+def _rule(quantity: str, row: tuple[Any, ...]) -> LimitRule:
+    return LimitRule(quantity=Quantity(quantity), alarm=row[8], warning=row[9], on_delay_s=row[10], off_delay_s=row[11], deadband=row[12])
 
 
 def standing_from_text(version_id: int, at_us: int, state: str) -> Standing:
@@ -157,7 +156,7 @@ def _watched(tap_ids: list[int]) -> dict[int, tuple[int, float]]:
     """Per watched tap an experiment to tell, and the shortest wait before an untrusted reading is told."""
     with connection.cursor() as cursor:
         cursor.execute("""
-            SELECT link.tap_id, (array_agg(experiment.id ORDER BY experiment.id))[1], min(experiment.untrusted_after_s)
+            SELECT link.tap_id, min(experiment.id), min(experiment.untrusted_after_s)
             FROM labmon_experiment_taps link JOIN labmon_experiment experiment ON experiment.id = link.experiment_id
             WHERE link.tap_id = ANY(%s) GROUP BY link.tap_id""", [tap_ids])
         return {tap_id: (experiment_id, after_s) for tap_id, experiment_id, after_s in cursor.fetchall()}
@@ -177,5 +176,3 @@ def floor_s(at_us: int) -> int:
 def limits_within(limits: Sequence[LimitWork], until_us: int) -> list[LimitWork]:
     """Limits that have begun by a data time."""
     return [work for work in limits if work.start_us <= until_us < FOREVER_US]
-
-

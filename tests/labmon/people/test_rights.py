@@ -10,8 +10,15 @@ from labmon.alarms.models import Alarm
 from labmon.errors import NotAllowed
 from labmon.experiments.models import Limit
 from labmon.people.models import Role
-from labmon.people.rights import (Action, alarms_visible_to, experiments_visible_to, may, require, stations_visible_to,
-                                  taps_visible_to)
+from labmon.people.rights import (
+    Action,
+    alarms_visible_to,
+    experiments_visible_to,
+    may,
+    require,
+    stations_visible_to,
+    taps_visible_to,
+)
 from tests.factories import NOON, make_experiment, make_person, make_station, make_tap
 
 pytestmark = pytest.mark.django_db

@@ -12,8 +12,8 @@ from ingest.models import TapKind, Touch
 from labmon.alarms.models import Alarm, AlarmState
 from labmon.experiments.actions import set_limit
 from labmon.experiments.models import FoldCheckpoint
-from labmon.pipeline.process import process_touched
 from labmon.people.models import Role
+from labmon.pipeline.process import process_touched
 from labmon.tell.models import OutboxMail
 from tests.factories import NOON, NOON_US, make_experiment, make_person, make_tap, store_readings
 from tests.labmon.pipeline.lab import Feed, S, episodes, ports_of

@@ -78,12 +78,12 @@ def phase_at(phases: Sequence[Phase], at_us: int) -> Phase | None:
     return next((phase for phase in reversed(phases) if phase.from_us <= at_us), None)
 
 
-def fold_through(phases: Sequence[Phase], standing: Standing, seconds: Seconds, interval_s: FloatArray,
+def fold_through(phases: Sequence[Phase], standing: Standing, seconds: Seconds, interval_s: FloatArray | None,
                  until_us: int) -> tuple[Standing, list[Found]]:
     """Fold the seconds from ``standing`` up to ``until_us`` through the versions that rule meanwhile.
 
     Args:
-        seconds: All of the stretch, maybe more; ``interval_s`` of each, shape (M,).
+        seconds: All of the stretch, maybe more; ``interval_s`` of each, shape (M,), None where it is 1 s or less.
     Returns:
         Where it stands at ``until_us``, and what was found.
     """
@@ -98,7 +98,7 @@ def fold_through(phases: Sequence[Phase], standing: Standing, seconds: Seconds, 
         low, high = np.searchsorted(bounds, [begin_us, end_us])
         state = standing.state
         if high > low and not phase.is_retired:
-            state, events = _fold_by_interval(phase.rule, state, seconds.take(slice(int(low), int(high))), interval_s[low:high])
+            state, events = _fold_by_interval(phase.rule, state, seconds.take(slice(int(low), int(high))), None if interval_s is None else interval_s[low:high])
             found += [Found(event, phase.version_id) for event in events]
         standing = Standing(phase.version_id, max(end_us, begin_us), state)
     return Standing(standing.version_id, max(standing.at_us, until_us), standing.state), found
@@ -113,11 +113,11 @@ def _taken_over(phase: Phase, standing: Standing, found: list[Found]) -> Standin
     return Standing(phase.version_id, phase.from_us, start_state(before))
 
 
-def _fold_by_interval(rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: FloatArray) -> tuple[FoldState, list[Event]]:
+def _fold_by_interval(rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: FloatArray | None) -> tuple[FoldState, list[Event]]:
     """Fold runs of seconds of one nominal interval after the other (an interval not yet known counts as 1 s)."""
-    steady = np.nan_to_num(interval_s, nan=1.0)
-    if (steady <= 1.0).all():
+    if interval_s is None:
         return fold(rule, state, seconds, 1.0)
+    steady = np.nan_to_num(interval_s, nan=1.0)
     starts = np.flatnonzero(np.diff(steady, prepend=np.nan))
     events: list[Event] = []
     for begin, end in zip(starts.tolist(), [*starts[1:].tolist(), len(steady)], strict=True):

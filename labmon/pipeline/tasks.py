@@ -22,7 +22,7 @@ def _task(name: str, time_limit: int):  # type: ignore[no-untyped-def]
 @_task("process", 120)
 def process_task() -> None:
     """Judge what is touched."""
-    process_touched(for_s=PROCESS_FOR_S)
+    process_touched(for_s=PROCESS_FOR_S, is_paced=True)
 
 
 @_task("silence", 60)

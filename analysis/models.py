@@ -42,10 +42,14 @@ class TapNow(models.Model):
     at_us = models.BigIntegerField()
     sample = models.JSONField()
     trust_state = models.JSONField(default=dict, help_text="Where the tap's folds stand (analysis.record.tap_state).")
-    open_until_us = models.BigIntegerField(null=True, help_text="Server time from which the tap's last second counts as complete.")
+    open_until_us = models.BigIntegerField(
+        null=True, help_text="Server time from which the tap's last second counts as complete."
+    )
 
     class Meta:
-        indexes = [models.Index(fields=["open_until_us"], condition=models.Q(open_until_us__isnull=False), name="tap_second_still_open")]
+        indexes = [
+            models.Index(fields=["open_until_us"], condition=models.Q(open_until_us__isnull=False), name="tap_second_still_open")
+        ]
 
 
 class TapCheckpoint(models.Model):

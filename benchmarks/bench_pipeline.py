@@ -67,18 +67,44 @@ class Feeder(threading.Thread):
 
         arrival_us, count = now_us(), self.rate_hz
         at_us = arrival_us - np.arange(count, 0, -1, dtype=np.int64) * (1_000_000 // count)
-        bodies = [pack_even_batch(at_us, ("port1", "port2", "temperature_c"), self._values(count), second * count, arrival_us) for _ in taps]
+        bodies = [
+            pack_even_batch(at_us, ("port1", "port2", "temperature_c"), self._values(count), second * count, arrival_us)
+            for _ in taps
+        ]
         ids, first, last = [tap for tap, _ in taps], int(at_us[0]), int(at_us[-1])
         with transaction.atomic(), connection.cursor() as cursor:
-            cursor.execute("""
-                INSERT INTO ingest_inboxrow (tap_id, tap_boot_id, first_sequence, last_sequence, first_at_us, last_at_us, count, arrival_us, crc, body)
-                SELECT tap, boot, %s, %s, %s, %s, %s, %s, crc, body FROM unnest(%s::bigint[], %s::bigint[], %s::bigint[], %s::bytea[]) AS t(tap, boot, crc, body)""",
-                [second * count, (second + 1) * count - 1, first, last, count, arrival_us, ids, [boot for _, boot in taps], [crc32(body) for body in bodies], bodies])
-            cursor.execute("INSERT INTO ingest_touch (tap_id, first_at_us, last_at_us, arrival_us) SELECT tap, %s, %s, %s FROM unnest(%s::bigint[]) AS t(tap)",
-                           [first, last, arrival_us, ids])
-            cursor.execute("""
-                INSERT INTO ingest_tapheard (tap_id, last_arrival_us, last_at_us) SELECT tap, %s, %s FROM unnest(%s::bigint[]) AS t(tap)
-                ON CONFLICT (tap_id) DO UPDATE SET last_arrival_us = excluded.last_arrival_us, last_at_us = excluded.last_at_us""", [arrival_us, last, ids])
+            cursor.execute(
+                """
+                INSERT INTO ingest_inboxrow (tap_id, tap_boot_id, first_sequence, last_sequence,
+                    first_at_us, last_at_us, count, arrival_us, crc, body)
+                SELECT tap, boot, %s, %s, %s, %s, %s, %s, crc, body
+                    FROM unnest(%s::bigint[], %s::bigint[], %s::bigint[], %s::bytea[]) AS t(tap, boot, crc, body)""",
+                [
+                    second * count,
+                    (second + 1) * count - 1,
+                    first,
+                    last,
+                    count,
+                    arrival_us,
+                    ids,
+                    [boot for _, boot in taps],
+                    [crc32(body) for body in bodies],
+                    bodies,
+                ],
+            )
+            cursor.execute(
+                "INSERT INTO ingest_touch (tap_id, first_at_us, last_at_us, arrival_us) "
+                "SELECT tap, %s, %s, %s FROM unnest(%s::bigint[]) AS t(tap)",
+                [first, last, arrival_us, ids],
+            )
+            cursor.execute(
+                """
+                INSERT INTO ingest_tapheard (tap_id, last_arrival_us, last_at_us)
+                    SELECT tap, %s, %s FROM unnest(%s::bigint[]) AS t(tap)
+                ON CONFLICT (tap_id) DO UPDATE SET last_arrival_us = excluded.last_arrival_us,
+                    last_at_us = excluded.last_at_us""",
+                [arrival_us, last, ids],
+            )
         self.stored += count * len(taps)
 
     def _values(self, count: int) -> np.ndarray:
@@ -115,7 +141,11 @@ def measure(taps: int, rate_hz: int, for_s: float, workers: list[int], postmaste
     rate = (feeder.stored - stored) / took_s
     feeder.stop.set()
     feeder.join()
-    row(f"{taps} taps x {rate_hz} Hz for {took_s:.0f} s ({rate:.0f} readings/s): worker and beat", f"{pipeline_s / took_s:.2f} cores", "<= 0.5")
+    row(
+        f"{taps} taps x {rate_hz} Hz for {took_s:.0f} s ({rate:.0f} readings/s): worker and beat",
+        f"{pipeline_s / took_s:.2f} cores",
+        "<= 0.5",
+    )
     row("  database meanwhile, the feeder's own writes included", f"{database_s / took_s:.2f} cores")
     row("  longest waiting mark, median", f"{median(lags):.2f} s")
     row("  longest waiting mark, 99 %", f"{sorted(lags)[int(0.99 * len(lags))]:.2f} s", "< 2 s")
@@ -126,8 +156,10 @@ def main() -> None:
     for_s = float(sys.argv[1]) if len(sys.argv) > 1 else 30.0
     with throw_away_lab() as folder:
         celery = [sys.executable, "-m", "celery", "-A", "labmon", "--quiet"]
-        runs = [subprocess.Popen([*celery, "worker", "--concurrency", "2", "--loglevel", "ERROR"], env=os.environ.copy()),
-                subprocess.Popen([*celery, "beat", "--schedule", str(folder / "beat"), "--loglevel", "ERROR"], env=os.environ.copy())]
+        runs = [
+            subprocess.Popen([*celery, "worker", "--concurrency", "2", "--loglevel", "ERROR"], env=os.environ.copy()),
+            subprocess.Popen([*celery, "beat", "--schedule", str(folder / "beat"), "--loglevel", "ERROR"], env=os.environ.copy()),
+        ]
         try:
             time.sleep(4)
             workers = [pid for run in runs for pid in descendants(run.pid)]

@@ -17,8 +17,10 @@ def claim_taps(kind: int, tap_ids: Iterable[int], most: int) -> list[int]:
     Taking never waits, so the order in which they are taken cannot lock two workers against each other.
     """
     with connection.cursor() as cursor:
-        cursor.execute("SELECT id FROM unnest(%s::bigint[]) AS t(id) WHERE pg_try_advisory_xact_lock(%s, (id %% 2147483647)::int) LIMIT %s",
-                       [list(tap_ids), kind, most])
+        cursor.execute(
+            "SELECT id FROM unnest(%s::bigint[]) AS t(id) WHERE pg_try_advisory_xact_lock(%s, (id %% 2147483647)::int) LIMIT %s",
+            [list(tap_ids), kind, most],
+        )
         return sorted(row[0] for row in cursor.fetchall())
 
 

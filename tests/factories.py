@@ -31,18 +31,34 @@ def make_station(name: str = "", *, owner: Person | None = None, room: str = "")
     return station
 
 
-def make_tap(station: Station | None = None, name: str = "", *, kind: TapKind = TapKind.TWO_PORT, unit: Unit = Unit.W,
-             interval_s: float | None = 1.0) -> Tap:
+def make_tap(
+    station: Station | None = None,
+    name: str = "",
+    *,
+    kind: TapKind = TapKind.TWO_PORT,
+    unit: Unit = Unit.W,
+    interval_s: float | None = 1.0,
+) -> Tap:
     """A two-port tap in W that reads once a second, unless said."""
-    return Tap.objects.create(station=station or make_station(), name=name or f"tap-{next(_number)}", kind=kind,
-                              unit="" if kind == TapKind.CLIMATE else unit, interval_s=interval_s)
+    return Tap.objects.create(
+        station=station or make_station(),
+        name=name or f"tap-{next(_number)}",
+        kind=kind,
+        unit="" if kind == TapKind.CLIMATE else unit,
+        interval_s=interval_s,
+    )
 
 
 def make_boot(tap: Tap, boot: str = "") -> TapBoot:
     """A boot of the tap's station, first heard at noon."""
     station_boot, _ = StationBoot.objects.get_or_create(
-        station=tap.station, boot=boot or f"boot{next(_number)}", defaults={"first_arrival_us": NOON_US, "last_arrival_us": NOON_US})
-    return TapBoot.objects.get_or_create(tap=tap, station_boot=station_boot, defaults={"first_at_us": NOON_US, "last_at_us": NOON_US})[0]
+        station=tap.station,
+        boot=boot or f"boot{next(_number)}",
+        defaults={"first_arrival_us": NOON_US, "last_arrival_us": NOON_US},
+    )
+    return TapBoot.objects.get_or_create(
+        tap=tap, station_boot=station_boot, defaults={"first_at_us": NOON_US, "last_at_us": NOON_US}
+    )[0]
 
 
 def make_experiment(*taps: Tap, owner: Person | None = None, **fields: Any) -> Experiment:

@@ -69,8 +69,10 @@ def phases_of(versions: Sequence[tuple[int, LimitRule, int, bool, bool]]) -> lis
     """Phases of versions (id, rule, valid_from µs, is retired, in runs only), oldest first; each begins at a whole second."""
     starts = [-(-valid_from_us // US_PER_S) * US_PER_S for _, _, valid_from_us, _, _ in versions]
     ends = [*starts[1:], FOREVER_US]
-    return [Phase(version_id, rule, begin, end, is_retired, in_runs_only)
-            for (version_id, rule, _, is_retired, in_runs_only), begin, end in zip(versions, starts, ends, strict=True)]
+    return [
+        Phase(version_id, rule, begin, end, is_retired, in_runs_only)
+        for (version_id, rule, _, is_retired, in_runs_only), begin, end in zip(versions, starts, ends, strict=True)
+    ]
 
 
 def phase_at(phases: Sequence[Phase], at_us: int) -> Phase | None:
@@ -78,8 +80,9 @@ def phase_at(phases: Sequence[Phase], at_us: int) -> Phase | None:
     return next((phase for phase in reversed(phases) if phase.from_us <= at_us), None)
 
 
-def fold_through(phases: Sequence[Phase], standing: Standing, seconds: Seconds, interval_s: FloatArray | None,
-                 until_us: int) -> tuple[Standing, list[Found]]:
+def fold_through(
+    phases: Sequence[Phase], standing: Standing, seconds: Seconds, interval_s: FloatArray | None, until_us: int
+) -> tuple[Standing, list[Found]]:
     """Fold the seconds from ``standing`` up to ``until_us`` through the versions that rule meanwhile.
 
     Args:
@@ -98,7 +101,9 @@ def fold_through(phases: Sequence[Phase], standing: Standing, seconds: Seconds, 
         low, high = np.searchsorted(bounds, [begin_us, end_us])
         state = standing.state
         if high > low and not phase.is_retired:
-            state, events = _fold_by_interval(phase.rule, state, seconds.take(slice(int(low), int(high))), None if interval_s is None else interval_s[low:high])
+            state, events = _fold_by_interval(
+                phase.rule, state, seconds.take(slice(int(low), int(high))), None if interval_s is None else interval_s[low:high]
+            )
             found += [Found(event, phase.version_id) for event in events]
         standing = Standing(phase.version_id, max(end_us, begin_us), state)
     return Standing(standing.version_id, max(standing.at_us, until_us), standing.state), found
@@ -113,7 +118,9 @@ def _taken_over(phase: Phase, standing: Standing, found: list[Found]) -> Standin
     return Standing(phase.version_id, phase.from_us, start_state(before))
 
 
-def _fold_by_interval(rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: FloatArray | None) -> tuple[FoldState, list[Event]]:
+def _fold_by_interval(
+    rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: FloatArray | None
+) -> tuple[FoldState, list[Event]]:
     """Fold runs of seconds of one nominal interval after the other (an interval not yet known counts as 1 s)."""
     if interval_s is None:
         return fold(rule, state, seconds, 1.0)

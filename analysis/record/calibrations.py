@@ -8,14 +8,30 @@ from typing import Any
 from django.db import transaction
 
 from analysis.models import Calibration, RollupDue
-from ingest.times import us_of
 from ingest.models import Tap, TapHeard, TapKind, Touch
+from ingest.times import us_of
 
 #: Fields a version may set; the rest of the row says when and by whom.
-FIELDS = ("zero1", "zero2", "zero_taken_at", "gain_ratio", "floor1", "floor2", "saturation1", "saturation2", "leakage", "wanted_port",
-          "monitor_ratio", "bright_nominal", "wanted_state", "handedness")
+FIELDS = (
+    "zero1",
+    "zero2",
+    "zero_taken_at",
+    "gain_ratio",
+    "floor1",
+    "floor2",
+    "saturation1",
+    "saturation2",
+    "leakage",
+    "wanted_port",
+    "monitor_ratio",
+    "bright_nominal",
+    "wanted_state",
+    "handedness",
+)
 _NUMBERS = frozenset(FIELDS) - {"zero_taken_at", "leakage", "wanted_port", "wanted_state", "handedness"}
-_MAY_BE_NULL = frozenset({"zero_taken_at", "saturation1", "saturation2", "leakage", "monitor_ratio", "bright_nominal", "wanted_state"})
+_MAY_BE_NULL = frozenset(
+    {"zero_taken_at", "saturation1", "saturation2", "leakage", "monitor_ratio", "bright_nominal", "wanted_state"}
+)
 _ABOVE_ZERO = frozenset({"gain_ratio", "saturation1", "saturation2", "monitor_ratio", "bright_nominal"})
 #: A leakage matrix whose determinant is this small beside its entries cannot be undone with any meaning.
 LEAST_DETERMINANT = 1e-6
@@ -90,8 +106,13 @@ def _checked(field: str, value: Any) -> Any:
         return None
     if field in _NUMBERS:
         return _checked_number(field, value)
-    return {"leakage": _checked_leakage, "wanted_state": _checked_state, "wanted_port": _checked_port,
-            "handedness": _checked_handedness, "zero_taken_at": _checked_time}[field](value)
+    return {
+        "leakage": _checked_leakage,
+        "wanted_state": _checked_state,
+        "wanted_port": _checked_port,
+        "handedness": _checked_handedness,
+        "zero_taken_at": _checked_time,
+    }[field](value)
 
 
 def _number(field: str, value: Any) -> float:
@@ -103,15 +124,23 @@ def _number(field: str, value: Any) -> float:
 def _checked_number(field: str, value: Any) -> float:
     number = _number(field, value)
     if field in _ABOVE_ZERO and number <= 0:
-        raise CalibrationError(field, f"{number:g} is not above 0.", "Give a value above 0, or null where the field may be empty.")
+        raise CalibrationError(
+            field, f"{number:g} is not above 0.", "Give a value above 0, or null where the field may be empty."
+        )
     if field.startswith("floor") and number < 0:
-        raise CalibrationError(field, f"A noise of {number:g} cannot be.", "Give the 1 sigma noise of the dark detector, 0 or more.")
+        raise CalibrationError(
+            field, f"A noise of {number:g} cannot be.", "Give the 1 sigma noise of the dark detector, 0 or more."
+        )
     return number
 
 
 def _checked_leakage(value: Any) -> list[list[float]]:
     do = "Give [[a, b], [c, d]] with readings = leakage @ (port 1, port 2); [[1, 0], [0, 1]] is no leakage."
-    if not (isinstance(value, (list, tuple)) and len(value) == 2 and all(isinstance(row, (list, tuple)) and len(row) == 2 for row in value)):
+    if not (
+        isinstance(value, (list, tuple))
+        and len(value) == 2
+        and all(isinstance(row, (list, tuple)) and len(row) == 2 for row in value)
+    ):
         raise CalibrationError("leakage", "It is not a 2 by 2 matrix.", do)
     matrix = [[_number("leakage", one) for one in row] for row in value]
     (a, b), (c, d) = matrix
@@ -145,5 +174,7 @@ def _checked_handedness(value: Any) -> str:
 
 def _checked_time(value: Any) -> datetime:
     if not isinstance(value, datetime) or value.tzinfo is None:
-        raise CalibrationError("zero_taken_at", f"{value!r} is no time with zone.", "Give when the beam was blocked for the zero.")
+        raise CalibrationError(
+            "zero_taken_at", f"{value!r} is no time with zone.", "Give when the beam was blocked for the zero."
+        )
     return value

@@ -97,8 +97,13 @@ class ManyReduced:
         return Reduced(**sample.empty_fields(np.empty(0, np.int64)))
 
 
-def reduce_many(taps: Sequence[TapLike], readings: Mapping[int, Readings], knowledge: Knowledge, flat: Mapping[int, Any],
-                cuts: Mapping[int, Sequence[int]] | None = None) -> ManyReduced:
+def reduce_many(
+    taps: Sequence[TapLike],
+    readings: Mapping[int, Readings],
+    knowledge: Knowledge,
+    flat: Mapping[int, Any],
+    cuts: Mapping[int, Sequence[int]] | None = None,
+) -> ManyReduced:
     """Reduce each tap's readings (sorted); taps of one kind and unit go through in one call.
 
     Args:
@@ -124,8 +129,13 @@ def _alike(taps: Iterable[TapLike], readings: Mapping[int, Readings]) -> list[li
     return list(groups.values())
 
 
-def _reduce_alike(taps: list[TapLike], readings: Mapping[int, Readings], knowledge: Knowledge,
-                  flat: Mapping[int, Any], cuts: Mapping[int, Sequence[int]] | None) -> tuple[Group, list[list[Any]]]:
+def _reduce_alike(
+    taps: list[TapLike],
+    readings: Mapping[int, Readings],
+    knowledge: Knowledge,
+    flat: Mapping[int, Any],
+    cuts: Mapping[int, Sequence[int]] | None,
+) -> tuple[Group, list[list[Any]]]:
     parts = [readings[tap.pk] for tap in taps]
     counts = np.array([len(part) for part in parts])
     first = np.concatenate([[0], np.cumsum(counts)[:-1]])
@@ -156,15 +166,24 @@ def _with_needed(kind: TapKind, raw: Readings) -> dict[str, FloatArray]:
     return columns
 
 
-def _reduced(kind: TapKind, unit: str, at_us: IntArray, columns: dict[str, FloatArray], calibration: TapCalibration, marks: ReasonArray,
-             is_flat: BoolArray | None) -> Reduced:
+def _reduced(
+    kind: TapKind,
+    unit: str,
+    at_us: IntArray,
+    columns: dict[str, FloatArray],
+    calibration: TapCalibration,
+    marks: ReasonArray,
+    is_flat: BoolArray | None,
+) -> Reduced:
     context = TrustContext(marks=marks, is_flat=is_flat)
     if kind is TapKind.STOKES and "s0" in columns and "azimuth_deg" in columns:
         return _reduced_in_two_forms(unit, at_us, columns, calibration, context)
     return reduce_tap(kind.value, unit, at_us, columns, calibration, trust_context=context)
 
 
-def _reduced_in_two_forms(unit: str, at_us: IntArray, columns: dict[str, FloatArray], calibration: TapCalibration, context: TrustContext) -> Reduced:
+def _reduced_in_two_forms(
+    unit: str, at_us: IntArray, columns: dict[str, FloatArray], calibration: TapCalibration, context: TrustContext
+) -> Reduced:
     """Polarimeters of which some send Stokes values and some angles: each form by itself, then in order again."""
     is_stokes = np.isfinite(columns["s0"])
     parts, order = [], []
@@ -178,8 +197,9 @@ def _reduced_in_two_forms(unit: str, at_us: IntArray, columns: dict[str, FloatAr
     return sample.concatenate(parts).take(np.argsort(np.concatenate(order), kind="stable"))
 
 
-def _flat_marks(kind: TapKind, columns: Mapping[str, FloatArray], first: IntArray, piece: IntArray, pieces: int,
-                states: list[Any]) -> tuple[BoolArray | None, list[list[Any]]]:
+def _flat_marks(
+    kind: TapKind, columns: Mapping[str, FloatArray], first: IntArray, piece: IntArray, pieces: int, states: list[Any]
+) -> tuple[BoolArray | None, list[list[Any]]]:
     """Marks of all readings, and the states of all taps behind each piece (``piece``: which one a reading lies in)."""
     if kind is TapKind.CLIMATE:
         return None, [states] * pieces
@@ -210,8 +230,9 @@ def _with_rows(part: Any, rows: IntArray, new: Any) -> Any:
     return changed
 
 
-def _version_index(taps: list[TapLike], at_us: IntArray, first: IntArray, counts: IntArray,
-                   calibrations: Mapping[int, list[Calibration]]) -> tuple[list[Calibration | None], IntArray]:
+def _version_index(
+    taps: list[TapLike], at_us: IntArray, first: IntArray, counts: IntArray, calibrations: Mapping[int, list[Calibration]]
+) -> tuple[list[Calibration | None], IntArray]:
     """All versions in one list, and for each sample which of them holds."""
     versions: list[Calibration | None] = []
     bases = np.empty(len(taps), dtype=np.int64)
@@ -244,21 +265,36 @@ def tap_calibration(version: Calibration | None) -> TapCalibration:
     if version is None:
         return _DEFAULT
     return TapCalibration(
-        zero1=version.zero1, zero2=version.zero2, gain_ratio=version.gain_ratio, floor1=version.floor1, floor2=version.floor2,
-        saturation1=version.saturation1, saturation2=version.saturation2, leakage=version.leakage, wanted_port=version.wanted_port,
-        monitor_ratio=version.monitor_ratio, bright_nominal=version.bright_nominal, wanted_state=version.wanted_state, handedness=version.handedness)
+        zero1=version.zero1,
+        zero2=version.zero2,
+        gain_ratio=version.gain_ratio,
+        floor1=version.floor1,
+        floor2=version.floor2,
+        saturation1=version.saturation1,
+        saturation2=version.saturation2,
+        leakage=version.leakage,
+        wanted_port=version.wanted_port,
+        monitor_ratio=version.monitor_ratio,
+        bright_nominal=version.bright_nominal,
+        wanted_state=version.wanted_state,
+        handedness=version.handedness,
+    )
 
 
 def _old_zeros(versions: list[Calibration | None], index: IntArray, at_us: IntArray) -> ReasonArray:
     marks = np.zeros(len(at_us), dtype=np.uint32)
     never = np.iinfo(np.int64).max
-    old_from_us = np.array([us_of(version.zero_taken_at + OLD_ZERO_AFTER) if version and version.zero_taken_at else never for version in versions])
+    old_from_us = np.array(
+        [us_of(version.zero_taken_at + OLD_ZERO_AFTER) if version and version.zero_taken_at else never for version in versions]
+    )
     if (old_from_us != never).any():
         marks[at_us > old_from_us[index]] = np.uint32(Reason.OLD_ZERO)
     return marks
 
 
-def _two_devices(taps: list[TapLike], at_us: IntArray, first: IntArray, overlaps: Mapping[int, list[tuple[int, int]]]) -> ReasonArray:
+def _two_devices(
+    taps: list[TapLike], at_us: IntArray, first: IntArray, overlaps: Mapping[int, list[tuple[int, int]]]
+) -> ReasonArray:
     marks = np.zeros(len(at_us), dtype=np.uint32)
     ends = np.append(first[1:], len(at_us))
     for tap, begin, end in zip(taps, first.tolist(), ends.tolist(), strict=True):
@@ -287,5 +323,3 @@ def _overlapping(spans: list[tuple[int, int]]) -> list[tuple[int, int]]:
             found.append((first_us, min(reach, last_us) + OVERLAP_REACH_US))
         reach = last_us if reach is None else max(reach, last_us)
     return found
-
-

@@ -91,8 +91,12 @@ def _fine_cells(taps: Sequence[Tap], spans: Mapping[int, Span]) -> Cells:
         starts[tap.pk] = next((snap for snap in reversed(state["snapshots"]) if snap[0] <= first_us), None) if state else None
     for tap_id, found in _checkpoints({tap_id: bounds[tap_id][0] for tap_id, start in starts.items() if start is None}).items():
         starts[tap_id] = found
-    readings = read_many({tap.pk: (starts[tap.pk][0] if starts[tap.pk] else bounds[tap.pk][0], bounds[tap.pk][2]) for tap in taps})
-    reduced = reduce_many(taps, readings, knowledge_of(bounds), {tap_id: start[1] if start else None for tap_id, start in starts.items()})
+    readings = read_many(
+        {tap.pk: (starts[tap.pk][0] if starts[tap.pk] else bounds[tap.pk][0], bounds[tap.pk][2]) for tap in taps}
+    )
+    reduced = reduce_many(
+        taps, readings, knowledge_of(bounds), {tap_id: start[1] if start else None for tap_id, start in starts.items()}
+    )
     parts = [empty_cells(FINE_S)]
     for group in reduced.groups:
         kept, hold_parts, owners = [], [], []
@@ -105,7 +109,9 @@ def _fine_cells(taps: Sequence[Tap], spans: Mapping[int, Span]) -> Cells:
                 kept.append(np.arange(begin + low, begin + high))
                 owners.append(np.full(high - low, tap.pk))
         if kept:
-            parts.append(cells_of(group.samples.take(np.concatenate(kept)), FINE_S, np.concatenate(hold_parts), np.concatenate(owners)))
+            parts.append(
+                cells_of(group.samples.take(np.concatenate(kept)), FINE_S, np.concatenate(hold_parts), np.concatenate(owners))
+            )
     return concatenate(parts)
 
 
@@ -125,10 +131,14 @@ def _checkpoints(wanted: Mapping[int, int]) -> dict[int, tuple[int, Any]]:
     if not wanted:
         return {}
     with connection.cursor() as cursor:
-        cursor.execute("""
-            SELECT asked.tap, point.at_us, (point.state->'flat')::text FROM unnest(%s::bigint[], %s::bigint[]) AS asked(tap, at_us)
+        cursor.execute(
+            """
+            SELECT asked.tap, point.at_us, (point.state->'flat')::text
+                FROM unnest(%s::bigint[], %s::bigint[]) AS asked(tap, at_us)
             CROSS JOIN LATERAL (SELECT at_us, state FROM analysis_tapcheckpoint WHERE tap_id = asked.tap AND at_us <= asked.at_us
-                                ORDER BY at_us DESC LIMIT 1) AS point""", [list(wanted), list(wanted.values())])
+                                ORDER BY at_us DESC LIMIT 1) AS point""",
+            [list(wanted), list(wanted.values())],
+        )
         return {tap_id: (at_us, msgspec.json.decode(flat)) for tap_id, at_us, flat in cursor.fetchall()}
 
 
@@ -138,8 +148,12 @@ def _store_open(fine: Cells) -> None:
     _write_rows(fine)
     owners, starts = np.unique(fine.tap, return_index=True)
     ends = np.append(starts[1:], len(fine)) - 1
-    minutes = {tap_id: (_floor(first_us, MINUTE_S), _floor(last_us, MINUTE_S) + MINUTE_S * SECOND_US) for tap_id, first_us, last_us in
-               zip(owners.tolist(), fine.bucket_us[starts].tolist(), fine.bucket_us[ends].tolist(), strict=True)}
+    minutes = {
+        tap_id: (_floor(first_us, MINUTE_S), _floor(last_us, MINUTE_S) + MINUTE_S * SECOND_US)
+        for tap_id, first_us, last_us in zip(
+            owners.tolist(), fine.bucket_us[starts].tolist(), fine.bucket_us[ends].tolist(), strict=True
+        )
+    }
     _write_rows(merge(_rows(minutes, FINE_S), MINUTE_S))
 
 
@@ -165,12 +179,14 @@ def _rows(bounds: Mapping[int, tuple[int, int]], level_s: int) -> Cells:
     if not bounds:
         return empty_cells(level_s)
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT cell.tap_id, cell.bucket_us, cell.body
             FROM unnest(%s::bigint[], %s::bigint[], %s::bigint[]) AS asked(tap, from_us, until_us)
             JOIN analysis_rolluprow cell ON cell.tap_id = asked.tap AND cell.level_s = %s AND cell.bucket_us >= asked.from_us
                 AND cell.bucket_us < asked.until_us ORDER BY cell.tap_id, cell.bucket_us""",
-            [list(bounds), [one for one, _ in bounds.values()], [one for _, one in bounds.values()], level_s])
+            [list(bounds), [one for one, _ in bounds.values()], [one for _, one in bounds.values()], level_s],
+        )
         found = cursor.fetchall()
     if not found:
         return empty_cells(level_s)
@@ -186,8 +202,11 @@ def _days(tap_id: int, level_s: int, from_us: int, until_us: int) -> list[Cells]
 def day_bodies(tap_id: int, level_s: int, from_us: int, until_us: int) -> list[tuple[int, bytes]]:
     """(day µs, buffer) of a tap's closed days that overlap the half-open span, oldest first."""
     with connection.cursor() as cursor:
-        cursor.execute("""SELECT day_us, body FROM analysis_rollupday WHERE tap_id = %s AND level_s = %s AND day_us > %s AND day_us < %s
-                          ORDER BY day_us""", [tap_id, level_s, from_us - DAY_US, until_us])
+        cursor.execute(
+            """SELECT day_us, body FROM analysis_rollupday WHERE tap_id = %s AND level_s = %s AND day_us > %s AND day_us < %s
+                          ORDER BY day_us""",
+            [tap_id, level_s, from_us - DAY_US, until_us],
+        )
         return cursor.fetchall()
 
 
@@ -199,22 +218,28 @@ def open_cells(tap_ids: Sequence[int], level_s: int, from_us: int, until_us: int
 def _write_rows(cells: Cells) -> None:
     if len(cells):
         with connection.cursor() as cursor:
-            cursor.execute("""
+            cursor.execute(
+                """
                 INSERT INTO analysis_rolluprow (tap_id, level_s, bucket_us, body)
                 SELECT tap, %s, bucket, body FROM unnest(%s::bigint[], %s::bigint[], %s::bytea[]) AS t(tap, bucket, body)
                 ON CONFLICT (tap_id, level_s, bucket_us) DO UPDATE SET body = excluded.body""",
-                [cells.level_s, cells.tap.tolist(), cells.bucket_us.tolist(), row_bodies(cells)])
+                [cells.level_s, cells.tap.tolist(), cells.bucket_us.tolist(), row_bodies(cells)],
+            )
 
 
 def _write_day(tap_id: int, day_us: int, cells: Cells) -> None:
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             INSERT INTO analysis_rollupday (tap_id, level_s, day_us, count, body) VALUES (%s, %s, %s, %s, %s)
             ON CONFLICT (tap_id, level_s, day_us) DO UPDATE SET count = excluded.count, body = excluded.body""",
-            [tap_id, cells.level_s, day_us, len(cells), bytes_of(cells)])
+            [tap_id, cells.level_s, day_us, len(cells), bytes_of(cells)],
+        )
 
 
 def _delete_rows(tap_id: int, level_s: int, day_us: int) -> None:
     with connection.cursor() as cursor:
-        cursor.execute("DELETE FROM analysis_rolluprow WHERE tap_id = %s AND level_s = %s AND bucket_us >= %s AND bucket_us < %s",
-                       [tap_id, level_s, day_us, day_us + DAY_US])
+        cursor.execute(
+            "DELETE FROM analysis_rolluprow WHERE tap_id = %s AND level_s = %s AND bucket_us >= %s AND bucket_us < %s",
+            [tap_id, level_s, day_us, day_us + DAY_US],
+        )

@@ -42,7 +42,7 @@ class History:
 
 @dataclass(frozen=True, slots=True)
 class _Sums:
-    """What adds up, per cell or sample: start, minimum, maximum, weighted sum and weight (for ER the two port sums), trusted µs."""
+    """What adds up, per cell or sample: start, extremes, weighted sum and weight (of ER the two port sums), trusted µs."""
 
     at_us: IntArray
     low: FloatArray

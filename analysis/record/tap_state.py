@@ -31,16 +31,29 @@ class TapState:
     untrusted_upto_us: int | None = None
 
     def as_json(self) -> dict[str, Any]:
-        return {"upto_us": self.upto_us, "flat": self.flat, "interval": self.interval.as_json(), "untrusted": self.untrusted.as_json(),
-                "arrivals_us": list(self.arrivals_us), "snapshots": [list(one) for one in self.snapshots],
-                "untrusted_upto_us": self.untrusted_upto_us}
+        return {
+            "upto_us": self.upto_us,
+            "flat": self.flat,
+            "interval": self.interval.as_json(),
+            "untrusted": self.untrusted.as_json(),
+            "arrivals_us": list(self.arrivals_us),
+            "snapshots": [list(one) for one in self.snapshots],
+            "untrusted_upto_us": self.untrusted_upto_us,
+        }
 
     @classmethod
     def from_json(cls, values: dict[str, Any] | None) -> "TapState":
         if not values:
             return cls()
-        return cls(values["upto_us"], values["flat"], IntervalState.from_json(values["interval"]), UntrustedState.from_json(values["untrusted"]),
-                   tuple(values["arrivals_us"]), tuple((at_us, flat) for at_us, flat in values["snapshots"]), values["untrusted_upto_us"])
+        return cls(
+            values["upto_us"],
+            values["flat"],
+            IntervalState.from_json(values["interval"]),
+            UntrustedState.from_json(values["untrusted"]),
+            tuple(values["arrivals_us"]),
+            tuple((at_us, flat) for at_us, flat in values["snapshots"]),
+            values["untrusted_upto_us"],
+        )
 
     def with_snapshot(self, at_us: int, flat: Any) -> "TapState":
         """The same with one more snapshot, the oldest left out."""

@@ -9,7 +9,6 @@ import zstandard
 from numpy.typing import NDArray
 
 from analysis.quantities import IntArray
-
 from analysis.rollup.cells import CELL, Cells
 from analysis.rollup.histogram import Histogram
 
@@ -39,8 +38,10 @@ def _opened(body: bytes) -> tuple[int, int, int, bytes]:
         raise ValueError(f"{len(body)} bytes are too few for rollup cells; recompute them from the readings.")
     magic, version, size, level_s, count, bins = _HEADER.unpack_from(body)
     if magic != _MAGIC or version != _VERSION or size != CELL.itemsize:
-        raise ValueError(f"rollup cells of version {version} and size {size} are not {_VERSION} and {CELL.itemsize}; recompute them.")
-    return level_s, count, bins, zstandard.ZstdDecompressor().decompress(body[_HEADER.size:])
+        raise ValueError(
+            f"rollup cells of version {version} and size {size} are not {_VERSION} and {CELL.itemsize}; recompute them."
+        )
+    return level_s, count, bins, zstandard.ZstdDecompressor().decompress(body[_HEADER.size :])
 
 
 def cells_from(body: bytes, tap: int = 0) -> Cells:

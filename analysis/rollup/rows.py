@@ -22,7 +22,10 @@ def row_bodies(cells: Cells) -> list[bytes]:
     bins["bin"], bins["count"] = cells.er_histogram.bin, cells.er_histogram.count
     packed, size = bins.tobytes(), CELL.itemsize
     ends = (np.searchsorted(cells.er_histogram.cell, np.arange(len(cells) + 1)) * _BIN.itemsize).tolist()
-    return [_MARK + compress(values[number * size:(number + 1) * size] + packed[ends[number]:ends[number + 1]]) for number in range(len(cells))]
+    return [
+        _MARK + compress(values[number * size : (number + 1) * size] + packed[ends[number] : ends[number + 1]])
+        for number in range(len(cells))
+    ]
 
 
 def cells_of_rows(bodies: Sequence[bytes], level_s: int, tap: IntArray, bucket_us: IntArray) -> Cells:
@@ -38,8 +41,8 @@ def cells_of_rows(bodies: Sequence[bytes], level_s: int, tap: IntArray, bucket_u
         if plain[:1] != _MARK:
             raise ValueError("a rollup row has another layout; make the rollups anew from the readings.")
         raw.append(expand(plain[1:]))
-    values = np.frombuffer(b"".join([one[:CELL.itemsize] for one in raw]), dtype=CELL).copy()
+    values = np.frombuffer(b"".join([one[: CELL.itemsize] for one in raw]), dtype=CELL).copy()
     counts = [(len(one) - CELL.itemsize) // _BIN.itemsize for one in raw]
-    bins = np.frombuffer(b"".join([one[CELL.itemsize:] for one in raw]), dtype=_BIN)
+    bins = np.frombuffer(b"".join([one[CELL.itemsize :] for one in raw]), dtype=_BIN)
     histogram = Histogram(np.repeat(np.arange(len(raw)), counts), bins["bin"].astype(np.int64), bins["count"].astype(np.int64))
     return Cells(level_s, tap, bucket_us, values, histogram)

@@ -22,7 +22,9 @@ def call_people(alarms: Iterable[tuple[Alarm, str]], names: Mapping[int, str]) -
     events = list(alarms)
     if not events:
         return
-    experiments = Experiment.objects.select_related("owner").in_bulk({alarm.experiment_id for alarm, _ in events if alarm.experiment_id})
+    experiments = Experiment.objects.select_related("owner").in_bulk(
+        {alarm.experiment_id for alarm, _ in events if alarm.experiment_id}
+    )
     managers: list[str] | None = None
     mails = []
     for alarm, event in events:
@@ -30,7 +32,9 @@ def call_people(alarms: Iterable[tuple[Alarm, str]], names: Mapping[int, str]) -
         if not recipients:
             managers = _manager_addresses() if managers is None else managers
             recipients = managers
-        mails.append(Mail(f"alarm-{alarm.pk}-{event}", recipients, _subject(alarm), _body(alarm, names[alarm.tap_id], experiments)))
+        mails.append(
+            Mail(f"alarm-{alarm.pk}-{event}", recipients, _subject(alarm), _body(alarm, names[alarm.tap_id], experiments))
+        )
     queue_mails(mails)
 
 
@@ -50,7 +54,14 @@ def _subject(alarm: Alarm) -> str:
 
 def _body(alarm: Alarm, name: str, experiments: Mapping[int, Experiment]) -> str:
     what = {AlarmKind.LIMIT: "Raised", AlarmKind.NO_READING: "Noticed", AlarmKind.UNTRUSTED: "Noticed"}[AlarmKind(alarm.kind)]
-    lines = [f"{alarm.message}.", "", f"{what}: {alarm.raised_at:%Y-%m-%d %H:%M:%S} UTC",
-             *([f"Experiment: {experiments[alarm.experiment_id].name}"] if alarm.experiment_id else []), f"Bench: {settings.PUBLIC_URL}/stations/{name.split('/')[0]}/",
-             f"Alarms: {settings.PUBLIC_URL}/alarms/", "", "labmon watches and advises; it changes nothing on the bench."]
+    lines = [
+        f"{alarm.message}.",
+        "",
+        f"{what}: {alarm.raised_at:%Y-%m-%d %H:%M:%S} UTC",
+        *([f"Experiment: {experiments[alarm.experiment_id].name}"] if alarm.experiment_id else []),
+        f"Bench: {settings.PUBLIC_URL}/stations/{name.split('/')[0]}/",
+        f"Alarms: {settings.PUBLIC_URL}/alarms/",
+        "",
+        "labmon watches and advises; it changes nothing on the bench.",
+    ]
     return "\n".join(lines)

@@ -56,15 +56,22 @@ class Alarm(models.Model):
 
     class Meta:
         constraints = [
-            models.UniqueConstraint(fields=["limit"], condition=Q(kind="limit", returned_at__isnull=True, is_withdrawn=False),
-                                    name="one_open_alarm_per_limit"),
-            models.UniqueConstraint(fields=["tap", "kind"],
-                                    condition=Q(returned_at__isnull=True, is_withdrawn=False) & ~Q(kind="limit"),
-                                    name="one_open_alarm_per_tap_and_kind"),
+            models.UniqueConstraint(
+                fields=["limit"],
+                condition=Q(kind="limit", returned_at__isnull=True, is_withdrawn=False),
+                name="one_open_alarm_per_limit",
+            ),
+            models.UniqueConstraint(
+                fields=["tap", "kind"],
+                condition=Q(returned_at__isnull=True, is_withdrawn=False) & ~Q(kind="limit"),
+                name="one_open_alarm_per_tap_and_kind",
+            ),
         ]
-        indexes = [models.Index(fields=["-raised_at"], name="alarm_newest"),
-                   models.Index(fields=["tap", "raised_at"], name="alarm_by_tap"),
-                   models.Index(fields=["state"], condition=~Q(state="normal"), name="alarm_not_normal")]
+        indexes = [
+            models.Index(fields=["-raised_at"], name="alarm_newest"),
+            models.Index(fields=["tap", "raised_at"], name="alarm_by_tap"),
+            models.Index(fields=["state"], condition=~Q(state="normal"), name="alarm_not_normal"),
+        ]
 
 
 class AlarmBounds(models.Model):

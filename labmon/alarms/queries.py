@@ -11,7 +11,13 @@ from labmon.alarms.models import Alarm, AlarmBounds, AlarmState
 from labmon.people.models import Person
 from labmon.people.rights import alarms_visible_to
 
-OPEN_STATES = (AlarmState.UNACKNOWLEDGED, AlarmState.ACKNOWLEDGED, AlarmState.SHELVED, AlarmState.SUPPRESSED, AlarmState.OUT_OF_SERVICE)
+OPEN_STATES = (
+    AlarmState.UNACKNOWLEDGED,
+    AlarmState.ACKNOWLEDGED,
+    AlarmState.SHELVED,
+    AlarmState.SUPPRESSED,
+    AlarmState.OUT_OF_SERVICE,
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,8 +59,17 @@ class AlarmRow:
         return self.state in (AlarmState.UNACKNOWLEDGED, AlarmState.RETURNED_UNACKNOWLEDGED)
 
 
-def alarm_rows(person: Person, *, state: str | Iterable[str] | None = None, experiment: int | None = None, station: str | None = None,
-               tap_id: int | None = None, is_open: bool | None = None, limit: int = 200, before_id: int | None = None) -> list[AlarmRow]:
+def alarm_rows(
+    person: Person,
+    *,
+    state: str | Iterable[str] | None = None,
+    experiment: int | None = None,
+    station: str | None = None,
+    tap_id: int | None = None,
+    is_open: bool | None = None,
+    limit: int = 200,
+    before_id: int | None = None,
+) -> list[AlarmRow]:
     """Alarms that ``person`` may see: those that need someone first, then the newest; three queries."""
     rows = alarms_visible_to(person)
     if state is not None:
@@ -88,19 +103,38 @@ def alarm_row(alarm_id: int, person: Person) -> AlarmRow | None:
 
 
 def _loaded(rows: QuerySet[Alarm]) -> QuerySet[Alarm]:
-    return (rows.select_related("tap__station", "experiment", "acknowledged_by")
-            .prefetch_related(Prefetch("earlier_bounds", AlarmBounds.objects.order_by("replaced_at", "pk"))))
+    return rows.select_related("tap__station", "experiment", "acknowledged_by").prefetch_related(
+        Prefetch("earlier_bounds", AlarmBounds.objects.order_by("replaced_at", "pk"))
+    )
 
 
 def _row(alarm: Alarm) -> AlarmRow:
     station = alarm.tap.station.name
     return AlarmRow(
-        id=alarm.pk, kind=alarm.kind, experiment=alarm.experiment.name if alarm.experiment else None, experiment_id=alarm.experiment_id,
-        tap=f"{station}/{alarm.tap.name}", tap_id=alarm.tap_id, station=station, quantity=alarm.quantity, level=alarm.level, state=alarm.state,
-        raised_at=alarm.raised_at, alarm_at=alarm.alarm_at, returned_at=alarm.returned_at, acknowledged_at=alarm.acknowledged_at,
-        acknowledged_by=alarm.acknowledged_by.username if alarm.acknowledged_by else None, note=alarm.note, value=alarm.value,
-        limit=alarm.limit_value, cause=alarm.cause, message=alarm.message, is_late=alarm.is_late, is_withdrawn=alarm.is_withdrawn,
-        earlier_bounds=[(one.raised_at, one.returned_at) for one in alarm.earlier_bounds.all()])
+        id=alarm.pk,
+        kind=alarm.kind,
+        experiment=alarm.experiment.name if alarm.experiment else None,
+        experiment_id=alarm.experiment_id,
+        tap=f"{station}/{alarm.tap.name}",
+        tap_id=alarm.tap_id,
+        station=station,
+        quantity=alarm.quantity,
+        level=alarm.level,
+        state=alarm.state,
+        raised_at=alarm.raised_at,
+        alarm_at=alarm.alarm_at,
+        returned_at=alarm.returned_at,
+        acknowledged_at=alarm.acknowledged_at,
+        acknowledged_by=alarm.acknowledged_by.username if alarm.acknowledged_by else None,
+        note=alarm.note,
+        value=alarm.value,
+        limit=alarm.limit_value,
+        cause=alarm.cause,
+        message=alarm.message,
+        is_late=alarm.is_late,
+        is_withdrawn=alarm.is_withdrawn,
+        earlier_bounds=[(one.raised_at, one.returned_at) for one in alarm.earlier_bounds.all()],
+    )
 
 
 def alarm_spans(tap_id: int, from_us: int, until_us: int) -> list[tuple[int, int | None, str, str]]:
@@ -108,6 +142,10 @@ def alarm_spans(tap_id: int, from_us: int, until_us: int) -> list[tuple[int, int
 
     Withdrawn ones are left out; alarms that are not of a limit have no quantity.
     """
-    rows = Alarm.objects.filter(tap_id=tap_id, raised_at__lt=at_of(until_us), is_withdrawn=False).exclude(returned_at__lt=at_of(from_us))
-    return [(us_of(alarm.raised_at), us_of(alarm.returned_at) if alarm.returned_at else None, alarm.level, alarm.quantity)
-            for alarm in rows.order_by("raised_at", "pk")]
+    rows = Alarm.objects.filter(tap_id=tap_id, raised_at__lt=at_of(until_us), is_withdrawn=False).exclude(
+        returned_at__lt=at_of(from_us)
+    )
+    return [
+        (us_of(alarm.raised_at), us_of(alarm.returned_at) if alarm.returned_at else None, alarm.level, alarm.quantity)
+        for alarm in rows.order_by("raised_at", "pk")
+    ]

@@ -8,18 +8,32 @@ from dataclasses import dataclass, field
 from typing import Final
 
 from analysis.judge.fold import Level
+from analysis.judge.phases import Episode, Phase
 from analysis.judge.rule import Quantity
 from ingest.times import SECOND_US, at_of, us_of
 from labmon.alarms.calls import RAISED, ROSE, call_people
 from labmon.alarms.models import Alarm, AlarmBounds, AlarmKind, AlarmState
 from labmon.alarms.states import state_of
 from labmon.alarms.words import limit_sentence
-from analysis.judge.phases import Episode, Phase
 
 #: An event whose reading is older than this when it is judged (by the station's own clock) is past: it calls nobody.
 CURRENT_WITHIN_US: Final = 60 * SECOND_US
-_CHANGED = ("version", "level", "state", "raised_at", "alarm_at", "returned_at", "acknowledged_at", "acknowledged_by", "value", "limit_value", "message",
-            "is_late", "is_withdrawn", "changed")
+_CHANGED = (
+    "version",
+    "level",
+    "state",
+    "raised_at",
+    "alarm_at",
+    "returned_at",
+    "acknowledged_at",
+    "acknowledged_by",
+    "value",
+    "limit_value",
+    "message",
+    "is_late",
+    "is_withdrawn",
+    "changed",
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,8 +172,15 @@ def _belongs(alarm: Alarm, finding: Finding) -> bool:
 
 def _add(finding: Finding, episode: Episode, name: str, changes: _Changes) -> None:
     phase = _phase_of(finding, episode)
-    alarm = Alarm(kind=AlarmKind.LIMIT, experiment_id=finding.limit.experiment_id, limit_id=finding.limit.pk, tap_id=finding.tap.pk, quantity=finding.limit.quantity,
-                  state=AlarmState.SUPPRESSED if phase.in_runs_only else AlarmState.UNACKNOWLEDGED, is_late=not phase.in_runs_only)
+    alarm = Alarm(
+        kind=AlarmKind.LIMIT,
+        experiment_id=finding.limit.experiment_id,
+        limit_id=finding.limit.pk,
+        tap_id=finding.tap.pk,
+        quantity=finding.limit.quantity,
+        state=AlarmState.SUPPRESSED if phase.in_runs_only else AlarmState.UNACKNOWLEDGED,
+        is_late=not phase.in_runs_only,
+    )
     _fill(alarm, finding, episode, name)
     if not phase.in_runs_only and _is_to_be_called(finding, episode):
         alarm.is_late = False
@@ -185,9 +206,13 @@ def _bring_in_line(finding: Finding, episode: Episode, alarm: Alarm, name: str, 
     alarm.state = state_of(alarm)
     if all(getattr(alarm, field) == value for field, value in before.items()):
         return
-    has_moved = before["raised_at"] != alarm.raised_at or (before["returned_at"] is not None and before["returned_at"] != alarm.returned_at)
+    has_moved = before["raised_at"] != alarm.raised_at or (
+        before["returned_at"] is not None and before["returned_at"] != alarm.returned_at
+    )
     if was_told and has_moved:
-        changes.bounds.append(AlarmBounds(alarm=alarm, raised_at=before["raised_at"], returned_at=before["returned_at"], value=before["value"]))
+        changes.bounds.append(
+            AlarmBounds(alarm=alarm, raised_at=before["raised_at"], returned_at=before["returned_at"], value=before["value"])
+        )
     changes.changed[alarm.pk] = alarm
 
 
@@ -215,7 +240,9 @@ def _fill(alarm: Alarm, finding: Finding, episode: Episode, name: str) -> None:
     alarm.value = episode.value if is_new or is_rejudged else worse_of(alarm.quantity, alarm.value, episode.value)
     phase = _phase_of(finding, episode)
     alarm.version_id = phase.version_id
-    alarm.limit_value = phase.rule.warning if episode.level is Level.WARNING and phase.rule.warning is not None else phase.rule.alarm
+    alarm.limit_value = (
+        phase.rule.warning if episode.level is Level.WARNING and phase.rule.warning is not None else phase.rule.alarm
+    )
     alarm.message = limit_sentence(name, alarm.quantity, alarm.level, alarm.value, alarm.limit_value)
 
 

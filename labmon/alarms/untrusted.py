@@ -28,8 +28,12 @@ def settle_untrusted(findings: Iterable[UntrustedFinding], now_us: int) -> list[
     wanted = {finding.tap.pk: finding for finding in findings}
     if not wanted:
         return []
-    open_alarms = {alarm.tap_id: alarm for alarm in Alarm.objects.select_for_update(of=("self",)).filter(
-        tap_id__in=wanted, kind=AlarmKind.UNTRUSTED, returned_at=None, is_withdrawn=False).order_by("pk")}
+    open_alarms = {
+        alarm.tap_id: alarm
+        for alarm in Alarm.objects.select_for_update(of=("self",))
+        .filter(tap_id__in=wanted, kind=AlarmKind.UNTRUSTED, returned_at=None, is_withdrawn=False)
+        .order_by("pk")
+    }
     now = at_of(now_us)
     raised = [_new_alarm(one, now) for one in wanted.values() if one.is_open and one.is_current and one.tap.pk not in open_alarms]
     returned = [alarm for tap_id, alarm in open_alarms.items() if not wanted[tap_id].is_open]
@@ -45,5 +49,12 @@ def settle_untrusted(findings: Iterable[UntrustedFinding], now_us: int) -> list[
 
 
 def _new_alarm(finding: UntrustedFinding, now: datetime) -> Alarm:
-    return Alarm(kind=AlarmKind.UNTRUSTED, experiment_id=finding.experiment_id, tap_id=finding.tap.pk, level=AlarmLevel.ALARM, raised_at=now,
-                 cause="; ".join(finding.reasons)[:100], message=untrusted_sentence(finding.tap.full_name, finding.reasons))
+    return Alarm(
+        kind=AlarmKind.UNTRUSTED,
+        experiment_id=finding.experiment_id,
+        tap_id=finding.tap.pk,
+        level=AlarmLevel.ALARM,
+        raised_at=now,
+        cause="; ".join(finding.reasons)[:100],
+        message=untrusted_sentence(finding.tap.full_name, finding.reasons),
+    )

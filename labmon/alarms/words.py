@@ -5,8 +5,12 @@ import math
 from analysis.judge.margin import margin_of
 from analysis.judge.rule import Quantity
 
-_SAID = {Quantity.ER_DB: "extinction ratio", Quantity.ANGLE_DEG: "angle from the wanted state", Quantity.DOP: "degree of polarization",
-         Quantity.POWER_W: "power"}
+_SAID = {
+    Quantity.ER_DB: "extinction ratio",
+    Quantity.ANGLE_DEG: "angle from the wanted state",
+    Quantity.DOP: "degree of polarization",
+    Quantity.POWER_W: "power",
+}
 _WATTS = ((1.0, "W"), (1e-3, "mW"), (1e-6, "µW"), (1e-9, "nW"), (1e-12, "pW"))
 
 
@@ -39,7 +43,8 @@ def limit_sentence(tap_name: str, quantity: str, level: str, value: float | None
     named = Quantity(quantity)
     side = "above" if named.is_bad_above else "below"
     beyond = beyond_text(named, value, limit)
-    return f"{tap_name}: {_SAID[named]} {value_text(quantity, value)} is {side} its {level} limit {value_text(quantity, limit)}{beyond}"
+    said = f"{_SAID[named]} {value_text(quantity, value)} is {side} its {level} limit {value_text(quantity, limit)}"
+    return f"{tap_name}: {said}{beyond}"
 
 
 def beyond_text(quantity: Quantity, value: float | None, limit: float) -> str:
@@ -47,8 +52,11 @@ def beyond_text(quantity: Quantity, value: float | None, limit: float) -> str:
     if value is None:
         return ""
     margin = margin_of(quantity, value, limit)
-    parts = [f"{-float(amount):.1f}{unit}" for amount, unit in ((margin.margin_db, " dB"), (margin.margin_deg, "°"))
-             if math.isfinite(amount) and amount < 0]
+    parts = [
+        f"{-float(amount):.1f}{unit}"
+        for amount, unit in ((margin.margin_db, " dB"), (margin.margin_deg, "°"))
+        if math.isfinite(amount) and amount < 0
+    ]
     if not parts:
         return ""
     return f" by {parts[0]}" + (f" ({parts[1]})" if len(parts) > 1 else "")

@@ -10,8 +10,9 @@ from labmon.audit.models import AuditEntry
 from labmon.people.models import Person
 
 
-def note(person: Person | None, action: str, subject: Model | str, before: Any = None, after: Any = None,
-         reason: str = "") -> AuditEntry:
+def note(
+    person: Person | None, action: str, subject: Model | str, before: Any = None, after: Any = None, reason: str = ""
+) -> AuditEntry:
     """Write who did what to what. ``person`` is None for a command run at the machine itself.
 
     Raises:
@@ -19,9 +20,15 @@ def note(person: Person | None, action: str, subject: Model | str, before: Any =
     """
     if not transaction.get_connection().in_atomic_block:
         raise RuntimeError("note() must run in the transaction of the write it tells of")
-    return AuditEntry.objects.create(person=person, person_name=person.username if person else "command line", action=action,
-                                     subject=subject if isinstance(subject, str) else name_of(subject),
-                                     before=plain(before), after=plain(after), reason=reason)
+    return AuditEntry.objects.create(
+        person=person,
+        person_name=person.username if person else "command line",
+        action=action,
+        subject=subject if isinstance(subject, str) else name_of(subject),
+        before=plain(before),
+        after=plain(after),
+        reason=reason,
+    )
 
 
 def name_of(subject: Model) -> str:

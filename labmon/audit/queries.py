@@ -31,5 +31,11 @@ def _readable_by(person: Person) -> Q:
     experiments = Experiment.objects.filter(owner=person).values_list("pk", flat=True)
     limits = Limit.objects.filter(Q(experiment__owner=person) | Q(tap__station__bench__owner=person)).values_list("pk", flat=True)
     stations = {station for station, _ in taps} | set(person.benches.values_list("station__name", flat=True))
-    return Q(subject__in=[*(f"tap/{station}/{tap}" for station, tap in taps), *(f"station/{one}" for one in stations),
-                          *(f"experiment/{one}" for one in experiments), *(f"limit/{one}" for one in limits)])
+    return Q(
+        subject__in=[
+            *(f"tap/{station}/{tap}" for station, tap in taps),
+            *(f"station/{one}" for one in stations),
+            *(f"experiment/{one}" for one in experiments),
+            *(f"limit/{one}" for one in limits),
+        ]
+    )

@@ -18,8 +18,15 @@ TapWish = NewTap
 
 
 @transaction.atomic
-def add_bench(name: str, *, taps: Sequence[NewTap] = (), room: str = "", owner: Person | None = None, purpose: str = "",
-              by: Person | None = None) -> tuple[Station, str]:
+def add_bench(
+    name: str,
+    *,
+    taps: Sequence[NewTap] = (),
+    room: str = "",
+    owner: Person | None = None,
+    purpose: str = "",
+    by: Person | None = None,
+) -> tuple[Station, str]:
     """A station with its taps and first key; the key is given here and never again.
 
     Raises:
@@ -30,8 +37,16 @@ def add_bench(name: str, *, taps: Sequence[NewTap] = (), room: str = "", owner: 
     except StationFault as fault:
         raise WriteError("name", str(fault), "Choose another.") from fault
     Bench.objects.create(station=station, owner=owner, purpose=purpose)
-    note(by, "add station", station, after={"room": room, "owner": owner.username if owner else None,
-                                            "taps": [{"name": tap.name, "kind": str(tap.kind), "unit": str(tap.unit)} for tap in taps]})
+    note(
+        by,
+        "add station",
+        station,
+        after={
+            "room": room,
+            "owner": owner.username if owner else None,
+            "taps": [{"name": tap.name, "kind": str(tap.kind), "unit": str(tap.unit)} for tap in taps],
+        },
+    )
     note(by, "make station key", station, after={"key": station.keys.get().pk, "hint": station.keys.get().hint})
     publish({"kind": "stations", "ids": [station.pk]})
     return station, key

@@ -15,7 +15,9 @@ from labmon.people.models import Person
 
 
 @transaction.atomic
-def set_calibration(tap: Tap, valid_from: datetime, changes: dict[str, Any], *, by: Person | None, reason: str = "") -> Calibration:
+def set_calibration(
+    tap: Tap, valid_from: datetime, changes: dict[str, Any], *, by: Person | None, reason: str = ""
+) -> Calibration:
     """A new version that holds from ``valid_from``; fields left out stay as they were then.
 
     Raises:

@@ -33,8 +33,10 @@ def courses_of(quantities: Mapping[int, str], now_us: int) -> dict[int, Course]:
     ids = list(quantities)
     curves = {tap_id: np.full(HOURS, np.nan) for tap_id in ids}
     with connection.cursor() as cursor:
-        cursor.execute("SELECT tap_id, body FROM analysis_rollupday WHERE tap_id = ANY(%s) AND level_s = %s AND day_us > %s",
-                       [ids, HOUR_S, start_us - _DAY_US])
+        cursor.execute(
+            "SELECT tap_id, body FROM analysis_rollupday WHERE tap_id = ANY(%s) AND level_s = %s AND day_us > %s",
+            [ids, HOUR_S, start_us - _DAY_US],
+        )
         for tap_id, body in cursor.fetchall():
             bucket_us, columns = columns_from(body, mean_names(quantities[tap_id]))
             _fill(curves[tap_id], bucket_us, means_of_cells(quantities[tap_id], columns), start_us)
@@ -44,8 +46,12 @@ def courses_of(quantities: Mapping[int, str], now_us: int) -> dict[int, Course]:
         quantity = quantities[tap_id]
         columns = {name: rows.values[name][begin:end] for name in mean_names(quantity)}
         _fill(curves[tap_id], rows.bucket_us[begin:end], means_of_cells(quantity, columns), start_us)
-    return {tap_id: Course(quantities[tap_id], start_us, float(HOUR_S), [None if np.isnan(value) else value for value in curve.tolist()])
-            for tap_id, curve in curves.items()}
+    return {
+        tap_id: Course(
+            quantities[tap_id], start_us, float(HOUR_S), [None if np.isnan(value) else value for value in curve.tolist()]
+        )
+        for tap_id, curve in curves.items()
+    }
 
 
 def _fill(curve: np.ndarray, bucket_us: np.ndarray, values: np.ndarray, start_us: int) -> None:

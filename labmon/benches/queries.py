@@ -20,8 +20,19 @@ from ingest.times import SECOND_US, at_of
 from ingest.times import now_us as server_now_us
 from labmon.alarms.models import AlarmState
 from labmon.benches.course import Course, courses_of
-from labmon.benches.show import (DEFAULT_SILENCE_S, WORST_FIRST, BenchState, NowSample, ShownMargin, Silence, now_sample, shown_margin, silences_of,
-                                 smallest, state_of_tap)
+from labmon.benches.show import (
+    DEFAULT_SILENCE_S,
+    WORST_FIRST,
+    BenchState,
+    NowSample,
+    ShownMargin,
+    Silence,
+    now_sample,
+    shown_margin,
+    silences_of,
+    smallest,
+    state_of_tap,
+)
 from labmon.experiments.models import LimitVersion
 from labmon.experiments.queries import LimitFacts, limits_of
 from labmon.experiments.rules import rule_of
@@ -135,34 +146,65 @@ def bench_rows(person: Person, *, now_us: int | None = None) -> list[BenchRow]:
         by_station.setdefault(tap.station_id, []).append(tap)
     standings = _standings([tap for taps in by_station.values() for tap in taps], clock_us)
     worst = {station_id: _worst([standings[tap.pk] for tap in taps]) for station_id, taps in by_station.items()}
-    courses = courses_of({one.tap.pk: one.margin.quantity if one.margin else _main_quantity(one.tap) for one in worst.values()}, clock_us)
+    courses = courses_of(
+        {one.tap.pk: one.margin.quantity if one.margin else _main_quantity(one.tap) for one in worst.values()}, clock_us
+    )
     alarms = _alarm_counts([station.pk for station in stations])
-    rows = [(worst.get(station.pk), _bench_row(station, by_station.get(station.pk, []), worst.get(station.pk), courses,
-                                               alarms.get(station.pk, (0, 0)), clock_us)) for station in stations]
+    rows = [
+        (
+            worst.get(station.pk),
+            _bench_row(
+                station, by_station.get(station.pk, []), worst.get(station.pk), courses, alarms.get(station.pk, (0, 0)), clock_us
+            ),
+        )
+        for station in stations
+    ]
     rows.sort(key=lambda pair: (*_rank(pair[0]), pair[1].station))
     return [row for _, row in rows]
 
 
-def _bench_row(station: Station, taps: Sequence[Tap], worst: _Standing | None, courses: Mapping[int, Course], alarms: tuple[int, int],
-               now_us: int) -> BenchRow:
+def _bench_row(
+    station: Station,
+    taps: Sequence[Tap],
+    worst: _Standing | None,
+    courses: Mapping[int, Course],
+    alarms: tuple[int, int],
+    now_us: int,
+) -> BenchRow:
     bench = getattr(station, "bench", None)
     sample, margin = (worst.sample, worst.margin) if worst else (None, None)
     heard_us = max((tap.heard.last_arrival_us for tap in taps if hasattr(tap, "heard")), default=None)
     quantity = margin.quantity if margin else (_main_quantity(worst.tap) if worst else None)
     verdict = sample.trust_by_quantity.get(quantity or "", {}) if sample else {}
     return BenchRow(
-        station=station.name, room=station.room.name if station.room else None, purpose=bench.purpose if bench else "",
-        owner=bench.owner.username if bench and bench.owner else None, state=worst.state.value if worst else BenchState.NEVER.value,
-        tap=worst.tap.name if worst else None, kind=worst.tap.kind if worst else None, quantity=quantity,
-        value=sample.value(quantity) if sample and quantity else None, er_db=sample.er_db if sample else None,
-        er_is_lower_bound=bool(sample and sample.is_lower_bound), er_is_upper_bound=bool(sample and sample.is_upper_bound),
-        angle_deg=sample.angle_deg if sample else None, angle_is_upper_bound=bool(sample and sample.angle_is_upper_bound),
-        margin_db=margin.margin_db if margin else None, margin_deg=margin.margin_deg if margin else None,
-        margin_is_bound=bool(margin and margin.is_bound), limit_quantity=margin.quantity if margin else None,
-        limit_alarm=margin.alarm if margin else None, trust=verdict.get("trust", "none"), reasons=list(verdict.get("reasons", [])),
+        station=station.name,
+        room=station.room.name if station.room else None,
+        purpose=bench.purpose if bench else "",
+        owner=bench.owner.username if bench and bench.owner else None,
+        state=worst.state.value if worst else BenchState.NEVER.value,
+        tap=worst.tap.name if worst else None,
+        kind=worst.tap.kind if worst else None,
+        quantity=quantity,
+        value=sample.value(quantity) if sample and quantity else None,
+        er_db=sample.er_db if sample else None,
+        er_is_lower_bound=bool(sample and sample.is_lower_bound),
+        er_is_upper_bound=bool(sample and sample.is_upper_bound),
+        angle_deg=sample.angle_deg if sample else None,
+        angle_is_upper_bound=bool(sample and sample.angle_is_upper_bound),
+        margin_db=margin.margin_db if margin else None,
+        margin_deg=margin.margin_deg if margin else None,
+        margin_is_bound=bool(margin and margin.is_bound),
+        limit_quantity=margin.quantity if margin else None,
+        limit_alarm=margin.alarm if margin else None,
+        trust=verdict.get("trust", "none"),
+        reasons=list(verdict.get("reasons", [])),
         last_heard_at=at_of(heard_us) if heard_us is not None else None,
-        silent_s=None if heard_us is None else max((now_us - heard_us) / 1e6, 0.0), is_silent=bool(worst and worst.silence and worst.silence.is_shown),
-        open_alarms=alarms[0], unacknowledged=alarms[1], sparkline=courses.get(worst.tap.pk) if worst else None)
+        silent_s=None if heard_us is None else max((now_us - heard_us) / 1e6, 0.0),
+        is_silent=bool(worst and worst.silence and worst.silence.is_shown),
+        open_alarms=alarms[0],
+        unacknowledged=alarms[1],
+        sparkline=courses.get(worst.tap.pk) if worst else None,
+    )
 
 
 def station_facts(station: Station, *, now_us: int | None = None) -> StationFacts:
@@ -178,21 +220,40 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
     heard_us = max((tap.heard.last_arrival_us for tap in taps if hasattr(tap, "heard")), default=None)
     bench = getattr(station, "bench", None)
     return StationFacts(
-        station=station, room=station.room.name if station.room else None, owner=bench.owner.username if bench and bench.owner else None,
-        owner_id=bench.owner_id if bench else None, purpose=bench.purpose if bench else "",
+        station=station,
+        room=station.room.name if station.room else None,
+        owner=bench.owner.username if bench and bench.owner else None,
+        owner_id=bench.owner_id if bench else None,
+        purpose=bench.purpose if bench else "",
         taps=[_tap_facts(standings[tap.pk], limits.get(tap.pk, []), in_force.get(tap.pk), clock_us) for tap in taps],
-        keys=list(station.keys.order_by("-made_at")), boots=list(station.boots.order_by("-last_arrival_us")[:10]),
-        last_heard_at=at_of(heard_us) if heard_us is not None else None, set_aside=SetAside.objects.filter(station=station).count())
+        keys=list(station.keys.order_by("-made_at")),
+        boots=list(station.boots.order_by("-last_arrival_us")[:10]),
+        last_heard_at=at_of(heard_us) if heard_us is not None else None,
+        set_aside=SetAside.objects.filter(station=station).count(),
+    )
 
 
 def _tap_facts(standing: _Standing, limits: list[LimitFacts], calibration: Calibration | None, now_us: int) -> TapFacts:
     tap = standing.tap
     heard_us = tap.heard.last_arrival_us if hasattr(tap, "heard") else None
     return TapFacts(
-        id=tap.pk, name=tap.name, kind=tap.kind, unit=tap.unit, interval_s=tap.interval_s, now=standing.sample, limits=limits, margins=standing.margins,
-        margin=standing.margin, state=standing.state.value, last_heard_at=at_of(heard_us) if heard_us is not None else None,
-        silent_s=None if heard_us is None else max((now_us - heard_us) / 1e6, 0.0), is_silent=bool(standing.silence and standing.silence.is_shown),
-        calibration=calibration, unknown_columns=list(tap.unknown_columns), has_stokes=tap.kind == TapKind.STOKES)
+        id=tap.pk,
+        name=tap.name,
+        kind=tap.kind,
+        unit=tap.unit,
+        interval_s=tap.interval_s,
+        now=standing.sample,
+        limits=limits,
+        margins=standing.margins,
+        margin=standing.margin,
+        state=standing.state.value,
+        last_heard_at=at_of(heard_us) if heard_us is not None else None,
+        silent_s=None if heard_us is None else max((now_us - heard_us) / 1e6, 0.0),
+        is_silent=bool(standing.silence and standing.silence.is_shown),
+        calibration=calibration,
+        unknown_columns=list(tap.unknown_columns),
+        has_stokes=tap.kind == TapKind.STOKES,
+    )
 
 
 def now_of(tap: Tap, *, now_us: int | None = None) -> NowSample | None:
@@ -230,15 +291,23 @@ def _known(taps: Sequence[Tap], now_us: int) -> _Known:
 
 def _now_rows(tap_ids: Sequence[int]) -> dict[int, tuple[int, dict[str, Any], TapState]]:
     with connection.cursor() as cursor:
-        cursor.execute("SELECT tap_id, at_us, sample::text, trust_state::text FROM analysis_tapnow WHERE tap_id = ANY(%s)", [list(tap_ids)])
-        return {tap_id: (at_us, msgspec.json.decode(sample), TapState.from_json(msgspec.json.decode(state)))
-                for tap_id, at_us, sample, state in cursor.fetchall()}
+        cursor.execute(
+            "SELECT tap_id, at_us, sample::text, trust_state::text FROM analysis_tapnow WHERE tap_id = ANY(%s)", [list(tap_ids)]
+        )
+        return {
+            tap_id: (at_us, msgspec.json.decode(sample), TapState.from_json(msgspec.json.decode(state)))
+            for tap_id, at_us, sample, state in cursor.fetchall()
+        }
 
 
 def rules_now(tap_ids: Sequence[int]) -> dict[int, list[tuple[int, LimitRule]]]:
     """Per tap the limits in force now: (limit id, rule)."""
-    versions = (LimitVersion.objects.filter(limit__tap_id__in=list(tap_ids), valid_from__lte=timezone.now()).select_related("limit")
-                .order_by("limit_id", "-number").distinct("limit_id"))
+    versions = (
+        LimitVersion.objects.filter(limit__tap_id__in=list(tap_ids), valid_from__lte=timezone.now())
+        .select_related("limit")
+        .order_by("limit_id", "-number")
+        .distinct("limit_id")
+    )
     found: dict[int, list[tuple[int, LimitRule]]] = {}
     for version in versions:
         if not version.is_retired:
@@ -249,10 +318,13 @@ def rules_now(tap_ids: Sequence[int]) -> dict[int, list[tuple[int, LimitRule]]]:
 def call_after_s(tap_ids: Sequence[int]) -> dict[int, float]:
     """Per watched tap the silence after which someone is called: the shortest of its experiments, s."""
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT link.tap_id, min(coalesce(experiment.no_reading_after_s, %s))
             FROM labmon_experiment_taps link JOIN labmon_experiment experiment ON experiment.id = link.experiment_id
-            WHERE link.tap_id = ANY(%s) GROUP BY link.tap_id""", [DEFAULT_SILENCE_S, list(tap_ids)])
+            WHERE link.tap_id = ANY(%s) GROUP BY link.tap_id""",
+            [DEFAULT_SILENCE_S, list(tap_ids)],
+        )
         return dict(cursor.fetchall())
 
 
@@ -274,10 +346,14 @@ def _alarm_counts(station_ids: Sequence[int]) -> dict[int, tuple[int, int]]:
     """Per station open alarms, and alarms that nobody has acknowledged."""
     waiting = [AlarmState.UNACKNOWLEDGED.value, AlarmState.RETURNED_UNACKNOWLEDGED.value]
     with connection.cursor() as cursor:
-        cursor.execute("""
-            SELECT tap.station_id, count(*) FILTER (WHERE alarm.returned_at IS NULL AND NOT alarm.is_withdrawn), count(*) FILTER (WHERE alarm.state = ANY(%s))
+        cursor.execute(
+            """
+            SELECT tap.station_id, count(*) FILTER (WHERE alarm.returned_at IS NULL AND NOT alarm.is_withdrawn),
+                count(*) FILTER (WHERE alarm.state = ANY(%s))
             FROM labmon_alarm alarm JOIN ingest_tap tap ON tap.id = alarm.tap_id
-            WHERE alarm.state <> 'normal' AND tap.station_id = ANY(%s) GROUP BY tap.station_id""", [waiting, list(station_ids)])
+            WHERE alarm.state <> 'normal' AND tap.station_id = ANY(%s) GROUP BY tap.station_id""",
+            [waiting, list(station_ids)],
+        )
         return {station_id: (is_open, unacknowledged) for station_id, is_open, unacknowledged in cursor.fetchall()}
 
 
@@ -294,5 +370,11 @@ def _rank(standing: _Standing | None) -> tuple[int, float]:
     if standing is None:
         return len(WORST_FIRST), float("inf")
     margin = standing.margin
-    nearness = margin.margin_deg if margin and margin.margin_deg is not None else margin.margin_db if margin and margin.margin_db is not None else None
+    nearness = (
+        margin.margin_deg
+        if margin and margin.margin_deg is not None
+        else margin.margin_db
+        if margin and margin.margin_db is not None
+        else None
+    )
     return WORST_FIRST.index(standing.state), float("inf") if nearness is None else nearness

@@ -70,16 +70,38 @@ class NowSample:
         return {"er_db": self.is_lower_bound, "angle_deg": self.angle_is_upper_bound}.get(quantity, False)
 
 
-_FIELDS = ("er_db", "er_sigma_db", "is_lower_bound", "is_upper_bound", "angle_deg", "angle_is_upper_bound", "angle_is_lower_bound",
-           "polarized_er_db", "dop", "power_w", "azimuth_deg", "ellipticity_deg", "sop", "temperature_c", "humidity_pct", "pressure_hpa",
-           "trust_by_quantity", "last_trusted")
+_FIELDS = (
+    "er_db",
+    "er_sigma_db",
+    "is_lower_bound",
+    "is_upper_bound",
+    "angle_deg",
+    "angle_is_upper_bound",
+    "angle_is_lower_bound",
+    "polarized_er_db",
+    "dop",
+    "power_w",
+    "azimuth_deg",
+    "ellipticity_deg",
+    "sop",
+    "temperature_c",
+    "humidity_pct",
+    "pressure_hpa",
+    "trust_by_quantity",
+    "last_trusted",
+)
 
 
 def now_sample(at_us: int, sample: Mapping[str, Any], now_us: int) -> NowSample:
     """A stored sample (`TapNow.sample`) as the doors take it; ``trust`` is that of ER."""
     er_trust = sample["trust_by_quantity"].get("er_db", {"trust": "none", "reasons": []})
-    return NowSample(taken_at=at_of(at_us), age_s=(now_us - at_us) / 1e6, trust=er_trust["trust"], trust_reasons=er_trust["reasons"],
-                     **{name: sample[name] for name in _FIELDS})
+    return NowSample(
+        taken_at=at_of(at_us),
+        age_s=(now_us - at_us) / 1e6,
+        trust=er_trust["trust"],
+        trust_reasons=er_trust["reasons"],
+        **{name: sample[name] for name in _FIELDS},
+    )
 
 
 @dataclass(frozen=True, slots=True)
@@ -152,7 +174,9 @@ class Silence:
         return f"no reading for {span_text(self.silent_s)}" if self.is_shown else ""
 
 
-def silences_of(taps: Sequence[tuple[Tap, TapState | None, int]], call_after_s: Mapping[int, float], door_up: Any, now_us: int) -> dict[int, Silence]:
+def silences_of(
+    taps: Sequence[tuple[Tap, TapState | None, int]], call_after_s: Mapping[int, float], door_up: Any, now_us: int
+) -> dict[int, Silence]:
     """Silence of taps (tap, state, last arrival µs): counted on the server's clock while a door was up."""
     if not taps:
         return {}
@@ -160,14 +184,18 @@ def silences_of(taps: Sequence[tuple[Tap, TapState | None, int]], call_after_s: 
     usual_s = np.array([usual_arrival_s(tap, state) for tap, state, _ in taps])
     called_s = np.array([call_after_s.get(tap.pk, DEFAULT_SILENCE_S) for tap, _, _ in taps])
     found = presences(last_us, now_us, door_up, usual_s, called_s)
-    return {tap.pk: Silence(max((now_us - last) / 1e6, 0.0), presence is not Presence.PRESENT, presence is Presence.SILENT)
-            for (tap, _, last), presence in zip(taps, found, strict=True)}
+    return {
+        tap.pk: Silence(max((now_us - last) / 1e6, 0.0), presence is not Presence.PRESENT, presence is Presence.SILENT)
+        for (tap, _, last), presence in zip(taps, found, strict=True)
+    }
 
 
 def usual_arrival_s(tap: Tap, state: TapState | None) -> float:
     """Usual time between arrivals, s: a station that sends batches is heard less often than it measures."""
     interval_s = tap.interval_s or (state.interval.interval_s if state else None)
-    return max(cadence_s(np.array(state.arrivals_us if state else (), dtype=np.int64), interval_s) or LEAST_USUAL_S, LEAST_USUAL_S)
+    return max(
+        cadence_s(np.array(state.arrivals_us if state else (), dtype=np.int64), interval_s) or LEAST_USUAL_S, LEAST_USUAL_S
+    )
 
 
 def state_of_tap(margins: Sequence[ShownMargin], sample: NowSample | None, silence: Silence | None) -> BenchState:
@@ -183,10 +211,20 @@ def state_of_tap(margins: Sequence[ShownMargin], sample: NowSample | None, silen
         return BenchState.UNTRUSTED
     if not margins:
         return BenchState.NO_LIMIT
-    if sample is not None and any("undecided" in sample.trust_by_quantity.get(quantity, {}).get("codes", ()) for quantity in watched):
+    if sample is not None and any(
+        "undecided" in sample.trust_by_quantity.get(quantity, {}).get("codes", ()) for quantity in watched
+    ):
         return BenchState.UNDECIDED
     return BenchState.THIN if any(margin.is_thin for margin in margins) else BenchState.IN_SPEC
 
 
-WORST_FIRST = (BenchState.BELOW, BenchState.SILENT, BenchState.UNTRUSTED, BenchState.UNDECIDED, BenchState.THIN, BenchState.IN_SPEC, BenchState.NO_LIMIT,
-               BenchState.NEVER)
+WORST_FIRST = (
+    BenchState.BELOW,
+    BenchState.SILENT,
+    BenchState.UNTRUSTED,
+    BenchState.UNDECIDED,
+    BenchState.THIN,
+    BenchState.IN_SPEC,
+    BenchState.NO_LIMIT,
+    BenchState.NEVER,
+)

@@ -92,26 +92,56 @@ def experiment_rows(person: Person) -> list[ExperimentRow]:
     """Experiments that ``person`` may see, by name; a fixed number of queries."""
     open_ones = Q(alarms__returned_at=None, alarms__is_withdrawn=False)
     waiting = Q(alarms__state__in=[AlarmState.UNACKNOWLEDGED, AlarmState.RETURNED_UNACKNOWLEDGED])
-    rows = (experiments_visible_to(person).select_related("owner").prefetch_related(Prefetch("taps", Tap.objects.select_related("station").order_by("station__name", "name")))
-            .annotate(open_count=Count("alarms", open_ones, distinct=True), waiting_count=Count("alarms", waiting, distinct=True),
-                      limit_count=Count("limits", distinct=True)).order_by("name"))
-    return [ExperimentRow(row.pk, row.name, row.owner.username if row.owner else None, [f"{tap.station.name}/{tap.name}" for tap in row.taps.all()],
-                          row.limit_count, row.open_count, row.waiting_count) for row in rows]
+    rows = (
+        experiments_visible_to(person)
+        .select_related("owner")
+        .prefetch_related(Prefetch("taps", Tap.objects.select_related("station").order_by("station__name", "name")))
+        .annotate(
+            open_count=Count("alarms", open_ones, distinct=True),
+            waiting_count=Count("alarms", waiting, distinct=True),
+            limit_count=Count("limits", distinct=True),
+        )
+        .order_by("name")
+    )
+    return [
+        ExperimentRow(
+            row.pk,
+            row.name,
+            row.owner.username if row.owner else None,
+            [f"{tap.station.name}/{tap.name}" for tap in row.taps.all()],
+            row.limit_count,
+            row.open_count,
+            row.waiting_count,
+        )
+        for row in rows
+    ]
 
 
 def experiment_facts(experiment: Experiment) -> ExperimentFacts:
     """An experiment with its taps and limits."""
     taps = list(experiment.taps.select_related("station").order_by("station__name", "name"))
-    return ExperimentFacts(experiment.pk, experiment.name, experiment.owner.username if experiment.owner else None, experiment.owner_id, taps,
-                           experiment.no_reading_after_s, experiment.untrusted_after_s, experiment.created_at,
-                           limits_of(Q(experiment=experiment), are_retired_shown=True))
+    return ExperimentFacts(
+        experiment.pk,
+        experiment.name,
+        experiment.owner.username if experiment.owner else None,
+        experiment.owner_id,
+        taps,
+        experiment.no_reading_after_s,
+        experiment.untrusted_after_s,
+        experiment.created_at,
+        limits_of(Q(experiment=experiment), are_retired_shown=True),
+    )
 
 
 def limits_of(which: Q, *, are_retired_shown: bool = False) -> list[LimitFacts]:
     """Limits that match, by tap and quantity; three queries however many."""
     versions = Prefetch("versions", LimitVersion.objects.select_related("set_by").order_by("-number"))
-    limits = (Limit.objects.filter(which).select_related("experiment", "tap__station").prefetch_related(versions)
-              .order_by("tap__station__name", "tap__name", "quantity", "pk"))
+    limits = (
+        Limit.objects.filter(which)
+        .select_related("experiment", "tap__station")
+        .prefetch_related(versions)
+        .order_by("tap__station__name", "tap__name", "quantity", "pk")
+    )
     rows = [limit for limit in limits if limit.versions.all()]
     if not are_retired_shown:
         rows = [limit for limit in rows if not limit.versions.all()[0].is_retired]
@@ -140,13 +170,40 @@ def _facts(limit: Limit, without_state: set[int]) -> LimitFacts:
     warning_db, warning_deg = (None, None) if newest.warning is None else limit_side_by_side(quantity, newest.warning)
     needs_state = limit.tap_id in without_state and quantity in (Quantity.ER_DB, Quantity.ANGLE_DEG)
     return LimitFacts(
-        limit_id=limit.pk, experiment_id=limit.experiment_id, experiment=limit.experiment.name, tap_id=limit.tap_id,
-        tap_name=f"{limit.tap.station.name}/{limit.tap.name}", tap_kind=limit.tap.kind, quantity=limit.quantity, alarm=newest.alarm,
-        warning=newest.warning, alarm_in_db=alarm_db, alarm_in_degrees=alarm_deg, warning_in_db=warning_db, warning_in_degrees=warning_deg,
-        on_delay_s=newest.on_delay_s, off_delay_s=newest.off_delay_s, deadband=newest.deadband, in_runs_only=newest.in_runs_only,
-        is_retired=newest.is_retired, note="Not judged: the tap has no wanted state yet." if needs_state else "", versions=rows)
+        limit_id=limit.pk,
+        experiment_id=limit.experiment_id,
+        experiment=limit.experiment.name,
+        tap_id=limit.tap_id,
+        tap_name=f"{limit.tap.station.name}/{limit.tap.name}",
+        tap_kind=limit.tap.kind,
+        quantity=limit.quantity,
+        alarm=newest.alarm,
+        warning=newest.warning,
+        alarm_in_db=alarm_db,
+        alarm_in_degrees=alarm_deg,
+        warning_in_db=warning_db,
+        warning_in_degrees=warning_deg,
+        on_delay_s=newest.on_delay_s,
+        off_delay_s=newest.off_delay_s,
+        deadband=newest.deadband,
+        in_runs_only=newest.in_runs_only,
+        is_retired=newest.is_retired,
+        note="Not judged: the tap has no wanted state yet." if needs_state else "",
+        versions=rows,
+    )
 
 
 def _version_row(version: LimitVersion) -> VersionRow:
-    return VersionRow(version.number, version.valid_from, version.alarm, version.warning, version.on_delay_s, version.off_delay_s, version.deadband,
-                      version.in_runs_only, version.is_retired, version.set_by.username if version.set_by else None, version.reason)
+    return VersionRow(
+        version.number,
+        version.valid_from,
+        version.alarm,
+        version.warning,
+        version.on_delay_s,
+        version.off_delay_s,
+        version.deadband,
+        version.in_runs_only,
+        version.is_retired,
+        version.set_by.username if version.set_by else None,
+        version.reason,
+    )

@@ -11,7 +11,12 @@ from labmon.experiments.models import LimitVersion
 LONGEST_DELAY_S = 7 * 86_400.0
 _UNITS_WITHOUT_WATTS = frozenset({Unit.VOLT, Unit.COUNT})
 _DEADBAND = {Quantity.ER_DB: 1.0, Quantity.ANGLE_DEG: 1.0, Quantity.DOP: 0.01}
-_RANGES = {Quantity.ER_DB: (-100.0, 100.0), Quantity.ANGLE_DEG: (0.0, 180.0), Quantity.DOP: (0.0, 1.0), Quantity.POWER_W: (0.0, 1e6)}
+_RANGES = {
+    Quantity.ER_DB: (-100.0, 100.0),
+    Quantity.ANGLE_DEG: (0.0, 180.0),
+    Quantity.DOP: (0.0, 1.0),
+    Quantity.POWER_W: (0.0, 1e6),
+}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -28,8 +33,14 @@ class LimitWish:
 
 def rule_of(version: LimitVersion, quantity: str) -> LimitRule:
     """A stored version as the pure fold takes it."""
-    return LimitRule(quantity=Quantity(quantity), alarm=version.alarm, warning=version.warning, on_delay_s=version.on_delay_s,
-                     off_delay_s=version.off_delay_s, deadband=version.deadband)
+    return LimitRule(
+        quantity=Quantity(quantity),
+        alarm=version.alarm,
+        warning=version.warning,
+        on_delay_s=version.on_delay_s,
+        off_delay_s=version.off_delay_s,
+        deadband=version.deadband,
+    )
 
 
 def checked_quantity(quantity: str, tap: Tap) -> Quantity:
@@ -43,10 +54,15 @@ def checked_quantity(quantity: str, tap: Tap) -> Quantity:
     if tap.kind == TapKind.CLIMATE:
         raise WriteError("quantity", "A climate tap measures no light.", "Choose a tap that does.")
     if quantity == Quantity.DOP and tap.kind != TapKind.STOKES:
-        raise WriteError("quantity", "Two ports cannot tell the degree of polarization.", "Set a limit on er_db, or watch a Stokes tap.")
+        raise WriteError(
+            "quantity", "Two ports cannot tell the degree of polarization.", "Set a limit on er_db, or watch a Stokes tap."
+        )
     if quantity == Quantity.POWER_W and tap.unit in _UNITS_WITHOUT_WATTS:
-        raise WriteError("quantity", f"The tap sends {tap.unit}, from which no watts follow.",
-                         "Set a limit on er_db or angle_deg, or let the station send W, mW, uW or dBm.")
+        raise WriteError(
+            "quantity",
+            f"The tap sends {tap.unit}, from which no watts follow.",
+            "Set a limit on er_db or angle_deg, or let the station send W, mW, uW or dBm.",
+        )
     return Quantity(quantity)
 
 
@@ -60,12 +76,21 @@ def checked_wish(quantity: Quantity, wish: LimitWish) -> LimitRule:
     warning = None if wish.warning is None else _level("warning", quantity, wish.warning)
     if warning is not None and (warning >= alarm if quantity.is_bad_above else warning <= alarm):
         side = "below" if quantity.is_bad_above else "above"
-        raise WriteError("warning", f"{warning:g} would never come before the alarm at {alarm:g}.",
-                         f"Choose a warning {side} {alarm:g}, or leave it empty.")
+        raise WriteError(
+            "warning",
+            f"{warning:g} would never come before the alarm at {alarm:g}.",
+            f"Choose a warning {side} {alarm:g}, or leave it empty.",
+        )
     deadband = default_deadband(quantity, alarm) if wish.deadband is None else _not_negative("deadband", wish.deadband)
     _check_can_clear(quantity, alarm if warning is None else warning, deadband)
-    return LimitRule(quantity=quantity, alarm=alarm, warning=warning, on_delay_s=_delay("on_delay_s", wish.on_delay_s),
-                     off_delay_s=_delay("off_delay_s", wish.off_delay_s), deadband=deadband)
+    return LimitRule(
+        quantity=quantity,
+        alarm=alarm,
+        warning=warning,
+        on_delay_s=_delay("on_delay_s", wish.on_delay_s),
+        off_delay_s=_delay("off_delay_s", wish.off_delay_s),
+        deadband=deadband,
+    )
 
 
 def default_deadband(quantity: Quantity, alarm: float) -> float:
@@ -86,7 +111,9 @@ def _level(field: str, quantity: Quantity, value: float) -> float:
     if quantity is Quantity.POWER_W:
         is_inside = 0.0 < number <= high
     if not is_inside:
-        raise WriteError(field, f"{number:g} is no sensible level for {quantity.value}.", f"Choose a level between {low:g} and {high:g}.")
+        raise WriteError(
+            field, f"{number:g} is no sensible level for {quantity.value}.", f"Choose a level between {low:g} and {high:g}."
+        )
     return number
 
 
@@ -108,4 +135,6 @@ def _check_can_clear(quantity: Quantity, level: float, deadband: float) -> None:
     if quantity is Quantity.DOP and level + deadband > 1.0:
         raise WriteError("deadband", f"Clear would need a DOP of {level + deadband:g}.", f"Choose at most {1.0 - level:g}.")
     if quantity is Quantity.ANGLE_DEG and level - deadband <= 0.0:
-        raise WriteError("deadband", f"Clear would need an angle of {level - deadband:g} degrees.", f"Choose less than {level:g}.")
+        raise WriteError(
+            "deadband", f"Clear would need an angle of {level - deadband:g} degrees.", f"Choose less than {level:g}."
+        )

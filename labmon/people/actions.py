@@ -16,8 +16,16 @@ from labmon.people.models import Person, PersonKey, Role
 
 
 @transaction.atomic
-def add_person(name: str, role: str, *, by: Person | None = None, password: str | None = None, email: str = "",
-               guest_until: datetime | None = None, guest_stations: Iterable[Station] = ()) -> Person:
+def add_person(
+    name: str,
+    role: str,
+    *,
+    by: Person | None = None,
+    password: str | None = None,
+    email: str = "",
+    guest_until: datetime | None = None,
+    guest_stations: Iterable[Station] = (),
+) -> Person:
     """A new account. Without password it can be used by key only."""
     person = Person(username=_checked_name(name), role=_checked_role(role), email=_checked_email(email), guest_until=guest_until)
     _set_checked_password(person, password)
@@ -27,8 +35,12 @@ def add_person(name: str, role: str, *, by: Person | None = None, password: str 
     except IntegrityError as fault:
         raise WriteError("name", f"There is already someone called {name}.", "Choose another name.") from fault
     person.guest_stations.set(guest_stations)
-    note(by, "add person", person, after={"role": person.role, "guest_until": guest_until,
-                                          "guest_stations": sorted(one.name for one in guest_stations)})
+    note(
+        by,
+        "add person",
+        person,
+        after={"role": person.role, "guest_until": guest_until, "guest_stations": sorted(one.name for one in guest_stations)},
+    )
     return person
 
 
@@ -75,7 +87,7 @@ def end_access(person: Person, *, by: Person | None, reason: str = "") -> Person
         _keep_a_manager(locked)
     if locked.is_active:
         locked.is_active = False
-        locked.set_unusable_password()          # changes the session hash, so that open sessions end too
+        locked.set_unusable_password()  # changes the session hash, so that open sessions end too
         locked.save(update_fields=["is_active", "password"])
         ended = PersonKey.objects.filter(person=locked, revoked_at=None).update(revoked_at=timezone.now())
         note(by, "end access", locked, {"is_active": True}, {"is_active": False, "keys_ended": ended}, reason)

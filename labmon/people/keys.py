@@ -42,6 +42,9 @@ def revoke_person_key(key_id: int, *, by: Person | None) -> None:
 def person_of_key(key: str) -> Person | None:
     """Whose key this is; None if unknown, revoked, expired, or the person's access is over."""
     now = timezone.now()
-    row = (PersonKey.objects.select_related("person")
-           .filter(Q(expires_at=None) | Q(expires_at__gt=now), digest=digest_of(key), revoked_at=None).first())
+    row = (
+        PersonKey.objects.select_related("person")
+        .filter(Q(expires_at=None) | Q(expires_at__gt=now), digest=digest_of(key), revoked_at=None)
+        .first()
+    )
     return row.person if row and has_access(row.person) else None

@@ -34,8 +34,9 @@ class Action(StrEnum):
 
 _GUEST = frozenset({Action.READ, Action.MAKE_OWN_KEY})
 _RESEARCHER = _GUEST | {Action.ACKNOWLEDGE, Action.SHELVE, Action.LOG, Action.PLAN_RUN}
-_OWNER_OF_IT = frozenset({Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.CALIBRATE, Action.MAKE_STATION_KEY,
-                          Action.IMPORT_FILE, Action.READ_AUDIT})
+_OWNER_OF_IT = frozenset(
+    {Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.CALIBRATE, Action.MAKE_STATION_KEY, Action.IMPORT_FILE, Action.READ_AUDIT}
+)
 
 #: What a role may do to whatever it sees, and what an owner may do besides to what is their own.
 EVERYWHERE = {Role.GUEST: _GUEST, Role.RESEARCHER: _RESEARCHER, Role.OWNER: _RESEARCHER, Role.MANAGER: frozenset(Action)}
@@ -136,5 +137,6 @@ def alarms_visible_to(person: Person) -> QuerySet[Alarm]:
         return Alarm.objects.none()
     if role_of(person) is not Role.GUEST:
         return Alarm.objects.all()
-    return Alarm.objects.filter(Q(experiment=None) | Q(experiment__in=experiments_visible_to(person)),
-                                tap__in=taps_visible_to(person))
+    return Alarm.objects.filter(
+        Q(experiment=None) | Q(experiment__in=experiments_visible_to(person)), tap__in=taps_visible_to(person)
+    )

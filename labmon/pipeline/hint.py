@@ -25,10 +25,10 @@ class Hint:
     def __call__(self) -> None:
         """Called after readings were stored, from one thread only."""
         wait_s = self._next_s - time.monotonic()
-        if wait_s > LEAST_APART_S:          # the broker failed a moment ago: the sweep does it
+        if wait_s > LEAST_APART_S:  # the broker failed a moment ago: the sweep does it
             return
         if wait_s > 0:
-            time.sleep(wait_s)              # what is stored meanwhile is told by this same hint
+            time.sleep(wait_s)  # what is stored meanwhile is told by this same hint
         self._next_s = time.monotonic() + (LEAST_APART_S if self._is_sent() else AFTER_FAILURE_S)
 
     @staticmethod

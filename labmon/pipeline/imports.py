@@ -88,17 +88,25 @@ def forget_old_uploads() -> int:
 
 def ask_worker(import_id: int) -> None:
     """Hint to the worker after commit; without a broker the sweep finds the record."""
+
     def ask() -> None:
         try:
             import_upload_task.delay(import_id)
-        except OperationalError as fault:          # kombu's: the broker is away
+        except OperationalError as fault:  # kombu's: the broker is away
             log.warning("import_hint_failed", extra={"import_id": import_id, "fault": str(fault)})
 
     transaction.on_commit(ask, robust=True)
 
 
-@shared_task(name="labmon.pipeline.import_upload", acks_late=True, ignore_result=True, time_limit=300,
-             autoretry_for=(DatabaseAway, ImportBusy), retry_backoff=5, max_retries=20)
+@shared_task(
+    name="labmon.pipeline.import_upload",
+    acks_late=True,
+    ignore_result=True,
+    time_limit=300,
+    autoretry_for=(DatabaseAway, ImportBusy),
+    retry_backoff=5,
+    max_retries=20,
+)
 def import_upload_task(import_id: int) -> None:
     """Safe to run twice: rows are known by content."""
     import_upload(import_id)

@@ -9,6 +9,7 @@ import numpy as np
 
 from analysis.judge.fold import EventKind, FoldState, is_idle
 from analysis.judge.interval import intervals_s, steadied_s
+from analysis.judge.phases import Episode, Found, Standing, episodes_in, fold_through
 from analysis.judge.rule import Quantity
 from analysis.judge.seconds import Seconds, seconds_of_many
 from analysis.judge.untrusted import UntrustedRule, UntrustedState, fold_untrusted
@@ -17,14 +18,13 @@ from analysis.record.reduce_span import Group, ManyReduced
 from analysis.reduce.trust import Trust, reasons_in
 from ingest.models import TapKind
 from ingest.store.columns import Readings
+from ingest.times import at_of
 from labmon.alarms.models import Alarm, AlarmKind
 from labmon.alarms.settle import Finding
 from labmon.alarms.untrusted import UntrustedFinding
 from labmon.pipeline.newest import newest_samples
-from analysis.judge.phases import Episode, Found, Standing, episodes_in, fold_through
 from labmon.pipeline.progress import Progress
 from labmon.pipeline.work import LimitWork
-from ingest.times import at_of
 
 
 @dataclass(slots=True)
@@ -82,11 +82,19 @@ def _alarms_of(steps: Sequence[Progress]) -> dict[int, list[Alarm]]:
     again = {limit.limit.pk: step for step in steps if step.stretch.is_again for limit in step.work.limits}
     if not forward and not again:
         return {}
-    rows = list(Alarm.objects.select_for_update(of=("self",)).select_related("experiment")
-                .filter(limit_id__in=forward, kind=AlarmKind.LIMIT, returned_at=None, is_withdrawn=False).order_by("pk"))
+    rows = list(
+        Alarm.objects.select_for_update(of=("self",))
+        .select_related("experiment")
+        .filter(limit_id__in=forward, kind=AlarmKind.LIMIT, returned_at=None, is_withdrawn=False)
+        .order_by("pk")
+    )
     if again:
         since = at_of(min(step.stretch.start_us for step in again.values()))
-        past = Alarm.objects.select_for_update(of=("self",)).select_related("experiment").filter(limit_id__in=again, kind=AlarmKind.LIMIT)
+        past = (
+            Alarm.objects.select_for_update(of=("self",))
+            .select_related("experiment")
+            .filter(limit_id__in=again, kind=AlarmKind.LIMIT)
+        )
         rows += [alarm for alarm in past.exclude(returned_at__lt=since).order_by("pk") if _overlaps(alarm, again[alarm.limit_id])]
     found: dict[int, list[Alarm]] = {}
     for alarm in sorted(rows, key=lambda one: (one.is_withdrawn, one.raised_at)):
@@ -127,8 +135,15 @@ def _seconds_of_group(group: Group, members: Sequence[Progress]) -> list[_TapSec
         watched = _watched_quantities(step.work.limits) & doubted.keys()
         is_lost = any(is_any_lost[quantity][number] for quantity in watched)
         untrusted = np.logical_or.reduce([doubted[quantity][span] for quantity in watched]) if is_lost else None
-        found.append(_TapSeconds(own, {quantity: values[number] for quantity, values in worst.items()}, at_us[span],
-                                 _intervals(step, own), untrusted))
+        found.append(
+            _TapSeconds(
+                own,
+                {quantity: values[number] for quantity, values in worst.items()},
+                at_us[span],
+                _intervals(step, own),
+                untrusted,
+            )
+        )
     return found
 
 
@@ -205,8 +220,18 @@ def _calm(step: Progress, limit: LimitWork, own: _TapSeconds, before: Standing) 
 
 
 def _finding(step: Progress, limit: LimitWork, episodes: Sequence[Episode], existing: list[Alarm]) -> Finding:
-    return Finding(limit=limit.limit, tap=step.tap, phases=limit.phases, episodes=episodes, window_us=(step.stretch.start_us, step.stretch.end_us),
-                   is_newest=step.stretch.is_newest, age_us=step.age_us, last_us=step.last_us, current_within_us=step.current_within_us, existing=existing)
+    return Finding(
+        limit=limit.limit,
+        tap=step.tap,
+        phases=limit.phases,
+        episodes=episodes,
+        window_us=(step.stretch.start_us, step.stretch.end_us),
+        is_newest=step.stretch.is_newest,
+        age_us=step.age_us,
+        last_us=step.last_us,
+        current_within_us=step.current_within_us,
+        existing=existing,
+    )
 
 
 def _judge_trust(step: Progress, own: _TapSeconds, group: Group, number: int, judged: Judged) -> None:
@@ -238,7 +263,9 @@ def _folded_trust(own: _TapSeconds, state: UntrustedState, from_us: int, until_u
 def _reasons_now(group: Group, number: int, limits: Sequence[LimitWork]) -> list[str]:
     """Why the newest sample is not trusted, in words."""
     last = int(group.ends[number]) - 1
-    masks = [int(group.samples.reasons[quantity][last]) for quantity in sorted(_watched_quantities(limits)) if group.samples.trust[quantity][last] == Trust.UNTRUSTED]
+    masks = [
+        int(group.samples.reasons[quantity][last])
+        for quantity in sorted(_watched_quantities(limits))
+        if group.samples.trust[quantity][last] == Trust.UNTRUSTED
+    ]
     return [reason.words for reason in reasons_in(int(np.bitwise_or.reduce(masks)))] if masks else []
-
-

@@ -6,13 +6,13 @@ from typing import Any
 
 import numpy as np
 
+from analysis.judge.phases import phase_at
 from analysis.judge.rule import Quantity
 from analysis.quantities import IntArray
 from analysis.record.reduce_span import Group
 from analysis.reduce.sample import Reduced
 from analysis.reduce.trust import QUANTITIES, Reason, Trust, is_usable, reasons_in
 from ingest.times import rfc3339_of
-from analysis.judge.phases import phase_at
 from labmon.pipeline.work import LimitWork, TapWork
 
 _FLOOR, _TRUSTED = int(Reason.FLOOR), int(Trust.TRUSTED)
@@ -38,14 +38,19 @@ def newest_samples(group: Group, works: Sequence[TapWork]) -> list[dict[str, Any
         sample["interval_s"] = work.interval_s
         sample["trust_by_quantity"] = _trusts(newest, number, work.limits, at_us)
         span = (int(group.first[number]), int(group.ends[number]))
-        sample["last_trusted"] = {quantity.value: last for quantity in QUANTITIES
-                                  if (last := _last_trusted(group.samples, quantity, span, sample, work)) is not None}
+        sample["last_trusted"] = {
+            quantity.value: last
+            for quantity in QUANTITIES
+            if (last := _last_trusted(group.samples, quantity, span, sample, work)) is not None
+        }
         samples.append(sample)
     return samples
 
 
 def _columns(newest: Reduced, usable: dict[Quantity, Any]) -> dict[str, list[Any]]:
-    columns: dict[str, list[Any]] = {quantity.value: _finite(np.where(usable[quantity], newest.values(quantity), np.nan)) for quantity in QUANTITIES}
+    columns: dict[str, list[Any]] = {
+        quantity.value: _finite(np.where(usable[quantity], newest.values(quantity), np.nan)) for quantity in QUANTITIES
+    }
     columns |= {name: _finite(getattr(newest, name)) for name in _PLAIN}
     columns |= {name: _finite(np.degrees(getattr(newest, source))) for name, source in _DEGREES}
     columns |= {name: getattr(newest, name).tolist() for name in _FLAGS}
@@ -76,7 +81,11 @@ def _trusts(newest: Reduced, number: int, limits: Sequence[LimitWork], at_us: in
 def _verdict(trust: int, mask: int) -> dict[str, Any]:
     """Trust and reasons in words; made once for each combination, so not to be changed."""
     reasons = reasons_in(mask)
-    return {"trust": Trust(trust).word, "reasons": [reason.words for reason in reasons], "codes": [reason.code for reason in reasons]}
+    return {
+        "trust": Trust(trust).word,
+        "reasons": [reason.words for reason in reasons],
+        "codes": [reason.code for reason in reasons],
+    }
 
 
 def _is_undecided(newest: Reduced, quantity: Quantity, number: int, limits: Sequence[LimitWork], at_us: int) -> bool:

@@ -18,8 +18,8 @@ from ingest.store.read import read_many
 from ingest.times import now_us as server_now_us
 from labmon.alarms.settle import settle
 from labmon.alarms.untrusted import settle_untrusted
-from labmon.live.publish import publish
 from labmon.claims import JUDGING, claim_taps
+from labmon.live.publish import publish
 from labmon.pipeline.judge import Judged, judge
 from labmon.pipeline.progress import Progress, progress_of
 from labmon.pipeline.save import forget_kept, mark_rollups_due, save_now, save_standings, save_tap_checkpoints, settle_touches
@@ -71,8 +71,13 @@ def _process_chunk(now_us: int, is_paced: bool) -> Processed | None:
     stretches = _affordable(plan_stretches(load_work(tap_ids)))
     readings = read_many({one.work.tap.pk: (one.start_us, one.end_us) for one in stretches})
     steps = [progress_of(one, readings[one.work.tap.pk], now_us) for one in stretches]
-    reduced = reduce_many([step.tap for step in steps], readings, knowledge_of(one.work.tap.pk for one in stretches),
-                          {step.tap.pk: step.work.state.flat for step in steps}, {step.tap.pk: (step.cut_us, step.complete_us) for step in steps})
+    reduced = reduce_many(
+        [step.tap for step in steps],
+        readings,
+        knowledge_of(one.work.tap.pk for one in stretches),
+        {step.tap.pk: step.work.state.flat for step in steps},
+        {step.tap.pk: (step.cut_us, step.complete_us) for step in steps},
+    )
     judged = judge(steps, reduced, readings)
     alarm_ids = settle(judged.findings) + settle_untrusted(judged.untrusted, now_us)
     _save(steps, reduced, readings, judged, now_us)
@@ -83,10 +88,14 @@ def _process_chunk(now_us: int, is_paced: bool) -> Processed | None:
 def _candidates(now_us: int, is_paced: bool) -> list[int]:
     """Taps with marks, longest waiting first, and taps whose last second is complete by now."""
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT tap_id, min(arrival_us) FROM (SELECT tap_id, id, arrival_us FROM ingest_touch
-                                                 UNION ALL SELECT tap_id, 0, 0 FROM analysis_tapnow WHERE open_until_us <= %s) AS due
-            WHERE EXISTS (SELECT FROM ingest_tap WHERE id = tap_id) GROUP BY tap_id ORDER BY min(id) LIMIT %s""", [now_us, MOST_CANDIDATES])
+                                                 UNION ALL SELECT tap_id, 0, 0
+                                                     FROM analysis_tapnow WHERE open_until_us <= %s) AS due
+            WHERE EXISTS (SELECT FROM ingest_tap WHERE id = tap_id) GROUP BY tap_id ORDER BY min(id) LIMIT %s""",
+            [now_us, MOST_CANDIDATES],
+        )
         marked = cursor.fetchall()
     waited_since_us = now_us - patience_us(len(marked)) if is_paced else None
     return [tap_id for tap_id, since_us in marked if waited_since_us is None or since_us <= waited_since_us]
@@ -114,11 +123,20 @@ def _affordable(stretches: Sequence[Stretch]) -> list[Stretch]:
 
 def _save(steps: Sequence[Progress], reduced: ManyReduced, readings: dict[int, Readings], judged: Judged, now_us: int) -> None:
     forget_kept([(step.tap.pk, step.stretch.start_us, step.complete_us) for step in steps if step.stretch.is_again])
-    save_now([step.now_row(reduced.flat[step.tap.pk], judged, now_us) for step in steps if len(readings[step.tap.pk]) or step.work.now_us is not None])
+    save_now(
+        [
+            step.now_row(reduced.flat[step.tap.pk], judged, now_us)
+            for step in steps
+            if len(readings[step.tap.pk]) or step.work.now_us is not None
+        ]
+    )
     save_tap_checkpoints([kept for step in steps for kept in step.kept_states(reduced.flat[step.tap.pk])])
     save_standings(judged.newest, judged.kept)
     mark_rollups_due([span for step in steps if (span := step.due_span()) is not None])
-    settle_touches([touch for step in steps for touch in step.work.touched.ids], [rest for step in steps if (rest := step.rest()) is not None])
+    settle_touches(
+        [touch for step in steps for touch in step.work.touched.ids],
+        [rest for step in steps if (rest := step.rest()) is not None],
+    )
 
 
 def _tell(steps: Sequence[Progress], alarm_ids: list[int]) -> None:

@@ -82,8 +82,15 @@ class Progress:
         before = self.work.state
         arrivals = (*before.arrivals_us, *self._new_arrivals())[-CADENCE_COUNT:]
         untrusted, untrusted_upto_us = judged.untrusted_states.get(self.tap.pk, (before.untrusted, before.untrusted_upto_us))
-        state = replace(before, upto_us=self.complete_us, flat=flat[1], interval=self._interval_states[1], arrivals_us=arrivals,
-                        untrusted=untrusted, untrusted_upto_us=untrusted_upto_us)
+        state = replace(
+            before,
+            upto_us=self.complete_us,
+            flat=flat[1],
+            interval=self._interval_states[1],
+            arrivals_us=arrivals,
+            untrusted=untrusted,
+            untrusted_upto_us=untrusted_upto_us,
+        )
         return state.with_snapshot(self.cut_us, flat[0]) if self.cut_us > self.stretch.start_us else state
 
     def _new_arrivals(self) -> list[int]:
@@ -93,7 +100,13 @@ class Progress:
     def now_row(self, flat: list[Any], judged: "Judged", now_us: int) -> NowRow:
         """The tap's row of newest sample and state."""
         is_newer = len(self.readings) > 0 and (self.work.now_us is None or self.last_us >= self.work.now_us)
-        return NowRow(self.tap.pk, self.last_us, judged.newest_samples[self.tap.pk] if is_newer else None, self.state_behind(flat, judged), self._open_until_us(now_us))
+        return NowRow(
+            self.tap.pk,
+            self.last_us,
+            judged.newest_samples[self.tap.pk] if is_newer else None,
+            self.state_behind(flat, judged),
+            self._open_until_us(now_us),
+        )
 
     def _open_until_us(self, now_us: int) -> int | None:
         """When the last second will count as complete; None if it does."""
@@ -107,8 +120,20 @@ class Progress:
         if self.work.begins_anew and len(self.readings):
             kept.append((self.tap.pk, self.stretch.start_us, TapState(upto_us=self.stretch.start_us)))
         if self.keeps_cut:
-            kept.append((self.tap.pk, self.cut_us, replace(self.work.state, upto_us=self.cut_us, flat=flat[0], interval=self._interval_states[0],
-                                                           arrivals_us=(), snapshots=())))
+            kept.append(
+                (
+                    self.tap.pk,
+                    self.cut_us,
+                    replace(
+                        self.work.state,
+                        upto_us=self.cut_us,
+                        flat=flat[0],
+                        interval=self._interval_states[0],
+                        arrivals_us=(),
+                        snapshots=(),
+                    ),
+                )
+            )
         return kept
 
     @property

@@ -19,10 +19,16 @@ def prune_checkpoints(now_us: int | None = None) -> int:
     dropped = 0
     with connection.cursor() as cursor:
         for older_us, every_us in STEPS:
-            cursor.execute("""
+            cursor.execute(
+                """
                 DELETE FROM analysis_tapcheckpoint point WHERE at_us < %s AND at_us %% %s <> 0
-                AND at_us <> (SELECT min(at_us) FROM analysis_tapcheckpoint WHERE tap_id = point.tap_id)""", [clock_us - older_us, every_us])
+                AND at_us <> (SELECT min(at_us) FROM analysis_tapcheckpoint WHERE tap_id = point.tap_id)""",
+                [clock_us - older_us, every_us],
+            )
             dropped += cursor.rowcount
-            cursor.execute("DELETE FROM labmon_foldcheckpoint WHERE NOT is_newest AND at_us < %s AND at_us %% %s <> 0", [clock_us - older_us, every_us])
+            cursor.execute(
+                "DELETE FROM labmon_foldcheckpoint WHERE NOT is_newest AND at_us < %s AND at_us %% %s <> 0",
+                [clock_us - older_us, every_us],
+            )
             dropped += cursor.rowcount
     return dropped

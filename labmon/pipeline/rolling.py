@@ -64,7 +64,11 @@ def _fine_chunk(now_us: int) -> int:
         if piece.last_us < due.span.last_us:
             rests.append((due.tap.pk, FINE_S, piece.last_us + 1, due.span.last_us))
     roll_up([due.tap for due in chosen], pieces, now_us)
-    hours = [(span.tap_id, HOUR_S, span.first_us, span.last_us) for span in pieces.values() if not is_closed(span.first_us // DAY_US * DAY_US, now_us)]
+    hours = [
+        (span.tap_id, HOUR_S, span.first_us, span.last_us)
+        for span in pieces.values()
+        if not is_closed(span.first_us // DAY_US * DAY_US, now_us)
+    ]
     _replace([one for due in chosen for one in due.ids], rests + hours)
     return len(chosen)
 
@@ -80,18 +84,26 @@ def _coarse_chunk() -> int:
 def _piece(span: Span, now_us: int) -> Span:
     """As much of a span as is made in one go: within a closed day, or within the open days."""
     day_us = span.first_us // DAY_US * DAY_US
-    end_us = min(span.last_us, day_us + DAY_US - 1) if is_closed(day_us, now_us) else min(span.last_us, span.first_us + LONGEST_US - 1)
+    end_us = (
+        min(span.last_us, day_us + DAY_US - 1) if is_closed(day_us, now_us) else min(span.last_us, span.first_us + LONGEST_US - 1)
+    )
     return Span(span.tap_id, span.first_us, end_us)
 
 
 def _claimed(level_s: int) -> list[_Due]:
     """Due spans of taps nobody else rolls up, each tap's marks as one span."""
     with connection.cursor() as cursor:
-        cursor.execute("""SELECT tap_id FROM analysis_rollupdue WHERE level_s = %s AND EXISTS (SELECT FROM ingest_tap WHERE id = tap_id)
-                          GROUP BY tap_id ORDER BY min(id) LIMIT %s""", [level_s, 4 * CHUNK_TAPS])
+        cursor.execute(
+            """SELECT tap_id FROM analysis_rollupdue WHERE level_s = %s AND EXISTS (SELECT FROM ingest_tap WHERE id = tap_id)
+                          GROUP BY tap_id ORDER BY min(id) LIMIT %s""",
+            [level_s, 4 * CHUNK_TAPS],
+        )
         tap_ids = claim_taps(ROLLING, [row[0] for row in cursor.fetchall()], CHUNK_TAPS)
-        cursor.execute("""SELECT tap_id, array_agg(id), array_agg(first_at_us), array_agg(last_at_us) FROM analysis_rollupdue
-                          WHERE level_s = %s AND tap_id = ANY(%s) GROUP BY tap_id ORDER BY tap_id""", [level_s, tap_ids])
+        cursor.execute(
+            """SELECT tap_id, array_agg(id), array_agg(first_at_us), array_agg(last_at_us) FROM analysis_rollupdue
+                          WHERE level_s = %s AND tap_id = ANY(%s) GROUP BY tap_id ORDER BY tap_id""",
+            [level_s, tap_ids],
+        )
         rows = cursor.fetchall()
     taps = {tap.pk: tap for tap in Tap.objects.filter(pk__in=[row[0] for row in rows])}
     return [_Due(taps[tap_id], *_first_run(tap_id, ids, firsts, lasts)) for tap_id, ids, firsts, lasts in rows if tap_id in taps]
@@ -114,17 +126,21 @@ def _replace(done: Sequence[int], rests: Sequence[tuple[int, int, int, int]]) ->
         if done:
             cursor.execute("DELETE FROM analysis_rollupdue WHERE id = ANY(%s)", [list(done)])
         if rests:
-            cursor.execute("""INSERT INTO analysis_rollupdue (tap_id, level_s, first_at_us, last_at_us)
+            cursor.execute(
+                """INSERT INTO analysis_rollupdue (tap_id, level_s, first_at_us, last_at_us)
                               SELECT * FROM unnest(%s::bigint[], %s::int[], %s::bigint[], %s::bigint[])""",
-                           [list(column) for column in zip(*rests, strict=True)])
+                [list(column) for column in zip(*rests, strict=True)],
+            )
 
 
 def compact_closed_days(now_us: int | None = None, most: int = 2_000) -> int:
     """Put rows of closed days into one buffer a tap, level and day; returns how many tap-days were done."""
     clock_us = server_now_us() if now_us is None else now_us
     with connection.cursor() as cursor:
-        cursor.execute("""SELECT DISTINCT tap_id, bucket_us / %s * %s FROM analysis_rolluprow WHERE bucket_us < %s ORDER BY 2 LIMIT %s""",
-                       [DAY_US, DAY_US, clock_us // DAY_US * DAY_US, most])
+        cursor.execute(
+            """SELECT DISTINCT tap_id, bucket_us / %s * %s FROM analysis_rolluprow WHERE bucket_us < %s ORDER BY 2 LIMIT %s""",
+            [DAY_US, DAY_US, clock_us // DAY_US * DAY_US, most],
+        )
         waiting = cursor.fetchall()
     return sum(_compact(tap_id, day_us) for tap_id, day_us in waiting if is_closed(day_us, clock_us))
 

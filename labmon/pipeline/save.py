@@ -7,8 +7,8 @@ from typing import Any
 import msgspec
 from django.db import connection
 
-from analysis.record.tap_state import TapState
 from analysis.judge.phases import Standing
+from analysis.record.tap_state import TapState
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,51 +33,79 @@ def save_now(rows: Sequence[NowRow]) -> None:
     others = [row for row in rows if row.sample is None]
     with connection.cursor() as cursor:
         if with_sample:
-            cursor.execute("""
+            cursor.execute(
+                """
                 INSERT INTO analysis_tapnow (tap_id, at_us, sample, trust_state, open_until_us)
                 SELECT tap, at_us, sample, state, open_until FROM json_to_recordset(%s::json)
                     AS t(tap bigint, at_us bigint, sample jsonb, state jsonb, open_until bigint)
-                ON CONFLICT (tap_id) DO UPDATE SET at_us = excluded.at_us, sample = excluded.sample, trust_state = excluded.trust_state,
+                ON CONFLICT (tap_id) DO UPDATE SET at_us = excluded.at_us, sample = excluded.sample,
+                    trust_state = excluded.trust_state,
                     open_until_us = excluded.open_until_us""",
-                [text_of([{"tap": row.tap_id, "at_us": row.at_us, "sample": row.sample, "state": row.state.as_json(),
-                           "open_until": row.open_until_us} for row in with_sample])])
+                [
+                    text_of(
+                        [
+                            {
+                                "tap": row.tap_id,
+                                "at_us": row.at_us,
+                                "sample": row.sample,
+                                "state": row.state.as_json(),
+                                "open_until": row.open_until_us,
+                            }
+                            for row in with_sample
+                        ]
+                    )
+                ],
+            )
         if others:
-            cursor.execute("""
+            cursor.execute(
+                """
                 UPDATE analysis_tapnow SET trust_state = state, open_until_us = open_until
                 FROM json_to_recordset(%s::json) AS t(tap bigint, state jsonb, open_until bigint) WHERE tap_id = tap""",
-                [text_of([{"tap": row.tap_id, "state": row.state.as_json(), "open_until": row.open_until_us} for row in others])])
+                [text_of([{"tap": row.tap_id, "state": row.state.as_json(), "open_until": row.open_until_us} for row in others])],
+            )
 
 
 def save_tap_checkpoints(rows: Sequence[tuple[int, int, TapState]]) -> None:
     """Kept states of taps (tap id, at µs, state)."""
     if rows:
         with connection.cursor() as cursor:
-            cursor.execute("""
+            cursor.execute(
+                """
                 INSERT INTO analysis_tapcheckpoint (tap_id, at_us, state)
                 SELECT tap, at_us, state FROM json_to_recordset(%s::json) AS t(tap bigint, at_us bigint, state jsonb)
                 ON CONFLICT (tap_id, at_us) DO UPDATE SET state = excluded.state""",
-                [text_of([{"tap": tap_id, "at_us": at_us, "state": state.as_json()} for tap_id, at_us, state in rows])])
+                [text_of([{"tap": tap_id, "at_us": at_us, "state": state.as_json()} for tap_id, at_us, state in rows])],
+            )
 
 
 def save_standings(newest: Sequence[tuple[int, Standing]], kept: Sequence[Standing]) -> None:
     """The newest checkpoint of each limit (limit id, standing), and those to keep."""
     with connection.cursor() as cursor:
         if newest:
-            cursor.execute("""
+            cursor.execute(
+                """
                 DELETE FROM labmon_foldcheckpoint point USING labmon_limitversion version
-                WHERE point.is_newest AND version.id = point.version_id AND version.limit_id = ANY(%s) AND NOT version.id = ANY(%s)""",
-                [[limit_id for limit_id, _ in newest], [one.version_id for _, one in newest]])
-            cursor.execute("""
+                WHERE point.is_newest AND version.id = point.version_id AND version.limit_id = ANY(%s)
+                    AND NOT version.id = ANY(%s)""",
+                [[limit_id for limit_id, _ in newest], [one.version_id for _, one in newest]],
+            )
+            cursor.execute(
+                """
                 INSERT INTO labmon_foldcheckpoint (version_id, at_us, state, is_newest)
-                SELECT version, at_us, state, true FROM json_to_recordset(%s::json) AS t(version bigint, at_us bigint, state jsonb)
+                SELECT version, at_us, state, true
+                    FROM json_to_recordset(%s::json) AS t(version bigint, at_us bigint, state jsonb)
                 ON CONFLICT (version_id) WHERE is_newest DO UPDATE SET at_us = excluded.at_us, state = excluded.state""",
-                [_as_records([one for _, one in newest])])
+                [_as_records([one for _, one in newest])],
+            )
         if kept:
-            cursor.execute("""
+            cursor.execute(
+                """
                 INSERT INTO labmon_foldcheckpoint (version_id, at_us, state, is_newest)
-                SELECT version, at_us, state, false FROM json_to_recordset(%s::json) AS t(version bigint, at_us bigint, state jsonb)
+                SELECT version, at_us, state, false
+                    FROM json_to_recordset(%s::json) AS t(version bigint, at_us bigint, state jsonb)
                 ON CONFLICT (version_id, at_us, is_newest) DO UPDATE SET state = excluded.state""",
-                [_as_records(kept)])
+                [_as_records(kept)],
+            )
 
 
 def _as_records(standings: Sequence[Standing]) -> str:
@@ -90,24 +118,35 @@ def forget_kept(spans: Sequence[tuple[int, int, int]]) -> None:
         return
     columns = [list(column) for column in zip(*spans, strict=True)]
     with connection.cursor() as cursor:
-        cursor.execute("""
-            DELETE FROM analysis_tapcheckpoint point USING unnest(%s::bigint[], %s::bigint[], %s::bigint[]) AS t(tap, from_us, until_us)
-            WHERE point.tap_id = tap AND point.at_us > from_us AND point.at_us <= until_us""", columns)
-        cursor.execute("""
+        cursor.execute(
+            """
+            DELETE FROM analysis_tapcheckpoint point
+                USING unnest(%s::bigint[], %s::bigint[], %s::bigint[]) AS t(tap, from_us, until_us)
+            WHERE point.tap_id = tap AND point.at_us > from_us AND point.at_us <= until_us""",
+            columns,
+        )
+        cursor.execute(
+            """
             DELETE FROM labmon_foldcheckpoint point
-            USING labmon_limitversion version, labmon_limit lim, unnest(%s::bigint[], %s::bigint[], %s::bigint[]) AS t(tap, from_us, until_us)
+            USING labmon_limitversion version, labmon_limit lim,
+                unnest(%s::bigint[], %s::bigint[], %s::bigint[]) AS t(tap, from_us, until_us)
             WHERE point.version_id = version.id AND version.limit_id = lim.id AND lim.tap_id = tap AND NOT point.is_newest
-                AND point.at_us > from_us AND point.at_us <= until_us""", columns)
+                AND point.at_us > from_us AND point.at_us <= until_us""",
+            columns,
+        )
 
 
 def mark_rollups_due(spans: Sequence[tuple[int, int, int]]) -> None:
     """Rollups of spans (tap id, first, last µs) are to be made anew."""
     if spans:
         with connection.cursor() as cursor:
-            cursor.execute("""
+            cursor.execute(
+                """
                 INSERT INTO analysis_rollupdue (tap_id, level_s, first_at_us, last_at_us)
-                SELECT tap, 10, first_us, last_us FROM unnest(%s::bigint[], %s::bigint[], %s::bigint[]) AS t(tap, first_us, last_us)""",
-                [list(column) for column in zip(*spans, strict=True)])
+                SELECT tap, 10, first_us, last_us
+                    FROM unnest(%s::bigint[], %s::bigint[], %s::bigint[]) AS t(tap, first_us, last_us)""",
+                [list(column) for column in zip(*spans, strict=True)],
+            )
 
 
 def settle_touches(done: Sequence[int], rests: Sequence[tuple[int, int, int, int]]) -> None:
@@ -116,7 +155,9 @@ def settle_touches(done: Sequence[int], rests: Sequence[tuple[int, int, int, int
         if done:
             cursor.execute("DELETE FROM ingest_touch WHERE id = ANY(%s)", [list(done)])
         if rests:
-            cursor.execute("""
+            cursor.execute(
+                """
                 INSERT INTO ingest_touch (tap_id, first_at_us, last_at_us, arrival_us)
                 SELECT * FROM unnest(%s::bigint[], %s::bigint[], %s::bigint[], %s::bigint[])""",
-                [list(column) for column in zip(*rests, strict=True)])
+                [list(column) for column in zip(*rests, strict=True)],
+            )

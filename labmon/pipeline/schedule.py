@@ -21,5 +21,9 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "roll up hours and days": _every("roll_up_coarse", 120.0),
     "seal": _every("seal", 60.0),
     "take up left imports": _every("take_up_left_imports", 300.0),
-    "compact closed days": {"task": "labmon.pipeline.compact", "schedule": crontab(hour="1", minute="20"), "options": {"expires": 6 * 3600}},
+    "compact closed days": {
+        "task": "labmon.pipeline.compact",
+        "schedule": crontab(hour="1", minute="20"),
+        "options": {"expires": 6 * 3600},
+    },
 }

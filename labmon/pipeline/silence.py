@@ -21,8 +21,8 @@ from labmon.alarms.states import state_of
 from labmon.alarms.words import no_reading_sentence
 from labmon.benches.queries import call_after_s, door_spans
 from labmon.benches.show import LEAST_USUAL_S, Silence, silences_of
-from labmon.live.publish import publish
 from labmon.claims import claim_name
+from labmon.live.publish import publish
 
 SHOWN_AFTER_S = 3 * LEAST_USUAL_S
 
@@ -43,8 +43,12 @@ def judge_silence(now_us: int | None = None) -> list[int]:
     if not claim_name("silence"):
         return []
     clock_us = server_now_us() if now_us is None else now_us
-    open_alarms = {alarm.tap_id: alarm for alarm in Alarm.objects.select_for_update(of=("self",)).filter(
-        kind=AlarmKind.NO_READING, returned_at=None, is_withdrawn=False).order_by("pk")}
+    open_alarms = {
+        alarm.tap_id: alarm
+        for alarm in Alarm.objects.select_for_update(of=("self",))
+        .filter(kind=AlarmKind.NO_READING, returned_at=None, is_withdrawn=False)
+        .order_by("pk")
+    }
     taps = _asked_taps(list(open_alarms), clock_us)
     if not taps and not open_alarms:
         return []
@@ -60,18 +64,24 @@ def judge_silence(now_us: int | None = None) -> list[int]:
 def _asked_taps(with_alarm: list[int], now_us: int) -> list[Tap]:
     """Watched taps that have been quiet for the shortest time that could matter, and those with an open alarm."""
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT DISTINCT heard.tap_id FROM ingest_tapheard heard
             WHERE heard.tap_id = ANY(%s)
-               OR (heard.last_arrival_us < %s AND EXISTS (SELECT FROM labmon_experiment_taps link WHERE link.tap_id = heard.tap_id))""",
-            [with_alarm, now_us - round(SHOWN_AFTER_S * SECOND_US)])
+               OR (heard.last_arrival_us < %s
+                   AND EXISTS (SELECT FROM labmon_experiment_taps link WHERE link.tap_id = heard.tap_id))""",
+            [with_alarm, now_us - round(SHOWN_AFTER_S * SECOND_US)],
+        )
         ids = [row[0] for row in cursor.fetchall()]
     return list(Tap.objects.filter(pk__in=ids).select_related("station", "heard").order_by("pk")) if ids else []
 
 
 def _silences(taps: Sequence[Tap], now_us: int) -> dict[int, Silence]:
     ids = [tap.pk for tap in taps]
-    states = {tap_id: TapState.from_json(state) for tap_id, state in TapNow.objects.filter(tap__in=ids).values_list("tap_id", "trust_state")}
+    states = {
+        tap_id: TapState.from_json(state)
+        for tap_id, state in TapNow.objects.filter(tap__in=ids).values_list("tap_id", "trust_state")
+    }
     heard = [(tap, states.get(tap.pk), tap.heard.last_arrival_us) for tap in taps]
     return silences_of(heard, call_after_s(ids), door_spans(now_us), now_us)
 
@@ -79,15 +89,23 @@ def _silences(taps: Sequence[Tap], now_us: int) -> dict[int, Silence]:
 def _experiments(tap_ids: Sequence[int]) -> dict[int, int]:
     """Per tap the experiment that wants to know first."""
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT DISTINCT ON (link.tap_id) link.tap_id, experiment.id
             FROM labmon_experiment_taps link JOIN labmon_experiment experiment ON experiment.id = link.experiment_id
-            WHERE link.tap_id = ANY(%s) ORDER BY link.tap_id, experiment.no_reading_after_s NULLS LAST, experiment.id""", [list(tap_ids)])
+            WHERE link.tap_id = ANY(%s) ORDER BY link.tap_id, experiment.no_reading_after_s NULLS LAST, experiment.id""",
+            [list(tap_ids)],
+        )
         return dict(cursor.fetchall())
 
 
-def _changes(taps: Sequence[Tap], silences: Mapping[int, Silence], experiments: Mapping[int, int], open_alarms: Mapping[int, Alarm],
-             now: datetime) -> _Changes:
+def _changes(
+    taps: Sequence[Tap],
+    silences: Mapping[int, Silence],
+    experiments: Mapping[int, int],
+    open_alarms: Mapping[int, Alarm],
+    now: datetime,
+) -> _Changes:
     changes = _Changes([], [], [], [])
     for tap in taps:
         silence, alarm = silences[tap.pk], open_alarms.get(tap.pk)
@@ -95,8 +113,14 @@ def _changes(taps: Sequence[Tap], silences: Mapping[int, Silence], experiments: 
             _end(alarm, now, changes)
         elif silence.is_shown and tap.pk in experiments:
             if alarm is None:
-                alarm = Alarm(kind=AlarmKind.NO_READING, experiment_id=experiments[tap.pk], tap=tap, level=AlarmLevel.WARNING, raised_at=now,
-                              message=no_reading_sentence(_name(tap), silence.silent_s))
+                alarm = Alarm(
+                    kind=AlarmKind.NO_READING,
+                    experiment_id=experiments[tap.pk],
+                    tap=tap,
+                    level=AlarmLevel.WARNING,
+                    raised_at=now,
+                    message=no_reading_sentence(_name(tap), silence.silent_s),
+                )
                 changes.new.append(alarm)
             if silence.is_called and alarm.level == AlarmLevel.WARNING:
                 _call(alarm, tap, silence, now, changes)

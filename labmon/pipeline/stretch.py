@@ -7,9 +7,9 @@ from typing import Final
 from django.db import connection
 
 from analysis.judge.fold import FoldState
+from analysis.judge.phases import Standing, phase_at
 from analysis.record.tap_state import TapState
 from ingest.times import SECOND_US
-from analysis.judge.phases import Standing, phase_at
 from labmon.pipeline.work import TapWork, floor_s, limits_within, newest_known_us, standing_from_text, state_from_text
 
 #: Checkpoints are kept at whole multiples of this; late data go back to one of them.
@@ -72,7 +72,13 @@ def _go_back(works: dict[int, TapWork], targets: dict[int, int]) -> None:
         point_us, before = points[tap_id], work.state
         state = kept[tap_id][1] if tap_id in kept else TapState(upto_us=point_us)
         # What belongs to the present (who was told of an untrusted reading, arrivals) is not judged again.
-        work.state = replace(state, upto_us=point_us, untrusted=before.untrusted, untrusted_upto_us=before.untrusted_upto_us, arrivals_us=before.arrivals_us)
+        work.state = replace(
+            state,
+            upto_us=point_us,
+            untrusted=before.untrusted,
+            untrusted_upto_us=before.untrusted_upto_us,
+            arrivals_us=before.arrivals_us,
+        )
         work.begins_anew = tap_id not in kept
         for limit in work.limits:
             phase = phase_at(limit.phases, point_us)
@@ -82,23 +88,33 @@ def _go_back(works: dict[int, TapWork], targets: dict[int, int]) -> None:
 
 def _kept_states(targets: dict[int, int]) -> dict[int, tuple[int, TapState]]:
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT asked.tap, point.at_us, point.state::text FROM unnest(%s::bigint[], %s::bigint[]) AS asked(tap, at_us)
             CROSS JOIN LATERAL (SELECT at_us, state FROM analysis_tapcheckpoint WHERE tap_id = asked.tap AND at_us <= asked.at_us
-                                ORDER BY at_us DESC LIMIT 1) AS point""", [list(targets), list(targets.values())])
+                                ORDER BY at_us DESC LIMIT 1) AS point""",
+            [list(targets), list(targets.values())],
+        )
         return {tap: (at_us, state_from_text(state)) for tap, at_us, state in cursor.fetchall()}
 
 
 def _kept_standings(works: dict[int, TapWork], points: dict[int, int]) -> dict[tuple[int, int], Standing]:
     asked = [(limit.limit.pk, points[tap_id]) for tap_id, work in works.items() for limit in work.limits]
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT version.limit_id, point.at_us, point.version_id, point.state::text
             FROM unnest(%s::bigint[], %s::bigint[]) AS asked(limit_id, at_us)
             JOIN labmon_limitversion version ON version.limit_id = asked.limit_id
-            JOIN labmon_foldcheckpoint point ON point.version_id = version.id AND point.at_us = asked.at_us AND NOT point.is_newest
-            ORDER BY version.number""", [[one for one, _ in asked], [at_us for _, at_us in asked]])
-        return {(limit_id, at_us): standing_from_text(version_id, at_us, state) for limit_id, at_us, version_id, state in cursor.fetchall()}
+            JOIN labmon_foldcheckpoint point ON point.version_id = version.id AND point.at_us = asked.at_us
+                AND NOT point.is_newest
+            ORDER BY version.number""",
+            [[one for one, _ in asked], [at_us for _, at_us in asked]],
+        )
+        return {
+            (limit_id, at_us): standing_from_text(version_id, at_us, state)
+            for limit_id, at_us, version_id, state in cursor.fetchall()
+        }
 
 
 def _stretch(work: TapWork, is_again: bool) -> Stretch:
@@ -115,6 +131,6 @@ def _stretch(work: TapWork, is_again: bool) -> Stretch:
         return Stretch(work, start_us, behind_us, True, is_again)
     end_us = (start_us + piece_us) // HOUR_US * HOUR_US
     if not is_again and first_us is not None and first_us >= end_us:
-        end_us = min(floor_s(first_us) // KEEP_EVERY_US * KEEP_EVERY_US, behind_us)      # nothing new lies between
+        end_us = min(floor_s(first_us) // KEEP_EVERY_US * KEEP_EVERY_US, behind_us)  # nothing new lies between
         end_us = max(end_us, (start_us // HOUR_US + 1) * HOUR_US)
     return Stretch(work, start_us, end_us, False, is_again)

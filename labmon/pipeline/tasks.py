@@ -15,8 +15,15 @@ PROCESS_FOR_S = 20.0
 
 
 def _task(name: str, time_limit: int):  # type: ignore[no-untyped-def]
-    return shared_task(name=f"labmon.pipeline.{name}", acks_late=True, ignore_result=True, time_limit=time_limit,
-                       autoretry_for=(OperationalError,), retry_backoff=1, max_retries=3)
+    return shared_task(
+        name=f"labmon.pipeline.{name}",
+        acks_late=True,
+        ignore_result=True,
+        time_limit=time_limit,
+        autoretry_for=(OperationalError,),
+        retry_backoff=1,
+        max_retries=3,
+    )
 
 
 @_task("process", 120)

@@ -95,23 +95,31 @@ def load_work(tap_ids: Sequence[int]) -> list[TapWork]:
 
 def _touched(tap_ids: list[int]) -> list[tuple[TapHere, Touched]]:
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT tap.id, station.name, tap.name, tap.kind, tap.unit, tap.interval_s, touch.ids, touch.first_us, touch.last_us,
                    heard.last_at_us, heard.last_arrival_us
             FROM ingest_tap tap JOIN ingest_station station ON station.id = tap.station_id
             LEFT JOIN (SELECT tap_id, array_agg(id) AS ids, min(first_at_us) AS first_us, max(last_at_us) AS last_us
                        FROM ingest_touch WHERE tap_id = ANY(%s) GROUP BY tap_id) AS touch ON touch.tap_id = tap.id
             LEFT JOIN ingest_tapheard heard ON heard.tap_id = tap.id
-            WHERE tap.id = ANY(%s) ORDER BY tap.id""", [tap_ids, tap_ids])
+            WHERE tap.id = ANY(%s) ORDER BY tap.id""",
+            [tap_ids, tap_ids],
+        )
         return [(TapHere(*row[:6]), Touched(row[6] or [], *row[7:])) for row in cursor.fetchall()]
 
 
 def _states(tap_ids: list[int]) -> dict[int, tuple[TapState, int | None, dict[str, Any]]]:
     with connection.cursor() as cursor:
-        cursor.execute("""SELECT tap_id, at_us, trust_state::text, (sample->'last_trusted')::text
-                          FROM analysis_tapnow WHERE tap_id = ANY(%s)""", [tap_ids])
-        return {tap_id: (state_from_text(state), at_us, msgspec.json.decode(last) if last else {})
-                for tap_id, at_us, state, last in cursor.fetchall()}
+        cursor.execute(
+            """SELECT tap_id, at_us, trust_state::text, (sample->'last_trusted')::text
+                          FROM analysis_tapnow WHERE tap_id = ANY(%s)""",
+            [tap_ids],
+        )
+        return {
+            tap_id: (state_from_text(state), at_us, msgspec.json.decode(last) if last else {})
+            for tap_id, at_us, state, last in cursor.fetchall()
+        }
 
 
 def state_from_text(text: str) -> TapState:
@@ -122,13 +130,17 @@ def state_from_text(text: str) -> TapState:
 def _limits(tap_ids: list[int]) -> dict[int, list[LimitWork]]:
     """Limits of the taps with all their versions and their newest checkpoints."""
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT lim.tap_id, lim.id, lim.experiment_id, lim.quantity, version.id, version.valid_from, version.is_retired,
-                   version.in_runs_only, version.alarm, version.warning, version.on_delay_s, version.off_delay_s, version.deadband,
+                   version.in_runs_only, version.alarm, version.warning, version.on_delay_s, version.off_delay_s,
+                       version.deadband,
                    point.at_us, point.state::text
             FROM labmon_limit lim JOIN labmon_limitversion version ON version.limit_id = lim.id
             LEFT JOIN labmon_foldcheckpoint point ON point.version_id = version.id AND point.is_newest
-            WHERE lim.tap_id = ANY(%s) ORDER BY lim.id, version.number""", [tap_ids])
+            WHERE lim.tap_id = ANY(%s) ORDER BY lim.id, version.number""",
+            [tap_ids],
+        )
         rows = cursor.fetchall()
     by_limit: dict[int, list[tuple[Any, ...]]] = {}
     for row in rows:
@@ -144,7 +156,9 @@ def _limits(tap_ids: list[int]) -> dict[int, list[LimitWork]]:
 
 
 def _rule(quantity: str, row: tuple[Any, ...]) -> LimitRule:
-    return LimitRule(quantity=Quantity(quantity), alarm=row[8], warning=row[9], on_delay_s=row[10], off_delay_s=row[11], deadband=row[12])
+    return LimitRule(
+        quantity=Quantity(quantity), alarm=row[8], warning=row[9], on_delay_s=row[10], off_delay_s=row[11], deadband=row[12]
+    )
 
 
 def standing_from_text(version_id: int, at_us: int, state: str) -> Standing:
@@ -155,10 +169,13 @@ def standing_from_text(version_id: int, at_us: int, state: str) -> Standing:
 def _watched(tap_ids: list[int]) -> dict[int, tuple[int, float]]:
     """Per watched tap an experiment to tell, and the shortest wait before an untrusted reading is told."""
     with connection.cursor() as cursor:
-        cursor.execute("""
+        cursor.execute(
+            """
             SELECT link.tap_id, min(experiment.id), min(experiment.untrusted_after_s)
             FROM labmon_experiment_taps link JOIN labmon_experiment experiment ON experiment.id = link.experiment_id
-            WHERE link.tap_id = ANY(%s) GROUP BY link.tap_id""", [tap_ids])
+            WHERE link.tap_id = ANY(%s) GROUP BY link.tap_id""",
+            [tap_ids],
+        )
         return {tap_id: (experiment_id, after_s) for tap_id, experiment_id, after_s in cursor.fetchall()}
 
 

@@ -40,8 +40,15 @@ def queue_mails(mails: Iterable[Mail]) -> None:
 
     Without recipients a mail goes to the lab's own mailbox (LABMON_MAIL_FROM), so that no event is told to nobody.
     """
-    rows = [OutboxMail(event=mail.event, recipients=list(dict.fromkeys(mail.recipients)) or [settings.DEFAULT_FROM_EMAIL],
-                       subject=one_line(mail.subject), body=mail.body) for mail in mails]
+    rows = [
+        OutboxMail(
+            event=mail.event,
+            recipients=list(dict.fromkeys(mail.recipients)) or [settings.DEFAULT_FROM_EMAIL],
+            subject=one_line(mail.subject),
+            body=mail.body,
+        )
+        for mail in mails
+    ]
     if rows:
         OutboxMail.objects.bulk_create(rows, ignore_conflicts=True)
 
@@ -64,8 +71,12 @@ def send_waiting(limit: int = 50) -> int:
 
 @transaction.atomic
 def _send_next() -> bool | None:
-    mail = (OutboxMail.objects.select_for_update(skip_locked=True)
-            .filter(sent_at=None, next_try_at__lte=timezone.now()).order_by("next_try_at", "pk").first())
+    mail = (
+        OutboxMail.objects.select_for_update(skip_locked=True)
+        .filter(sent_at=None, next_try_at__lte=timezone.now())
+        .order_by("next_try_at", "pk")
+        .first()
+    )
     if mail is None:
         return None
     try:
@@ -86,6 +97,9 @@ def _message(mail: OutboxMail) -> EmailMessage:
 
 def _note_failure(mail: OutboxMail, fault: Exception) -> None:
     wait_s = min(FIRST_WAIT_S * 2.0 ** min(mail.tries, 20), LONGEST_WAIT_S)
-    OutboxMail.objects.filter(pk=mail.pk).update(tries=F("tries") + 1, next_try_at=timezone.now() + timedelta(seconds=wait_s),
-                                                 last_error=f"{type(fault).__name__}: {fault}"[:500])
+    OutboxMail.objects.filter(pk=mail.pk).update(
+        tries=F("tries") + 1,
+        next_try_at=timezone.now() + timedelta(seconds=wait_s),
+        last_error=f"{type(fault).__name__}: {fault}"[:500],
+    )
     log.warning("mail_failed", extra={"mail_event": mail.event, "tries": mail.tries + 1, "wait_s": wait_s, "fault": str(fault)})

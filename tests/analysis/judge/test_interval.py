@@ -26,7 +26,9 @@ def test_cutting_the_samples_changes_nothing(steps, data):
     middle = pass_samples(IntervalState(), at_us[:cut])
     middle = IntervalState.from_json(middle.as_json())
     whole = intervals_s(IntervalState(), at_us)
-    np.testing.assert_array_equal(np.concatenate([intervals_s(IntervalState(), at_us[:cut]), intervals_s(middle, at_us[cut:])]), whole)
+    np.testing.assert_array_equal(
+        np.concatenate([intervals_s(IntervalState(), at_us[:cut]), intervals_s(middle, at_us[cut:])]), whole
+    )
     assert pass_samples(middle, at_us[cut:]) == pass_samples(IntervalState(), at_us)
 
 

@@ -25,7 +25,9 @@ pytestmark = pytest.mark.django_db
 def noon(monkeypatch):
     """It is half a minute past noon, and the door has been up since morning."""
     monkeypatch.setattr("django.utils.timezone.now", lambda: NOON + timedelta(seconds=30))
-    DoorUp.objects.create(process="00000000-0000-0000-0000-000000000001", from_us=NOON_US - 6 * 3600 * S, until_us=NOON_US + 3600 * S)
+    DoorUp.objects.create(
+        process="00000000-0000-0000-0000-000000000001", from_us=NOON_US - 6 * 3600 * S, until_us=NOON_US + 3600 * S
+    )
 
 
 def make_bench(er_db, *, alarm=20.0, warning=23.0, name="", **kind):
@@ -53,7 +55,12 @@ def test_words_and_order_of_the_lab():
     make_bench(None, name="new")
     found = rows()
     assert {name: row.state for name, row in found.items()} == {
-        "low": "below limit", "thin": "thin", "good": "in spec", "free": "no limit", "new": "never heard"}
+        "low": "below limit",
+        "thin": "thin",
+        "good": "in spec",
+        "free": "no limit",
+        "new": "never heard",
+    }
     assert list(found) == ["low", "thin", "good", "free", "new"]
 
 
@@ -113,7 +120,9 @@ def test_course_of_the_day_is_hourly_er_of_sums():
 def test_station_page_facts():
     tap = make_bench(22.0, name="n1")
     new_version(tap, NOON - timedelta(days=1), {"zero2": 1e-9})
-    SetAside.objects.create(station=tap.station, tap=tap, arrival_us=NOON_US, field="port2", why="null", do="leave out", reading={}, digest=b"x")
+    SetAside.objects.create(
+        station=tap.station, tap=tap, arrival_us=NOON_US, field="port2", why="null", do="leave out", reading={}, digest=b"x"
+    )
     process_touched(now_us=NOON_US + 30 * S)
     facts = station_facts(tap.station, now_us=NOON_US + 30 * S)
     (shown,) = facts.taps

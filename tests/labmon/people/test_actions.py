@@ -22,10 +22,18 @@ def test_person_without_password_cannot_sign_in():
     assert not add_person("asha", "researcher").has_usable_password()
 
 
-@pytest.mark.parametrize(("fields", "field"), [
-    ({"name": "asha", "role": "king"}, "role"), ({"name": "a b", "role": "guest"}, "name"), ({"name": "", "role": "guest"}, "name"),
-    ({"name": "x" * 151, "role": "guest"}, "name"), ({"name": "asha", "role": "guest", "password": "short"}, "password"),
-    ({"name": "asha", "role": "guest", "email": "nowhere"}, "email"), ({"name": "taken", "role": "guest"}, "name")])
+@pytest.mark.parametrize(
+    ("fields", "field"),
+    [
+        ({"name": "asha", "role": "king"}, "role"),
+        ({"name": "a b", "role": "guest"}, "name"),
+        ({"name": "", "role": "guest"}, "name"),
+        ({"name": "x" * 151, "role": "guest"}, "name"),
+        ({"name": "asha", "role": "guest", "password": "short"}, "password"),
+        ({"name": "asha", "role": "guest", "email": "nowhere"}, "email"),
+        ({"name": "taken", "role": "guest"}, "name"),
+    ],
+)
 def test_what_cannot_be_meant_is_refused_by_field_and_leaves_nothing(fields, field):
     make_person(username="taken")
     with pytest.raises(WriteError) as refused:

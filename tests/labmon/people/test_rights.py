@@ -51,7 +51,9 @@ def make_subjects(owner):
     tap = make_tap(station)
     experiment = make_experiment(tap, owner=owner)
     limit = Limit.objects.create(experiment=experiment, tap=tap, quantity="er_db")
-    alarm = Alarm.objects.create(kind="limit", experiment=experiment, limit=limit, tap=tap, quantity="er_db", raised_at=NOON, message="low")
+    alarm = Alarm.objects.create(
+        kind="limit", experiment=experiment, limit=limit, tap=tap, quantity="er_db", raised_at=NOON, message="low"
+    )
     return {"station": station, "tap": tap, "experiment": experiment, "limit": limit, "alarm": alarm}
 
 

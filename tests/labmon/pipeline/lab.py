@@ -34,7 +34,14 @@ class Feed:
         index = np.atleast_1d(np.asarray(index))
         at_us = self.at_us[index]
         columns = {name: values[index] for name, values in ports_of(self.er_db).items()}
-        store_readings(self.tap, at_us, arrival_us=at_us if now_us is None else np.full(len(at_us), now_us), sequence=index, boot="b", **columns)
+        store_readings(
+            self.tap,
+            at_us,
+            arrival_us=at_us if now_us is None else np.full(len(at_us), now_us),
+            sequence=index,
+            boot="b",
+            **columns,
+        )
         if is_processed:
             return process_touched(now_us=int(at_us.max()) + 100_000 if now_us is None else now_us)
         return None
@@ -46,9 +53,18 @@ class Feed:
 
 def episodes(limit):
     """(raised, returned, level, worst value) of a limit's alarms that stand, seconds from noon."""
+
     def seconds(at):
         return None if at is None else round((at.timestamp() * S - NOON_US) / S, 6)
 
     rows = Alarm.objects.filter(limit=limit, is_withdrawn=False).order_by("raised_at")
-    return [(seconds(row.raised_at), seconds(row.alarm_at), seconds(row.returned_at), row.level, None if row.value is None else round(row.value, 6))
-            for row in rows]
+    return [
+        (
+            seconds(row.raised_at),
+            seconds(row.alarm_at),
+            seconds(row.returned_at),
+            row.level,
+            None if row.value is None else round(row.value, 6),
+        )
+        for row in rows
+    ]

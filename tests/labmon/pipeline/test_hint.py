@@ -41,4 +41,5 @@ def test_dead_broker_is_left_alone_for_a_while(monkeypatch, caplog):
 
 def test_listener_is_connected_to_the_door():
     from ingest import announce
+
     assert hint_module.ask_for_judging in announce._listeners

@@ -46,7 +46,7 @@ def excursion(*parts):
 
 
 def test_delay_and_hysteresis_of_the_job_paper(owner):
-    """JOB 7a, job 6: limit 20, delay 60 s, 1 dB: 30 s below are none; 61 s are one; 19.9/20.1 keep it; 21.1 for 60 s clears it."""
+    """JOB 7a: limit 20, delay 60 s, 1 dB: 30 s below are none, 61 s are one; 19.9/20.1 keep it; 21.1 for 60 s clears it."""
     limit = make_limit(make_tap(), owner)
     wobble = np.tile([19.9, 20.1], 60)
     feed = Feed(limit.tap, np.concatenate([excursion((30, 60), (19.5, 30), (30, 60), (19.5, 61)), wobble, excursion((21.1, 62))]))
@@ -78,8 +78,12 @@ def undisturbed(er_db, step_us=S):
 
 
 def test_episodes_of_a_day_at_once():
-    """By hand: warning from 40, raised 100; alarm from 130, raised 190; clear (24 dB) from 210, returned 270; the next from 310 on."""
-    assert undisturbed(DAY) == [(100.0, 190.0, 270.0, "alarm", 18.0), (370.0, 370.0, 445.0, "alarm", 19.0), (645.0, None, None, "warning", 21.0)]
+    """By hand: warning from 40, raised 100; alarm from 130, raised 190; clear (24 dB) from 210, returned 270; next from 310."""
+    assert undisturbed(DAY) == [
+        (100.0, 190.0, 270.0, "alarm", 18.0),
+        (370.0, 370.0, 445.0, "alarm", 19.0),
+        (645.0, None, None, "warning", 21.0),
+    ]
 
 
 @pytest.mark.parametrize("seed", range(4))
@@ -270,6 +274,7 @@ def test_newest_sample_is_by_data_time():
 
 def test_dark_reading_is_null_beside_the_last_trusted_one():
     from analysis.record.calibrations import new_version
+
     tap = make_tap()
     new_version(tap, NOON - timedelta(days=1), {"floor1": 1e-9, "floor2": 1e-9})
     store_readings(tap, [NOON_US, NOON_US + S], port1=[1e-3, 0.0], port2=[1e-6, 0.0])
@@ -301,7 +306,16 @@ def test_limit_change_starts_a_new_fold_and_keeps_the_open_alarm(owner):
     feed = Feed(limit.tap, excursion((18, 60), (18, 60)))
     for index in range(60):
         feed.send(index)
-    set_limit(limit.experiment, limit.tap, "er_db", alarm=15.0, on_delay_s=5.0, off_delay_s=5.0, valid_from=NOON + timedelta(seconds=60), by=owner)
+    set_limit(
+        limit.experiment,
+        limit.tap,
+        "er_db",
+        alarm=15.0,
+        on_delay_s=5.0,
+        off_delay_s=5.0,
+        valid_from=NOON + timedelta(seconds=60),
+        by=owner,
+    )
     for index in range(60, 70):
         feed.send(index)
     feed.send(np.arange(70, 75))
@@ -314,7 +328,16 @@ def test_stricter_limit_set_in_the_past_judges_what_was_read_since(owner):
     for batch in np.array_split(np.arange(180), 30):
         feed.send(batch)
     assert episodes(limit) == []
-    set_limit(limit.experiment, limit.tap, "er_db", alarm=20.0, on_delay_s=5.0, off_delay_s=5.0, valid_from=NOON + timedelta(seconds=30), by=owner)
+    set_limit(
+        limit.experiment,
+        limit.tap,
+        "er_db",
+        alarm=20.0,
+        on_delay_s=5.0,
+        off_delay_s=5.0,
+        valid_from=NOON + timedelta(seconds=30),
+        by=owner,
+    )
     feed.finish()
     assert episodes(limit) == [(65.0, 65.0, 125.0, "alarm", 18.0)]
     assert Alarm.objects.get().is_late
@@ -322,6 +345,7 @@ def test_stricter_limit_set_in_the_past_judges_what_was_read_since(owner):
 
 def test_retired_limit_ends_its_alarm_and_judges_no_more(owner, monkeypatch):
     from labmon.experiments.actions import retire_limit
+
     limit = make_limit(make_tap(), owner, on_delay_s=5.0)
     feed = Feed(limit.tap, np.full(300, 18.0))
     for batch in np.array_split(np.arange(100), 10):
@@ -348,6 +372,7 @@ def test_first_limit_looks_back_a_day(owner, monkeypatch):
 
 def test_new_calibration_judges_the_past_again_and_calls_nobody(owner):
     from analysis.record.calibrations import new_version
+
     limit = make_limit(make_tap(), owner, on_delay_s=5.0, off_delay_s=5.0)
     feed = Feed(limit.tap, excursion((19, 100), (30, 300)))
     for batch in np.array_split(np.arange(400), 40):
@@ -366,7 +391,9 @@ def test_queries_do_not_grow_with_taps():
         for _ in range(taps):
             limit = make_limit(make_tap(), on_delay_s=0.0)
             store_readings(limit.tap, [NOON_US + S], **ports_of(np.array([19.0])))
-        with CaptureQueriesContext(connection, ) as queries:
+        with CaptureQueriesContext(
+            connection,
+        ) as queries:
             process_touched(now_us=NOON_US + S)
         counts.append(len(queries))
     assert counts[0] == counts[1]

@@ -37,7 +37,9 @@ def assert_alike(one, other):
     for level_s in LEVELS_S:
         np.testing.assert_array_equal(one[level_s].bucket_us, other[level_s].bucket_us)
         for name in one[level_s].values.dtype.names:
-            np.testing.assert_allclose(one[level_s].values[name], other[level_s].values[name], rtol=1e-9, atol=1e-18, err_msg=f"{level_s} {name}")
+            np.testing.assert_allclose(
+                one[level_s].values[name], other[level_s].values[name], rtol=1e-9, atol=1e-18, err_msg=f"{level_s} {name}"
+            )
 
 
 @pytest.mark.parametrize("seed", range(3))
@@ -101,7 +103,7 @@ def test_closed_days_are_one_buffer_and_read_the_same():
     at_us = MIDNIGHT_US - DAY_US + np.arange(3000) * 60 * S
     store_readings(tap, at_us, **readings(3000))
     process_touched(now_us=int(at_us[-1]))
-    roll_up_due(now_us=MIDNIGHT_US - 2 * DAY_US)          # every day still open: rows
+    roll_up_due(now_us=MIDNIGHT_US - 2 * DAY_US)  # every day still open: rows
     roll_up_coarse_due()
     assert not RollupDay.objects.exists()
     before = [history(tap.pk, "er_db", int(at_us[0]), int(at_us[-1]), points) for points in (50, 400, 2000)]
@@ -130,14 +132,27 @@ def test_late_readings_of_a_closed_day_are_merged_into_its_buffer():
         np.testing.assert_allclose(other.trusted_share, one.trusted_share)
 
 
-@pytest.mark.parametrize(("span_s", "points", "level_s"), [
-    (600, 2000, None), (3600, 2000, None), (7200, 2000, 10), (86_400, 2000, 60), (30 * 86_400, 2000, 60), (365 * 86_400, 2000, 3600),
-    (10 * 365 * 86_400, 2000, 86_400), (86_400, 100, 60), (86_400, 40, 3600)])
+@pytest.mark.parametrize(
+    ("span_s", "points", "level_s"),
+    [
+        (600, 2000, None),
+        (3600, 2000, None),
+        (7200, 2000, 10),
+        (86_400, 2000, 60),
+        (30 * 86_400, 2000, 60),
+        (365 * 86_400, 2000, 3600),
+        (10 * 365 * 86_400, 2000, 86_400),
+        (86_400, 100, 60),
+        (86_400, 40, 3600),
+    ],
+)
 def test_level_fits_the_picture_not_the_span(span_s, points, level_s):
     assert level_for(span_s, points) == level_s
 
 
-@pytest.mark.parametrize(("quantity", "until_us", "points"), [("hue", NOON_US + S, 5), ("er_db", NOON_US, 5), ("er_db", NOON_US + S, 0)])
+@pytest.mark.parametrize(
+    ("quantity", "until_us", "points"), [("hue", NOON_US + S, 5), ("er_db", NOON_US, 5), ("er_db", NOON_US + S, 0)]
+)
 def test_history_that_cannot_be_meant_is_refused(quantity, until_us, points):
     with pytest.raises(ValueError):
         history(make_tap().pk, quantity, NOON_US, until_us, points)

@@ -20,7 +20,9 @@ LAST_US = NOON_US + 29 * S
 
 @pytest.fixture(autouse=True)
 def door():
-    return DoorUp.objects.create(process="00000000-0000-0000-0000-000000000001", from_us=NOON_US - 3600 * S, until_us=NOON_US + 36_000 * S)
+    return DoorUp.objects.create(
+        process="00000000-0000-0000-0000-000000000001", from_us=NOON_US - 3600 * S, until_us=NOON_US + 36_000 * S
+    )
 
 
 def make_heard(*, interval_s=1.0, no_reading_after_s=None, arrival_us=None, owner=None):
@@ -37,12 +39,21 @@ def test_shown_at_three_intervals_called_at_the_set_time_once():
     assert judge_silence(LAST_US + 3 * S) == []
     judge_silence(LAST_US + 4 * S)
     alarm = Alarm.objects.get()
-    assert (alarm.kind, alarm.tap, alarm.level, alarm.message) == ("no-reading", tap, "warning", f"{tap.station.name}/{tap.name}: no reading for 4 s")
+    assert (alarm.kind, alarm.tap, alarm.level, alarm.message) == (
+        "no-reading",
+        tap,
+        "warning",
+        f"{tap.station.name}/{tap.name}: no reading for 4 s",
+    )
     for later_s in (29, 30, 31, 90):
         judge_silence(LAST_US + later_s * S)
         assert OutboxMail.objects.count() == (later_s >= 30)
     alarm.refresh_from_db()
-    assert alarm.level == "alarm" and alarm.message.endswith("no reading for 30 s") and OutboxMail.objects.get().recipients == ["owner@lab.example"]
+    assert (
+        alarm.level == "alarm"
+        and alarm.message.endswith("no reading for 30 s")
+        and OutboxMail.objects.get().recipients == ["owner@lab.example"]
+    )
 
 
 def test_returns_when_a_reading_comes():

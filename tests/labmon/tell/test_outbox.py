@@ -14,6 +14,7 @@ from labmon.tell.outbox import queue_mail, send_waiting
 def fail_with(monkeypatch, fault):
     def send(self, fail_silently=False):
         raise fault
+
     monkeypatch.setattr("django.core.mail.EmailMessage.send", send)
 
 
@@ -66,9 +67,13 @@ def test_mail_not_due_stays():
 
 @pytest.mark.django_db
 def test_event_that_is_rolled_back_tells_nobody():
-    with pytest.raises(ZeroDivisionError), transaction.atomic():
+    @transaction.atomic
+    def fail():
         queue_mail("e", ["a@b.example"], "s", "b")
         raise ZeroDivisionError
+
+    with pytest.raises(ZeroDivisionError):
+        fail()
     assert send_waiting() == 0
 
 

@@ -123,6 +123,8 @@ def _stretch(work: TapWork, is_again: bool) -> Stretch:
     if start_us is None:
         start_us = floor_s(first_us) if first_us is not None else 0
         work.begins_anew = True
+    # The pieces behind the first of a stretch that is judged again go forward, over seconds that were judged before.
+    is_again = is_again or (work.now_us is not None and floor_s(work.now_us) > start_us)
     if newest_us is None:
         return Stretch(work, start_us, start_us, True, is_again)
     behind_us = max(newest_us + 1, start_us)

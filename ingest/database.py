@@ -10,16 +10,10 @@ from django.conf import settings
 from django.db import connection
 from psycopg.adapt import Dumper
 
+from ingest.conninfo import conninfo_of
+
 PATIENCE = {"connect_timeout": 3, "application_name": "labmon",
             "options": "-c statement_timeout=30000 -c lock_timeout=10000 -c idle_in_transaction_session_timeout=60000"}
-
-
-def conninfo_of(database: dict[str, Any]) -> dict[str, Any]:
-    """psycopg's keyword arguments for a Django database setting (follows the test database too)."""
-    named = {"dbname": database["NAME"], "user": database["USER"], "password": database["PASSWORD"],
-             "host": database["HOST"], "port": database["PORT"]}
-    plain = {key: value for key, value in database.get("OPTIONS", {}).items() if isinstance(value, (str, int))}
-    return {key: value for key, value in named.items() if value} | plain
 
 
 def connect(*, autocommit: bool = True) -> psycopg.Connection[Any]:

@@ -7,6 +7,8 @@ from pathlib import Path
 from typing import Any
 from urllib.parse import parse_qsl, unquote, urlsplit
 
+from ingest.conninfo import conninfo_of as conninfo_of
+
 SERVICES_FILE = "services.json"
 
 
@@ -45,11 +47,3 @@ def django_database(url: str) -> dict[str, Any]:
     return {"ENGINE": "django.db.backends.postgresql", "NAME": name, "USER": unquote(parts.username or ""),
             "PASSWORD": unquote(parts.password or ""), "HOST": host, "PORT": port, "OPTIONS": options,
             "CONN_MAX_AGE": 0}
-
-
-def conninfo_of(database: dict[str, Any]) -> dict[str, Any]:
-    """psycopg's keyword arguments for a Django database setting (follows the test database too)."""
-    named = {"dbname": database["NAME"], "user": database["USER"], "password": database["PASSWORD"],
-             "host": database["HOST"], "port": database["PORT"]}
-    plain = {key: value for key, value in database.get("OPTIONS", {}).items() if isinstance(value, (str, int))}
-    return {key: value for key, value in named.items() if value} | plain

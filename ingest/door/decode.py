@@ -86,7 +86,7 @@ def _from_json(body: bytes) -> Any:
 
 
 def _count_texts(found: dict[str, Any]) -> int:
-    """Names and text values of a body in the usual form.
+    """Names and text values of a body in the usual form, never more than there are.
 
     Each has two quotation marks in the JSON. More marks than that mean a name given twice (the decoder keeps the last one
     only), or escapes and deeper maps: then the thorough decoder looks.
@@ -96,13 +96,13 @@ def _count_texts(found: dict[str, Any]) -> int:
     if isinstance(now, dict):
         count += len(now) + sum(isinstance(value, str) for value in now.values())
     if isinstance(taps, dict):
+        count += len(taps)
         for part in taps.values():
-            count += 1
             if isinstance(part, dict):
                 count += len(part)
                 for column in part.values():
-                    if isinstance(column, str) or (isinstance(column, list) and column and isinstance(column[0], str)):
-                        count += len(column) if isinstance(column, list) else 1
+                    if isinstance(column, list) and column and isinstance(column[0], str) and set(map(type, column)) == {str}:
+                        count += len(column)
     return count
 
 

@@ -135,6 +135,7 @@ LOGGING = {
     "formatters": {"line": {"()": "labmon.log.LineFormatter"}},
     "handlers": {"stderr": {"class": "logging.StreamHandler", "formatter": "line"}},
     "root": {"handlers": ["stderr"], "level": env.get("LOG_LEVEL", str, default="INFO")},
-    "loggers": {"django.request": {"level": "ERROR"}},
+    "loggers": {"django.request": {"level": "ERROR"},
+                **{name: {"level": "WARNING"} for name in ("celery.app.trace", "celery.worker.strategy", "celery.beat")}},
 }
 env.finish()

@@ -51,9 +51,13 @@ class Command:
         with self.log_path.open("ab") as log:
             self.process = child.start(self.words, log=log, folder=self.folder, open_files=self.open_files)
 
+    def is_running(self) -> bool:
+        """Whether it was started and has not ended."""
+        return self.process is not None and self.process.poll() is None
+
     def ask_to_stop(self) -> None:
         """SIGTERM: finish what is begun."""
-        if self.process is not None and self.process.poll() is None:
+        if self.process is not None and self.is_running():
             self.process.send_signal(signal.SIGTERM)
 
     def make_stop(self) -> None:

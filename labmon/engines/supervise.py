@@ -239,6 +239,8 @@ class Supervisor:
         while self._is_any_running() and time.monotonic() < until and self.stops < 2:
             time.sleep(0.05)
         for command in self.commands:
+            if command.is_running():
+                self.progress.say(command.name, "did not stop in time and was ended")
             command.make_stop()
         for engine in reversed(self.engines):
             engine.stop()
@@ -249,4 +251,4 @@ class Supervisor:
             self.progress.say("labmon", f"stopped in {self.progress.elapsed_s() - before_s:.1f} s")
 
     def _is_any_running(self) -> bool:
-        return any(command.process is not None and command.process.poll() is None for command in self.commands)
+        return any(command.is_running() for command in self.commands)

@@ -69,15 +69,6 @@ def _few_intervals_s(state: IntervalState, times_us: list[int]) -> list[float]:
     return found
 
 
-def steadied_s(interval_s: FloatArray) -> FloatArray:
-    """Learned intervals on a scale of half octaves, s, shape (N,): the upper edge of the step that holds each; NaN stays.
-
-    The median of an uneven sampler flickers by some per cent from second to second. On this scale it stays one number
-    (never too short, at most 41 % too long), so that the folds need not start anew at each second.
-    """
-    return np.exp2((np.round(2.0 * np.log2(interval_s)) + 0.5) / 2.0)
-
-
 def _is_new(state: IntervalState, at_us: IntArray) -> IntArray:
     """1 where a sample adds a spacing, shape (N,)."""
     before = np.concatenate([[at_us[0] if state.last_us is None else state.last_us], at_us[:-1]])

@@ -101,9 +101,8 @@ def fold_through(
         low, high = np.searchsorted(bounds, [begin_us, end_us])
         state = standing.state
         if high > low and not phase.is_retired:
-            state, events = _fold_by_interval(
-                phase.rule, state, seconds.take(slice(int(low), int(high))), None if interval_s is None else interval_s[low:high]
-            )
+            own_s = 1.0 if interval_s is None else interval_s[low:high]
+            state, events = fold(phase.rule, state, seconds.take(slice(int(low), int(high))), own_s)
             found += [Found(event, phase.version_id) for event in events]
         standing = Standing(phase.version_id, max(end_us, begin_us), state)
     return Standing(standing.version_id, max(standing.at_us, until_us), standing.state), found
@@ -116,21 +115,6 @@ def _taken_over(phase: Phase, standing: Standing, found: list[Found]) -> Standin
         found.append(Found(Event(EventKind.RETURNED, before.level, phase.from_us, phase.from_us, float("nan")), phase.version_id))
         before = FoldState(at_us=before.at_us)
     return Standing(phase.version_id, phase.from_us, start_state(before))
-
-
-def _fold_by_interval(
-    rule: LimitRule, state: FoldState, seconds: Seconds, interval_s: FloatArray | None
-) -> tuple[FoldState, list[Event]]:
-    """Fold runs of seconds of one nominal interval after the other (an interval not yet known counts as 1 s)."""
-    if interval_s is None:
-        return fold(rule, state, seconds, 1.0)
-    steady = np.nan_to_num(interval_s, nan=1.0)
-    starts = np.flatnonzero(np.diff(steady, prepend=np.nan))
-    events: list[Event] = []
-    for begin, end in zip(starts.tolist(), [*starts[1:].tolist(), len(steady)], strict=True):
-        state, more = fold(rule, state, seconds.take(slice(begin, end)), float(steady[begin]))
-        events += more
-    return state, events
 
 
 def episodes_in(found: Sequence[Found], before: Standing, seconds: Seconds) -> list[Episode]:

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from analysis.judge.fold import EventKind, FoldState, is_idle
-from analysis.judge.interval import intervals_s, steadied_s
+from analysis.judge.interval import intervals_s
 from analysis.judge.phases import Episode, Found, Standing, episodes_in, fold_through
 from analysis.judge.rule import Quantity
 from analysis.judge.seconds import Seconds, seconds_of_many
@@ -157,14 +157,14 @@ def _worst_of_taps(seconds: Seconds, bounds: IntArray) -> list[float]:
 
 
 def _intervals(step: Progress, own: Mapping[Quantity, Seconds]) -> FloatArray | None:
-    """Nominal interval at each second: declared, else by the fold over all samples, steadied; None where it is 1 s or less."""
+    """Nominal interval at each second: declared, else by the fold over all samples; None where it is 1 s or less."""
     declared_s, at_us = step.tap.interval_s, next(iter(own.values())).at_us
     if declared_s is not None:
         return None if declared_s <= 1.0 else np.full(len(at_us), declared_s)
     samples_us = step.readings.at_us
     known = intervals_s(step.work.state.interval, samples_us)
-    steady = steadied_s(known[np.searchsorted(samples_us, at_us)])
-    return None if np.nanmax(steady, initial=0.0) <= 1.0 else steady
+    at_each = known[np.searchsorted(samples_us, at_us)]
+    return None if np.nanmax(at_each, initial=0.0) <= 1.0 else at_each
 
 
 _NOTHING = _TapSeconds({}, {}, [], None, None)
@@ -256,7 +256,7 @@ def _folded_trust(own: _TapSeconds, state: UntrustedState, from_us: int, until_u
     span = slice(low, high)
     shown = next(iter(own.by_quantity.values())).take(span)
     is_judged = np.ones(high - low, dtype=bool) if own.is_untrusted is None else ~own.is_untrusted[span]
-    interval_s = 1.0 if own.interval_s is None else float(np.nan_to_num(own.interval_s[high - 1], nan=1.0))
+    interval_s = 1.0 if own.interval_s is None else own.interval_s[span]
     return fold_untrusted(UntrustedRule(on_delay_s=after_s), state, replace(shown, is_judged=is_judged), interval_s)[0]
 
 

@@ -3,7 +3,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from analysis.judge.interval import IntervalState, intervals_s, pass_samples, steadied_s
+from analysis.judge.interval import IntervalState, intervals_s, pass_samples
 
 
 def test_median_ignores_a_gap():
@@ -36,16 +36,3 @@ def test_cutting_the_samples_changes_nothing(steps, data):
 def test_last_interval_is_the_states(steps):
     at_us = np.cumsum(np.array([0, *steps], dtype=np.int64))
     assert intervals_s(IntervalState(), at_us)[-1] == pytest.approx(pass_samples(IntervalState(), at_us).interval_s)
-
-
-def test_an_uneven_sampler_has_one_steadied_interval_that_is_never_too_short():
-    """1 Hz and 6 s with 0.1 s of jitter, as the demo's polarimeters have."""
-    rng = np.random.default_rng(3)
-    for pace_s in (1.0, 6.0):
-        at_us = np.round((np.arange(5000) * pace_s + 0.1 * rng.standard_normal(5000).clip(-2, 2)) * 1e6).astype(np.int64)
-        learned = intervals_s(IntervalState(), at_us)[20:]
-        steady = steadied_s(learned)
-        assert len(np.unique(learned)) > 1000
-        assert len(np.unique(steady)) == 1
-        assert np.all((steady >= learned) & (steady <= 1.42 * learned))
-    assert np.isnan(steadied_s(np.array([np.nan])))[0]

@@ -9,7 +9,7 @@ import psycopg
 from ingest.times import now_us
 
 INTERVAL_S = 1.0
-_BROKEN_AFTER_S = 5.0
+_BROKEN_AFTER_S = 2.5
 
 
 class Presence:

@@ -52,7 +52,8 @@ class Episode:
     Attributes:
         raised_us: When it was raised, maybe before the stretch; ``returned_us``: None if still open at its end.
         alarm_us: When it reached the alarm level within the stretch (or at its raising), None if not (known here).
-        value: The worst value seen in the stretch.
+        value: The worst value in the stretch while it was open: from its raising on, so that where the stretch was cut
+            does not matter.
         is_continued: It was open when the stretch began.
     """
 
@@ -118,23 +119,23 @@ def _taken_over(phase: Phase, standing: Standing, found: list[Found]) -> Standin
 
 
 def episodes_in(found: Sequence[Found], before: Standing, seconds: Seconds) -> list[Episode]:
-    """Episodes of a stretch that began at ``before``, with the worst value of each."""
+    """Episodes of a stretch that began at ``before``, with the worst value of each while it was open."""
     episodes: list[Episode] = []
     if before.state.level is not None:
         assert before.state.raised_us is not None
         episodes.append(Episode(before.version_id, before.state.raised_us, before.state.level, None, None, None, True))
-    began_us = [before.at_us] * len(episodes)
+    open_us = [before.at_us] * len(episodes)
     for one in found:
         event = one.event
         if event.kind is EventKind.RAISED:
             alarm_us = event.at_us if event.level is Level.ALARM else None
             episodes.append(Episode(one.version_id, event.at_us, event.level, alarm_us, None, None))
-            began_us.append(event.began_us)
+            open_us.append(event.at_us)
         elif event.kind is EventKind.ROSE:
             episodes[-1].level, episodes[-1].alarm_us, episodes[-1].version_id = Level.ALARM, event.at_us, one.version_id
         else:
             episodes[-1].returned_us = event.at_us
-    for episode, since_us in zip(episodes, began_us, strict=True):
+    for episode, since_us in zip(episodes, open_us, strict=True):
         episode.value = _worst(seconds, since_us, FOREVER_US if episode.returned_us is None else episode.returned_us)
     return episodes
 

@@ -1,5 +1,6 @@
 """To the open browsers, after the commit: what changed, never the values."""
 
+import asyncio
 import logging
 from typing import Any
 
@@ -9,6 +10,8 @@ from django.db import transaction
 from redis.exceptions import RedisError
 
 LAB_GROUP = "lab"
+#: A write, or the judging of readings, waits no longer than this for a broker that is away or hangs.
+PATIENCE_S = 1.0
 log = logging.getLogger(__name__)
 
 
@@ -25,6 +28,11 @@ def _send(change: dict[str, Any]) -> None:
     if layer is None:
         return
     try:
-        async_to_sync(layer.group_send)(LAB_GROUP, {"type": "lab.changed", "change": change})
+        async_to_sync(_send_in_time)(layer, {"type": "lab.changed", "change": change})
     except (OSError, RedisError) as fault:
-        log.warning("publish_failed", extra={"kind": change.get("kind"), "fault": str(fault)})
+        log.warning("publish_failed", extra={"kind": change.get("kind"), "fault": repr(fault)})
+
+
+async def _send_in_time(layer: Any, message: dict[str, Any]) -> None:
+    async with asyncio.timeout(PATIENCE_S):
+        await layer.group_send(LAB_GROUP, message)

@@ -1,5 +1,7 @@
 """Browsers hear of a change after its commit, and only then; a dead broker costs the hint."""
 
+import asyncio
+
 import pytest
 from asgiref.sync import async_to_sync
 from channels.layers import get_channel_layer
@@ -46,6 +48,18 @@ def test_dead_broker_is_noted_and_the_write_stands(monkeypatch, caplog, fault):
         raise fault
 
     monkeypatch.setattr(publish_module, "async_to_sync", lambda _: fail)
+    with transaction.atomic():
+        publish(CHANGE)
+    assert "publish_failed" in caplog.text
+
+
+def test_hanging_broker_holds_the_write_up_for_a_moment_only(monkeypatch, caplog):
+    class Hanging:
+        async def group_send(self, *_):
+            await asyncio.Event().wait()
+
+    monkeypatch.setattr(publish_module, "get_channel_layer", Hanging)
+    monkeypatch.setattr(publish_module, "PATIENCE_S", 0.05)
     with transaction.atomic():
         publish(CHANGE)
     assert "publish_failed" in caplog.text

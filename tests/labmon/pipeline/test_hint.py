@@ -1,3 +1,4 @@
+import threading
 import time
 
 import pytest
@@ -6,6 +7,16 @@ from kombu.exceptions import OperationalError
 from labmon.pipeline import hint as hint_module
 from labmon.pipeline.hint import Hint
 from labmon.pipeline.tasks import process_task
+
+
+@pytest.fixture(autouse=True)
+def hints_of_other_tests_end(monkeypatch):
+    """What a door of an earlier test announced may still be on its way in the background."""
+    monkeypatch.setattr(Hint, "_is_sent", staticmethod(_in_this_thread(Hint._is_sent, threading.get_ident())))
+
+
+def _in_this_thread(send, thread):
+    return lambda: send() if threading.get_ident() == thread else True
 
 
 @pytest.fixture

@@ -7,7 +7,7 @@ TESTS ?= tests
 WORKERS ?= 2
 PORT ?= 8000
 
-.PHONY: help setup dev demo run test slow js lint contracts bench check chromium servers
+.PHONY: help setup dev demo run test slow js lint contracts bench published check chromium servers
 .DEFAULT_GOAL := help
 
 help:
@@ -17,6 +17,7 @@ help:
 	@echo "test       everything that is not slow, on real engines and in a real browser"
 	@echo "slow       kill tests, soak tests, the demo as a whole, the container's entry commands"
 	@echo "lint contracts js bench    ruff; import contracts; node's tests; benchmarks"
+	@echo "published  writes docs/published.md: computed beside published values"
 	@echo "check      lint, contracts and test"
 
 setup: $(VENV)/.done-runtime
@@ -76,5 +77,8 @@ contracts: dev
 
 bench: dev
 	@for script in benchmarks/bench_*.py; do echo "== $$script"; $(BIN)/python $$script || exit 1; done
+
+published: dev
+	@$(BIN)/python -m tests.reference.published.table
 
 check: lint contracts test

@@ -1,4 +1,4 @@
-"""Reference values that lie beside this file, by id; where each comes from is in SOURCES.md."""
+"""Reference values of all *.json beside this file, by id; where each comes from is in SOURCES.md."""
 
 import json
 from functools import cache
@@ -10,8 +10,13 @@ HERE = Path(__file__).parent
 
 @cache
 def _all() -> dict[str, dict[str, Any]]:
-    rows = json.loads((HERE / "optics_and_statistics.json").read_text("utf-8"))
-    return {row["id"]: row for row in rows}
+    found: dict[str, dict[str, Any]] = {}
+    for path in sorted(HERE.glob("*.json")):
+        for row in json.loads(path.read_text("utf-8")):
+            if row["id"] in found:
+                raise ValueError(f"{path.name}: id {row['id']!r} is given twice; a value is kept once, in one file.")
+            found[row["id"]] = row
+    return found
 
 
 def reference(name: str) -> dict[str, Any]:

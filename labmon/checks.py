@@ -12,6 +12,7 @@ from django.conf import settings
 from django.core import checks
 from django.core.checks import CheckMessage, Error, register
 
+TAG = "labmon"
 CONSOLE_MAIL = "django.core.mail.backends.console.EmailBackend"
 
 
@@ -30,7 +31,7 @@ def has_public_host() -> bool:
     return not all(map(is_this_machine, settings.ALLOWED_HOSTS)) or not is_this_machine(settings.LISTEN)
 
 
-@register(deploy=True)
+@register(TAG, deploy=True)
 def check_services(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
     """E001: nobody said where database and broker are."""
     if not settings.HAS_SERVICES:
@@ -38,7 +39,7 @@ def check_services(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
                     hint="Start manage.py run_lab, or set LABMON_DATABASE_URL and LABMON_BROKER_URL.", id="labmon.E001")
 
 
-@register(deploy=True)
+@register(TAG, deploy=True)
 def check_public_url(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
     """E002, W003, W004: the address in mails and links, and whether it agrees with the TLS proxy."""
     parts = urlsplit(settings.PUBLIC_URL)
@@ -53,7 +54,7 @@ def check_public_url(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
                              hint="Set LABMON_PUBLIC_URL=https://….", id="labmon.W004")
 
 
-@register(deploy=True)
+@register(TAG, deploy=True)
 def check_exposure(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
     """W001, W005, W006: what strangers could see or read on the way."""
     if settings.DEBUG and has_public_host():
@@ -68,7 +69,7 @@ def check_exposure(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
                                   "to a network you trust.", id="labmon.W006")
 
 
-@register(deploy=True)
+@register(TAG, deploy=True)
 def check_mail(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
     """W002: alarms would be mailed to a log file."""
     if settings.EMAIL_BACKEND == CONSOLE_MAIL and urlsplit(settings.PUBLIC_URL).scheme == "https":
@@ -77,7 +78,7 @@ def check_mail(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
                              id="labmon.W002")
 
 
-@register(deploy=True)
+@register(TAG, deploy=True)
 def check_secret_key(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
     """W007: each process would sign sessions with a key of its own."""
     if not settings.IS_SECRET_KEY_KEPT:

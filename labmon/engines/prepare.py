@@ -14,6 +14,7 @@ from django.core.management.base import SystemCheckError
 from django.db import connection
 from django.db.migrations.executor import MigrationExecutor
 
+from labmon.checks import TAG
 from labmon.people.actions import add_person
 from labmon.people.models import Person, Role
 
@@ -28,7 +29,7 @@ def tell_checks(say: Say) -> None:
     Raises:
         SystemCheckError: One of them is an error.
     """
-    found = [message for message in run_checks(include_deployment_checks=True) if str(message.id).startswith("labmon.")]
+    found = run_checks(tags=[TAG], include_deployment_checks=True)
     for message in found:
         say(f"{message.id}: {message.msg} {message.hint}")
     if any(message.is_serious() for message in found):

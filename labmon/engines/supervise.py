@@ -104,8 +104,9 @@ class Supervisor:
         self.folder.keep_secret_key()
         self._start_services()
         answer = self._prepare()
-        self._start_processes()
+        self._start_web()
         self._await_web()
+        self._start_others()
         self._tell_ready(answer)
 
     def _listener(self) -> socket.socket:
@@ -164,16 +165,19 @@ class Supervisor:
                 process.terminate()
                 return
 
-    def _start_processes(self) -> None:
-        python, celery = sys.executable, [sys.executable, "-m", "celery", "-A", "labmon"]
+    def _start_web(self) -> None:
+        """First and alone: the page is there sooner when nothing else starts beside it."""
         assert self.listener is not None
         number = self.listener.fileno()
-        self._add("web", [python, "-m", "labmon.web", "--socket", str(number)], number)
+        self._add("web", [sys.executable, "-m", "labmon.web", "--socket", str(number)], number)
+
+    def _start_others(self) -> None:
+        celery = [sys.executable, "-m", "celery", "-A", "labmon"]
         self._add("worker", [*celery, "worker", "--concurrency", "2", "--loglevel", "INFO", "--without-gossip",
                              "--without-mingle"])
         self._add("beat", [*celery, "beat", "--loglevel", "INFO", "--pidfile", ""])
         if self.wish.has_demo:
-            self._add("demo", [python, str(PROJECT / "manage.py"), "send_demo_readings", "--to", self.address])
+            self._add("demo", [sys.executable, str(PROJECT / "manage.py"), "send_demo_readings", "--to", self.address])
 
     def _add(self, name: str, words: list[str], *open_files: int) -> None:
         self._check_stop()

@@ -76,7 +76,7 @@ contracts: dev
 	@$(BIN)/lint-imports
 
 bench: dev
-	@for script in benchmarks/bench_*.py; do echo "== $$script"; $(BIN)/python $$script || exit 1; done
+	@for script in benchmarks/bench_*.py; do echo "== $$script"; $(BIN)/python -m benchmarks.$$(basename $$script .py) || exit 1; done
 
 published: dev
 	@$(BIN)/python -m tests.reference.published.table

@@ -1,7 +1,7 @@
 """Judging and rolling up beside live readings: a real worker and beat, readings stored as the door stores them.
 
 Wanted: 200 taps x 10 Hz, and 1,000 taps x 1 Hz, on half a core or less, judged within 2 s.
-`python benchmarks/bench_pipeline.py 300` runs five minutes each (default 30 s).
+`python -m benchmarks.bench_pipeline 300` runs five minutes each (default 30 s).
 """
 
 import os
@@ -13,8 +13,6 @@ from pathlib import Path
 from zlib import crc32
 
 import numpy as np
-
-sys.path.insert(0, str(Path(__file__).resolve().parent.parent))
 
 from benchmarks.lab import cpu_s, descendants, median, row, throw_away_lab
 

@@ -16,6 +16,7 @@ from analysis.reduce.flat import FlatState, flat_from_json, mark_flat
 from analysis.reduce.sample import Reduced
 from analysis.reduce.tap import TrustContext, flat_channels, reduce_tap
 from analysis.reduce.trust import Reason, ReasonArray, clock_marks
+from ingest.clocks import CLOCK_TOLERANCE_US
 from ingest.files.origin import FILE_BOOT
 from ingest.models import Tap, TapBoot, TapKind
 from ingest.store.columns import NO_TIME, Readings, concatenate
@@ -146,12 +147,21 @@ def _reduce_alike(
     piece = (np.repeat(own_cuts, counts, axis=0) <= raw.at_us[:, None]).sum(axis=1)
     is_flat, flats = _flat_marks(kind, columns, first, piece, own_cuts.shape[1] + 1, [flat.get(tap.pk) for tap in taps])
     versions, index = _version_index(taps, raw.at_us, first, counts, knowledge.calibrations)
-    marks = clock_marks(raw.own_at_us, raw.arrival_us, raw.is_server_timed & (raw.own_at_us != NO_TIME))
+    marks = clock_marks(raw.own_at_us, raw.arrival_us, _has_wrong_stamp(raw))
     marks |= _two_devices(taps, raw.at_us, first, knowledge.overlaps)
     marks |= _old_zeros(versions, index, raw.at_us)
     calibration = _as_calibration(versions, index)
     samples = _reduced(kind, unit, raw.at_us, columns, calibration, marks, is_flat)
     return Group(taps, first, first + counts, samples), flats
+
+
+def _has_wrong_stamp(raw: Readings) -> BoolArray:
+    """True where the server's time stands because the station's own stamp was wrong.
+
+    A boot whose clock was wrong stays timed by the server, yet once its stamps agree again there is nothing to doubt.
+    """
+    is_off = np.abs(raw.own_at_us - raw.at_us) > CLOCK_TOLERANCE_US
+    return raw.is_server_timed & (raw.own_at_us != NO_TIME) & is_off
 
 
 def _with_needed(kind: TapKind, raw: Readings) -> dict[str, FloatArray]:

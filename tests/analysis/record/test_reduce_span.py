@@ -11,6 +11,7 @@ from analysis.record.calibrations import new_version
 from analysis.record.reduce_span import knowledge_of, reduce_many, reduced_samples
 from analysis.reduce.trust import Reason, Trust
 from ingest.models import TapKind, Unit
+from ingest.store.append import write_blocks
 from ingest.store.read import read_many
 from tests.factories import NOON, NOON_US, make_tap, store_readings
 
@@ -40,6 +41,18 @@ def test_each_sample_has_the_version_of_its_time_and_old_knowledge_can_be_asked_
     np.testing.assert_allclose(er_db, [30, 30, *[30 - 10 * np.log10(4)] * 3], atol=1e-9)
     er_db = reduced_samples(tap, NOON_US, NOON_US + 10**7, as_of=before).er_db
     np.testing.assert_allclose(er_db, [30, 30, *[30 - 10 * np.log10(2)] * 3], atol=1e-9)
+
+
+def test_of_a_boot_timed_by_the_server_only_wrong_stamps_are_doubted():
+    """A board that was at 1970 for two readings and then got the time: the rest is as good as any."""
+    own_us = SECONDS_US + 40_000
+    own_us[:2] = [1_000_000, 2_000_000]
+    tap = make_tap()
+    ports = {"port1": np.full(5, 1e-3), "port2": np.full(5, 1e-6)}
+    write_blocks(tap, SECONDS_US, ports, arrival_us=SECONDS_US, own_at_us=own_us, is_server_timed=True)
+    reduced = reduced_samples(tap, NOON_US, NOON_US + 10**7)
+    assert (reduced.reasons[Quantity.ER_DB] == Reason.CLOCK_UNSET).tolist() == [True, True, False, False, False]
+    assert reduced.trust[Quantity.ER_DB].tolist() == [Trust.DOUBTFUL] * 2 + [Trust.TRUSTED] * 3
 
 
 def test_many_taps_of_all_kinds_give_what_each_gives_alone():

@@ -110,7 +110,9 @@ def _check_trust(notes):
     assert _share_with(clock, er, Reason.CLOCK_UNSET) == 1.0
     assert np.all(clock.trust[er] == Trust.DOUBTFUL)
     assert _share_with(_samples(notes, "V1", moment(2, 7), moment(2, 7, 59)), er, Reason.CLOCK_UNSET) == 0.0
-    assert _share_with(_samples(notes, "N2", moment(11, 4, 41), moment(11, 5)), er, Reason.CLOCK_UNSET) == 1.0
+    reboot_s = moment(11, 4, 40)
+    assert _share_with(_samples(notes, "N2", reboot_s + 36.0, reboot_s + 74.0), er, Reason.CLOCK_UNSET) == 1.0
+    assert _share_with(_samples(notes, "N2", reboot_s + 77.0, reboot_s + 900.0), er, Reason.CLOCK_UNSET) == 0.0
     double = _samples(notes, "S4", moment(13, 15, 1), moment(13, 15, 24))
     assert _share_with(double, er, Reason.TWO_DEVICES) == 1.0
     assert _share_with(_samples(notes, "S4", moment(13, 15, 30), moment(13, 16)), er, Reason.TWO_DEVICES) == 0.0

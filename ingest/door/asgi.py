@@ -12,8 +12,8 @@ import psycopg
 
 from ingest.door.answers import answer_json
 from ingest.door.body import KnownStation
-from ingest.door.committer import Committer, RefusedNumbers, Result, Waiting
-from ingest.door.decode import LARGEST_BODY, Form, decode, form_of
+from ingest.door.committer import Committer, RefusedMessage, RefusedNumbers, Result, Waiting
+from ingest.door.decode import LARGEST_BODY, Form, decode, form_of, is_gzipped
 from ingest.door.keys import KeyRing
 from ingest.door.payload import UnknownTap, check_body, lowest_sequences
 from ingest.door.refusal import Refusal, come_again, no_entry, too_large
@@ -30,10 +30,16 @@ _LARGE = 256 << 10
 
 
 class Door:
-    """Takes bodies of stations in, whatever way they come, and answers after the commit."""
+    """Takes bodies of stations in, whatever way they come, and answers after the commit.
 
-    def __init__(self) -> None:
-        self.keys = KeyRing()
+    Args:
+        keys: What tells who sends; the "key" of the other methods is what this ring knows stations by.
+        has_presence: Whether its being up is written down, so that silence is judged.
+    """
+
+    def __init__(self, keys: KeyRing | None = None, *, has_presence: bool = True) -> None:
+        self.keys = keys or KeyRing()
+        self._has_presence = has_presence
         self._loop: asyncio.AbstractEventLoop | None = None
         self._committer: Committer | None = None
         self._lookups = ThreadPoolExecutor(1, thread_name_prefix="door-keys")
@@ -45,7 +51,7 @@ class Door:
         if self._loop is not loop:
             if self._committer is not None:
                 self._committer.close(0.0)
-            self._loop, self._committer = loop, Committer(self._tell)
+            self._loop, self._committer = loop, Committer(self._tell, has_presence=self._has_presence)
             self._committer.start()
 
     async def close(self) -> None:
@@ -73,8 +79,8 @@ class Door:
             raise no_entry(why, "Use the station's current key; a manager or owner makes a new one on the station's page.")
         return known.station
 
-    async def take(self, body: bytes, form: Form, key: str, remote_address: str = "") -> dict[str, Any]:
-        """Decode, check, commit, answer.
+    async def take(self, body: bytes, form: Form | None, key: str, remote_address: str = "") -> dict[str, Any]:
+        """Decode, check, commit, answer; ``form`` None: by the first bytes.
 
         Raises:
             Refusal: The body is not taken.
@@ -82,7 +88,7 @@ class Door:
         self.start()
         arrival_us = now_us()
         station = await self.station_of(key)
-        if len(body) > _LARGE or form.is_gzip:
+        if len(body) > _LARGE or is_gzipped(body, form):
             found = await asyncio.get_running_loop().run_in_executor(self._decoders, decode, body, form)
         else:
             found = decode(body, form)
@@ -99,6 +105,18 @@ class Door:
         if isinstance(result, Refusal):
             raise result
         return answer_json(result, now_us())
+
+    async def keep_message(self, message: bytes, key: str, refusal: Refusal) -> None:
+        """Set a refused message aside as it came: for a way in that forgets what it handed over.
+
+        Raises:
+            Refusal: 401, 429 or 503.
+        """
+        self.start()
+        station = await self.station_of(key)
+        result = await self._commit(RefusedMessage(station.id, message, refusal))
+        if isinstance(result, Refusal):
+            raise result
 
     async def _keep_refused(self, found: dict[str, Any], station: KnownStation) -> None:
         """``through`` must not reach beyond what was refused."""
@@ -177,7 +195,7 @@ class DoorApplication:
         if scope["method"] != "POST":
             raise Refusal(405, "the station door takes POST only", "Send readings with POST.", headers={"allow": "POST"})
         headers = dict(scope["headers"])
-        key = _bearer(headers.get(b"authorization"))
+        key = bearer_of(headers.get(b"authorization"))
         await self.door.station_of(key)
         form = form_of(_header(headers, b"content-type"), _header(headers, b"content-encoding"))
         body = await _body(headers, receive)
@@ -193,8 +211,12 @@ class _Gone(Exception):
     """The station hung up before it had sent all."""
 
 
-def _bearer(header: bytes | None) -> str:
-    """The key of an Authorization header."""
+def bearer_of(header: bytes | None) -> str:
+    """The key of an Authorization header.
+
+    Raises:
+        Refusal: 401, there is none.
+    """
     scheme, _, key = (header or b"").decode("latin-1").strip().partition(" ")
     if scheme.lower() != "bearer" or not key.strip():
         raise no_entry("a station key is needed", "Send the header Authorization: Bearer <station key>.", error="")
@@ -227,5 +249,3 @@ async def _send_json(send: Send, status: int, content: object, kind: str, header
              *((name.encode(), value.encode("latin-1", "replace")) for name, value in headers.items())]
     await send({"type": "http.response.start", "status": status, "headers": lines})
     await send({"type": "http.response.body", "body": body})
-
-

@@ -20,7 +20,7 @@ from ingest.door.body import Body
 from ingest.door.commit import Answer, Ids, StaleIds, Transaction
 from ingest.door.presence import Presence
 from ingest.door.refusal import Refusal, bad_form, come_again
-from ingest.door.rows import note_refused
+from ingest.door.rows import keep_message, note_refused
 from ingest.times import now_us
 
 log = logging.getLogger(__name__)
@@ -43,6 +43,17 @@ class RefusedNumbers:
     count: int = 1
 
 
+@dataclass(frozen=True, slots=True)
+class RefusedMessage:
+    """A message that was refused whole, to be set aside as it came."""
+
+    station_id: int
+    message: bytes
+    refusal: Refusal
+    count: int = 1
+
+
+Item = Body | RefusedNumbers | RefusedMessage
 Result = Answer | Refusal
 Told = Callable[[Sequence[tuple["Waiting", Result]]], None]
 
@@ -51,7 +62,7 @@ Told = Callable[[Sequence[tuple["Waiting", Result]]], None]
 class Waiting:
     """One item of the queue with whoever waits for it."""
 
-    item: Body | RefusedNumbers
+    item: Item
     token: Any
 
 
@@ -76,7 +87,7 @@ class Committer:
             self._thread = threading.Thread(target=self._work, name="door-committer", daemon=True)
             self._thread.start()
 
-    def submit(self, item: Body | RefusedNumbers, token: Any) -> None:
+    def submit(self, item: Item, token: Any) -> None:
         """Queue an item; its result is told later.
 
         Raises:
@@ -148,7 +159,7 @@ class Committer:
                 announce()
         return list(zip(group, results, strict=True))
 
-    def _commit(self, items: list[Body | RefusedNumbers]) -> list[Result]:
+    def _commit(self, items: list[Item]) -> list[Result]:
         """One transaction, tried again where two doors or a restart got in each other's way."""
         for attempt in range(_TRIES):
             try:
@@ -164,7 +175,7 @@ class Committer:
                     raise
         raise psycopg.OperationalError("row ids stay stale")
 
-    def _commit_once(self, items: list[Body | RefusedNumbers]) -> list[Result]:
+    def _commit_once(self, items: list[Item]) -> list[Result]:
         if self._db is None or self._db.closed:
             self._db = connect(autocommit=False)
         bodies = [item for item in items if isinstance(item, Body)]
@@ -174,6 +185,8 @@ class Committer:
             for item in items:
                 if isinstance(item, RefusedNumbers):
                     note_refused(self._db, item.station_id, item.boot, item.lowest, now_us())
+                elif isinstance(item, RefusedMessage):
+                    keep_message(self._db, item.station_id, item.message, item.refusal, now_us())
             self._db.commit()
         except BaseException:
             self._roll_back()
@@ -212,7 +225,7 @@ class Committer:
             time.sleep(0.2)
 
 
-def _facts(item: Body | RefusedNumbers) -> dict[str, Any]:
+def _facts(item: Item) -> dict[str, Any]:
     if isinstance(item, Body):
         return {"station": item.station.name, "boot": item.boot, "readings": item.count}
-    return {"station_id": item.station_id, "boot": item.boot}
+    return {"station_id": item.station_id}

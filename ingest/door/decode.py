@@ -43,20 +43,31 @@ def form_of(content_type: str, content_encoding: str) -> Form:
     return Form(kind in MSGPACK_TYPES, encoding in {"gzip", "x-gzip"})
 
 
-def decode(body: bytes, form: Form) -> dict[str, Any]:
-    """The map that a body holds.
+def is_gzipped(body: bytes, form: Form | None) -> bool:
+    """Whether a body is packed with gzip: as its form says, else by its first bytes (RFC 1952, section 2.3.1)."""
+    return body[:2] == b"\x1f\x8b" if form is None else form.is_gzip
+
+
+def decode(body: bytes, form: Form | None) -> dict[str, Any]:
+    """The map that a body holds; ``form`` None tells JSON, MessagePack and gzip apart by the first bytes.
 
     Raises:
         Refusal: 400 or 413.
     """
-    if form.is_gzip:
+    if is_gzipped(body, form):
         body = _inflate(body)
     if len(body) > LARGEST_BODY:
         raise too_large(f"the body has more than {LARGEST_BODY >> 20} MiB", "Send half as many readings at a time.")
-    found = _from_msgpack(body) if form.is_msgpack else _from_json(body)
+    is_msgpack = _begins_as_msgpack_map(body) if form is None else form.is_msgpack
+    found = _from_msgpack(body) if is_msgpack else _from_json(body)
     if not isinstance(found, dict):
         raise bad_form(f"the body is a {_word(found)}, not a map", "Send a map with the member taps; see docs/payload.md.")
     return found
+
+
+def _begins_as_msgpack_map(body: bytes) -> bool:
+    """MessagePack's three kinds of map: 0x80 to 0x8f, 0xde, 0xdf. No JSON text in UTF-8 begins so."""
+    return bool(body) and (body[0] & 0xF0 == 0x80 or body[0] in (0xDE, 0xDF))
 
 
 def _inflate(body: bytes) -> bytes:

@@ -1,17 +1,23 @@
 """The statements of the group commit: each takes whole columns, so their number does not grow with the bodies."""
 
+import base64
+import hashlib
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 from typing import Any, LiteralString
 
+import msgspec
 import psycopg
 
 from ingest.clocks import ClockState
 from ingest.database import BigInts, columns_of, fetch
+from ingest.door.refusal import Refusal
 from ingest.store.boots import multirange_text, station_boot_ids, tap_boot_ids
 
 Ranges = list[tuple[int, int]]
 _TOUCH_GAP_US = 60_000_000
+MOST_KEPT = 64 << 10
+"""Bytes of a refused message that are kept; it was answered as refused, so the station still has it whole."""
 
 
 @dataclass(slots=True)
@@ -80,6 +86,15 @@ def note_refused(db: psycopg.Connection[Any], station_id: int, boot: str, lowest
     station_boot = station_boot_ids(db, [(station_id, boot)], arrival_us)[station_id, boot]
     ids = tap_boot_ids(db, [(tap, station_boot) for tap in lowest])
     _write(psycopg.Cursor(db), _LOWER, sorted((row, lowest[tap]) for (tap, _), row in ids.items()))
+
+
+def keep_message(db: psycopg.Connection[Any], station_id: int, message: bytes, refusal: Refusal, arrival_us: int) -> None:
+    """Set a message aside that was refused whole: in base64, and the same message once; of a very long one the beginning."""
+    kept = {"message_base64": base64.b64encode(message[:MOST_KEPT]).decode(), "bytes": len(message),
+            "is_whole": len(message) <= MOST_KEPT}
+    _write(psycopg.Cursor(db), _INSERT_ASIDE, [(
+        station_id, None, "", None, arrival_us, refusal.at[:100], refusal.title[:300], refusal.detail[:300],
+        msgspec.json.encode(kept).decode(), hashlib.blake2b(message, digest_size=16).digest())])
 
 
 def ranges_in(text: str) -> Ranges:

@@ -49,6 +49,14 @@ def test_the_msgpack_example(sender):
     assert answer["stored"] == 500 and answer["through"] == {"eom-in": 499}
 
 
+def test_the_stream_example(sender):
+    port = free_port()
+    names = {"address": f"ws://127.0.0.1:{port}", "key": sender.key}
+    with server(port, "labmon.asgi"):
+        exec(blocks("stream")[0], names)  # noqa: S102  our own page
+    assert names["answer"]["through"] == {"eom-in": 0}
+
+
 def test_the_curl_line(sender):
     command = next(text for language, _, text in BLOCKS if language == "sh")
     port = free_port()

@@ -17,7 +17,7 @@ class Taker:
 
 @pytest.fixture
 def dispatcher():
-    return Dispatcher(door=Taker(), pages=Taker(), live=Taker())
+    return Dispatcher(door=Taker(), stream=Taker(), pages=Taker(), live=Taker())
 
 
 @pytest.mark.parametrize(("scope", "to"), [
@@ -26,12 +26,14 @@ def dispatcher():
     ({"type": "http", "method": "POST", "path": "/api/v1/readings/"}, "pages"),
     ({"type": "http", "method": "POST", "path": "/api/v1/experiments"}, "pages"),
     ({"type": "websocket", "path": "/live/"}, "live"),
+    ({"type": "websocket", "path": "/api/v1/readings/stream"}, "stream"),
+    ({"type": "http", "method": "GET", "path": "/api/v1/readings/stream"}, "pages"),
     ({"type": "lifespan"}, "door"),
 ])
 async def test_connection_goes_to(dispatcher, scope, to):
     await dispatcher(scope, None, None)
     assert {name: len(taker.taken) for name, taker in vars(dispatcher).items()} == {
-        name: int(name == to) for name in ("door", "pages", "live")}
+        name: int(name == to) for name in ("door", "stream", "pages", "live")}
 
 
 async def test_socket_of_unknown_path_is_closed(dispatcher):
@@ -48,5 +50,5 @@ async def test_socket_of_unknown_path_is_closed(dispatcher):
     assert dispatcher.live.taken == []
 
 
-def test_the_real_one_has_three_applications():
-    assert type(application.door).__name__ == "DoorApplication"
+def test_request_and_stream_share_one_door():
+    assert type(application.door).__name__ == "DoorApplication" and application.stream.door is application.door.door

@@ -1,5 +1,6 @@
 """Bytes to a map: a name given twice is seen, whatever the texts between hold."""
 
+import gzip
 import json
 
 import msgspec
@@ -60,3 +61,17 @@ def test_quotation_marks_in_texts_are_no_names(body):
 )
 def test_forms_by_header(kind, encoding, form):
     assert form_of(kind, encoding) == form
+
+
+@given(bodies)
+def test_without_headers_the_first_bytes_tell_the_form(body):
+    for written in (json.dumps(body).encode(), b" \n" + json.dumps(body).encode(), msgspec.msgpack.encode(body)):
+        assert decode(written, None) == decode(gzip.compress(written), None) == body
+
+
+@pytest.mark.parametrize(("body", "says"), [(b"", "not JSON"), (b"\x93\x01", "not UTF-8"), (b"\x80\x80", "not MessagePack"),
+                                            (b"\x1f\x8bno", "not gzip"), (b"\xdf", "not MessagePack"), (b"[1]", "a list")])
+def test_without_headers_anything_else_is_refused(body, says):
+    with pytest.raises(Refusal) as refused:
+        decode(body, None)
+    assert refused.value.status == 400 and (says in refused.value.title or says == "not UTF-8")

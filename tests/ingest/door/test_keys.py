@@ -1,12 +1,14 @@
 """Keys are remembered for a moment only, and looked up again when their connection broke."""
 
 import time
+from datetime import timedelta
 
 import pytest
+from django.utils import timezone
 
 from ingest.door import keys
 from ingest.models import StationKey
-from ingest.stations import NewTap, add_station, revoke_key
+from ingest.stations import NewTap, add_station, digest_of, make_key, revoke_key
 
 pytestmark = pytest.mark.django_db(transaction=True)
 
@@ -61,3 +63,20 @@ def test_a_broken_connection_is_opened_anew(ring):
 def test_a_revoked_key_says_so(ring):
     revoke_key(StationKey.objects.get().pk)
     assert ring[0].look_up(ring[1]).reason_to_refuse() == "the key was revoked"
+
+
+def test_a_name_opens_its_station_while_one_key_is_in_force():
+    station, key = add_station("bench", None, [NewTap("eom-in", "two-port", "W")])
+    ring = keys.NameRing()
+    assert set(ring.look_up("bench").station.taps) == {"eom-in"} and ring.remembered("bench").station.name == "bench"
+    assert ring.look_up("bunch").reason_to_refuse() == "the station is not known or has no key"
+    second = make_key(station, timezone.now() + timedelta(seconds=60))
+    revoke_key(StationKey.objects.get(digest=digest_of(key)).pk)
+    assert ring.look_up("bench").reason_to_refuse() == ""
+    StationKey.objects.filter(digest=digest_of(second)).update(expires_at=timezone.now() - timedelta(seconds=1))
+    assert ring.look_up("bench").reason_to_refuse() == "the key has expired"
+    StationKey.objects.update(revoked_at=timezone.now())
+    assert ring.look_up("bench").reason_to_refuse() == "the key was revoked"
+    StationKey.objects.all().delete()
+    assert ring.look_up("bench").reason_to_refuse() == "the station is not known or has no key"
+    ring.close()

@@ -21,13 +21,20 @@ SERVE = (
 )
 
 
+SERVE_ALL = (
+    "import uvicorn; "
+    "uvicorn.run('labmon.asgi:application', port={port}, log_level='warning', ws_per_message_deflate=False)"
+)
+
+
 @contextmanager
-def server(port):
-    """The door in a process of its own, on the test database."""
+def server(port, what="the door"):
+    """The door, or the whole of ``labmon.asgi``, in a process of its own, on the test database."""
+    program = SERVE_ALL if what == "labmon.asgi" else SERVE
     settings = connection.settings_dict
     url = f"postgresql://{settings['USER']}:{settings['PASSWORD']}@/{settings['NAME']}?host={settings['HOST']}&port={settings['PORT']}"
     process = subprocess.Popen(
-        [sys.executable, "-c", SERVE.format(port=port)],
+        [sys.executable, "-c", program.format(port=port)],
         env=os.environ | {"LABMON_DATABASE_URL": url, "DJANGO_SETTINGS_MODULE": "labmon.settings", "LABMON_LOG_LEVEL": "ERROR"},
     )
     try:

@@ -23,6 +23,7 @@ class TapCalibration:
     Attributes:
         gain_ratio: Gain of port 1 / gain of port 2. Nets are brought to port 1's scale.
         leakage: readings = leakage @ (power wanted in port 1, power wanted in port 2), shape (2, 2) or (N, 2, 2).
+        leakage_sigma: 1 sigma of each entry of ``leakage``, same shape; unset is exact.
         wanted_port: 1 or 2: the port that the wanted light belongs to.
         monitor_ratio: Bright power / monitor power.
         bright_nominal: Declared bright power, used where there is no monitor.
@@ -38,6 +39,7 @@ class TapCalibration:
     saturation1: Any = None
     saturation2: Any = None
     leakage: Any = None
+    leakage_sigma: Any = None
     wanted_port: Any = 1
     monitor_ratio: Any = None
     bright_nominal: Any = None
@@ -50,8 +52,8 @@ class TapCalibration:
 
 
 _NAMES = tuple(field.name for field in fields(TapCalibration))
-_SHAPES: dict[str, tuple[int, ...]] = {"leakage": (2, 2), "wanted_state": (3,)}
-_WHEN_NONE: dict[str, Any] = {"leakage": np.eye(2), "wanted_state": np.full(3, np.nan)}
+_SHAPES: dict[str, tuple[int, ...]] = {"leakage": (2, 2), "leakage_sigma": (2, 2), "wanted_state": (3,)}
+_WHEN_NONE: dict[str, Any] = {"leakage": np.eye(2), "leakage_sigma": np.zeros((2, 2)), "wanted_state": np.full(3, np.nan)}
 
 
 def stack(versions: Sequence[TapCalibration]) -> TapCalibration:

@@ -31,20 +31,31 @@ def upper_limit(net: FloatArray, sigma: FloatArray, confidence: float = CONFIDEN
 
     Args:
         net, sigma: Net reading and its 1 sigma (above 0), same unit, any shape.
+        confidence: 1 - alpha, in (0, 1).
     Returns:
-        x + sigma PhiInv(1 - alpha Phi(x/sigma)), always above 0. Source: F-06.
+        x + sigma PhiInv(1 - alpha Phi(x/sigma)), always above 0; NaN for NaN. Source: F-06.
+    Raises:
+        ValueError: ``confidence`` is not between 0 and 1.
     """
+    if not 0.0 < confidence < 1.0:
+        raise ValueError(f"confidence={confidence!r} is not between 0 and 1; 0.95 is usual.")
     score = net / sigma
     # PhiInv(1 - p) = -PhiInv(p); in logarithms, so that it holds for readings far below zero.
     return net - sigma * ndtri_exp(np.log1p(-confidence) + log_ndtr(score))
 
 
 def extinction(
-    wanted: FloatArray, other: FloatArray, wanted_sigma: FloatArray, other_sigma: FloatArray, covariance: FloatArray | float = 0.0
+    wanted: FloatArray,
+    other: FloatArray,
+    wanted_sigma: FloatArray,
+    other_sigma: FloatArray,
+    covariance: FloatArray | float = 0.0,
+    *,
+    confidence: float = CONFIDENCE,
 ) -> Extinction:
     """Extinction ratio of two net powers.
 
-    A port below 1.645 sigma is not detected: the ratio is then a one-sided 95 % bound. Both ports within 3 sigma of
+    A port below 1.645 sigma is not detected: the ratio is then a one-sided bound at ``confidence``. Both ports within 3 sigma of
     zero are dark: no ratio. A net at or below zero without a known floor, or more than 5 sigma below zero, is negative:
     no ratio.
 
@@ -52,6 +63,7 @@ def extinction(
         wanted, other: Signed net powers, one unit, shape (N,).
         wanted_sigma, other_sigma: Their 1 sigma, broadcastable, 0 where unknown.
         covariance: Of the two nets, where they share a reading (leaky splitter).
+        confidence: Of a bound, in (0, 1); the threshold of detection stays at 1.645 sigma.
     Returns:
         ``er_db`` dB, NaN where undefined; ``er_sigma_db`` dB, NaN for bounds and where no noise is known; reasons.
     Source: docs/formulas.md, F-01, F-05, F-06, F-07.
@@ -67,9 +79,9 @@ def extinction(
     is_value = sees_wanted & sees_other & ~is_dark
     top, bottom = wanted.copy(), other.copy()
     if is_lower.any():
-        bottom[is_lower] = upper_limit(other[is_lower], other_sigma[is_lower])
+        bottom[is_lower] = upper_limit(other[is_lower], other_sigma[is_lower], confidence)
     if is_upper.any():
-        top[is_upper] = upper_limit(wanted[is_upper], wanted_sigma[is_upper])
+        top[is_upper] = upper_limit(wanted[is_upper], wanted_sigma[is_upper], confidence)
     has_ratio = is_value | is_lower | is_upper
     all_have = bool(has_ratio.all())
     if not all_have:

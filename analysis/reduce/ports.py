@@ -1,7 +1,6 @@
 """Two-port and dark-port taps: raw port powers to net powers and extinction ratio."""
 
 from collections.abc import Mapping
-from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -17,20 +16,10 @@ from analysis.quantities import (
 )
 from analysis.reduce.calibration import TapCalibration, as_optional
 from analysis.reduce.extinction import extinction
+from analysis.reduce.leakage import PortNets, without_leakage
 from analysis.reduce.trust import Reason, ReasonArray, marked
 
 Columns = Mapping[str, FloatArray]
-
-
-@dataclass(frozen=True, slots=True)
-class PortNets:
-    """Net powers of port 1 and 2 behind zero, gain and leakage, their 1 sigma and covariance, shape (N,)."""
-
-    first: FloatArray
-    second: FloatArray
-    first_sigma: FloatArray
-    second_sigma: FloatArray
-    covariance: FloatArray | float
 
 
 def reduce_two_port(columns: Columns, unit: str, cal: TapCalibration) -> tuple[dict[str, Any], dict[Quantity, ReasonArray]]:
@@ -39,13 +28,13 @@ def reduce_two_port(columns: Columns, unit: str, cal: TapCalibration) -> tuple[d
     Args:
         columns: ``port1``, ``port2`` as sent in ``unit``, shape (N,); optional ``…_sd`` with ``averaged``, ``clipped``.
     Returns:
-        Fields of `Reduced`, and reasons per quantity. Source: docs/formulas.md, F-01, F-05 to F-09.
+        Fields of `Reduced`, and reasons per quantity. Source: docs/formulas.md, F-01, F-05 to F-09, F-22.
     """
     raw1, raw2 = linear_from_raw(columns["port1"], unit), linear_from_raw(columns["port2"], unit)
     sigma1 = _sigma(columns, "port1", unit, raw1, cal.floor1)
     sigma2 = _sigma(columns, "port2", unit, raw2, cal.floor2)
     first, second = raw1 - cal.zero1, (raw2 - cal.zero2) * cal.gain_ratio
-    nets = _without_leakage(PortNets(first, second, sigma1, sigma2 * cal.gain_ratio, 0.0), cal.leakage)
+    nets = without_leakage(PortNets(first, second, sigma1, sigma2 * cal.gain_ratio, 0.0), cal.leakage, cal.leakage_sigma)
     is_saturated = _is_saturated(columns, ((raw1, cal.saturation1), (raw2, cal.saturation2)))
     return _quantities(nets, unit, cal, is_saturated, is_declared=None)
 
@@ -57,7 +46,7 @@ def reduce_dark_port(columns: Columns, unit: str, cal: TapCalibration) -> tuple[
         columns: ``port2`` and optional ``monitor`` as sent in ``unit``, shape (N,). The monitor's zero, floor and
             saturation are those of port 1.
     Returns:
-        As `reduce_two_port`; ``power_w`` is that of both ports, so it rests on the monitor as well. Source: F-01, F-10.
+        As `reduce_two_port`; ``power_w`` is that of both ports, so it rests on the monitor as well. Source: F-01, F-10, F-22.
     """
     raw2 = linear_from_raw(columns["port2"], unit)
     count = len(raw2)
@@ -71,7 +60,11 @@ def reduce_dark_port(columns: Columns, unit: str, cal: TapCalibration) -> tuple[
     if cal.leakage is not None:
         leakage = np.asarray(cal.leakage, dtype=np.float64)
         dark = (dark - leakage[..., 1, 0] * bright) / leakage[..., 1, 1]
-        dark_sigma = np.hypot(dark_sigma, leakage[..., 1, 0] * bright_sigma) / np.abs(leakage[..., 1, 1])
+        dark_sigma = np.hypot(dark_sigma, leakage[..., 1, 0] * bright_sigma)
+        if cal.leakage_sigma is not None:
+            unsure = np.asarray(cal.leakage_sigma, dtype=np.float64)
+            dark_sigma = np.hypot(dark_sigma, np.hypot(unsure[..., 1, 0] * bright, unsure[..., 1, 1] * dark))
+        dark_sigma = dark_sigma / np.abs(leakage[..., 1, 1])
     is_saturated = _is_saturated(columns, ((raw_monitor, cal.saturation1), (raw2, cal.saturation2)))
     fields, reasons = _quantities(
         PortNets(bright, dark, bright_sigma, dark_sigma, 0.0), unit, cal, is_saturated, is_declared=is_declared
@@ -89,23 +82,6 @@ def _sigma(columns: Columns, port: str, unit: str, raw: FloatArray, floor: Any) 
         spread = spread * np.abs(raw) / DB_PER_NEPER_OF_POWER
     error = spread / np.sqrt(np.maximum(averaged, 1.0))
     return np.hypot(floor, np.nan_to_num(error))
-
-
-def _without_leakage(nets: PortNets, leakage: Any) -> PortNets:
-    """Powers before a leaky splitter, by the inverse of its 2x2 matrix; F-08."""
-    if leakage is None:
-        return nets
-    leakage = np.asarray(leakage, dtype=np.float64)
-    a, b, c, d = leakage[..., 0, 0], leakage[..., 0, 1], leakage[..., 1, 0], leakage[..., 1, 1]
-    scale = 1.0 / (a * d - b * c)
-    variance1, variance2 = nets.first_sigma**2, nets.second_sigma**2
-    return PortNets(
-        scale * (d * nets.first - b * nets.second),
-        scale * (a * nets.second - c * nets.first),
-        np.abs(scale) * np.sqrt(d**2 * variance1 + b**2 * variance2),
-        np.abs(scale) * np.sqrt(c**2 * variance1 + a**2 * variance2),
-        -(scale**2) * (c * d * variance1 + a * b * variance2),
-    )
 
 
 def _is_saturated(columns: Columns, ports: tuple[tuple[FloatArray, Any], ...]) -> BoolArray:

@@ -22,6 +22,7 @@ class Paths:
         at_us: Times, shape (N,). state: Angles, rad, shape (N,), or Stokes vectors, shape (N, 3).
         held_s: Seconds for which each sample is judged, shape (N,): 0 where untrusted, NaN, outside the window or after the cut.
         start: State at each window's start, shape (W,) or (W, 3); NaN where nothing was judged.
+        is_start_bound: Shape (W,): the first judged angle is only an upper bound; ``start`` is then 0.
         followed_s: How long each window was followed, s, shape (W,): its length, or up to its cut.
         trusted_share: Judged seconds over ``followed_s``, shape (W,).
     """
@@ -32,6 +33,7 @@ class Paths:
     state: FloatArray
     held_s: FloatArray
     start: FloatArray
+    is_start_bound: BoolArray
     followed_s: FloatArray
     trusted_share: FloatArray
 
@@ -39,7 +41,7 @@ class Paths:
         """The first ``count`` windows, without copying a sample."""
         last = int(self.first[count])
         return Paths(self.windows[:count], self.first[:count + 1], self.at_us[:last], self.state[:last], self.held_s[:last],
-                     self.start[:count], self.followed_s[:count], self.trusted_share[:count])
+                     self.start[:count], self.is_start_bound[:count], self.followed_s[:count], self.trusted_share[:count])
 
 
 def gather_paths(windows: Sequence[PastWindow], length_s: float | None = None) -> Paths:
@@ -64,8 +66,8 @@ def gather_paths(windows: Sequence[PastWindow], length_s: float | None = None) -
     held_s = np.where(is_judged, _held_s(at_us, first, start_us, end_us, windows), 0.0)
     followed_s = (end_us - start_us) / US_PER_S
     share = _sums(held_s, first) / np.where(followed_s > 0.0, followed_s, np.nan)
-    return Paths(tuple(windows), first, at_us, state, held_s, _starts(windows, first, state, held_s), followed_s,
-                 np.nan_to_num(share))
+    start, is_bound = _starts(windows, first, state, held_s)
+    return Paths(tuple(windows), first, at_us, state, held_s, start, is_bound, followed_s, np.nan_to_num(share))
 
 
 def _end_us(window: PastWindow, length_s: float | None) -> int:
@@ -91,19 +93,21 @@ def _interval_s(window: PastWindow) -> float:
     return float(np.median(np.diff(window.at_us))) / US_PER_S if len(window.at_us) > 1 else 1.0
 
 
-def _starts(windows: Sequence[PastWindow], first: IntArray, state: FloatArray, held_s: FloatArray) -> FloatArray:
-    """State from which each window's displacement counts."""
+def _starts(windows: Sequence[PastWindow], first: IntArray, state: FloatArray,
+            held_s: FloatArray) -> tuple[FloatArray, BoolArray]:
+    """State from which each window's displacement counts, and where it is 0 for want of more than a bound."""
     judged = np.append(np.flatnonzero(held_s > 0.0), len(state))
     begin = judged[np.searchsorted(judged, first[:-1])]
     found = begin < first[1:]
     start = np.full((len(windows), *state.shape[1:]), np.nan)
     start[found] = state[begin[found]]
+    is_bound = np.zeros(len(windows), bool)
     for number, window in enumerate(windows):
         if window.start_state is not None:
             start[number] = window.start_state
         elif found[number] and state.ndim == 1 and _is_bound(window, int(begin[number] - first[number])):
-            start[number] = 0.0
-    return start
+            start[number], is_bound[number] = 0.0, True
+    return start, is_bound
 
 
 def _is_bound(window: PastWindow, index: int) -> bool:

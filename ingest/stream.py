@@ -13,8 +13,9 @@ from typing import Any
 
 import msgspec
 
-from ingest.door.asgi import Door, bearer_of
+from ingest.door.asgi import Door, bearer_of, remote_address, sent_key
 from ingest.door.decode import Form
+from ingest.door.notices import note_refused, note_used
 from ingest.door.refusal import Refusal
 
 log = logging.getLogger(__name__)
@@ -45,11 +46,12 @@ class StreamApplication:
             key = bearer_of(dict(scope["headers"]).get(b"authorization"))
             await self.door.station_of(key)
         except Refusal as refusal:
+            note_refused(sent_key(scope), remote_address(scope), refusal)
             await _turn_away(scope, send, refusal)
             return
+        note_used(key, remote_address(scope))
         await send({"type": "websocket.accept"})
-        remote = scope["client"][0] if scope.get("client") else ""
-        await Stream(self.door, key, remote, receive, send).run()
+        await Stream(self.door, key, remote_address(scope), receive, send).run()
 
 
 class Stream:

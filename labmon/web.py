@@ -4,6 +4,7 @@ import argparse
 import os
 import socket
 
+import django
 import uvicorn
 from django.conf import settings
 
@@ -36,7 +37,17 @@ def serve(listener: socket.socket) -> None:
     config = uvicorn.Config("labmon.asgi:application", ws_per_message_deflate=False, lifespan="on", access_log=False,
                             log_config=None, timeout_graceful_shutdown=DRAIN_WITHIN_S, backlog=BACKLOG,
                             proxy_headers=True, forwarded_allow_ips=settings.TRUSTED_PROXIES, server_header=False)
+    _listen_to_notices()
     uvicorn.Server(config).run(sockets=[listener])
+
+
+def _listen_to_notices() -> None:
+    """What the door notices of keys goes to where the pages read it."""
+    django.setup()
+    from ingest.door.notices import listen  # needs the loaded applications
+    from labmon.benches.door_log import keep_notices_in_thread
+
+    listen(keep_notices_in_thread)
 
 
 def main() -> None:

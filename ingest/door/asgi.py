@@ -15,6 +15,7 @@ from ingest.door.body import KnownStation
 from ingest.door.committer import Committer, RefusedMessage, RefusedNumbers, Result, Waiting
 from ingest.door.decode import LARGEST_BODY, Form, decode, form_of, is_gzipped
 from ingest.door.keys import KeyRing
+from ingest.door.notices import note_refused, note_used
 from ingest.door.payload import UnknownTap, check_body, lowest_sequences
 from ingest.door.refusal import Refusal, come_again, no_entry, too_large
 from ingest.times import now_us
@@ -185,6 +186,7 @@ class DoorApplication:
         try:
             answer = await self._answer(scope, receive)
         except Refusal as refusal:
+            note_refused(sent_key(scope), remote_address(scope), refusal)
             await _send_json(send, refusal.status, refusal.as_json(), "application/problem+json", refusal.headers)
         except _Gone:
             return
@@ -197,10 +199,20 @@ class DoorApplication:
         headers = dict(scope["headers"])
         key = bearer_of(headers.get(b"authorization"))
         await self.door.station_of(key)
+        note_used(key, remote_address(scope))
         form = form_of(_header(headers, b"content-type"), _header(headers, b"content-encoding"))
         body = await _body(headers, receive)
-        remote = scope["client"][0] if scope.get("client") else ""
-        return await self.door.take(body, form, key, remote)
+        return await self.door.take(body, form, key, remote_address(scope))
+
+
+def remote_address(scope: dict[str, Any]) -> str:
+    """Who speaks; empty where the server does not know."""
+    return scope["client"][0] if scope.get("client") else ""
+
+
+def sent_key(scope: dict[str, Any]) -> str:
+    """The key as it came, empty where there is none."""
+    return _key_in(dict(scope["headers"]).get(b"authorization"))
 
 
 def _header(headers: dict[bytes, bytes], name: bytes) -> str:
@@ -217,10 +229,15 @@ def bearer_of(header: bytes | None) -> str:
     Raises:
         Refusal: 401, there is none.
     """
-    scheme, _, key = (header or b"").decode("latin-1").strip().partition(" ")
-    if scheme.lower() != "bearer" or not key.strip():
+    key = _key_in(header)
+    if not key:
         raise no_entry("a station key is needed", "Send the header Authorization: Bearer <station key>.", error="")
-    return key.strip()
+    return key
+
+
+def _key_in(header: bytes | None) -> str:
+    scheme, _, key = (header or b"").decode("latin-1").strip().partition(" ")
+    return key.strip() if scheme.lower() == "bearer" else ""
 
 
 async def _body(headers: dict[bytes, bytes], receive: Receive) -> bytes:

@@ -10,3 +10,30 @@ class Bench(models.Model):
     station = models.OneToOneField("ingest.Station", models.CASCADE, related_name="bench")
     owner = models.ForeignKey(settings.AUTH_USER_MODEL, models.SET_NULL, null=True, blank=True, related_name="benches")
     purpose = models.CharField(max_length=300, blank=True)
+
+
+class KeyUse(models.Model):
+    """When a station key was last used, and from where; written at most every half minute."""
+
+    key = models.OneToOneField("ingest.StationKey", models.CASCADE, primary_key=True, related_name="use")
+    last_used_at = models.DateTimeField()
+    remote_address = models.CharField(max_length=64, blank=True)
+
+
+class DoorRefusal(models.Model):
+    """What the station door refused, by key and address; only the newest few hundred are kept.
+
+    ``station`` is whose key it was, null where it was nobody's. ``hint`` is the key's first letters where it looked like one.
+    """
+
+    station = models.ForeignKey("ingest.Station", models.CASCADE, null=True, related_name="refusals")
+    mark = models.BinaryField(max_length=16, unique=True, help_text="Of key, address and what was refused.")
+    hint = models.CharField(max_length=8, blank=True)
+    remote_address = models.CharField(max_length=64, blank=True)
+    status = models.PositiveSmallIntegerField()
+    title = models.CharField(max_length=200)
+    detail = models.CharField(max_length=300)
+    field = models.CharField(max_length=200, blank=True)
+    count = models.PositiveIntegerField(default=0)
+    first_at = models.DateTimeField()
+    last_at = models.DateTimeField(db_index=True)

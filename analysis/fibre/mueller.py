@@ -46,13 +46,45 @@ def mueller_rotator(angle_rad: ArrayLike) -> FloatArray:
     return _matrix([[1, 0, 0, 0], [0, c, -s, 0], [0, s, c, 0], [0, 0, 0, 1]])
 
 
-def mueller_of_jones(jones: ComplexArray) -> FloatArray:
-    """Mueller matrix of a Jones matrix: shape (2, 2) in, (4, 4) out.
+def mueller_depolarizer(share: ArrayLike) -> FloatArray:
+    """Mueller matrix of an isotropic depolarizer that leaves ``share`` (0 to 1) of the DOP: (...) in, (..., 4, 4) out."""
+    share = np.asarray(share, float)
+    return _matrix([[1, 0, 0, 0], [0, share, 0, 0], [0, 0, share, 0], [0, 0, 0, share]])
 
-    It is found by its action on six states, so that it shares no formula with the closed forms above.
+
+def mueller_of_jones(jones: ComplexArray) -> FloatArray:
+    """Mueller matrices of Jones matrices: shape (..., 2, 2) in, (..., 4, 4) out.
+
+    Found by the action on six states, so that it shares no formula with the closed forms above.
     """
     root = np.sqrt(0.5)
     fields = np.array([[1, 0], [0, 1], [root, root], [root, -root], [root, 1j * root], [root, -1j * root]], complex)
-    before = stokes_of_jones(fields)
-    after = stokes_of_jones(fields @ jones.T)
-    return np.linalg.lstsq(before, after, rcond=None)[0].T
+    behind = stokes_of_jones(fields @ np.swapaxes(np.asarray(jones, complex), -1, -2))
+    return np.swapaxes(np.linalg.pinv(stokes_of_jones(fields)) @ behind, -1, -2)
+
+
+def mueller_coherency(mueller: FloatArray) -> ComplexArray:
+    """Cloude's coherency matrices of Mueller matrices: shape (..., 4, 4) in, Hermitian (..., 4, 4) out.
+
+    H = 1/4 sum M_ij sigma_i (x) sigma_j^*. Its eigenvalues are all >= 0 for a physical element; a single one is above 0
+    for an element that does not depolarize (one with a Jones matrix). Source: docs/formulas.md, F-34.
+    """
+    mueller = np.asarray(mueller, float)
+    return 0.25 * np.einsum("...ij,ijkl->...kl", mueller, _PRODUCTS)
+
+
+def is_physical(mueller: FloatArray, tolerance: float = 1e-9) -> NDArray[np.bool_]:
+    """True where a Mueller matrix (..., 4, 4) could be that of a real element, shape (...).
+
+    No eigenvalue of `mueller_coherency` below -``tolerance`` x M00, and no state gains power. NaN gives False.
+    """
+    mueller = np.asarray(mueller, float)
+    is_finite = np.isfinite(mueller).all(axis=(-1, -2))
+    sure = np.where(is_finite[..., None, None], mueller, np.eye(4))
+    lowest = np.linalg.eigvalsh(mueller_coherency(sure))[..., 0]
+    largest = sure[..., 0, 0] + np.linalg.norm(sure[..., 0, 1:], axis=-1)
+    return is_finite & (lowest >= -tolerance * sure[..., 0, 0]) & (largest <= 1.0 + tolerance)
+
+
+_PAULI = np.array([[[1, 0], [0, 1]], [[1, 0], [0, -1]], [[0, 1], [1, 0]], [[0, -1j], [1j, 0]]], complex)
+_PRODUCTS = np.array([[np.kron(one, other.conj()) for other in _PAULI] for one in _PAULI])

@@ -5,12 +5,15 @@ import pytest
 
 from analysis.fibre.jones import jones_retarder, jones_rotator, jones_state, stokes_of_jones
 from analysis.fibre.sphere import sop_of_angles
+from tests.reference.values import close, reference
 
 
 def test_stokes_of_a_jones_vector():
-    """Ex = 0.8, |Ey| = 0.6, δ = 60° (E. Collett, Polarized Light in Fiber Optics, 2003, convention)."""
-    field = np.array([0.8, 0.6 * np.exp(1j * np.radians(60.0))])
-    np.testing.assert_allclose(stokes_of_jones(field), [1.0, 0.28, 0.48, 0.8313843876330611], rtol=1e-12)
+    """T02-jones-01: Ex = 0.8, |Ey| = 0.6, δ = 60° (E. Collett, Polarized Light in Fiber Optics, 2003, convention)."""
+    row = reference("T02-jones-01")
+    x = row["inputs"]
+    field = np.array([x["Ex"], x["Ey_abs"] * np.exp(1j * np.radians(x["delta_deg"]))])
+    np.testing.assert_allclose(stokes_of_jones(field), row["expected"], **close(row))
 
 
 @pytest.mark.parametrize(("azimuth_deg", "ellipticity_deg", "expected"), [
@@ -27,9 +30,12 @@ def test_state_of_angles(azimuth_deg, ellipticity_deg, expected):
 
 
 def test_half_wave_plate_mirrors_azimuth_and_ellipticity():
-    """A half-wave plate at 17° turns azimuth 40°, ellipticity 12° into 2·17 - 40 = -6° and -12°."""
-    out = stokes_of_jones(jones_retarder(np.pi, np.radians(17)) @ jones_state(np.radians(40), np.radians(12)))
-    np.testing.assert_allclose(out[1:], sop_of_angles(np.radians(-6), np.radians(-12)), atol=1e-12)
+    """T02-hwp-01: a half-wave plate at 17° turns azimuth 40°, ellipticity 12° into 2·17 - 40 = -6° and -12°."""
+    row = reference("T02-hwp-01")
+    plate, psi, chi = np.radians([row["inputs"][name] for name in ("theta_deg", "psi_deg", "chi_deg")])
+    out = stokes_of_jones(jones_retarder(np.pi, plate) @ jones_state(psi, chi))
+    expected = np.radians([row["expected"]["psi_out_deg"], row["expected"]["chi_out_deg"]])
+    np.testing.assert_allclose(out[1:], sop_of_angles(*expected), atol=1e-12)
 
 
 def test_elements_keep_the_power():

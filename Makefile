@@ -7,7 +7,7 @@ TESTS ?= tests
 WORKERS ?= 2
 PORT ?= 8000
 
-.PHONY: help setup dev demo run test slow js lint contracts bench published check chromium servers
+.PHONY: help setup dev demo run test slow js lint contracts bench published check chromium servers mqtt
 .DEFAULT_GOAL := help
 
 help:
@@ -54,13 +54,16 @@ chromium:
 servers:
 	@.ci/need postgresql redis-server || true
 
-test: dev chromium
+mqtt:
+	@.ci/need mosquitto || true
+
+test: dev chromium mqtt
 	@marks='not slow'; .ci/has chromium || marks='not slow and not browser'; \
 	  $(BIN)/python -m pytest -n $(WORKERS) --dist loadscope -m "$$marks" $(TESTS)
 	@$(MAKE) --no-print-directory js
 	@.ci/has chromium || echo "Browser tests were left out: chromium is missing (the lines at the start say how to get it)."
 
-slow: dev chromium servers
+slow: dev chromium servers mqtt
 	@marks='slow'; .ci/has chromium || marks='slow and not browser'; $(BIN)/python -m pytest -m "$$marks" $(TESTS)
 
 js:

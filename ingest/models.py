@@ -21,6 +21,8 @@ class Station(models.Model):
     name = models.CharField(max_length=63, unique=True, validators=[is_short_name])
     room = models.ForeignKey(Room, models.PROTECT, null=True, blank=True, related_name="stations")
     created_at = models.DateTimeField(auto_now_add=True)
+    link_lost_at = models.DateTimeField(null=True, blank=True,
+                                        help_text="When an MQTT broker last published its last will: a hint.")
 
 
 class StationKey(models.Model):
@@ -32,6 +34,7 @@ class StationKey(models.Model):
     made_at = models.DateTimeField(auto_now_add=True)
     expires_at = models.DateTimeField(null=True, blank=True)
     revoked_at = models.DateTimeField(null=True, blank=True)
+    broker_hash = models.CharField(max_length=200, blank=True, help_text="The key's hash for an MQTT broker's password file.")
 
 
 class TapKind(models.TextChoices):

@@ -9,6 +9,7 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
+from ingest.broker_hash import broker_hash_of
 from ingest.models import Room, Station, StationKey, Tap, TapKind, Unit
 
 POWER_KINDS = {TapKind.TWO_PORT, TapKind.DARK_PORT, TapKind.STOKES}
@@ -62,9 +63,10 @@ def add_tap(station: Station, wish: NewTap) -> Tap:
 
 
 def make_key(station: Station, expires_at: datetime | None = None) -> str:
-    """A new key of 256 random bits for the station; only its digest is stored."""
+    """A new key of 256 random bits for the station; only its digest is stored, and its hash in the form of an MQTT broker."""
     key = secrets.token_urlsafe(32)
-    StationKey.objects.create(station=station, digest=digest_of(key), hint=key[:4], expires_at=expires_at)
+    StationKey.objects.create(station=station, digest=digest_of(key), hint=key[:4], expires_at=expires_at,
+                              broker_hash=broker_hash_of(key))
     return key
 
 

@@ -3,6 +3,7 @@
 import os
 from pathlib import Path
 
+from ingest.mqtt.address import broker_address
 from labmon.env import Env, parse_bool, parse_positive, parse_words
 from labmon.services import django_database, find_services
 
@@ -89,6 +90,9 @@ SESSION_COOKIE_SECURE = CSRF_COOKIE_SECURE = IS_BEHIND_TLS
 SECURE_PROXY_SSL_HEADER = ("HTTP_X_FORWARDED_PROTO", "https") if IS_BEHIND_TLS else None
 
 BROKER_PREFIX = env.get("BROKER_PREFIX", str, default="labmon")   # so that several labs may share one broker
+MQTT_BROKER = env.get("MQTT_URL", broker_address, default=None)
+MQTT_ACCESS_DIR = env.get("MQTT_ACCESS", Path, default=None)
+MQTT_PID_FILE = env.get("MQTT_PID_FILE", Path, default=None)
 CHANNEL_LAYERS = {"default": {
     "BACKEND": "channels_redis.pubsub.RedisPubSubChannelLayer",
     "CONFIG": {"hosts": [BROKER_URL.replace("redis+socket://", "unix://")], "prefix": BROKER_PREFIX},

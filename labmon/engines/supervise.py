@@ -38,6 +38,7 @@ class Wish:
         listen, port: Where the web process listens.
         has_demo: Whether to run the invented laboratory.
         database_url, broker_url: Given servers; empty: embedded ones.
+        has_mqtt: Whether an MQTT broker is named, so that a subscriber runs.
     """
 
     folder: Path
@@ -46,6 +47,7 @@ class Wish:
     has_demo: bool = False
     database_url: str = ""
     broker_url: str = ""
+    has_mqtt: bool = False
 
 
 class Stopped(Exception):
@@ -176,6 +178,8 @@ class Supervisor:
         self._add("worker", [*celery, "worker", "--concurrency", "2", "--loglevel", "INFO", "--without-gossip",
                              "--without-mingle"])
         self._add("beat", [*celery, "beat", "--loglevel", "INFO", "--pidfile", ""])
+        if self.wish.has_mqtt:
+            self._add("mqtt", [sys.executable, str(PROJECT / "manage.py"), "run_mqtt"])
         if self.wish.has_demo:
             self._add("demo", [sys.executable, str(PROJECT / "manage.py"), "send_demo_readings", "--to", self.address])
 

@@ -8,13 +8,13 @@ from labmon import settings as module
 from tests.docker.files import compose, env_example
 
 OF_SERVICES = {"LABMON_DATABASE_URL", "LABMON_BROKER_URL"}
-OF_COMPOSE = {"SITE", "DATABASE_PASSWORD"}
+OF_COMPOSE = {"SITE", "DATABASE_PASSWORD", "MQTT_LISTEN"}
 SAID_IN_WORDS = {"LABMON_DATA", "LABMON_STATIC", "LABMON_SECRET_KEY", "LABMON_MAIL_BACKEND", "LABMON_MAIL_HOST"}
 
 
 def plain(default) -> str:
     """A default as it is written in the file."""
-    if default in ("", []):
+    if default in ("", [], None):
         return "none"
     if isinstance(default, bool):
         return str(int(default))

@@ -10,7 +10,7 @@ import pytest
 from tests.docker.files import FOLDER, PROJECT, compose, dockerfile
 
 KNOWN_KEYS = {"image", "build", "command", "environment", "env_file", "restart", "read_only", "tmpfs", "volumes", "cap_drop",
-              "security_opt", "depends_on", "healthcheck", "ports", "stop_grace_period", "shm_size"}     # compose specification
+              "security_opt", "depends_on", "healthcheck", "ports", "stop_grace_period", "shm_size", "profiles"}  # compose's words
 PINNED = re.compile(r"[\w./-]+:\d+(\.\d+)*[\w.-]*")
 
 
@@ -26,7 +26,7 @@ def test_yaml_is_clean():
 
 
 def test_processes_are_all_there():
-    assert set(services()) == {"prepare", "web", "worker", "beat", "database", "broker", "proxy"}
+    assert set(services()) == {"prepare", "web", "worker", "beat", "mqtt", "database", "broker", "mqtt-broker", "proxy"}
 
 
 @pytest.mark.parametrize("name", sorted(services()))
@@ -44,11 +44,13 @@ def test_service_is_well_formed(name):
         assert wish["condition"] == "service_completed_successfully" or needed, f"{other} has no health to wait for"
 
 
-def test_only_the_proxy_is_reachable_from_outside():
-    assert [name for name, service in services().items() if "ports" in service] == ["proxy"]
+def test_only_the_proxy_is_reachable_from_outside_unless_the_mqtt_broker_is_asked_for():
+    open_to = {name: service["ports"] for name, service in services().items() if "ports" in service}
+    assert open_to == {"proxy": ["80:80", "443:443"], "mqtt-broker": ["${MQTT_LISTEN:-127.0.0.1}:1883:1883"]}
+    assert [name for name, service in services().items() if "profiles" in service] == ["mqtt", "mqtt-broker"]
 
 
-@pytest.mark.parametrize("name", ["prepare", "web", "worker", "beat"])
+@pytest.mark.parametrize("name", ["prepare", "web", "worker", "beat", "mqtt"])
 def test_our_processes_have_few_rights(name):
     service = services()[name]
     assert service["read_only"] is True

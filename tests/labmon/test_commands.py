@@ -105,3 +105,8 @@ def test_a_person_key_is_made_and_revoked_by_its_hint():
 def test_key_commands_say_what_to_do(words, remedy):
     with pytest.raises(CommandError, match=remedy):
         run(*words)
+
+
+def test_run_mqtt_without_a_broker_says_what_to_set():
+    with pytest.raises(CommandError, match="LABMON_MQTT_URL"):
+        run("run_mqtt")

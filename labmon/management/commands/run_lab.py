@@ -27,7 +27,7 @@ class Command(LabCommand):
     def handle(self, *args: Any, **options: Any) -> None:
         wish = Wish(folder=settings.DATA_DIR, listen=options["listen"], port=options["port"], has_demo=options["demo"],
                     database_url=os.environ.get("LABMON_DATABASE_URL", ""),
-                    broker_url=os.environ.get("LABMON_BROKER_URL", ""))
+                    broker_url=os.environ.get("LABMON_BROKER_URL", ""), has_mqtt=settings.MQTT_BROKER is not None)
         try:
             Supervisor(wish, Progress()).run()
         except EngineFault as fault:

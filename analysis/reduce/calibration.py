@@ -50,6 +50,10 @@ class TapCalibration:
         """Fields of a stacked calibration (see `stack`) for each sample; ``index`` (N,) names the version of a sample."""
         return TapCalibration(**{name: _taken(getattr(self, name), index) for name in _NAMES})
 
+    def part(self, samples: slice) -> "TapCalibration":
+        """The calibration of a run of samples: fields with one value per sample are cut, single ones stay."""
+        return TapCalibration(**{name: _cut(name, getattr(self, name), samples) for name in _NAMES})
+
 
 _NAMES = tuple(field.name for field in fields(TapCalibration))
 _SHAPES: dict[str, tuple[int, ...]] = {"leakage": (2, 2), "leakage_sigma": (2, 2), "wanted_state": (3,)}
@@ -83,6 +87,11 @@ def _stacked(name: str, values: list[Any]) -> Any:
 
 def _taken(value: Any, index: IntArray) -> Any:
     return value[index] if isinstance(value, np.ndarray) else value
+
+
+def _cut(name: str, value: Any, samples: slice) -> Any:
+    is_single = value is None or np.ndim(value) <= len(_SHAPES.get(name, ()))
+    return value if is_single else np.asarray(value)[samples]
 
 
 def as_optional(value: Any) -> FloatArray:

@@ -22,6 +22,7 @@ from analysis.reduce.trust import Reason, ReasonArray, marked
 Columns = Mapping[str, FloatArray]
 DOP_ROUNDING: Final = 1e-6  # float32 readings of fully polarized light pass 1 by this much
 POLE_ROUNDING: Final = 1e-12
+SAMPLES_AT_ONCE: Final = 16_384  # what one pass touches then stays in the processor's cache
 
 
 def reduce_stokes(columns: Columns, unit: str, cal: TapCalibration) -> tuple[dict[str, Any], dict[Quantity, ReasonArray]]:
@@ -35,6 +36,55 @@ def reduce_stokes(columns: Columns, unit: str, cal: TapCalibration) -> tuple[dic
         in [-pi/4, pi/4]; ``dop`` may exceed 1 (doubtful, never refused), NaN where S0 is not above 0. ER and angle are
         NaN without a wanted state. Source: docs/formulas.md, F-02 to F-04, F-11 to F-13.
     """
+    count = len(next(iter(columns.values())))
+    if count <= SAMPLES_AT_ONCE:
+        return _reduce_run(columns, unit, cal)
+    fields: dict[str, Any] = {}
+    reasons: dict[Quantity, ReasonArray] = {}
+    for start in range(0, count, SAMPLES_AT_ONCE):
+        run = slice(start, start + SAMPLES_AT_ONCE)
+        found, why = _reduce_run({name: column[run] for name, column in columns.items()}, unit, cal.part(run))
+        for whole, parts in ((fields, found), (reasons, why)):
+            for name, part in parts.items():
+                if name not in whole:
+                    whole[name] = np.empty((count, *part.shape[1:]), dtype=part.dtype)
+                whole[name][run] = part
+    return fields, reasons
+
+
+def dop_and_sop(s0: FloatArray, s1: FloatArray, s2: FloatArray, s3: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Degree of polarization and unit Stokes vectors alone, for long records; no marks, no angles, no ER.
+
+    Args:
+        s0, s1, s2, s3: One unit, shape (N,), naming of handedness as wanted in the result.
+    Returns:
+        DOP |S|/S0, shape (N,), not clipped, NaN where S0 is not above 0; and S/|S|, shape (N, 3), NaN for a zero vector
+        and beside a NaN. Source: docs/formulas.md, F-11.
+    """
+    count = len(s0)
+    dop, sop = np.empty(count), np.empty((count, 3))
+    for start in range(0, count, SAMPLES_AT_ONCE):
+        run = slice(start, start + SAMPLES_AT_ONCE)
+        total, parts = s0[run], (s1[run], s2[run], s3[run])
+        length = _length(*parts)
+        np.divide(length, total, out=dop[run], where=total > 0.0)
+        dop[run][~(total > 0.0)] = np.nan
+        length[length == 0.0] = np.nan
+        for axis, part in enumerate(parts):
+            np.divide(part, length, out=sop[run, axis])
+    return dop, sop
+
+
+def _length(s1: FloatArray, s2: FloatArray, s3: FloatArray) -> FloatArray:
+    """|S| of a run, shape (n,)."""
+    length = s1 * s1
+    length += s2 * s2
+    length += s3 * s3
+    return np.sqrt(length, out=length)
+
+
+def _reduce_run(columns: Columns, unit: str, cal: TapCalibration) -> tuple[dict[str, Any], dict[Quantity, ReasonArray]]:
+    """`reduce_stokes` of a run of samples that fits into the cache."""
     total, vector, dop = _from_stokes(columns, unit) if "s0" in columns else _from_angles(columns, unit)
     _turn_to_optics(vector, cal.handedness)
     length = np.linalg.norm(vector, axis=-1)

@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 from analysis.judge.rule import Quantity
 from analysis.quantities import angle_rad_from_er_db, sop_from_angles
 from analysis.reduce.calibration import TapCalibration
+from analysis.reduce.stokes import SAMPLES_AT_ONCE, dop_and_sop
 from analysis.reduce.tap import TrustContext, reduce_tap
 from analysis.reduce.trust import Reason, Trust
 from tests.reference.values import close, reference, references
@@ -221,3 +222,36 @@ def test_a_turn_of_the_whole_sphere_changes_no_er(sop, state, turn_rad, dop):
     np.testing.assert_allclose(other.dop, one.dop, rtol=1e-12)
     np.testing.assert_allclose(other.angle_rad, one.angle_rad, atol=1e-7)
     np.testing.assert_allclose(other.er_db, one.er_db, atol=1e-6)
+
+
+def test_long_records_are_reduced_in_runs_as_short_ones():
+    """Cutting into runs changes nothing, also with per-sample calibration, a lost reading and light below zero."""
+    random = np.random.default_rng(22)
+    count = 2 * SAMPLES_AT_ONCE + 17
+    rows = np.column_stack([np.ones(count), 0.5 * random.standard_normal((count, 3))])
+    rows[[3, SAMPLES_AT_ONCE + 5]] = [[np.nan, 0, 0, 0], [-1, 0.1, 0, 0]]
+    states = random.standard_normal((count, 3))
+    hands = np.where(np.arange(count) % 2 == 0, "ieee", "optics")
+    whole = stokes(rows, wanted_state=states, handedness=hands, floor1=np.full(count, 1e-3), floor2=1e-3)
+    for part in (slice(0, 40), slice(SAMPLES_AT_ONCE - 20, SAMPLES_AT_ONCE + 20), slice(count - 40, count)):
+        alone = stokes(rows[part], wanted_state=states[part], handedness=hands[part], floor1=1e-3, floor2=1e-3)
+        for name in ("er_db", "angle_rad", "dop", "sop", "power_w", "er_sigma_db", "is_lower_bound", "azimuth_rad"):
+            np.testing.assert_array_equal(getattr(whole, name)[part], getattr(alone, name))
+        for quantity in Quantity:
+            np.testing.assert_array_equal(whole.reasons[quantity][part], alone.reasons[quantity])
+
+
+def test_one_wanted_state_as_array_is_not_cut():
+    rows = np.tile([1.0, 0.9, 0.3, -0.2], (SAMPLES_AT_ONCE + 2, 1))
+    np.testing.assert_allclose(stokes(rows, wanted_state=np.array(H)).er_db, 12.7875, atol=1e-4)
+
+
+def test_dop_and_states_alone_agree_with_the_full_reduction():
+    random = np.random.default_rng(23)
+    rows = np.column_stack([np.ones(SAMPLES_AT_ONCE + 9), random.standard_normal((SAMPLES_AT_ONCE + 9, 3))])
+    rows[[1, 2, 3]] = [[0, 1, 0, 0], [1, 0, 0, 0], [1, np.nan, 0, 0]]
+    dop, sop = dop_and_sop(*rows.T)
+    full = stokes(rows)
+    np.testing.assert_allclose(dop, full.dop, rtol=1e-14)
+    np.testing.assert_allclose(sop, full.sop, rtol=1e-14)
+    assert np.isnan(dop[[1, 3]]).all() and dop[2] == 0.0 and np.isnan(sop[2:4]).all()

@@ -32,3 +32,23 @@ def web_process() -> Iterator[tuple[int, int]]:
     finally:
         process.terminate()
         process.wait(20)
+
+
+@contextmanager
+def web_processes(count: int) -> Iterator[tuple[int, list[int]]]:
+    """As many web processes as asked for on one listening socket, as labmon.web serves it; gives (port, pids)."""
+    from labmon.web import BACKLOG, bound_socket
+
+    listener = bound_socket("127.0.0.1", free_port())
+    listener.listen(BACKLOG)
+    number, port = listener.fileno(), int(listener.getsockname()[1])
+    processes = [subprocess.Popen([sys.executable, "-m", "labmon.web", "--socket", str(number)], pass_fds=[number])
+                 for _ in range(count)]
+    try:
+        time.sleep(3.0 * count)  # one answering process says nothing of the others
+        yield port, [process.pid for process in processes]
+    finally:
+        for process in processes:
+            process.terminate()
+            process.wait(20)
+        listener.close()

@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.stats import binom, binomtest
 
@@ -25,6 +25,7 @@ def test_which_counts_are_within_a_fifth():
     assert [windows_needed(failed, bound=0.2) for failed in (0, 1)] == [14, 22]
 
 
+@settings(deadline=None)
 @given(counts)
 def test_bounds_are_those_of_scipys_exact_test(pair):
     """scipy.stats.binomtest(...).proportion_ci(method="exact"), a general-purpose statistics library."""
@@ -38,6 +39,7 @@ def test_bounds_are_those_of_scipys_exact_test(pair):
     np.testing.assert_allclose(np.array(proportion_interval(k, n)), [both.low, both.high], atol=1e-9)
 
 
+@settings(deadline=None)
 @given(counts.filter(lambda pair: pair[0] < pair[1]))
 def test_at_the_bound_so_few_failures_have_five_per_cent(pair):
     """Definition: P(K ≤ k | p = bound) = 1 - level."""
@@ -45,6 +47,7 @@ def test_at_the_bound_so_few_failures_have_five_per_cent(pair):
     assert binom.cdf(k, n, float(failure_bound(k, n))) == pytest.approx(0.05, rel=1e-6)
 
 
+@settings(deadline=None)
 @given(counts.filter(lambda pair: pair[1] > 0))
 def test_bound_falls_with_windows_and_rises_with_failures(pair):
     k, n = pair

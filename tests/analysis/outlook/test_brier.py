@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from analysis.outlook.brier import brier_parts, brier_parts_binned, brier_score
@@ -31,6 +31,7 @@ def test_parts_by_bins_need_the_remainder():
     np.testing.assert_allclose(parts.within, row["expected"]["remainder"], **close(row))
 
 
+@settings(deadline=None)
 @given(cases, st.lists(st.floats(0.05, 0.95), max_size=4, unique=True).map(sorted))
 def test_parts_add_up(pairs, edges):
     forecast, outcome = (np.array(part, float) for part in zip(*pairs, strict=True))

@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.integrate import quad
 from scipy.stats import norm
@@ -35,6 +35,7 @@ def test_a_sure_forecast_scores_its_error():
         crps_gaussian(0.0, -1.0, 0.0)
 
 
+@settings(deadline=None)
 @given(st.lists(values, min_size=2, max_size=12), values)
 def test_ensembles_are_plain_double_sums(members, observed):
     x = np.array(members)
@@ -44,6 +45,7 @@ def test_ensembles_are_plain_double_sums(members, observed):
     assert float(crps_ensemble_fair(x, observed)) == pytest.approx(distance - pairs / (2 * len(x) * (len(x) - 1)), abs=1e-9)
 
 
+@settings(deadline=None)
 @given(st.lists(values, min_size=1, max_size=8), values)
 def test_plain_ensemble_is_the_integral_over_its_steps(members, observed):
     """∫ (F_M - 1{x ≥ y})² dx, summed between the jumps."""

@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from analysis.fibre.sphere import rotation, turned
@@ -68,6 +68,7 @@ def test_a_window_without_a_start_tells_nothing():
     assert np.isnan(replays.worst_rad).all() and not replays.has_failed.any()
 
 
+@settings(deadline=None)
 @given(seeds)
 def test_rotation_is_the_smallest_one(seed):
     """Against quaternions about start × state, formed in analysis.fibre.sphere."""
@@ -83,6 +84,7 @@ def test_rotation_is_the_smallest_one(seed):
     assert replays.beyond_s[0] == 60.0 * np.count_nonzero(expected > LIMIT_RAD)
 
 
+@settings(deadline=None)
 @given(seeds, st.floats(-3, 3), st.floats(-3, 3))
 def test_turning_the_sphere_changes_nothing(seed, a, b):
     """States, today's and the wanted one turned together."""

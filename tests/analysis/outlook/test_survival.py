@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.stats import CensoredData, ecdf
 
@@ -27,6 +27,7 @@ def test_cut_cases_leave_the_count():
     assert time_quantile_s(reached, followed, 0.63) == 4.0
 
 
+@settings(deadline=None)
 @given(st.lists(st.tuples(st.integers(1, 20), st.booleans()), min_size=1, max_size=30), st.floats(0.02, 0.98))
 def test_against_scipys_product_limit(cases, probability):
     """scipy.stats.ecdf on right-censored data (E. L. Kaplan, P. Meier 1958)."""

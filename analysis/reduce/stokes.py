@@ -9,8 +9,6 @@ from analysis.judge.rule import Quantity
 from analysis.quantities import (
     BoolArray,
     FloatArray,
-    angle_between_rad,
-    er_db_from_angle_rad,
     linear_from_raw,
     sop_from_angles,
     watts_per_unit,
@@ -87,15 +85,16 @@ def _reduce_run(columns: Columns, unit: str, cal: TapCalibration) -> tuple[dict[
     """`reduce_stokes` of a run of samples that fits into the cache."""
     total, vector, dop = _from_stokes(columns, unit) if "s0" in columns else _from_angles(columns, unit)
     _turn_to_optics(vector, cal.handedness)
-    length = np.linalg.norm(vector, axis=-1)
-    sop = vector / np.where(length > 0.0, length, np.nan)[:, None]
+    length = _length(*vector.T)
+    length[length == 0.0] = np.nan
+    sop = vector / length[:, None]
     azimuth_rad, ellipticity_rad = _angles_of(sop)
     count = len(dop)
     clipped = columns.get("clipped")
     is_saturated = np.zeros(count, dtype=bool) if clipped is None else np.nan_to_num(clipped) > 0.0
     if cal.saturation1 is not None and "s0" in columns:
         is_saturated = is_saturated | (total >= cal.saturation1)
-    lost = ~np.isfinite(vector).all(axis=-1)
+    lost = ~(np.isfinite(vector[:, 0]) & np.isfinite(vector[:, 1]) & np.isfinite(vector[:, 2]))
     shared = marked(count, (is_saturated, Reason.SATURATED), (lost, Reason.IMPOSSIBLE))
     odd_dop = marked(count, (dop > 1.0 + DOP_ROUNDING, Reason.DOP_ABOVE_ONE))
     scale_w = watts_per_unit(unit or "V")
@@ -121,7 +120,7 @@ def _from_stokes(columns: Columns, unit: str) -> tuple[FloatArray, FloatArray, F
     """S0, the vector (S1, S2, S3) and DOP; dBm has no meaning for signed Stokes values, so they are taken as linear."""
     total = np.asarray(columns["s0"], dtype=np.float64)
     vector = np.stack([columns["s1"], columns["s2"], columns["s3"]], axis=-1).astype(np.float64)
-    return total, vector, np.linalg.norm(vector, axis=-1) / np.where(total > 0.0, total, np.nan)
+    return total, vector, _length(*vector.T) / np.where(total > 0.0, total, np.nan)
 
 
 def _from_angles(columns: Columns, unit: str) -> tuple[FloatArray, FloatArray, FloatArray]:
@@ -161,15 +160,17 @@ def _on_wanted_axis(
     if cal.wanted_state is None:
         unset = np.full(count, np.uint32(Reason.NO_WANTED_STATE))
         return {}, {Quantity.ER_DB: unset, Quantity.ANGLE_DEG: unset.copy()}
-    state = np.broadcast_to(np.asarray(cal.wanted_state, dtype=np.float64), (count, 3))
-    is_unset = ~(np.abs(state).sum(axis=-1) > 0.0)
-    axis = state / np.where(is_unset, np.nan, np.linalg.norm(state, axis=-1))[:, None]
-    cosine = np.einsum("ni,ni->n", axis, sop)
+    state = np.atleast_2d(np.asarray(cal.wanted_state, dtype=np.float64))
+    state_length = np.linalg.norm(state, axis=-1)
+    is_unset = np.broadcast_to(~(state_length > 0.0), count)
+    axis = state / np.where(state_length > 0.0, state_length, np.nan)[:, None]
+    cosine = axis[:, 0] * sop[:, 0] + axis[:, 1] * sop[:, 1] + axis[:, 2] * sop[:, 2]
     scale = np.where(np.isfinite(total), total, 1.0)
     share = np.where(dop == 0.0, 0.0, dop * cosine)
     wanted, other = 0.5 * scale * (1.0 + share), 0.5 * scale * (1.0 - share)
     ratio = extinction(wanted, other, np.asarray(cal.floor1, dtype=np.float64), np.asarray(cal.floor2, dtype=np.float64))
-    angle_rad = angle_between_rad(axis, sop)
+    near, far = _length(*(axis - sop).T), _length(*(axis + sop).T)
+    angle_rad = 2.0 * np.arctan2(near, far)  # F-03 for unit vectors: exact at both ends
     unset = marked(count, (is_unset, Reason.NO_WANTED_STATE))
     er_reasons = np.where(is_unset, unset, ratio.reasons)
     fields = {
@@ -180,13 +181,16 @@ def _on_wanted_axis(
         "is_lower_bound": ratio.is_lower_bound,
         "is_upper_bound": ratio.is_upper_bound,
         "angle_rad": angle_rad,
-        "polarized_er_db": _polarized_er_db(angle_rad),
+        "polarized_er_db": _polarized_er_db(near, far),
     }
     undefined_angle: BoolArray = np.isnan(angle_rad) & ~is_unset
     return fields, {Quantity.ER_DB: er_reasons, Quantity.ANGLE_DEG: unset | marked(count, (undefined_angle, Reason.UNDEFINED))}
 
 
-def _polarized_er_db(angle_rad: FloatArray) -> FloatArray:
-    """ER of the polarized part alone, dB; NaN where exactly on the axis or opposite to it."""
-    er_db = er_db_from_angle_rad(angle_rad)
-    return np.where(np.isfinite(er_db), er_db, np.nan)
+def _polarized_er_db(near: FloatArray, far: FloatArray) -> FloatArray:
+    """ER of the polarized part alone, dB, from the distances to the wanted state and to its opposite: 20 log10 cot(angle/2).
+
+    NaN where exactly on the axis or opposite to it.
+    """
+    is_between = (near > 0.0) & (far > 0.0)
+    return 20.0 * np.log10(np.where(is_between, far, np.nan) / np.where(is_between, near, 1.0))

@@ -1,9 +1,12 @@
 """Benches as people change them: stations, taps, keys, owners. Each write leaves its audit row."""
 
 from collections.abc import Sequence
-from datetime import datetime
+from datetime import datetime, timedelta
+from typing import Final
 
 from django.db import transaction
+from django.db.models import Q
+from django.utils import timezone
 
 from ingest.models import Station, StationKey, Tap
 from ingest.stations import NewTap, StationFault, add_station, make_key, revoke_key
@@ -15,6 +18,8 @@ from labmon.live.publish import publish
 from labmon.people.models import Person
 
 TapWish = NewTap
+#: Two keys of one station hold side by side no longer than this.
+LONGEST_OVERLAP: Final = timedelta(days=30)
 
 
 @transaction.atomic
@@ -75,6 +80,26 @@ def make_bench_key(station: Station, *, by: Person | None, expires_at: datetime 
     row = station.keys.order_by("-pk")[0]
     note(by, "make station key", station, after={"key": row.pk, "hint": row.hint, "expires_at": expires_at})
     publish({"kind": "stations", "ids": [station.pk]})
+    return row, key
+
+
+@transaction.atomic
+def rotate_bench_key(station: Station, *, overlap: timedelta, by: Person | None) -> tuple[StationKey, str]:
+    """A new key; those in force before stay good for ``overlap`` and not longer. Shown this once.
+
+    Raises:
+        WriteError: The overlap is negative or longer than `LONGEST_OVERLAP`.
+    """
+    if not timedelta(0) <= overlap <= LONGEST_OVERLAP:
+        raise WriteError("overlap_h", f"{overlap.total_seconds() / 3600:g} h is no time for two keys to hold.",
+                         f"Give 0 to {LONGEST_OVERLAP.days * 24} h.")
+    until = timezone.now() + overlap
+    before = list(station.keys.select_for_update().filter(Q(expires_at=None) | Q(expires_at__gt=until), revoked_at=None))
+    row, key = make_bench_key(station, by=by)
+    for old in before:
+        old.expires_at = until
+        old.save(update_fields=["expires_at"])
+    note(by, "rotate station key", station, {"keys": [old.pk for old in before]}, {"key": row.pk, "old_keys_until": until})
     return row, key
 
 

@@ -226,7 +226,7 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
         owner_id=bench.owner_id if bench else None,
         purpose=bench.purpose if bench else "",
         taps=[_tap_facts(standings[tap.pk], limits.get(tap.pk, []), in_force.get(tap.pk), clock_us) for tap in taps],
-        keys=list(station.keys.order_by("-made_at")),
+        keys=list(station.keys.select_related("use").order_by("-made_at")),
         boots=list(station.boots.order_by("-last_arrival_us")[:10]),
         last_heard_at=at_of(heard_us) if heard_us is not None else None,
         set_aside=SetAside.objects.filter(station=station).count(),
@@ -260,6 +260,11 @@ def now_of(tap: Tap, *, now_us: int | None = None) -> NowSample | None:
     """The newest reduced sample of a tap; None before its first."""
     found = _now_rows([tap.pk]).get(tap.pk)
     return None if found is None else now_sample(found[0], found[1], server_now_us() if now_us is None else now_us)
+
+
+def now_samples(tap_ids: Sequence[int], now_us: int) -> dict[int, NowSample]:
+    """The newest reduced sample of each tap that has one; one query."""
+    return {tap_id: now_sample(at_us, sample, now_us) for tap_id, (at_us, sample, _) in _now_rows(tap_ids).items()}
 
 
 def aside_rows(station: Station, *, before_id: int | None = None, limit: int = 100) -> list[SetAside]:

@@ -28,6 +28,7 @@ class Action(StrEnum):
     IMPORT_FILE = "read files in"
     READ_AUDIT = "read the audit"
     ADD_STATION = "add stations"
+    ADD_TAP = "add taps"
     SET_FLOOR = "lock the least limit of a bench"
     MANAGE_PEOPLE = "add people and set their roles"
 
@@ -35,7 +36,8 @@ class Action(StrEnum):
 _GUEST = frozenset({Action.READ, Action.MAKE_OWN_KEY})
 _RESEARCHER = _GUEST | {Action.ACKNOWLEDGE, Action.SHELVE, Action.LOG, Action.PLAN_RUN}
 _OWNER_OF_IT = frozenset(
-    {Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.CALIBRATE, Action.MAKE_STATION_KEY, Action.IMPORT_FILE, Action.READ_AUDIT}
+    {Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.CALIBRATE, Action.MAKE_STATION_KEY, Action.ADD_TAP, Action.IMPORT_FILE,
+     Action.READ_AUDIT}
 )
 
 #: What a role may do to whatever it sees, and what an owner may do besides to what is their own.

@@ -25,7 +25,8 @@ MOST_WAITING = 5
 def lab_page(request: HttpRequest) -> HttpResponse:
     """All benches: the sentence, a rail for each room, and the table, worst first."""
     view = lab_view(bench_rows(request.user), timezone.now())
-    return render(request, "screen/lab.html", {"view": view, "title": title_of(view)} | _waiting(request))
+    may_add = may(request.user, Action.ADD_STATION)
+    return render(request, "screen/lab.html", {"view": view, "title": title_of(view), "may_add": may_add} | _waiting(request))
 
 
 @require_safe

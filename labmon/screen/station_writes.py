@@ -6,10 +6,9 @@ from django.contrib import messages
 from django.http import Http404, HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
 from django.utils import timezone
-from django.views.decorators.cache import never_cache
 from django.views.decorators.http import require_http_methods, require_POST
 
-from labmon.benches.actions import make_bench_key, revoke_bench_key
+from labmon.benches.actions import revoke_bench_key
 from labmon.benches.calibration import calibration_history, set_calibration
 from labmon.errors import WriteError
 from labmon.people.rights import Action, require
@@ -17,27 +16,6 @@ from labmon.screen.door import for_people, put_refusal, say_refusal
 from labmon.screen.forms import CalibrationForm
 from labmon.screen.named import visible_station, visible_tap
 from labmon.screen.present import time_text
-
-
-@require_POST
-@never_cache
-@for_people
-def make_key(request: HttpRequest, station: str) -> HttpResponse:
-    """A new key, shown on this answer and never again."""
-    found = visible_station(request.user, station)
-    require(request.user, Action.MAKE_STATION_KEY, found)
-    _, key = make_bench_key(found, by=request.user)
-    return render(
-        request,
-        "screen/key_once.html",
-        {
-            "key": key,
-            "name": found.name,
-            "station": found,
-            "address": request.build_absolute_uri("/api/v1/readings"),
-            "tap": found.taps.order_by("pk").first(),
-        },
-    )
 
 
 @require_POST

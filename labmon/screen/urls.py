@@ -2,11 +2,26 @@
 
 from django.urls import path
 
-from labmon.screen import account, alarms, aside, audit, experiments, imports, lab, people, series, station, station_writes, trail
+from labmon.screen import (
+    account,
+    alarms,
+    aside,
+    audit,
+    experiments,
+    imports,
+    joining,
+    lab,
+    people,
+    series,
+    station,
+    station_writes,
+    trail,
+)
 
 urlpatterns = [
     path("", lab.lab_page, name="lab"),
     path("lab.json", lab.lab_json, name="lab-json"),
+    path("join/", joining.join_page, name="join"),
     path("login/", account.sign_in, name="login"),
     path("logout/", account.sign_out, name="logout"),
     path("you/", account.you_page, name="you"),
@@ -16,7 +31,9 @@ urlpatterns = [
     path("stations/<slug:station>/set-aside/", aside.aside_page, name="set-aside"),
     path("stations/<slug:station>/import/", imports.imports_page, name="imports"),
     path("stations/<slug:station>/import/<int:import_id>/", imports.import_page, name="import-file"),
-    path("stations/<slug:station>/keys/", station_writes.make_key, name="make-key"),
+    path("stations/<slug:station>/keys/", joining.make_key, name="make-key"),
+    path("stations/<slug:station>/joining/", joining.joining_page, name="joining"),
+    path("stations/<slug:station>/taps/", joining.add_tap_page, name="add-tap"),
     path("stations/<slug:station>/keys/<int:key_id>/revoke/", station_writes.revoke_key, name="revoke-key"),
     path("stations/<slug:station>/taps/<slug:tap>/history.json", series.history_json, name="history-json"),
     path("stations/<slug:station>/taps/<slug:tap>/trail.json", trail.trail_json, name="trail-json"),

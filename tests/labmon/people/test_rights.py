@@ -39,6 +39,7 @@ TABLE = {
     Action.IMPORT_FILE: (NO, NO, OWN, YES),
     Action.READ_AUDIT: (NO, NO, OWN, YES),
     Action.ADD_STATION: (NO, NO, NO, YES),
+    Action.ADD_TAP: (NO, NO, OWN, YES),
     Action.SET_FLOOR: (NO, NO, NO, YES),
     Action.MANAGE_PEOPLE: (NO, NO, NO, YES),
 }

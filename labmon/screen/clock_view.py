@@ -1,0 +1,36 @@
+"""A station's clock in words: how far it is off, with the doubt of that figure, and which fault it looks like. Pure."""
+
+from dataclasses import dataclass
+from typing import Final
+
+from ingest.models import StationBoot
+from labmon.screen.present import number_text
+
+#: An offset beyond this is told as something to mend (JOB section 5).
+WARN_AFTER_S: Final = 2.0
+
+
+@dataclass(frozen=True, slots=True)
+class ClockWords:
+    """What to say of a boot's clock, and whether someone should look."""
+
+    words: str
+    is_fault: bool
+
+
+def clock_state(boot: StationBoot) -> ClockWords:
+    """One boot's clock in a sentence or two."""
+    if boot.clock_fault:
+        timed = " Its readings are placed by their arrival; its own stamps are kept beside." if boot.is_server_timed else ""
+        return ClockWords(f"{boot.clock_fault}{timed}", True)
+    if boot.is_server_timed:
+        return ClockWords("Readings are placed by their arrival and the board's uptime.", False)
+    if boot.clock_offset_us is None:
+        return ClockWords("The station tells no clock: readings without a time of their own are placed by their arrival.", False)
+    offset_s = boot.clock_offset_us / 1e6
+    size = number_text(abs(offset_s), 1 if abs(offset_s) >= 1 else 2, "s")
+    side = "behind" if offset_s > 0 else "ahead of"
+    if abs(offset_s) > WARN_AFTER_S:
+        return ClockWords(f"The clock is {size} {side} the server's. Readings stand where it says; set it, or let it follow a "
+                          "time server.", True)
+    return ClockWords(f"Clock and way to the server differ by {size}.", False)

@@ -15,7 +15,9 @@ from analysis.judge.rule import Quantity
 from analysis.quantities import US_PER_S, BoolArray, FloatArray, IntArray
 from analysis.reduce.sample import Reduced
 from analysis.reduce.trust import QUANTITIES, UNTRUSTED_REASONS, Reason, Trust, is_usable
+from analysis.rollup.groups import Groups
 from analysis.rollup.histogram import Histogram, histogram_of, merge_histograms
+from analysis.rollup.moments import Moments, group_moments, merged_moments
 
 LEVELS_S: Final = (10, 60, 3600, 86400)
 HOLD_INTERVALS: Final = 3.0
@@ -120,7 +122,7 @@ def cells_of(reduced: Reduced, level_s: int, hold_us: IntArray, tap: IntArray | 
     tap = np.zeros(len(reduced), dtype=np.int64) if tap is None else tap
     bucket_us = reduced.at_us - reduced.at_us % (level_s * US_PER_S)
     first = _group_starts(tap, bucket_us)
-    groups = _Groups(first, len(reduced))
+    groups = Groups(first, len(reduced))
     values = np.zeros(len(first), dtype=CELL)
     values["count"] = groups.sizes
     values["covered_us"] = groups.sums(hold_us)
@@ -145,6 +147,13 @@ def cells_of(reduced: Reduced, level_s: int, hold_us: IntArray, tap: IntArray | 
     return Cells(level_s, tap[first], bucket_us[first], values, histogram)
 
 
+def usable_directions(reduced: Reduced) -> BoolArray:
+    """True where a sample's direction on the sphere may be used, shape (N,); never where the tap gives none."""
+    if reduced.sop is None:
+        return np.zeros(len(reduced), dtype=bool)
+    return np.isfinite(reduced.sop[:, 0]) & ((reduced.reasons[Quantity.DOP] & _SPOILS_DIRECTION) == 0)
+
+
 def merge(cells: Cells, level_s: int | None = None) -> Cells:
     """Cells of a coarser level (or of the same one, joining double buckets); ``cells`` in any order.
 
@@ -158,7 +167,7 @@ def merge(cells: Cells, level_s: int | None = None) -> Cells:
     order = np.lexsort((cells.bucket_us, bucket_us, cells.tap))
     tap, bucket_us, old = cells.tap[order], bucket_us[order], cells.values[order]
     first = _group_starts(tap, bucket_us)
-    groups = _Groups(first, len(old))
+    groups = Groups(first, len(old))
     values = np.zeros(len(first), dtype=CELL)
     for name in _ADDED:
         values[name] = groups.sums(old[name])
@@ -198,40 +207,13 @@ def empty_cells(level_s: int) -> Cells:
     return Cells(level_s, nothing, nothing, np.zeros(0, dtype=CELL), histogram_of(np.zeros(0), nothing, 0))
 
 
-@dataclass(frozen=True, slots=True)
-class _Groups:
-    """Neighbouring rows taken together: group g holds rows first[g] up to first[g + 1]."""
-
-    first: IntArray
-    count: int
-
-    @property
-    def sizes(self) -> IntArray:
-        return np.diff(self.first, append=self.count)
-
-    def of_sample(self) -> IntArray:
-        return np.repeat(np.arange(len(self.first)), self.sizes)
-
-    def sums(self, amount: NDArray[Any]) -> NDArray[Any]:
-        kind = np.int64 if amount.dtype == bool else amount.dtype
-        if not len(self.first):
-            return np.zeros((0, *amount.shape[1:]), dtype=kind)
-        return np.add.reduceat(amount, self.first, axis=0, dtype=kind)
-
-    def minima(self, amount: FloatArray) -> FloatArray:
-        return np.fmin.reduceat(amount, self.first) if len(self.first) else np.zeros(0)
-
-    def maxima(self, amount: FloatArray) -> FloatArray:
-        return np.fmax.reduceat(amount, self.first) if len(self.first) else np.zeros(0)
-
-
 def _group_starts(tap: IntArray, bucket_us: IntArray) -> IntArray:
     changes = (np.diff(tap) != 0) | (np.diff(bucket_us) != 0)
     return np.flatnonzero(np.concatenate([np.ones(min(1, len(tap)), dtype=bool), changes]))
 
 
 def _count_trust(
-    values: NDArray[Any], position: int, trust: NDArray[np.uint8], usable: BoolArray, hold_us: IntArray, groups: _Groups
+    values: NDArray[Any], position: int, trust: NDArray[np.uint8], usable: BoolArray, hold_us: IntArray, groups: Groups
 ) -> None:
     trusted = usable & (trust == Trust.TRUSTED)
     values["trusted"][:, position] = groups.sums(trusted)
@@ -240,7 +222,7 @@ def _count_trust(
     values["trusted_us"][:, position] = groups.sums(np.where(trusted, hold_us, 0))
 
 
-def _sum_ports(values: NDArray[Any], reduced: Reduced, usable: BoolArray, groups: _Groups) -> None:
+def _sum_ports(values: NDArray[Any], reduced: Reduced, usable: BoolArray, groups: Groups) -> None:
     """Signed net powers of usable ER samples, bounds included as they were read (unclipped)."""
     summed = usable & np.isfinite(reduced.wanted_power)
     values["er_count"] = groups.sums(usable)
@@ -250,42 +232,31 @@ def _sum_ports(values: NDArray[Any], reduced: Reduced, usable: BoolArray, groups
     values["upper_bounds"] = groups.sums(usable & reduced.is_upper_bound)
 
 
-def _fill_range(values: NDArray[Any], name: str, amount: FloatArray, usable: BoolArray, groups: _Groups) -> None:
+def _fill_range(values: NDArray[Any], name: str, amount: FloatArray, usable: BoolArray, groups: Groups) -> None:
     shown = np.where(usable, amount, np.nan)
     values[f"{name}_min"], values[f"{name}_max"] = groups.minima(shown), groups.maxima(shown)
 
 
-def _fill_moments(values: NDArray[Any], name: str, amount: FloatArray, usable: BoolArray, groups: _Groups) -> None:
-    """Count, mean and M2 (sum of squared deviations) in two passes; the mean is 0 where nothing was usable."""
+def _fill_moments(values: NDArray[Any], name: str, amount: FloatArray, usable: BoolArray, groups: Groups) -> None:
+    """Range, count, mean and M2; all 0 where nothing was usable."""
     _fill_range(values, name, amount, usable, groups)
-    count = groups.sums(usable)
-    values[f"{name}_count"] = count
-    if not count.any():
-        return
-    some = np.maximum(count, 1)
-    mean = groups.sums(np.where(usable, amount, 0.0)) / some
-    deviation = np.where(usable, amount - np.repeat(mean, groups.sizes), 0.0)
-    slip = groups.sums(deviation)
-    values[f"{name}_mean"] = mean + slip / some
-    values[f"{name}_m2"] = np.maximum(groups.sums(deviation**2) - slip**2 / some, 0.0)
+    if usable.any():
+        _put_moments(values, name, group_moments(amount, usable, groups))
 
 
-def _merge_moments(values: NDArray[Any], old: NDArray[Any], name: str, groups: _Groups) -> None:
-    """Chan's merge of many parts at once: M2 = sum of M2 + sum of n (mean - whole mean)^2."""
-    part_count, part_mean = old[f"{name}_count"], old[f"{name}_mean"]
-    count = groups.sums(part_count)
-    some = np.maximum(count, 1)
-    rough = groups.sums(part_mean * part_count) / some
-    offset = part_mean - np.repeat(rough, groups.sizes)
-    slip = groups.sums(part_count * offset) / some
-    values[f"{name}_count"], values[f"{name}_mean"] = count, rough + slip
-    values[f"{name}_m2"] = groups.sums(old[f"{name}_m2"] + part_count * (offset - np.repeat(slip, groups.sizes)) ** 2)
+def _merge_moments(values: NDArray[Any], old: NDArray[Any], name: str, groups: Groups) -> None:
+    parts = (old[f"{name}_{part}"] for part in ("count", "mean", "m2"))
+    _put_moments(values, name, merged_moments(*parts, groups))
 
 
-def _sum_directions(values: NDArray[Any], reduced: Reduced, groups: _Groups) -> None:
+def _put_moments(values: NDArray[Any], name: str, moments: Moments) -> None:
+    values[f"{name}_count"], values[f"{name}_mean"], values[f"{name}_m2"] = moments
+
+
+def _sum_directions(values: NDArray[Any], reduced: Reduced, groups: Groups) -> None:
     if reduced.sop is None:
         return
-    usable = np.isfinite(reduced.sop[:, 0]) & ((reduced.reasons[Quantity.DOP] & _SPOILS_DIRECTION) == 0)
+    usable = usable_directions(reduced)
     sop = np.where(usable[:, None], reduced.sop, 0.0)
     polarized_w = reduced.power_w * reduced.dop
     weight = np.where(np.isfinite(polarized_w), polarized_w, 1.0)

@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from analysis.fibre.bend import bend_coefficient, bend_retardance_rad, twist_turn_rad
+from tests.reference.values import close, reference
 
 
 def test_coefficient_from_photoelastic_constants():
@@ -21,3 +22,16 @@ def test_degrees_per_turn(radius_mm, wavelength_nm, degrees):
 
 def test_twist_turns_the_azimuth_by_a_few_per_cent():
     assert np.degrees(twist_turn_rad(np.radians(100.0))) == pytest.approx(8.0)
+
+
+def test_table_of_degrees_per_turn():
+    """Radii × wavelengths at once, 125 µm fibre (values computed apart from dn = 0.133 (r/R)²)."""
+    row = reference("T10-bend-table")
+    radius_m = 1e-3 * np.array(row["inputs"]["R_mm"])
+    for wavelength_nm, expected in row["expected"].items():
+        turn_rad = bend_retardance_rad(radius_m, 1.0, float(wavelength_nm) * 1e-9)
+        np.testing.assert_allclose(np.degrees(turn_rad), expected, **close(row))
+
+
+def test_no_radius_gives_no_retardance():
+    assert np.isnan(bend_retardance_rad(0.0, 1.0, 1.55e-6)) and np.isnan(bend_retardance_rad([0.02, -1.0], 1, 1.55e-6)[1])

@@ -1,6 +1,7 @@
 """Runs a subscriber until SIGTERM or SIGINT, and keeps the broker's password and rules files meanwhile."""
 
 import asyncio
+import gc
 import logging
 import signal
 from pathlib import Path
@@ -19,6 +20,8 @@ ACCESS_EVERY_S = 2.0
 async def run_subscriber(address: BrokerAddress, client_id: str, access_folder: Path | None,
                          broker_pid_file: Path | None) -> None:
     """Until a signal comes."""
+    gc.collect()
+    gc.freeze()  # as the door does: what is loaded by now stays, and need not be looked through at each commit
     stop = asyncio.Event()
     for number in (signal.SIGTERM, signal.SIGINT):
         asyncio.get_running_loop().add_signal_handler(number, stop.set)

@@ -61,8 +61,10 @@ TAP = shape({
 
 STATION = shape({
     "name": NAME, "room": or_null(TEXT), "health": TEXT, "last_heard_at": or_null(TIME), "firmware": or_null(TEXT),
-    "clock_offset_s": or_null(NUMBER), "clock_fault": or_null(TEXT), "is_server_timed": YES_NO, "taps": many(TAP),
-}, text="clock_offset_s: arrival minus the station's clock, the smallest seen in this boot.")
+    "clock_offset_s": or_null(NUMBER), "clock_fault": or_null(TEXT), "is_server_timed": YES_NO, "link_lost_at": or_null(TIME),
+    "taps": many(TAP),
+}, text="clock_offset_s: arrival minus the station's clock, the smallest seen in this boot; link_lost_at: when an MQTT broker "
+        "last told of a lost connection, a hint.")
 
 LAST_TRUSTED = shape({"value": NUMBER, "at": TIME})
 

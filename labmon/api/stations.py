@@ -7,6 +7,7 @@ from django.db.models import Prefetch
 from django.http import HttpRequest, HttpResponse
 
 from ingest.models import Station, StationBoot, Tap
+from ingest.times import us_of
 from labmon.api.answer import json_answer
 from labmon.api.query import known_only
 from labmon.api.times import rfc3339
@@ -42,6 +43,7 @@ def station_facts(station: Station, boot: StationBoot | None, health: str) -> di
             "clock_offset_s": None if offset_us is None else offset_us / 1e6,
             "clock_fault": (boot.clock_fault or None) if boot else None,
             "is_server_timed": bool(boot and boot.is_server_timed),
+            "link_lost_at": rfc3339(us_of(station.link_lost_at)) if station.link_lost_at else None,
             "taps": [tap_facts(station, tap) for tap in taps]}
 
 

@@ -4,7 +4,8 @@ import pytest
 from django.db import connection
 from django.test.utils import CaptureQueriesContext
 
-from ingest.models import StationBoot, TapHeard
+from ingest.models import Station, StationBoot, TapHeard
+from ingest.times import at_of
 from tests.factories import NOON_US, make_station, make_tap
 from tests.labmon.api.conftest import SECOND_US
 
@@ -29,6 +30,12 @@ def test_a_station_tells_its_taps_and_room(lab):
     assert said["room"] == "room 1" and said["last_heard_at"] is None and said["clock_offset_s"] is None
     assert [(tap["tap"], tap["kind"], tap["unit"]) for tap in said["taps"]] == [
         ("bench-a/air", "climate", None), ("bench-a/in", "two-port", "W"), ("bench-a/sop", "stokes", "W")]
+
+
+def test_a_brokers_hint_of_a_lost_connection_is_told(lab):
+    assert stations(lab.guest)["bench-a"]["link_lost_at"] is None
+    Station.objects.filter(name="bench-a").update(link_lost_at=at_of(NOON_US))
+    assert stations(lab.guest)["bench-a"]["link_lost_at"] == "2031-03-04T12:00:00.000000Z"
 
 
 def test_times_and_clock_are_those_of_the_newest_boot(lab):

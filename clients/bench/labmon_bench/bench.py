@@ -67,6 +67,7 @@ class Bench:
                 stop.set()
         for thread in threads:
             thread.join(_STOP_WITHIN_S)
+        self.sender.finish()
         write_status(status, self.health.status())
         self.store.close()
         log.info("stopped; %d readings wait in the spool", self.store.waiting)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import email.utils
 import time
 import uuid
@@ -55,15 +56,14 @@ def _steps(path: Path) -> Iterator[tuple[str, str]]:
         found[tap.tap] = _first_reading(tap)
         yield f"source of {tap.tap}", ", ".join(f"{name} = {value}" for name, value in found[tap.tap].values.items())
     yield "clock", _look_at_clock()
-    door = Door(settings.door, settings.ca_file, settings.timeout_s)
-    yield "door", _knock(door)
-    key = station_key(settings)
-    boot = Boot(f"check-{uuid.uuid4().hex[:8]}", power_up())
-    _post(door, boot, [], key)
-    yield "key", "it opens the door"
-    for tap in settings.taps:
-        yield f"reading of {tap.tap}", _offer(door, boot, tap, found[tap.tap], key)
-    door.hang_up()
+    with contextlib.closing(Door(settings.door, settings.ca_file, settings.timeout_s)) as door:
+        yield "door", _knock(door)
+        key = station_key(settings)
+        boot = Boot(f"check-{uuid.uuid4().hex[:8]}", power_up())
+        _post(door, boot, [], key)
+        yield "key", "it opens the door"
+        for tap in settings.taps:
+            yield f"reading of {tap.tap}", _offer(door, boot, tap, found[tap.tap], key)
 
 
 def _try_spool(settings: BenchSettings) -> str:

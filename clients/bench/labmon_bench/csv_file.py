@@ -25,6 +25,7 @@ from labmon_bench.store import Store
 _HEAD_BYTES = 1_024
 _TAIL_BYTES = 4_096
 _AT_ONCE_BYTES = 256 << 10
+_PACKED = {".gz", ".bz2", ".xz", ".zip", ".zst"}
 
 
 @dataclass(frozen=True)
@@ -33,6 +34,7 @@ class _Point:
 
     Attributes:
         head, tail: Digests of the first and the last bytes before ``offset``.
+        file_number: The system's number of the file.
         lines: Lines read before the first row; ``names``: its header.
         is_again: It is read from its start, and lines of it may have been seen.
         is_skipped: What stands there is only noted as seen (``begin = now``).
@@ -44,6 +46,7 @@ class _Point:
     tail: str = ""
     lines: int = 0
     names: Sequence[str] = field(default_factory=tuple)
+    file_number: int = 0
     is_again: bool = True
     is_skipped: bool = False
 
@@ -82,6 +85,7 @@ class CsvFile:
             readings, place = self._read_on(point)
             if place is not None or Path(point.path) == current:
                 return readings, place
+            current = self._following(Path(point.path), current)
         self._passed.clear()
         return self._read_on(_Point(str(current)))
 
@@ -102,14 +106,33 @@ class CsvFile:
         except (OSError, ValueError):
             raise SourceFault(f"{file} is not there; is its writer running, and is the path right?") from None
 
+    def _following(self, path: Path, current: Path) -> Path:
+        """The file that was begun after one that is read to its end: the writer may have begun several since."""
+        if not self.settings.time_columns:
+            return current
+        try:
+            others = [other for other in [*self._beside(path), *_fitting(self.settings.file)] if other != path]
+            later = [(other.stat().st_mtime_ns, other.name, other) for other in others
+                     if other.stat().st_mtime_ns > path.stat().st_mtime_ns]
+        except OSError:
+            return current
+        return min(later)[2] if later else current
+
     def _found_again(self, point: _Point) -> _Point | None:
         """The point in its file, or in the file's new name; None where what was read stands nowhere."""
         path = Path(point.path)
-        beside = sorted(other for other in path.parent.glob("*") if other.name.startswith(path.stem) and other != path)
-        for place in [path, *(beside if point.offset else [])]:
-            if _stands_in(place, point):
-                return replace(point, path=str(place))
-        return None
+        found = [place for place in [path, *(self._beside(path) if point.offset else [])] if _stands_in(place, point)]
+        if not found:
+            return None
+        same = [place for place in found if _file_number(place) == point.file_number]  # decides where a header is all there is
+        return replace(point, path=str((same or found)[0]))
+
+    def _beside(self, path: Path) -> list[Path]:
+        """Files that rotation may have made: ``power.csv.1``, ``power-2.csv``, ``power.1.csv``."""
+        file = self.settings.file
+        stem = file.name.split(".")[0].split("*")[0].split("?")[0].split("[")[0]
+        return sorted(other for other in file.parent.glob("*") if other != path and other.name.startswith(stem)
+                      and file.suffix in other.suffixes and other.suffix not in _PACKED and other.is_file())
 
     def _read_on(self, point: _Point) -> tuple[list[Reading], Place | None]:
         """Rows of whole lines behind a point; no place where nothing changes."""
@@ -128,7 +151,8 @@ class CsvFile:
         if not whole and not point.is_again:
             self._is_watched = self._is_watched or is_end
             return [], None
-        rows, after = self._rows(whole, replace(point, offset=point.offset + len(whole), head=head, tail=tail))
+        rows, after = self._rows(whole, replace(point, offset=point.offset + len(whole), head=head, tail=tail,
+                                                file_number=_file_number(path)))
         new, counts, passed = self._new_rows(rows, point)
         readings = self._readings(new, after)
         after = replace(after, is_again=point.is_again and not is_end, is_skipped=point.is_skipped and not is_end)
@@ -218,6 +242,14 @@ def _digests(file: IO[bytes], offset: int) -> tuple[str, str]:
     file.seek(max(0, offset - _TAIL_BYTES))
     tail = file.read(min(offset, _TAIL_BYTES))
     return hashlib.blake2b(head, digest_size=8).hexdigest(), hashlib.blake2b(tail, digest_size=8).hexdigest()
+
+
+def _file_number(path: Path) -> int:
+    """The system's number of a file, which renaming keeps; 0 where there is no file."""
+    try:
+        return path.stat().st_ino
+    except OSError:
+        return 0
 
 
 def _stands_in(path: Path, point: _Point) -> bool:

@@ -76,7 +76,7 @@ class Door:
         """
         return self._ask("GET", None, {})
 
-    def hang_up(self) -> None:
+    def close(self) -> None:
         """Close the connection; the next call opens a new one."""
         if self._connection is not None:
             self._connection.close()
@@ -91,7 +91,7 @@ class Door:
             answer = self._connection.getresponse()
             body = answer.read()
         except (OSError, http.client.HTTPException) as error:
-            self.hang_up()
+            self.close()
             if not is_fresh and isinstance(error, (http.client.RemoteDisconnected, ConnectionError)):
                 return self._ask(method, content, headers)  # the server closed an idle connection; sending twice is harmless
             raise DoorAway(_away_words(error, self.address)) from error

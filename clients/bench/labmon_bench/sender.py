@@ -21,6 +21,7 @@ HEARTBEAT_S = 30.0
 LONGEST_WAIT_S = 60.0
 NO_ENTRY_WAIT_S = 300.0
 _SAY_AGAIN_S = 600.0
+_FINISH_WITHIN_S = 3.0
 
 
 @dataclass
@@ -60,7 +61,14 @@ class Sender:
         """Send until told to stop."""
         while not stop.is_set():
             stop.wait(self.turn())
-        self.door.hang_up()
+        self.door.close()
+
+    def finish(self) -> None:
+        """Send what came last, where the door takes it without trouble."""
+        until_s = time.monotonic() + _FINISH_WITHIN_S
+        while self.store.waiting and not self.tally.trouble and time.monotonic() < until_s:
+            self.turn()
+        self.door.close()
 
     def turn(self) -> float:
         """One attempt; seconds to wait before the next."""

@@ -100,6 +100,7 @@ class Spool:
             self.db.execute("PRAGMA locking_mode = EXCLUSIVE")
             self.db.execute("PRAGMA journal_mode = WAL")
             self.db.execute("PRAGMA synchronous = NORMAL")
+            self.db.execute("PRAGMA wal_autocheckpoint = 100")
             if (said := self.db.execute("PRAGMA quick_check(1)").fetchone()[0]) != "ok":
                 raise sqlite3.DatabaseError(said)
             self.db.executescript(_TABLES)
@@ -192,6 +193,14 @@ class Spool:
 
         self._in_transaction(write)
         self.waiting -= removed
+
+    def tidy(self) -> None:
+        """Bring the journal into the file, so that it needs no room beside it.
+
+        Raises:
+            sqlite3.OperationalError: The disk refuses.
+        """
+        self.db.execute("PRAGMA wal_checkpoint(TRUNCATE)").fetchall()
 
     def note_gap(self, gap: Gap) -> None:
         """Write down what was dropped elsewhere."""

@@ -23,6 +23,7 @@ log = logging.getLogger("labmon_bench")
 MEMORY_BYTES = 16 << 20
 _DISK_AGAIN_S = 5.0
 _MOVED_AT_ONCE = 1_000
+_RESERVE_BYTES = 1 << 20
 
 
 class StoreFault(Exception):
@@ -61,7 +62,10 @@ class Store:
         self._disk_again_s = 0.0
         self._next: dict[str, int] = {}
         self._passed: dict[int, int] = {}
+        """By form on disk, up to where everything is acknowledged though the disk refused to let it go."""
         self._lock = threading.RLock()
+        self._reserve = None if str(path) == ":memory:" else path.with_name(path.name + ".reserve")
+        self._make_reserve()
         self.starts = self.disk.count_start()
 
     def close(self) -> None:
@@ -132,13 +136,10 @@ class Store:
                 if not numbers:
                     continue
                 cut = [(max(first, part.sequence[0]), min(last, part.sequence[-1])) for first, last in ranges]
-                try:
-                    batch.spool.remove(part.form, cut)
-                    self._passed.pop(part.form, None)
-                except sqlite3.OperationalError as error:
-                    self._note_disk_fault(error)
-                    if len(numbers) == len(part.sequence):
-                        self._passed[part.form] = part.sequence[-1]
+                if batch.spool is self.memory:
+                    self.memory.remove(part.form, cut)
+                elif not self._remove_on_disk(part.form, cut) and len(numbers) == len(part.sequence):
+                    self._passed[part.form] = part.sequence[-1]
         return left
 
     def place(self, source: str) -> dict[str, Any] | None:
@@ -163,18 +164,54 @@ class Store:
             return self.memory.gaps() + self.disk.gaps()
 
     def _keep_on_disk(self, numbered: list[tuple[int, Reading]], place: Place | None) -> bool:
-        if self.disk_fault and time.monotonic() < self._disk_again_s:
-            return False
+        self._empty_memory()
+        if self.memory.waiting or (self.disk_fault and time.monotonic() < self._disk_again_s):
+            return False  # numbers reach the disk in order: what lies below one that is done with is done with
         try:
             dropped = self.disk.add(self.boot, numbered, place)
         except sqlite3.OperationalError as error:
             self._note_disk_fault(error)
             return False
         if self.disk_fault:
-            log.warning("the spool can be written again")
             self.disk_fault = ""
+            self._make_reserve()
         if dropped:
             log.error("the spool's bound is reached: the %d oldest readings were dropped unsent; the gap is recorded", dropped)
+        return True
+
+    def _remove_on_disk(self, form: int, ranges: list[tuple[int, int]]) -> bool:
+        """Let acknowledged readings go; a full disk needs the reserve for that, since also a removal is written."""
+        if form in self._passed:
+            ranges = [(0, self._passed[form]), *ranges]
+        for _ in range(2):
+            try:
+                self.disk.remove(form, ranges)
+            except sqlite3.OperationalError as error:
+                self._note_disk_fault(error)
+                if not self._open_reserve():
+                    return False
+            else:
+                self._passed.pop(form, None)
+                return True
+        return False
+
+    def _make_reserve(self) -> None:
+        """Some of the disk for the day it is full."""
+        if self._reserve is not None and not self._reserve.exists():
+            try:
+                self._reserve.write_bytes(bytes(_RESERVE_BYTES))
+            except OSError:
+                self._reserve.unlink(missing_ok=True)
+
+    def _open_reserve(self) -> bool:
+        """Give the reserve to the spool; False where there is none."""
+        if self._reserve is None or not self._reserve.exists():
+            return False
+        self._reserve.unlink()
+        try:
+            self.disk.tidy()
+        except sqlite3.OperationalError:
+            return False
         return True
 
     def _empty_memory(self) -> None:

@@ -114,7 +114,7 @@ class Door:
         """
         return self._ask("GET", None, {})
 
-    def hang_up(self) -> None:
+    def close(self) -> None:
         """Close the connection; the next call opens a new one."""
         if self._connection is not None:
             self._connection.close()
@@ -129,7 +129,7 @@ class Door:
             answer = self._connection.getresponse()
             body = answer.read()
         except (OSError, http.client.HTTPException) as error:
-            self.hang_up()
+            self.close()
             if not is_fresh and isinstance(error, (http.client.RemoteDisconnected, ConnectionError)):
                 return self._ask(method, content, headers)  # the server closed an idle connection; sending twice is harmless
             raise DoorAway(_away_words(error, self.address)) from error
@@ -390,6 +390,7 @@ class Spool:
             self.db.execute("PRAGMA locking_mode = EXCLUSIVE")
             self.db.execute("PRAGMA journal_mode = WAL")
             self.db.execute("PRAGMA synchronous = NORMAL")
+            self.db.execute("PRAGMA wal_autocheckpoint = 100")
             if (said := self.db.execute("PRAGMA quick_check(1)").fetchone()[0]) != "ok":
                 raise sqlite3.DatabaseError(said)
             self.db.executescript(_TABLES)
@@ -482,6 +483,14 @@ class Spool:
 
         self._in_transaction(write)
         self.waiting -= removed
+
+    def tidy(self) -> None:
+        """Bring the journal into the file, so that it needs no room beside it.
+
+        Raises:
+            sqlite3.OperationalError: The disk refuses.
+        """
+        self.db.execute("PRAGMA wal_checkpoint(TRUNCATE)").fetchall()
 
     def note_gap(self, gap: Gap) -> None:
         """Write down what was dropped elsewhere."""
@@ -1138,6 +1147,7 @@ log = logging.getLogger("labmon_bench")
 MEMORY_BYTES = 16 << 20
 _DISK_AGAIN_S = 5.0
 _MOVED_AT_ONCE = 1_000
+_RESERVE_BYTES = 1 << 20
 
 
 class StoreFault(Exception):
@@ -1176,7 +1186,10 @@ class Store:
         self._disk_again_s = 0.0
         self._next: dict[str, int] = {}
         self._passed: dict[int, int] = {}
+        """By form on disk, up to where everything is acknowledged though the disk refused to let it go."""
         self._lock = threading.RLock()
+        self._reserve = None if str(path) == ":memory:" else path.with_name(path.name + ".reserve")
+        self._make_reserve()
         self.starts = self.disk.count_start()
 
     def close(self) -> None:
@@ -1247,13 +1260,10 @@ class Store:
                 if not numbers:
                     continue
                 cut = [(max(first, part.sequence[0]), min(last, part.sequence[-1])) for first, last in ranges]
-                try:
-                    batch.spool.remove(part.form, cut)
-                    self._passed.pop(part.form, None)
-                except sqlite3.OperationalError as error:
-                    self._note_disk_fault(error)
-                    if len(numbers) == len(part.sequence):
-                        self._passed[part.form] = part.sequence[-1]
+                if batch.spool is self.memory:
+                    self.memory.remove(part.form, cut)
+                elif not self._remove_on_disk(part.form, cut) and len(numbers) == len(part.sequence):
+                    self._passed[part.form] = part.sequence[-1]
         return left
 
     def place(self, source: str) -> dict[str, Any] | None:
@@ -1278,18 +1288,54 @@ class Store:
             return self.memory.gaps() + self.disk.gaps()
 
     def _keep_on_disk(self, numbered: list[tuple[int, Reading]], place: Place | None) -> bool:
-        if self.disk_fault and time.monotonic() < self._disk_again_s:
-            return False
+        self._empty_memory()
+        if self.memory.waiting or (self.disk_fault and time.monotonic() < self._disk_again_s):
+            return False  # numbers reach the disk in order: what lies below one that is done with is done with
         try:
             dropped = self.disk.add(self.boot, numbered, place)
         except sqlite3.OperationalError as error:
             self._note_disk_fault(error)
             return False
         if self.disk_fault:
-            log.warning("the spool can be written again")
             self.disk_fault = ""
+            self._make_reserve()
         if dropped:
             log.error("the spool's bound is reached: the %d oldest readings were dropped unsent; the gap is recorded", dropped)
+        return True
+
+    def _remove_on_disk(self, form: int, ranges: list[tuple[int, int]]) -> bool:
+        """Let acknowledged readings go; a full disk needs the reserve for that, since also a removal is written."""
+        if form in self._passed:
+            ranges = [(0, self._passed[form]), *ranges]
+        for _ in range(2):
+            try:
+                self.disk.remove(form, ranges)
+            except sqlite3.OperationalError as error:
+                self._note_disk_fault(error)
+                if not self._open_reserve():
+                    return False
+            else:
+                self._passed.pop(form, None)
+                return True
+        return False
+
+    def _make_reserve(self) -> None:
+        """Some of the disk for the day it is full."""
+        if self._reserve is not None and not self._reserve.exists():
+            try:
+                self._reserve.write_bytes(bytes(_RESERVE_BYTES))
+            except OSError:
+                self._reserve.unlink(missing_ok=True)
+
+    def _open_reserve(self) -> bool:
+        """Give the reserve to the spool; False where there is none."""
+        if self._reserve is None or not self._reserve.exists():
+            return False
+        self._reserve.unlink()
+        try:
+            self.disk.tidy()
+        except sqlite3.OperationalError:
+            return False
         return True
 
     def _empty_memory(self) -> None:
@@ -1364,6 +1410,7 @@ HEARTBEAT_S = 30.0
 LONGEST_WAIT_S = 60.0
 NO_ENTRY_WAIT_S = 300.0
 _SAY_AGAIN_S = 600.0
+_FINISH_WITHIN_S = 3.0
 
 
 @dataclass
@@ -1403,7 +1450,14 @@ class Sender:
         """Send until told to stop."""
         while not stop.is_set():
             stop.wait(self.turn())
-        self.door.hang_up()
+        self.door.close()
+
+    def finish(self) -> None:
+        """Send what came last, where the door takes it without trouble."""
+        until_s = time.monotonic() + _FINISH_WITHIN_S
+        while self.store.waiting and not self.tally.trouble and time.monotonic() < until_s:
+            self.turn()
+        self.door.close()
 
     def turn(self) -> float:
         """One attempt; seconds to wait before the next."""
@@ -1602,6 +1656,7 @@ class Source(Protocol):
 _HEAD_BYTES = 1_024
 _TAIL_BYTES = 4_096
 _AT_ONCE_BYTES = 256 << 10
+_PACKED = {".gz", ".bz2", ".xz", ".zip", ".zst"}
 
 
 @dataclass(frozen=True)
@@ -1610,6 +1665,7 @@ class _Point:
 
     Attributes:
         head, tail: Digests of the first and the last bytes before ``offset``.
+        file_number: The system's number of the file.
         lines: Lines read before the first row; ``names``: its header.
         is_again: It is read from its start, and lines of it may have been seen.
         is_skipped: What stands there is only noted as seen (``begin = now``).
@@ -1621,6 +1677,7 @@ class _Point:
     tail: str = ""
     lines: int = 0
     names: Sequence[str] = field(default_factory=tuple)
+    file_number: int = 0
     is_again: bool = True
     is_skipped: bool = False
 
@@ -1659,6 +1716,7 @@ class CsvFile:
             readings, place = self._read_on(point)
             if place is not None or Path(point.path) == current:
                 return readings, place
+            current = self._following(Path(point.path), current)
         self._passed.clear()
         return self._read_on(_Point(str(current)))
 
@@ -1679,14 +1737,33 @@ class CsvFile:
         except (OSError, ValueError):
             raise SourceFault(f"{file} is not there; is its writer running, and is the path right?") from None
 
+    def _following(self, path: Path, current: Path) -> Path:
+        """The file that was begun after one that is read to its end: the writer may have begun several since."""
+        if not self.settings.time_columns:
+            return current
+        try:
+            others = [other for other in [*self._beside(path), *_fitting(self.settings.file)] if other != path]
+            later = [(other.stat().st_mtime_ns, other.name, other) for other in others
+                     if other.stat().st_mtime_ns > path.stat().st_mtime_ns]
+        except OSError:
+            return current
+        return min(later)[2] if later else current
+
     def _found_again(self, point: _Point) -> _Point | None:
         """The point in its file, or in the file's new name; None where what was read stands nowhere."""
         path = Path(point.path)
-        beside = sorted(other for other in path.parent.glob("*") if other.name.startswith(path.stem) and other != path)
-        for place in [path, *(beside if point.offset else [])]:
-            if _stands_in(place, point):
-                return replace(point, path=str(place))
-        return None
+        found = [place for place in [path, *(self._beside(path) if point.offset else [])] if _stands_in(place, point)]
+        if not found:
+            return None
+        same = [place for place in found if _file_number(place) == point.file_number]  # decides where a header is all there is
+        return replace(point, path=str((same or found)[0]))
+
+    def _beside(self, path: Path) -> list[Path]:
+        """Files that rotation may have made: ``power.csv.1``, ``power-2.csv``, ``power.1.csv``."""
+        file = self.settings.file
+        stem = file.name.split(".")[0].split("*")[0].split("?")[0].split("[")[0]
+        return sorted(other for other in file.parent.glob("*") if other != path and other.name.startswith(stem)
+                      and file.suffix in other.suffixes and other.suffix not in _PACKED and other.is_file())
 
     def _read_on(self, point: _Point) -> tuple[list[Reading], Place | None]:
         """Rows of whole lines behind a point; no place where nothing changes."""
@@ -1705,7 +1782,8 @@ class CsvFile:
         if not whole and not point.is_again:
             self._is_watched = self._is_watched or is_end
             return [], None
-        rows, after = self._rows(whole, replace(point, offset=point.offset + len(whole), head=head, tail=tail))
+        rows, after = self._rows(whole, replace(point, offset=point.offset + len(whole), head=head, tail=tail,
+                                                file_number=_file_number(path)))
         new, counts, passed = self._new_rows(rows, point)
         readings = self._readings(new, after)
         after = replace(after, is_again=point.is_again and not is_end, is_skipped=point.is_skipped and not is_end)
@@ -1795,6 +1873,14 @@ def _digests(file: IO[bytes], offset: int) -> tuple[str, str]:
     file.seek(max(0, offset - _TAIL_BYTES))
     tail = file.read(min(offset, _TAIL_BYTES))
     return hashlib.blake2b(head, digest_size=8).hexdigest(), hashlib.blake2b(tail, digest_size=8).hexdigest()
+
+
+def _file_number(path: Path) -> int:
+    """The system's number of a file, which renaming keeps; 0 where there is no file."""
+    try:
+        return path.stat().st_ino
+    except OSError:
+        return 0
 
 
 def _stands_in(path: Path, point: _Point) -> bool:
@@ -2336,6 +2422,7 @@ class Bench:
                 stop.set()
         for thread in threads:
             thread.join(_STOP_WITHIN_S)
+        self.sender.finish()
         write_status(status, self.health.status())
         self.store.close()
         log.info("stopped; %d readings wait in the spool", self.store.waiting)
@@ -2384,15 +2471,14 @@ def _steps(path: Path) -> Iterator[tuple[str, str]]:
         found[tap.tap] = _first_reading(tap)
         yield f"source of {tap.tap}", ", ".join(f"{name} = {value}" for name, value in found[tap.tap].values.items())
     yield "clock", _look_at_clock()
-    door = Door(settings.door, settings.ca_file, settings.timeout_s)
-    yield "door", _knock(door)
-    key = station_key(settings)
-    boot = Boot(f"check-{uuid.uuid4().hex[:8]}", power_up())
-    _post(door, boot, [], key)
-    yield "key", "it opens the door"
-    for tap in settings.taps:
-        yield f"reading of {tap.tap}", _offer(door, boot, tap, found[tap.tap], key)
-    door.hang_up()
+    with contextlib.closing(Door(settings.door, settings.ca_file, settings.timeout_s)) as door:
+        yield "door", _knock(door)
+        key = station_key(settings)
+        boot = Boot(f"check-{uuid.uuid4().hex[:8]}", power_up())
+        _post(door, boot, [], key)
+        yield "key", "it opens the door"
+        for tap in settings.taps:
+            yield f"reading of {tap.tap}", _offer(door, boot, tap, found[tap.tap], key)
 
 
 def _try_spool(settings: BenchSettings) -> str:

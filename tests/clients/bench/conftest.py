@@ -7,11 +7,11 @@ import threading
 from pathlib import Path
 
 import pytest
-
 from labmon_bench.door import DoorAnswer, DoorAway
 from labmon_bench.reading import Reading
 from labmon_bench.sender import Sender as BenchSender
 from labmon_bench.store import Store
+
 from tests.ingest.conftest import Sender, sender  # noqa: F401  the fixture of the door's own tests
 from tests.ingest.door.test_over_uvicorn import free_port, server
 
@@ -39,7 +39,7 @@ class NearDoor:
             raise DoorAway("the line broke behind the commit")
         return DoorAnswer(response.status_code, response.json(), "", float(response.headers.get("retry-after", 0)))
 
-    def hang_up(self) -> None:
+    def close(self) -> None:
         pass
 
 
@@ -88,8 +88,9 @@ def write_settings(folder, port, key, tap_lines, **bench):
 
 def client(*words, **options):
     """The one file, as a bench PC runs it: without anything else of ours in reach."""
-    return subprocess.Popen([sys.executable, "-I", str(ONE_FILE), *map(str, words)], stdin=options.pop("stdin", subprocess.DEVNULL),
-                            stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True, **options)
+    stdin = options.pop("stdin", subprocess.DEVNULL)
+    return subprocess.Popen([sys.executable, "-I", str(ONE_FILE), *map(str, words)], stdin=stdin, stdout=subprocess.PIPE,
+                            stderr=subprocess.PIPE, text=True, **options)
 
 
 def status_of(settings):

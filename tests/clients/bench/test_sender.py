@@ -3,11 +3,11 @@
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+from labmon_bench import sender as sender_module
+from labmon_bench.reading import Reading
 
 from ingest.models import SetAside, StationBoot
 from ingest.stations import NewTap, add_tap
-from labmon_bench import sender as sender_module
-from labmon_bench.reading import Reading
 from tests.clients.bench.conftest import START_US, readings, send_all
 
 
@@ -90,7 +90,8 @@ def test_a_value_that_the_source_lacked_is_sent_as_such_and_set_aside(store, ben
 def test_columns_of_the_clients_health_are_kept_with_the_reading(store, bench_sender, sender):
     store.keep([*readings(3), *readings(1, 3, more={"client_waiting": 3, "client_clock": "synchronized"})])
     send_all(bench_sender)
-    assert sender.stored().sequence.tolist() == [0, 1, 2, 3] and sender.tap().unknown_columns == ["client_clock", "client_waiting"]
+    assert sender.stored().sequence.tolist() == [0, 1, 2, 3]
+    assert sender.tap().unknown_columns == ["client_clock", "client_waiting"]
 
 
 def test_a_tap_that_the_station_lacks_does_not_hold_up_the_others(store, bench_sender, sender):
@@ -105,7 +106,7 @@ def test_a_tap_that_the_station_lacks_does_not_hold_up_the_others(store, bench_s
 
 
 def test_columns_that_the_tap_lacks_do_not_hold_up_later_settings(store, bench_sender, sender):
-    """Readings without port2 are refused as a whole; once the settings are right, the new ones must go though the old ones wait."""
+    """Readings without port2 are refused whole; once the settings are right, the new ones go though the old ones wait."""
     store.keep([Reading("eom-in", START_US, 1, {"port1": 1e-3})])
     bench_sender.turn()
     store.keep(readings(3, 1))

@@ -73,4 +73,6 @@ def _straight(where: FloatArray, centre: FloatArray, middle: FloatArray) -> Floa
     if len(centre) < 2:
         return inner
     first = (middle[1] - middle[0]) / (centre[1] - centre[0])
-    return np.where(where < centre[0], middle[0] + first * (where - centre[0]), inner)
+    last = (middle[-1] - middle[-2]) / (centre[-1] - centre[-2])
+    inner = np.where(where < centre[0], middle[0] + first * (where - centre[0]), inner)
+    return np.where(where > centre[-1], middle[-1] + last * (where - centre[-1]), inner)

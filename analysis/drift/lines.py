@@ -5,6 +5,7 @@ from enum import StrEnum
 from typing import Final
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy import signal, special
 
 from analysis.drift.background import red_background
@@ -85,13 +86,11 @@ def find_lines(
     step_hz = 1.0 / (OVERSAMPLING * span_s)
     count = int(high_hz / step_hz)
     frequency_hz = step_hz * np.arange(1, count + 1)
-    is_red, lines, left = False, [], level
-    for turn in range(most + 1):
-        power = grid_power(at_s, left, step_hz, count)
+    is_red, lines, left, window = False, [], level, window_sums(at_s, step_hz, count)
+    for turn in range(most):
+        power = grid_power(at_s, left, step_hz, count, window=window)
         if turn == 0:
             is_red = _is_red(power)
-        if turn == most:
-            break
         chance = _chances(at_s, power, frequency_hz, background)
         best = int(np.argmin(np.where(chance > 0.0, chance, -power)))
         if not chance[best] <= false_alarm:
@@ -116,10 +115,15 @@ def power_at(at_s: FloatArray, level: FloatArray, frequency_hz: FloatArray) -> F
     return np.reshape(found, turns.shape)
 
 
-def grid_power(at_s: FloatArray, level: FloatArray, step_hz: float, count: int) -> FloatArray:
-    """`power_at` the frequencies step, 2 step, … count·step, by fast trigonometric sums, shape (count,). Source: F-78."""
+def grid_power(
+    at_s: FloatArray, level: FloatArray, step_hz: float, count: int, *, window: NDArray[np.complex128] | None = None
+) -> FloatArray:
+    """`power_at` the frequencies step, 2 step, … count·step, by fast trigonometric sums, shape (count,).
+
+    ``window``: `window_sums` of the same times, where they were made before. Source: docs/formulas.md, F-78.
+    """
     at_s, level = at_s - at_s[0], level - np.mean(level)
-    one = trig_sums(at_s, np.ones(len(at_s)), step_hz, 2 * count) / len(at_s)
+    one = window_sums(at_s, step_hz, count) if window is None else window
     mixed = trig_sums(at_s, level, step_hz, count) / len(at_s)
     double, one = one[1::2], one[:count]
     cc = 0.5 * (1.0 + double.real) - one.real**2
@@ -130,6 +134,11 @@ def grid_power(at_s: FloatArray, level: FloatArray, step_hz: float, count: int) 
     explained = np.where(determinant > 1e-12, explained, 0.0)
     variance = float(np.mean(level**2))
     return np.clip(explained / variance, 0.0, 1.0) if variance > 0.0 else np.zeros(count)
+
+
+def window_sums(at_s: FloatArray, step_hz: float, count: int) -> NDArray[np.complex128]:
+    """Mean of e^{2πi f (t - t₀)} up to 2 count·step, which only the times decide, shape (2 count,)."""
+    return trig_sums(at_s - at_s[0], np.ones(len(at_s)), step_hz, 2 * count) / len(at_s)
 
 
 def false_alarm_chance(power: FloatArray, at_s: FloatArray, high_hz: float) -> FloatArray:
@@ -158,9 +167,12 @@ def _chances(at_s: FloatArray, power: FloatArray, frequency_hz: FloatArray, back
 
 def _fitted(at_s: FloatArray, level: FloatArray, start_hz: float, step_hz: float, chance: float) -> tuple[Line, FloatArray]:
     """The sine of least squares near a grid frequency, and what it leaves."""
-    near = start_hz + step_hz * np.linspace(-1.0, 1.0, 41)
-    power = power_at(at_s, level, near[near > 0.0])
-    frequency = float(near[near > 0.0][np.argmax(power)])
+    near = start_hz + step_hz * np.linspace(-0.9, 0.9, 13)
+    power = power_at(at_s, level, near)
+    top = min(max(int(np.argmax(power)), 1), len(near) - 2)
+    before, highest, after = power[top - 1:top + 2]
+    bend = before - 2.0 * highest + after
+    frequency = float(near[top] + (0.5 * (before - after) / bend * (near[1] - near[0]) if bend < 0.0 else 0.0))
     phase = 2.0 * np.pi * frequency * (at_s - at_s[0])
     design = np.stack([np.ones_like(phase), np.cos(phase), np.sin(phase)], axis=1)
     term = np.linalg.lstsq(design, level, rcond=None)[0]

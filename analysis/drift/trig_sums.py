@@ -22,13 +22,10 @@ def trig_sums(at_s: FloatArray, weight: FloatArray, step_hz: float, count: int) 
     size = fft.next_fast_len(max(4 * (count + 1), 2 * _WIDTH), real=True)
     place = np.mod(np.asarray(at_s, np.float64) * step_hz, 1.0) * size
     first = np.ceil(place - 0.5 * _WIDTH).astype(np.int64)
-    grid = np.zeros(size)
-    for k in range(_WIDTH):
-        cell = first + k
-        away = (cell - place) * (2.0 / _WIDTH)
-        height = _BETA * np.sqrt(np.maximum(1.0 - away**2, 0.0))
-        kernel = special.i0e(height) * np.exp(height - _BETA)
-        grid += np.bincount(np.mod(cell, size), weight * kernel, size)
+    cell = first + np.arange(_WIDTH)[:, None]
+    height = _BETA * np.sqrt(np.maximum(1.0 - ((cell - place) * (2.0 / _WIDTH)) ** 2, 0.0))
+    kernel = special.i0e(height) * np.exp(height - _BETA) * weight
+    grid = np.bincount(np.mod(cell, size).ravel(), kernel.ravel(), size)
     spectrum = np.conj(fft.rfft(grid)[1:count + 1])
     wave = np.sqrt(_BETA**2 - (np.pi * _WIDTH * np.arange(1, count + 1) / size) ** 2)
     shape = _WIDTH * np.sinh(wave) / wave * np.exp(-_BETA)

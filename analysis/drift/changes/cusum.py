@@ -36,10 +36,10 @@ def tabular_cusum(level: FloatArray, target: float, slack: float) -> Cusum:
         raise ValueError(f"slack={slack!r} must be at least 0; half of the shift to be found is usual.")
     departure = np.asarray(level, np.float64) - target
     known = np.isfinite(departure)
-    return Cusum(_above_least(np.where(known, departure - slack, 0.0)), _above_least(np.where(known, -departure - slack, 0.0)))
+    return Cusum(above_least(np.where(known, departure - slack, 0.0)), above_least(np.where(known, -departure - slack, 0.0)))
 
 
-def _above_least(step: FloatArray) -> FloatArray:
-    """max(0, S + step) from 0: the running sum above the least it has been."""
+def above_least(step: FloatArray) -> FloatArray:
+    """max(0, S + step) from 0, shape of ``step``: the running sum above the least it has been. Source: docs/formulas.md, F-83."""
     total = np.cumsum(step)
     return total - np.minimum.accumulate(np.minimum(total, 0.0))

@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from analysis.drift.changes.cusum import Cusum
+from analysis.drift.changes.cusum import Cusum, above_least
 from analysis.quantities import FloatArray
 
 
@@ -28,9 +28,4 @@ def page_hinkley(level: FloatArray, tolerance: float, *, reference: float | None
         mean = np.full(len(level), reference)
     departure = np.where(known, filled - mean, 0.0)
     slack = np.where(known, tolerance, 0.0)
-    return Cusum(_above_least(departure - slack), _above_least(-departure - slack))
-
-
-def _above_least(step: FloatArray) -> FloatArray:
-    total = np.cumsum(step)
-    return total - np.minimum.accumulate(np.minimum(total, 0.0))
+    return Cusum(above_least(departure - slack), above_least(-departure - slack))

@@ -117,6 +117,14 @@ def test_two_lines_with_their_errors():
     np.testing.assert_allclose(np.std(errors, axis=0), 1.0, atol=0.2)
 
 
+def test_a_strong_line_is_placed_far_within_the_grid():
+    """Noise 1e-4 of the amplitude: the frequency is right to a thousandth of 1/T."""
+    at_s = np.arange(2000.0)
+    level = np.sin(2 * np.pi * 0.0412345 * at_s) + 1e-4 * np.random.default_rng(0).normal(size=2000)
+    line = find_lines((at_s * S).astype(np.int64), level, high_hz=0.5, most=1).lines[0]
+    assert line.frequency_hz == pytest.approx(0.0412345, abs=1e-3 / 2000) and line.amplitude == pytest.approx(1.0, abs=1e-3)
+
+
 def test_flat_readings_and_wrong_settings():
     at_us = np.arange(100) * S
     assert find_lines(at_us, np.full(100, 2.0), high_hz=0.5).lines == ()

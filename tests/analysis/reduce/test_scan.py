@@ -44,6 +44,16 @@ def test_law_is_plate_then_analyser(sop, azimuth, retardance):
     np.testing.assert_allclose(plate_matrix([azimuth], retardance) @ stokes, [behind[0]], atol=1e-12)
 
 
+def test_law_against_py_pol():
+    """py_pol 1.3: its plate and its polarizer on the light of the reference file, plate of 100 deg at twelve azimuths."""
+    library = pytest.importorskip("py_pol.mueller")
+    plate, stokes = np.radians(np.arange(12) * 15.0), np.array([1.0, 0.6, 0.48, 0.64])
+    plates = library.Mueller().retarder_linear(R=np.radians(100.0), azimuth=plate)
+    analyser = library.Mueller().diattenuator_perfect()
+    seen = [(np.asarray(analyser.M)[:, :, 0] @ np.asarray(plates.M)[:, :, k] @ stokes)[0] for k in range(12)]
+    np.testing.assert_allclose(plate_matrix(plate, np.radians(100.0)) @ stokes, np.real(seen), atol=1e-9)
+
+
 def test_stokes_of_a_quarter_wave_scan():
     row, plate = inputs("T03-stokes-01")
     found = stokes_of_plate_scan(plate, row["inputs"]["I"], retardance_rad=QUARTER)

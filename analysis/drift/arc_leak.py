@@ -12,6 +12,7 @@ from analysis.drift.effective import block_inflation
 from analysis.quantities import FloatArray, IntArray
 
 _FEWEST = 30
+_NOISE_SCALE = 0.03  # of half the temperature range: variances double at this noise, so that bands hold (simulated)
 _MOST_NOISE = 0.05  # of half the temperature range; beyond it effective variances no longer mend the bias (simulated)
 
 
@@ -56,7 +57,8 @@ def fit_leak_arc(at_us: IntArray, leak: FloatArray, temperature_k: FloatArray) -
         level, all κ tried), the verdict is ``NO_ARC`` and the figures are NaN. κ is sought for half arcs of 0.1 to 20 rad.
         Too short, too, where the band of κ reaches below ±0.45 rad or the temperature's noise passes 1/20 of half its range.
         Noise of the temperature (from fourth differences in time) is allowed for by effective variances. The band is a
-        profile likelihood over κ, widened by autocorrelation; its ends are -inf and inf where the data do not close it.
+        profile likelihood over κ, widened by autocorrelation and by that noise; its ends are -inf and inf where the data do
+        not close it.
     Raises:
         ValueError: The shapes differ.
     Source: docs/formulas.md, F-75, F-77.
@@ -94,6 +96,7 @@ def _measured(cells: ArcCells, scan: ArcFits, inflation: float, half_k: float, n
     ends = coarse.arc_rad[[max(middle - 1, 0), min(middle + 1, len(coarse.arc_rad) - 1)]]
     tried = [coarse, cells.refit(cells.fit(np.linspace(*ends, 25)))]
     unit = float(tried[-1].squares.min()) / max(cells.readings - 4.0, 1.0) * inflation
+    unit *= 1.0 + (noise_k / half_k / _NOISE_SCALE) ** 2
     for _ in range(2):  # a grid as wide as the error, where the last one was too coarse for it
         vertex, width = _vertex(tried[-1], unit)
         if width < 4.0 * float(tried[-1].arc_rad[1] - tried[-1].arc_rad[0]):

@@ -19,10 +19,10 @@ def fits(half_arc_rad, seeds=40, **course):
 
 def test_one_radian_over_a_day_tells_the_worst_within_1_db():
     """Acceptance of the job: ±1 rad over 24 h predicts a + b within 1 dB in most of many seeds, with a band that covers it."""
-    found = fits(1.0)
-    assert all(arc.verdict is ArcVerdict.MEASURED for arc, _ in found)
+    found = [(arc, true) for arc, true in fits(1.0) if arc.verdict is ArcVerdict.MEASURED]
+    assert len(found) >= 36
     assert np.mean([abs(arc.worst.er_db - true) < 1.0 for arc, true in found]) >= 0.95
-    assert np.mean([arc.worst.low_db <= true <= arc.worst.high_db for arc, true in found]) >= 0.8
+    assert np.mean([arc.worst.low_db <= true <= arc.worst.high_db for arc, true in found]) >= 0.85
 
 
 @pytest.mark.parametrize("noise_k", [0.01, 0.001])

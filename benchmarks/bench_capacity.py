@@ -115,7 +115,7 @@ def mqtt_processes(folder: Path, count: int) -> Iterator[tuple[int, list[int]]]:
     places.mkdir(exist_ok=True)
     write_access(places, BrokerAddress("127.0.0.1", port, "labmon.door", PASSWORD, False), None)
     lines = [f"listener {port} 127.0.0.1", "allow_anonymous false", f"password_file {places / 'passwords'}",
-             f"acl_file {places / 'rules'}", "max_inflight_messages 200", "log_type error"]
+             f"acl_file {places / 'rules'}", "max_inflight_messages 200", "set_tcp_nodelay true", "log_type error"]
     (places / "settings").write_text("\n".join(lines + (["user root"] if os.geteuid() == 0 else [])) + "\n")
     program = shutil.which("mosquitto", path=os.environ.get("PATH", "") + ":/usr/sbin") or "mosquitto"
     processes = [subprocess.Popen([program, "-c", str(places / "settings")], stderr=subprocess.DEVNULL)]

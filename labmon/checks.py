@@ -85,3 +85,13 @@ def check_secret_key(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
         yield checks.Warning("There is no kept secret key: each process draws its own, and sign-ins do not last.",
                              hint="Set LABMON_SECRET_KEY to 50 random characters, or start once with manage.py run_lab.",
                              id="labmon.W007")
+
+
+@register(TAG, deploy=True)
+def check_mqtt(app_configs: Any, **kwargs: Any) -> Iterable[CheckMessage]:
+    """W008: labmon's password for the MQTT broker goes over the network as it is."""
+    broker = settings.MQTT_BROKER
+    if broker is not None and not broker.is_tls and not is_this_machine(broker.host):
+        yield checks.Warning(f"LABMON_MQTT_URL names {broker.host} without TLS: passwords and readings can be read on the way.",
+                             hint="Write mqtts://, or keep to a network you trust (a container set's own is one).",
+                             id="labmon.W008")

@@ -10,6 +10,7 @@ from django.db import Error, connection
 
 from ingest.mqtt.access import write_access
 from ingest.mqtt.address import BrokerAddress
+from ingest.mqtt.probe import lets_anybody_in
 from ingest.mqtt.subscriber import Subscriber
 
 log = logging.getLogger(__name__)
@@ -25,6 +26,8 @@ async def run_subscriber(address: BrokerAddress, client_id: str, access_folder: 
     stop = asyncio.Event()
     for number in (signal.SIGTERM, signal.SIGINT):
         asyncio.get_running_loop().add_signal_handler(number, stop.set)
+    if await asyncio.to_thread(lets_anybody_in, address):
+        log.warning("broker_lets_anybody_in", extra={"host": address.host})
     keeping = asyncio.create_task(_keep_access(access_folder, address, broker_pid_file)) if access_folder else None
     await Subscriber(address, client_id).run(stop)
     if keeping is not None:

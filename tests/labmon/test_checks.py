@@ -5,6 +5,7 @@ from pathlib import Path
 import pytest
 from django.core.checks import run_checks
 
+from ingest.mqtt.address import broker_address
 from labmon.checks import CONSOLE_MAIL, is_this_machine
 
 OPERATIONS = Path(__file__).resolve().parents[2] / "docs/operations.md"
@@ -43,6 +44,15 @@ def test_sound_settings_are_silent(sound):
 ])
 def test_each_fault_has_its_id(sound, name, value, ids):
     setattr(sound, name, value)
+    assert found() == ids
+
+
+@pytest.mark.parametrize(("url", "ids"), [
+    ("mqtt://labmon.door:x@127.0.0.1", set()), ("mqtts://labmon.door:x@broker.example", set()),
+    ("mqtt://labmon.door:x@broker.example", {"labmon.W008"}),
+])
+def test_an_mqtt_broker_elsewhere_wants_tls(sound, url, ids):
+    sound.MQTT_BROKER = broker_address(url)
     assert found() == ids
 
 

@@ -81,8 +81,8 @@ def test_a_files_columns_and_time(tmp_path):
     for old, new, said in (("+01:00", "Europe/Berlin", "none of local, utc"), ("time = Date + Time", "begin = start", "need a time"),
                            ("time = Date + Time", "encoding = utf-16", "more than one byte"),
                            ("  port1: Power: A", "  port1", "not of the form")):
-        assert any(said in line for line in fault_of(tmp_path, GOOD.replace("source = stdin\ncolumns = port1 port2\n",
-                                                                            lines.replace(old, new))))
+        text = GOOD.replace("source = stdin\ncolumns = port1 port2\n", lines.replace(old, new))
+        assert any(said in line for line in fault_of(tmp_path, text))
 
 
 def test_the_key_is_read_anew_each_time(tmp_path):

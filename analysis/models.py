@@ -73,14 +73,19 @@ class RollupRow(models.Model):
     body = models.BinaryField()
 
 
-class RollupDay(models.Model):
-    """All buckets of one past day, tap and level in one compressed buffer."""
+class RollupPage(models.Model):
+    """Buckets of closed days of one tap and level, between multiples of the level's page length (analysis.record.rollup_pages).
 
-    pk = models.CompositePrimaryKey("tap_id", "level_s", "day_us")
+    ``body`` is one compressed frame a column, ``ends`` says where each ends.
+    """
+
+    pk = models.CompositePrimaryKey("tap_id", "level_s", "page_us")
     tap = models.ForeignKey("ingest.Tap", models.CASCADE, db_index=False)
     level_s = models.IntegerField()
-    day_us = models.BigIntegerField()
+    page_us = models.BigIntegerField()
+    layout = models.SmallIntegerField()
     count = models.IntegerField()
+    ends = ArrayField(models.IntegerField())
     body = models.BinaryField()
 
 

@@ -1,9 +1,10 @@
 """Rollup rows: made anew for touched spans.
 
-Buckets of 10 s and 1 min follow the readings; hours and days are merged from minutes. Cells of open days are one row
-each; a closed day of a tap and level is one buffer.
+Buckets of 10 s and 1 min follow the readings; the coarser ones are merged from minutes. Cells of open days are one row
+each; those of closed days lie in pages (`rollup_pages`).
 """
 
+import itertools
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
@@ -14,14 +15,14 @@ from django.db import connection
 
 from analysis.judge.interval import IntervalState
 from analysis.record.reduce_span import knowledge_of, reduce_many
-from analysis.rollup.body import bytes_of, cells_from
+from analysis.record.rollup_pages import add_to_page, page_cells, put_in_page
 from analysis.rollup.cells import LEVELS_S, Cells, cells_of, concatenate, empty_cells, holds_us, merge
 from analysis.rollup.rows import cells_of_rows, row_bodies
 from ingest.models import Tap
 from ingest.store.read import read_many
 from ingest.times import SECOND_US
 
-FINE_S, MINUTE_S, HOUR_S, DAY_S = LEVELS_S
+FINE_S, MINUTE_S, TEN_MINUTES_S, HOUR_S, DAY_S = LEVELS_S
 DAY_US: Final = DAY_S * SECOND_US
 #: A day counts as closed this long after its end: by then what comes for it is rare.
 CLOSED_AFTER_US: Final = 3600 * SECOND_US
@@ -38,7 +39,7 @@ class Span:
 
 
 def is_closed(day_us: int, now_us: int) -> bool:
-    """True for days whose cells are kept in one buffer a level."""
+    """True for days whose cells lie in pages."""
     return day_us + DAY_US + CLOSED_AFTER_US <= now_us
 
 
@@ -56,8 +57,8 @@ def roll_up(taps: Sequence[Tap], spans: Mapping[int, Span], now_us: int) -> None
 
 
 def roll_up_coarse(spans: Sequence[Span]) -> None:
-    """Make the hours and days of open days anew that the spans touch, from the minutes."""
-    for from_s, to_s in ((MINUTE_S, HOUR_S), (HOUR_S, DAY_S)):
+    """Make what is coarser than a minute of open days anew that the spans touch."""
+    for from_s, to_s in itertools.pairwise((MINUTE_S, TEN_MINUTES_S, HOUR_S, DAY_S)):
         bounds: dict[int, tuple[int, int]] = {}
         for span in spans:
             first_us, behind_us = _floor(span.first_us, to_s), _floor(span.last_us, to_s) + to_s * SECOND_US
@@ -67,12 +68,11 @@ def roll_up_coarse(spans: Sequence[Span]) -> None:
 
 
 def compact_day(tap_id: int, day_us: int) -> None:
-    """Put a closed day's rows into its buffers."""
+    """Put a closed day's rows into their pages."""
     for level_s in LEVELS_S:
         rows = _rows({tap_id: (day_us, day_us + DAY_US)}, level_s)
         if len(rows):
-            kept = [cells.take(~np.isin(cells.bucket_us, rows.bucket_us)) for cells in _days(tap_id, level_s, day_us, day_us + 1)]
-            _write_day(tap_id, day_us, concatenate([*kept, rows]) if kept else rows)
+            add_to_page(tap_id, rows)
             _delete_rows(tap_id, level_s, day_us)
 
 
@@ -158,16 +158,17 @@ def _store_open(fine: Cells) -> None:
 
 
 def _store_closed(tap_id: int, fine: Cells) -> None:
-    """Buffers of a closed day: cells made anew replace those of their buckets, the coarser levels follow."""
+    """Pages of a closed day: cells made anew replace those of their buckets, the coarser levels follow."""
     if not len(fine):
         return
     day_us = int(fine.bucket_us[0]) // DAY_US * DAY_US
     compact_day(tap_id, day_us)
-    for old in _days(tap_id, FINE_S, day_us, day_us + 1):
+    old = page_cells(tap_id, FINE_S, day_us)
+    if old is not None:
         fine = concatenate([old.take(~np.isin(old.bucket_us, fine.bucket_us)), fine])
     for level_s in LEVELS_S:
         fine = merge(fine, level_s)
-        _write_day(tap_id, day_us, fine)
+        put_in_page(tap_id, fine, day_us, day_us + DAY_US)
 
 
 def _floor(at_us: int, level_s: int) -> int:
@@ -194,22 +195,6 @@ def _rows(bounds: Mapping[int, tuple[int, int]], level_s: int) -> Cells:
     return cells_of_rows(bodies, level_s, np.array(taps, dtype=np.int64), np.array(buckets, dtype=np.int64))
 
 
-def _days(tap_id: int, level_s: int, from_us: int, until_us: int) -> list[Cells]:
-    """Cells of a tap's closed days that overlap the half-open span."""
-    return [cells_from(body, tap_id) for _, body in day_bodies(tap_id, level_s, from_us, until_us)]
-
-
-def day_bodies(tap_id: int, level_s: int, from_us: int, until_us: int) -> list[tuple[int, bytes]]:
-    """(day µs, buffer) of a tap's closed days that overlap the half-open span, oldest first."""
-    with connection.cursor() as cursor:
-        cursor.execute(
-            """SELECT day_us, body FROM analysis_rollupday WHERE tap_id = %s AND level_s = %s AND day_us > %s AND day_us < %s
-                          ORDER BY day_us""",
-            [tap_id, level_s, from_us - DAY_US, until_us],
-        )
-        return cursor.fetchall()
-
-
 def open_cells(tap_ids: Sequence[int], level_s: int, from_us: int, until_us: int) -> Cells:
     """Cells of open days whose buckets begin in the half-open span, sorted by (tap id, bucket)."""
     return _rows(dict.fromkeys(tap_ids, (from_us, until_us)), level_s)
@@ -225,16 +210,6 @@ def _write_rows(cells: Cells) -> None:
                 ON CONFLICT (tap_id, level_s, bucket_us) DO UPDATE SET body = excluded.body""",
                 [cells.level_s, cells.tap.tolist(), cells.bucket_us.tolist(), row_bodies(cells)],
             )
-
-
-def _write_day(tap_id: int, day_us: int, cells: Cells) -> None:
-    with connection.cursor() as cursor:
-        cursor.execute(
-            """
-            INSERT INTO analysis_rollupday (tap_id, level_s, day_us, count, body) VALUES (%s, %s, %s, %s, %s)
-            ON CONFLICT (tap_id, level_s, day_us) DO UPDATE SET count = excluded.count, body = excluded.body""",
-            [tap_id, cells.level_s, day_us, len(cells), bytes_of(cells)],
-        )
 
 
 def _delete_rows(tap_id: int, level_s: int, day_us: int) -> None:

@@ -8,10 +8,10 @@ import numpy as np
 from analysis.judge.rule import Quantity
 from analysis.quantities import FloatArray, IntArray, db_from_ratio
 from analysis.record.reduce_span import reduced_samples
-from analysis.record.rollup_rows import day_bodies, open_cells
+from analysis.record.rollup_pages import page_columns
+from analysis.record.rollup_rows import open_cells
 from analysis.reduce.sample import Reduced
 from analysis.reduce.trust import QUANTITIES, Trust, is_usable
-from analysis.rollup.body import columns_from
 from analysis.rollup.cells import AIR, LEVELS_S
 from ingest.models import Tap
 from ingest.times import SECOND_US
@@ -79,7 +79,8 @@ def history(tap_id: int, quantity: str, from_us: int, until_us: int, points: int
 def level_for(span_s: float, points: int) -> int | None:
     """The rollup level for a span, s: the coarsest that has enough buckets for ``points``; None for raw readings.
 
-    So at most 30 cells are read for each point, however long the span (60 minutes an hour, half the points).
+    So at most 12 cells are read for each point, however long the span (half the points suffice, and a level has at most 24
+    cells for one of the next).
     """
     if span_s <= RAW_UP_TO_S:
         return None
@@ -114,15 +115,10 @@ def means_of_cells(quantity: str, columns: dict[str, Any]) -> FloatArray:
 
 def _from_cells(tap_id: int, quantity: str, level_s: int, from_us: int, until_us: int) -> _Sums:
     names = _names(quantity)
-    starts, columns = [], []
-    for _, body in day_bodies(tap_id, level_s, from_us, until_us):
-        bucket_us, found = columns_from(body, names)
-        starts.append(bucket_us)
-        columns.append(found)
+    columns = [found for _, found in page_columns([tap_id], level_s, names, from_us, until_us)]
     rows = open_cells([tap_id], level_s, from_us, until_us)
-    starts.append(rows.bucket_us)
-    columns.append({name: rows.values[name] for name in names})
-    at_us = np.concatenate(starts)
+    columns.append({"bucket_us": rows.bucket_us, **{name: rows.values[name] for name in names}})
+    at_us = np.concatenate([one["bucket_us"] for one in columns])
     inside = (at_us >= from_us) & (at_us < until_us)
     joined = {name: np.concatenate([one[name] for one in columns])[inside] for name in names}
     return _sums_of(at_us[inside], quantity, joined)

@@ -1,86 +1,80 @@
-"""Cells as bytes, for storage, and back."""
+"""Cells as bytes, column by column, so that a picture of one quantity reads only what it draws; and back."""
 
-import struct
 from collections.abc import Sequence
+from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
 import zstandard
 from numpy.typing import NDArray
 
-from analysis.quantities import IntArray
 from analysis.rollup.cells import CELL, Cells
 from analysis.rollup.histogram import Histogram
 
-_MAGIC: Final = b"cell"
-_VERSION: Final = 1
-_HEADER: Final = struct.Struct("<4sHHIII")  # magic, version, size of a cell, level, cells, histogram bins
+#: Layout of the bodies made here; another layout gets another number.
+LAYOUT: Final = 2
+_BUCKET: Final = "bucket_us"
+_HISTOGRAM: Final = {"histogram_cell": np.dtype("<u4"), "histogram_bin": np.dtype("<i2"), "histogram_count": np.dtype("<u4")}
+_KINDS: Final = {_BUCKET: np.dtype("<i8"), **_HISTOGRAM, **{name: CELL[name] for name in CELL.names or ()}}
+FRAMES: Final = tuple(_KINDS)
 
 
-def bytes_of(cells: Cells) -> bytes:
-    """Cells of one tap as compressed bytes; their ``tap`` index is not kept."""
+@dataclass(frozen=True, slots=True)
+class Packed:
+    """Cells of one tap and level: one compressed frame a column, in the order of `FRAMES`; frame k ends at ``ends[k]``."""
+
+    count: int
+    ends: list[int]
+    body: bytes
+
+
+def packed(cells: Cells) -> Packed:
+    """The cells' columns, compressed one by one; level and tap are kept beside them."""
     histogram = cells.er_histogram
-    head = _HEADER.pack(_MAGIC, _VERSION, CELL.itemsize, cells.level_s, len(cells), len(histogram.bin))
-    columns = [
-        cells.bucket_us.astype("<i8"),
-        histogram.cell.astype("<u4"),
-        histogram.bin.astype("<i2"),
-        histogram.count.astype("<u4"),
-    ]
-    # Column by column: like beside like compresses best.
-    columns += [np.ascontiguousarray(cells.values[name]) for name in CELL.names or ()]
-    return head + zstandard.ZstdCompressor(level=3).compress(b"".join(column.tobytes() for column in columns))
+    columns = dict(zip(FRAMES, (cells.bucket_us, histogram.cell, histogram.bin, histogram.count), strict=False))
+    columns |= {name: cells.values[name] for name in CELL.names or ()}
+    compress = zstandard.ZstdCompressor(level=3).compress
+    frames = [compress(np.ascontiguousarray(columns[name], dtype=_KINDS[name].base).tobytes()) for name in FRAMES]
+    return Packed(len(cells), np.cumsum([len(frame) for frame in frames]).tolist(), b"".join(frames))
 
 
-def _opened(body: bytes) -> tuple[int, int, int, bytes]:
-    """Level, number of cells and of histogram bins, and the columns behind one another."""
-    if len(body) < _HEADER.size:
-        raise ValueError(f"{len(body)} bytes are too few for rollup cells; recompute them from the readings.")
-    magic, version, size, level_s, count, bins = _HEADER.unpack_from(body)
-    if magic != _MAGIC or version != _VERSION or size != CELL.itemsize:
-        raise ValueError(
-            f"rollup cells of version {version} and size {size} are not {_VERSION} and {CELL.itemsize}; recompute them."
-        )
-    return level_s, count, bins, zstandard.ZstdDecompressor().decompress(body[_HEADER.size :])
-
-
-def cells_from(body: bytes, tap: int = 0) -> Cells:
-    """Cells that `bytes_of` wrote, given the index ``tap``.
+def cells_of_packed(found: Packed, layout: int, level_s: int, tap: int = 0) -> Cells:
+    """The cells of `packed`, given the index ``tap``.
 
     Raises:
-        ValueError: The bytes are no cells, or of another version (recompute the rollup from raw readings).
+        ValueError: Another layout, or bytes that are no cells.
     """
-    level_s, count, bins, raw = _opened(bytes(body))
-    position = 0
-
-    def read(dtype: np.dtype, rows: int) -> np.ndarray:
-        nonlocal position
-        array = np.frombuffer(raw, dtype.base, rows * max(dtype.itemsize // dtype.base.itemsize, 1), position)
-        position += array.nbytes
-        return array.reshape(rows, *dtype.shape)
-
-    bucket_us = read(np.dtype("<i8"), count).astype(np.int64)
-    histogram = Histogram(*(read(np.dtype(kind), bins).astype(np.int64) for kind in ("<u4", "<i2", "<u4")))
-    values = np.zeros(count, dtype=CELL)
+    if len(found.ends) != len(FRAMES):
+        raise ValueError(f"{len(found.ends)} frames are no rollup cells; recompute them from the readings.")
+    frames = [found.body[begin:end] for begin, end in zip([0, *found.ends[:-1]], found.ends, strict=True)]
+    columns = columns_of(FRAMES, frames, found.count, layout)
+    values = np.zeros(found.count, dtype=CELL)
     for name in CELL.names or ():
-        values[name] = read(CELL[name], count)
-    return Cells(level_s, np.full(count, tap, dtype=np.int64), bucket_us, values, histogram)
+        values[name] = columns[name]
+    bucket_us = columns[_BUCKET].astype(np.int64)
+    histogram = Histogram(*(columns[name].astype(np.int64) for name in _HISTOGRAM))
+    return Cells(level_s, np.full(found.count, tap, dtype=np.int64), bucket_us, values, histogram)
 
 
-def columns_from(body: bytes, names: Sequence[str]) -> tuple[IntArray, dict[str, NDArray[Any]]]:
-    """Bucket starts and chosen columns of what `bytes_of` wrote: all that a picture of one quantity needs.
+def columns_of(names: Sequence[str], frames: Sequence[bytes], count: int, layout: int) -> dict[str, NDArray[Any]]:
+    """Chosen columns from their frames, shape (count,) or (count, width); those of the histogram as long as they are.
 
     Raises:
-        ValueError: As `cells_from`.
+        ValueError: Another layout, or bytes that are no such column.
     """
-    body = bytes(body)
-    count, bins, raw = _opened(body)[1:]
-    found: dict[str, NDArray[Any]] = {}
-    position = count * 8 + bins * (4 + 2 + 4)
-    for name in CELL.names or ():
-        kind = CELL[name]
-        width = kind.shape[0] if kind.shape else 1
-        if name in names:
-            found[name] = np.frombuffer(raw, kind.base, count * width, position).reshape(count, *kind.shape)
-        position += count * kind.itemsize
-    return np.frombuffer(raw, "<i8", count), found
+    if layout != LAYOUT:
+        raise ValueError(f"rollup cells of layout {layout} are not of {LAYOUT}; recompute them from the readings.")
+    expand = zstandard.ZstdDecompressor().decompress
+    try:
+        return {name: _column(name, expand(frame), count) for name, frame in zip(names, frames, strict=True)}
+    except zstandard.ZstdError as fault:
+        raise ValueError(f"these bytes are no rollup cells ({fault}); recompute them from the readings.") from fault
+
+
+def _column(name: str, raw: bytes, count: int) -> NDArray[Any]:
+    kind = _KINDS[name]
+    if name in _HISTOGRAM:
+        return np.frombuffer(raw, kind)
+    if len(raw) != count * kind.itemsize:
+        raise ValueError(f"column {name} has {len(raw)} bytes for {count} cells; recompute them from the readings.")
+    return np.frombuffer(raw, kind.base).reshape(count, *kind.shape)

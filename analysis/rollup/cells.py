@@ -19,7 +19,7 @@ from analysis.rollup.groups import Groups
 from analysis.rollup.histogram import Histogram, histogram_of, merge_histograms
 from analysis.rollup.moments import Moments, group_moments, merged_moments
 
-LEVELS_S: Final = (10, 60, 3600, 86400)
+LEVELS_S: Final = (10, 60, 600, 3600, 86400)
 HOLD_INTERVALS: Final = 3.0
 AIR: Final = ("temperature_c", "humidity_pct", "pressure_hpa")
 

@@ -5,16 +5,14 @@ from dataclasses import dataclass
 from typing import Final
 
 import numpy as np
-from django.db import connection
 
+from analysis.record.rollup_pages import page_columns
 from analysis.record.rollup_rows import HOUR_S, open_cells
 from analysis.record.rollups import mean_names, means_of_cells
-from analysis.rollup.body import columns_from
 from ingest.times import SECOND_US
 
 HOURS: Final = 24
 _HOUR_US: Final = HOUR_S * SECOND_US
-_DAY_US: Final = 24 * _HOUR_US
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,14 +30,9 @@ def courses_of(quantities: Mapping[int, str], now_us: int) -> dict[int, Course]:
     start_us = now_us // _HOUR_US * _HOUR_US - (HOURS - 1) * _HOUR_US
     ids = list(quantities)
     curves = {tap_id: np.full(HOURS, np.nan) for tap_id in ids}
-    with connection.cursor() as cursor:
-        cursor.execute(
-            "SELECT tap_id, body FROM analysis_rollupday WHERE tap_id = ANY(%s) AND level_s = %s AND day_us > %s",
-            [ids, HOUR_S, start_us - _DAY_US],
-        )
-        for tap_id, body in cursor.fetchall():
-            bucket_us, columns = columns_from(body, mean_names(quantities[tap_id]))
-            _fill(curves[tap_id], bucket_us, means_of_cells(quantities[tap_id], columns), start_us)
+    names = dict.fromkeys(name for quantity in quantities.values() for name in mean_names(quantity))
+    for tap_id, columns in page_columns(ids, HOUR_S, list(names), start_us, start_us + HOURS * _HOUR_US):
+        _fill(curves[tap_id], columns["bucket_us"], means_of_cells(quantities[tap_id], columns), start_us)
     rows = open_cells(ids, HOUR_S, start_us, start_us + HOURS * _HOUR_US)
     owners, begins = np.unique(rows.tap, return_index=True)
     for tap_id, begin, end in zip(owners.tolist(), begins.tolist(), np.append(begins, len(rows))[1:].tolist(), strict=True):

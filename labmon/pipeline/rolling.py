@@ -39,7 +39,7 @@ def roll_up_due(now_us: int | None = None, *, for_s: float = float("inf")) -> in
 
 
 def roll_up_coarse_due() -> int:
-    """Make all due hours and days; returns how many taps were visited."""
+    """Make all due rollups coarser than a minute; returns how many taps were visited."""
     visited = 0
     while step := _coarse_chunk():
         visited += step
@@ -134,7 +134,7 @@ def _replace(done: Sequence[int], rests: Sequence[tuple[int, int, int, int]]) ->
 
 
 def compact_closed_days(now_us: int | None = None, most: int = 2_000) -> int:
-    """Put rows of closed days into one buffer a tap, level and day; returns how many tap-days were done."""
+    """Put rows of closed days into pages; returns how many tap-days were done."""
     clock_us = server_now_us() if now_us is None else now_us
     with connection.cursor() as cursor:
         cursor.execute(

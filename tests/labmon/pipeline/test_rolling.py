@@ -5,7 +5,7 @@ import pytest
 from django.db import connection
 from django.test.utils import CaptureQueriesContext
 
-from analysis.models import RollupDay, RollupDue, RollupRow
+from analysis.models import RollupDue, RollupPage, RollupRow
 from analysis.record.rollup_rows import open_cells
 from analysis.record.rollups import history, level_for
 from analysis.rollup.cells import LEVELS_S
@@ -105,11 +105,11 @@ def test_closed_days_are_one_buffer_and_read_the_same():
     process_touched(now_us=int(at_us[-1]))
     roll_up_due(now_us=MIDNIGHT_US - 2 * DAY_US)  # every day still open: rows
     roll_up_coarse_due()
-    assert not RollupDay.objects.exists()
+    assert not RollupPage.objects.exists()
     before = [history(tap.pk, "er_db", int(at_us[0]), int(at_us[-1]), points) for points in (50, 400, 2000)]
     while compact_closed_days(now_us=MIDNIGHT_US + 30 * DAY_US):
         pass
-    assert not RollupRow.objects.exists() and RollupDay.objects.filter(level_s=10).count() == 3
+    assert not RollupRow.objects.exists() and RollupPage.objects.filter(level_s=10).count() == 3
     for points, one in zip((50, 400, 2000), before, strict=True):
         other = history(tap.pk, "er_db", int(at_us[0]), int(at_us[-1]), points)
         np.testing.assert_allclose(other.mean, one.mean)
@@ -132,6 +132,27 @@ def test_late_readings_of_a_closed_day_are_merged_into_its_buffer():
         np.testing.assert_allclose(other.trusted_share, one.trusted_share)
 
 
+def test_days_of_one_page_do_not_disturb_each_other():
+    """Twenty days of a reading each half hour: days late and out of order give the histories of all at once."""
+    columns, index = readings(960), np.arange(960)
+    at_us = MIDNIGHT_US + index * 1800 * S
+    late, closed_us = np.arange(400, 448), MIDNIGHT_US + 40 * DAY_US
+    whole, bits = make_tap(interval_s=1800.0), make_tap(interval_s=1800.0)
+    for tap, pieces in ((whole, [index]), (bits, [np.setdiff1d(index, late), late])):
+        for piece in pieces:
+            store_readings(tap, at_us[piece], **{name: values[piece] for name, values in columns.items()})
+            catch_up(now_us=closed_us)
+    for level_s in LEVELS_S:
+        pages = RollupPage.objects.filter(level_s=level_s).order_by("page_us")
+        one, other = (list(pages.filter(tap=tap).values_list("page_us", "count")) for tap in (whole, bits))
+        assert one == other
+    assert RollupPage.objects.filter(tap=bits, level_s=3600).count() <= 4
+    for points in (20, 400, 2000):
+        one, other = (history(tap.pk, "er_db", MIDNIGHT_US, MIDNIGHT_US + 20 * DAY_US, points) for tap in (whole, bits))
+        np.testing.assert_allclose(other.mean, one.mean)
+        np.testing.assert_allclose(other.min, one.min)
+
+
 @pytest.mark.parametrize(
     ("span_s", "points", "level_s"),
     [
@@ -139,10 +160,10 @@ def test_late_readings_of_a_closed_day_are_merged_into_its_buffer():
         (3600, 2000, None),
         (7200, 2000, 10),
         (86_400, 2000, 60),
-        (30 * 86_400, 2000, 60),
+        (30 * 86_400, 2000, 600),
         (365 * 86_400, 2000, 3600),
         (10 * 365 * 86_400, 2000, 86_400),
-        (86_400, 100, 60),
+        (86_400, 100, 600),
         (86_400, 40, 3600),
     ],
 )

@@ -5,6 +5,9 @@ from django.contrib.postgres.indexes import GistIndex
 from django.core.validators import RegexValidator
 from django.db import models
 
+from ingest.day_models import DayFile, DayFileBoot, ForgottenDay, KeepRule, LeftFile
+
+__all__ = ["DayFile", "DayFileBoot", "ForgottenDay", "KeepRule", "LeftFile"]  # the other half of the models
 NAME_PATTERN = r"[a-z0-9][a-z0-9-]{0,62}"
 is_short_name = RegexValidator(rf"\A{NAME_PATTERN}\Z", "Use small letters, digits and '-', at most 63 characters.")
 
@@ -63,6 +66,7 @@ class Tap(models.Model):
     kind = models.CharField(max_length=10, choices=TapKind)
     unit = models.CharField(max_length=5, choices=Unit, blank=True)
     interval_s = models.FloatField(null=True, blank=True, help_text="Declared time between readings, s.")
+    is_float32 = models.BooleanField(default=False, help_text="Its source declares that its values are float32.")
     slot_s = models.PositiveIntegerField(default=600, help_text="Length of a sealed block, s.")
     unknown_columns = ArrayField(models.CharField(max_length=100), default=list)
     created_at = models.DateTimeField(auto_now_add=True)

@@ -27,6 +27,7 @@ class NewTap:
     kind: str
     unit: str = ""
     interval_s: float | None = None
+    is_float32: bool = False
 
 
 @transaction.atomic
@@ -56,7 +57,8 @@ def add_tap(station: Station, wish: NewTap) -> Tap:
         raise StationFault(f"{wish.name}: {wish.unit!r} is no unit; use one of {' '.join(Unit.values)}")
     if wish.kind == TapKind.CLIMATE and wish.unit:
         raise StationFault(f"{wish.name}: a climate tap has no unit; its columns carry theirs in the name")
-    tap = Tap(station=station, name=wish.name, kind=wish.kind, unit=wish.unit, interval_s=wish.interval_s)
+    tap = Tap(station=station, name=wish.name, kind=wish.kind, unit=wish.unit, interval_s=wish.interval_s,
+              is_float32=wish.is_float32)
     _check(tap)
     tap.save()
     return tap

@@ -1,5 +1,6 @@
 """Environment variables, typed; ``finish`` reports every fault at once."""
 
+import json
 from collections.abc import Callable, Mapping
 from typing import Any
 
@@ -29,6 +30,17 @@ def parse_positive(text: str) -> float:
     if not 0.0 < number < float("inf"):
         raise ValueError("write a number above 0")
     return number
+
+
+def parse_options(text: str) -> dict[str, Any]:
+    """A JSON object."""
+    try:
+        found = json.loads(text)
+    except ValueError as error:
+        raise ValueError(f"write a JSON object ({error})") from error
+    if not isinstance(found, dict):
+        raise ValueError('write a JSON object, as in {"location": "/srv/days"}')
+    return found
 
 
 class Env:

@@ -4,7 +4,7 @@ import os
 from pathlib import Path
 
 from ingest.mqtt.address import broker_address
-from labmon.env import Env, parse_bool, parse_positive, parse_words
+from labmon.env import Env, parse_bool, parse_options, parse_positive, parse_words
 from labmon.services import django_database, find_services
 
 BASE_DIR = Path(__file__).resolve().parent.parent
@@ -117,6 +117,8 @@ STATIC_ROOT = env.get("STATIC", Path, default=DATA_DIR / "static")
 STORAGES = {
     "default": {"BACKEND": "django.core.files.storage.FileSystemStorage"},
     "staticfiles": {"BACKEND": "labmon.screen.assets.HashedStorage"},
+    "days": {"BACKEND": env.get("DAYS_STORAGE", str, default="ingest.store.days.storage.DayFolder"),
+             "OPTIONS": env.get("DAYS_OPTIONS", parse_options, default={"location": str(DATA_DIR / "days")})},
 }
 MEDIA_ROOT = DATA_DIR / "files"
 

@@ -22,6 +22,7 @@ class KnownTap:
     name: str
     kind: str
     unit: str
+    is_float32: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -18,11 +18,11 @@ REMEMBERED_S = 1.5
 """A revoked key is refused after this time at the latest."""
 _MOST = 10_000
 _BY_KEY: LiteralString = """
-    SELECT key.expires_at, key.revoked_at, station.id, station.name, tap.id, tap.name, tap.kind, tap.unit
+    SELECT key.expires_at, key.revoked_at, station.id, station.name, tap.id, tap.name, tap.kind, tap.unit, tap.is_float32
     FROM ingest_stationkey AS key JOIN ingest_station AS station ON station.id = key.station_id
     LEFT JOIN ingest_tap AS tap ON tap.station_id = station.id WHERE key.digest = %s"""
 _BY_NAME: LiteralString = """
-    SELECT key.expires_at, key.revoked_at, station.id, station.name, tap.id, tap.name, tap.kind, tap.unit
+    SELECT key.expires_at, key.revoked_at, station.id, station.name, tap.id, tap.name, tap.kind, tap.unit, tap.is_float32
     FROM ingest_station AS station JOIN LATERAL (
         SELECT expires_at, revoked_at FROM ingest_stationkey WHERE station_id = station.id
         ORDER BY revoked_at IS NULL DESC, expires_at DESC NULLS FIRST LIMIT 1) AS key ON true
@@ -118,5 +118,5 @@ def _known_key(rows: list[tuple[Any, ...]], asked_s: float) -> KnownKey:
     expires_at, revoked_at, station, name = rows[0][:4]
     if revoked_at is not None:
         return KnownKey(None, "the key was revoked", None, asked_s)
-    taps = {row[5]: KnownTap(*row[4:8]) for row in rows if row[4] is not None}
+    taps = {row[5]: KnownTap(*row[4:9]) for row in rows if row[4] is not None}
     return KnownKey(KnownStation(station, name, taps), "", us_of(expires_at) if expires_at else None, asked_s)

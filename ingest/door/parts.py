@@ -91,6 +91,19 @@ def give_values(drafts: list[Draft]) -> None:
         for draft in drafts:
             if not (draft.count and _give_plain_values([draft])):
                 draft.values = numbers_of(draft.sent, draft.plan, draft.count, draft.tap.kind, draft.tap.unit, draft.faults)
+    for draft in drafts:
+        if draft.tap.is_float32:
+            draft.values = _as_declared(draft)
+
+
+def _as_declared(draft: Draft) -> FloatArray:
+    """The float32 that the source had: what it wrote in decimal figures is read as the number it wrote them of."""
+    assert draft.values is not None
+    values = draft.values.astype(np.float32).astype(np.float64)
+    for place, name in enumerate(draft.plan.values):
+        if name == "averaged":  # a count
+            values[place] = draft.values[place]
+    return values
 
 
 def part_of(draft: Draft, boot: str) -> Part:

@@ -10,7 +10,8 @@ import psycopg
 from ingest.database import fetch
 from ingest.store.arrays import DamagedBody
 from ingest.store.codec import pack_block, unpack_block
-from ingest.store.columns import NO_SEQUENCE, Readings, concatenate
+from ingest.store.columns import Readings, concatenate, narrowed
+from ingest.store.days.write import sequence_spans
 from ingest.store.read import LONGEST_SLOT_US, DamagedStore
 from ingest.store.slots import slot_length_s, slots_of
 from ingest.times import rfc3339_of
@@ -32,6 +33,9 @@ def merge_into_blocks(db: psycopg.Connection[Any], tap_id: int, readings: Readin
     readings = readings.sorted()
     if not len(readings):
         return 600
+    is_float32 = fetch(db, "SELECT is_float32 FROM ingest_tap WHERE id = %s", tap_id) == [(True,)]
+    if is_float32:
+        readings = narrowed(readings)
     first_us, last_us = int(readings.at_us[0]), int(readings.at_us[-1])
     taken = dict(fetch(
         db, "SELECT slot_us, span_us FROM ingest_block WHERE tap_id = %s AND slot_us > %s AND slot_us <= %s "
@@ -41,7 +45,7 @@ def merge_into_blocks(db: psycopg.Connection[Any], tap_id: int, readings: Readin
     new: list[tuple[int, int, Readings]] = []
     for slot_us, span_us, part in _by_slot(readings, starts, spans):
         if slot_us in taken:
-            _add_to_block(db, tap_id, slot_us, part)
+            _add_to_block(db, tap_id, slot_us, part, is_float32)
         else:
             new.append((slot_us, span_us, part))
     _insert_blocks(db, tap_id, new)
@@ -55,7 +59,7 @@ def _by_slot(readings: Readings, starts: Any, spans: Any) -> Iterator[tuple[int,
         yield int(starts[first]), int(spans[first]), readings.pick(slice(first, end))
 
 
-def _add_to_block(db: psycopg.Connection[Any], tap_id: int, slot_us: int, part: Readings) -> None:
+def _add_to_block(db: psycopg.Connection[Any], tap_id: int, slot_us: int, part: Readings, is_float32: bool) -> None:
     """Merge late readings into the block that lies there."""
     block_id, body = fetch(db, "SELECT id, body FROM ingest_block WHERE tap_id = %s AND slot_us = %s",
                            tap_id, slot_us)[0]
@@ -64,6 +68,8 @@ def _add_to_block(db: psycopg.Connection[Any], tap_id: int, slot_us: int, part: 
     except DamagedBody as error:
         raise DamagedStore(f"tap {tap_id}, block from {rfc3339_of(slot_us)}: {error}. New readings wait in the inbox; "
                            "restore this block from a backup.") from error
+    if is_float32:
+        merged = narrowed(merged)
     body = pack_block(merged)
     cursor = psycopg.Cursor(db)
     cursor.execute("UPDATE ingest_block SET first_at_us = %s, last_at_us = %s, count = %s, sha256 = %s, body = %s "
@@ -100,18 +106,9 @@ def _insert_chunk(db: psycopg.Connection[Any], tap_id: int, chunk: list[tuple[in
 
 def _insert_boots(db: psycopg.Connection[Any], blocks: list[tuple[int, Readings]]) -> None:
     """Which sequences of which boot lie in each block; readings without sequence are found by time."""
-    rows = [(block_id, boot, low, high + 1) for block_id, part in blocks for boot, low, high in _sequence_spans(part)]
+    rows = [(block_id, boot, low, high + 1) for block_id, part in blocks for boot, low, high in sequence_spans(part)]
     if rows:
         psycopg.Cursor(db).execute(
             "INSERT INTO ingest_blockboot (block_id, tap_boot_id, sequences) SELECT block, boot, int8range(low, high) "
             "FROM unnest(%s::bigint[], %s::bigint[], %s::bigint[], %s::bigint[]) AS row(block, boot, low, high)",
             [list(column) for column in zip(*rows, strict=True)])
-
-
-def _sequence_spans(part: Readings) -> Iterator[tuple[int, int, int]]:
-    """(boot id, smallest, largest sequence) of each boot with numbered readings."""
-    numbered = part.sequence != NO_SEQUENCE
-    boots, sequences = part.boot_id[numbered], part.sequence[numbered]
-    for boot in np.unique(boots).tolist():
-        own = sequences[boots == boot]
-        yield boot, int(own.min()), int(own.max())

@@ -192,6 +192,21 @@ def unpack_block(body: bytes, wanted: frozenset[str] | None = None, *, as_sent: 
     return Readings(at_us, columns, boot_id, sequence, own_at_us, arrival_us, sent_us, timed.astype(np.bool_), unknown)
 
 
+def block_columns(head: bytes) -> dict[str, str]:
+    """Value columns of a block with their dtype, in order, from the first bytes of its body; "" stands for unknown ones.
+
+    Raises:
+        DamagedBody: These are not the first bytes of a block, or too few.
+    """
+    if len(head) < _BLOCK.size:
+        raise DamagedBody("a block is cut off")
+    mark, _, size, crc = _BLOCK.unpack_from(head)
+    header = head[_BLOCK.size:_BLOCK.size + size]
+    if mark != b"b1" or zlib.crc32(header) != crc:
+        raise DamagedBody("the checksum of a block's header does not fit its content")
+    return {name: dtype for name, _, _, dtype in msgspec.msgpack.decode(header)[1][7:]}
+
+
 def _pack_own(readings: Readings) -> tuple[list[Any], bytes]:
     """The station's own stamps: mostly the same as, or evenly apart from, the time axis."""
     if (readings.own_at_us == readings.at_us).all():

@@ -84,6 +84,20 @@ def no_readings(columns: Sequence[str] | None = None) -> Readings:
                     np.empty(0, np.bool_))
 
 
+def narrowed(readings: Readings) -> Readings:
+    """The same with columns as float32 where every value stays what it is to the last bit; others stay as they are."""
+    return replace(readings, columns={name: _narrowed(values) for name, values in readings.columns.items()})
+
+
+def _narrowed(values: npt.NDArray[Any]) -> npt.NDArray[Any]:
+    if values.dtype != np.float64:
+        return values
+    with np.errstate(over="ignore", invalid="ignore"):
+        narrow = values.astype(np.float32)
+        is_same = bool((narrow.astype(np.float64).view(np.int64) == np.ascontiguousarray(values).view(np.int64)).all())
+    return narrow if is_same else values
+
+
 def concatenate(parts: Iterable[Readings]) -> Readings:
     """The parts one after the other (not sorted); a column that a part lacks is NaN there."""
     filled = [part for part in parts if len(part)]

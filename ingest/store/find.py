@@ -9,6 +9,8 @@ from ingest.database import fetch
 from ingest.store.arrays import DamagedBody
 from ingest.store.codec import unpack_block
 from ingest.store.columns import BoolArray, IntArray, Readings, concatenate
+from ingest.store.days.layout import SEQUENCE
+from ingest.store.days.open import DayEntry, OpenDay
 from ingest.store.read import DamagedStore, read_spans, readings_of_rows
 
 _NEAR_NUMBERS = 5_000
@@ -16,30 +18,51 @@ _NEAR_US = 600_000_000
 
 _NUMBERED: LiteralString = """
     WITH asked AS (SELECT * FROM unnest(%s::bigint[], %s::bigint[]) AS span(low, high))
-    SELECT DISTINCT ON (block.id) 0, first_at_us, NULL::bigint, NULL::bigint, NULL::bigint, body, block.id
+    SELECT DISTINCT ON (block.id) 0, first_at_us, NULL::bigint, NULL::bigint, NULL::bigint, body, block.id,
+           NULL::text, 0::bigint, 0::bigint
     FROM asked JOIN ingest_blockboot AS boot ON tap_boot_id = %s AND sequences && int8range(low, high, '[]')
     JOIN ingest_block AS block ON block.id = boot.block_id
     UNION ALL
-    SELECT DISTINCT ON (inbox.id) 1, first_at_us, tap_boot_id, arrival_us, crc, body, inbox.id
+    SELECT DISTINCT ON (inbox.id) 1, first_at_us, tap_boot_id, arrival_us, crc, body, inbox.id, NULL, 0, 0
     FROM asked JOIN ingest_inboxrow AS inbox ON tap_id = %s AND tap_boot_id = %s
          AND first_sequence <= high AND last_sequence >= low
+    UNION ALL
+    SELECT 2, first_at_us, size, footer_size, NULL, checks, day.id, name, low, high
+    FROM asked JOIN ingest_dayfileboot AS boot ON tap_boot_id = %s AND sequences && int8range(low, high, '[]')
+    JOIN ingest_dayfile AS day ON day.id = boot.day_file_id
 """
 
 
 def numbered_readings(db: psycopg.Connection[Any], tap_id: int, tap_boot: int, sequences: IntArray) -> Readings:
     """Stored readings of a boot that have one of these numbers, sorted by number."""
     spans = _near(np.unique(sequences), _NEAR_NUMBERS)
-    rows = fetch(db, _NUMBERED, [low for low, _ in spans], [high for _, high in spans], tap_boot, tap_id, tap_boot)
-    parts = [readings_of_rows(tap_id, [row for row in rows if row[0] == 1])] if any(row[0] == 1 for row in rows) else []
+    rows = fetch(db, _NUMBERED, [low for low, _ in spans], [high for _, high in spans], tap_boot, tap_id, tap_boot, tap_boot)
+    by_kind: tuple[list[Any], ...] = ([], [], [])
     for row in rows:
-        if row[0] == 0:
-            try:
-                parts.append(unpack_block(row[5]))
-            except DamagedBody as error:
-                raise DamagedStore(f"tap {tap_id}: {error}; restore the block from a backup.") from error
+        by_kind[row[0]].append(row)
+    blocks, inbox, days = by_kind
+    parts = [readings_of_rows(tap_id, inbox)] if inbox else []
+    try:
+        parts += [unpack_block(row[5]) for row in blocks]
+        parts += [_numbered_in_day(own) for own in _by_file(days)]
+    except DamagedBody as error:
+        raise DamagedStore(f"tap {tap_id}: {error}; restore it from a backup.") from error
     found = concatenate(parts)
     found = found.pick((found.boot_id == tap_boot) & np.isin(found.sequence, sequences))
     return found.pick(np.argsort(found.sequence, kind="stable"))
+
+
+def _by_file(rows: list[Any]) -> list[list[Any]]:
+    files: dict[int, list[Any]] = {}
+    for row in rows:
+        files.setdefault(row[6], []).append(row)
+    return list(files.values())
+
+
+def _numbered_in_day(rows: list[Any]) -> Readings:
+    """Readings of the row groups of one file that may hold a number of the spans asked for."""
+    with OpenDay(DayEntry(rows[0][7], rows[0][2], rows[0][3], bytes(rows[0][5]))) as day:
+        return day.read(day.groups_by(SEQUENCE, lambda first, last: any(first <= row[9] and last >= row[8] for row in rows)))
 
 
 def readings_near(db: psycopg.Connection[Any], tap_id: int, at_us: IntArray, tolerance_us: int) -> Readings:

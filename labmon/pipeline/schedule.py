@@ -20,6 +20,7 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "roll up": _every("roll_up", 10.0),
     "roll up hours and days": _every("roll_up_coarse", 120.0),
     "seal": _every("seal", 60.0),
+    "seal days": _every("seal_days", 120.0, expires=120.0),
     "take up left imports": _every("take_up_left_imports", 300.0),
     "compact closed days": {
         "task": "labmon.pipeline.compact",

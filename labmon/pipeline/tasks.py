@@ -3,6 +3,8 @@
 from celery import shared_task
 from django.db import OperationalError
 
+from ingest.store.days.left import sweep_left_files
+from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
 from labmon.pipeline.process import process_touched
 from labmon.pipeline.prune import prune_checkpoints
@@ -12,6 +14,8 @@ from labmon.tell.outbox import send_waiting
 
 #: A run of judging ends after this and leaves the rest to the next, so that no task is long.
 PROCESS_FOR_S = 20.0
+#: So long days are sealed at a time: after months without it (or with a new demo lab) judging keeps its share of the machine.
+SEAL_DAYS_FOR_S = 20.0
 
 
 def _task(name: str, time_limit: int):  # type: ignore[no-untyped-def]
@@ -55,6 +59,13 @@ def seal_task() -> None:
     """Move readings that have waited long enough into blocks."""
     while seal_inbox() > 0:
         pass
+
+
+@_task("seal_days", 600)
+def seal_days_task() -> None:
+    """Move days that are over into their files, some at a time; remove files that nobody needs."""
+    seal_days(for_s=SEAL_DAYS_FOR_S)
+    sweep_left_files()
 
 
 @_task("send_mails", 300)

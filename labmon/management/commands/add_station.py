@@ -25,6 +25,8 @@ class Command(LabCommand):
         parser.add_argument("--room", action="append", default=[], metavar="ROOM", help="the room it stands in")
         parser.add_argument("--interval-s", action="append", default=[], metavar="TAP=SECONDS",
                             help="declared time between a tap's readings; may repeat")
+        parser.add_argument("--float32", action="append", default=[], metavar="TAP",
+                            help="its source measures in float32: half the room on disk, nothing lost; may repeat")
         parser.add_argument("--owner", default="", metavar="PERSON", help="whose bench it is")
         parser.add_argument("--purpose", default="", help="what the bench is for")
 
@@ -53,7 +55,9 @@ def taps_wished(wish: dict[str, Any]) -> list[TapWish]:
             raise CommandError(f"The tap {tap} is named twice. Give each tap its own name.")
     if unknown := intervals_s.keys() - set(names):
         raise CommandError(f"--interval-s names {', '.join(sorted(unknown))}, which is no tap of this station.")
-    return [TapWish(tap, kind, unit, intervals_s.get(tap)) for tap, kind, unit in named]
+    if unknown := set(wish["float32"]) - set(names):
+        raise CommandError(f"--float32 names {', '.join(sorted(unknown))}, which is no tap of this station.")
+    return [TapWish(tap, kind, unit, intervals_s.get(tap), tap in wish["float32"]) for tap, kind, unit in named]
 
 
 def _pair(text: str, option: str) -> tuple[str, str]:

@@ -70,6 +70,27 @@ def displacement(
     return Displacement(factors * interval_s, square, square - noise_rad2, noise_rad2, cosine, log_cosine, pairs)
 
 
+def measured_decorrelation_s(apart: Displacement) -> float:
+    """First lag at which -0.5 ln of the mean cosine has risen by 1/2 (cosine by 1/e) over its value at no lag, s.
+
+    The value at no lag is the noise's constant, by the line through the first two lags. Linear between lags; NaN where it
+    is not reached, as for light that circles or is bounded, whose cosine never falls to 0. No model: for D see
+    `analysis.drift.diffusion`.
+    """
+    if len(apart.tau_s) < 2:
+        return math.nan
+    rise = apart.log_cosine[1] - apart.log_cosine[0]
+    start = apart.log_cosine[0] - rise * apart.tau_s[0] / (apart.tau_s[1] - apart.tau_s[0])
+    risen = apart.log_cosine - max(start, 0.0)
+    above = np.flatnonzero(risen >= 0.5)
+    if not len(above):
+        return math.nan
+    place = int(above[0])
+    if place == 0:
+        return float(apart.tau_s[0] * 0.5 / risen[0])
+    return float(np.interp(0.5, risen[place - 1 : place + 1], apart.tau_s[place - 1 : place + 1]))
+
+
 def square_angle(chord2: FloatArray) -> FloatArray:
     """Squared angle, rad², of a squared chord 0 to 4: (2 asin(chord/2))², exact at small angles."""
     return 4.0 * np.arcsin(np.sqrt(np.clip(0.25 * chord2, 0.0, 1.0))) ** 2

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 from typing import Final
 
 import numpy as np
+from scipy.stats import chi2
 
 from analysis.drift.allan_confidence import AllanConfidence, confidence_of
 from analysis.drift.allan_curve import AllanCurve, modified_allan_deviation, overlapping_allan_deviation
@@ -164,8 +165,7 @@ def _span_s(reduced: Reduced) -> float:
 def _sop_motion(reduced: Reduced, sop: FloatArray, interval_s: float) -> dict:
     place = _places(reduced, sop, interval_s, _spacing_s(_span_s(reduced), interval_s, _MOST_PLACES))
     states = _unit(place.values)
-    apart = displacement(states, place.interval_s)
-    noise_rad = _noise_rad(apart)
+    noise_rad = _noise_rad(states)
     apart = displacement(states, place.interval_s, noise_rad=noise_rad)
     usual_s = _spacing_s(_span_s(reduced), interval_s, _MOST_STEPS)
     step = _places(reduced, sop, interval_s, _short_enough_s(apart, usual_s, interval_s))
@@ -185,7 +185,7 @@ def _angle_motion(reduced: Reduced, angle_rad: FloatArray, interval_s: float) ->
     moved, position = np.diff(place.values), step.values[:, None]
     return _allan(place) | {
         "place_s": place.interval_s, "displacement": None, "step_s": step.interval_s,
-        "speeds": speeds_of_steps(np.abs(moved), place.interval_s, _angle_noise_rad(place.values), coordinates=1),
+        "speeds": speeds_of_steps(np.abs(moved), place.interval_s, _noise_rad(place.values), coordinates=1),
         "diffusion": diffusion_of_steps(np.diff(position, axis=0), step.interval_s, averaged=step.averaged),
         "motion": motion_in_plane(position, step.interval_s, averaged=step.averaged),
     }  # fmt: skip
@@ -205,19 +205,22 @@ def _unit(vectors: FloatArray) -> FloatArray:
     return vectors / np.where(length > 0.0, length, np.nan)
 
 
-def _noise_rad(apart: Displacement) -> float:
-    """σ of one place from the first two lags, whose difference is the walk's: 4 σ² = 2 D2(1) - D2(2); 0 where none shows."""
-    if len(apart.mean_square_rad2) < 2 or not np.isfinite(apart.mean_square_rad2[:2]).all():
-        return 0.0
-    return 0.5 * math.sqrt(max(2.0 * apart.mean_square_rad2[0] - apart.mean_square_rad2[1], 0.0))
+def _noise_rad(place: FloatArray) -> float:
+    """σ of one place per coordinate from its steps over one and two places, rad; 0 where none shows.
 
-
-def _angle_noise_rad(angle_rad: FloatArray) -> float:
-    """The same for one coordinate: 2 σ² = 2 D2(1) - D2(2)."""
-    squares = [moved[np.isfinite(moved)] ** 2 for moved in (angle_rad[1:] - angle_rad[:-1], angle_rad[2:] - angle_rad[:-2])]
-    if not all(len(square) for square in squares):
-        return 0.0
-    return math.sqrt(0.5 * max(2.0 * float(squares[0].mean()) - float(squares[1].mean()), 0.0))
+    With v the variance of a step's coordinate, 2 σ² = 2 v(1) - v(2), as the walk's share grows with the lag. v by the
+    median square, so that a jump or a burst counts as motion, not as noise. Vectors have two coordinates, an angle one.
+    """
+    coordinates = min(place.ndim, 2)
+    variances = []
+    for lag in (1, 2):
+        step = place[lag:] - place[:-lag]
+        square = step**2 if coordinates == 1 else np.einsum("ni,ni->n", step, step)
+        square = square[np.isfinite(square)]
+        if not len(square):
+            return 0.0
+        variances.append(float(np.median(square) / chi2.median(coordinates)))
+    return math.sqrt(0.5 * max(2.0 * variances[0] - variances[1], 0.0))
 
 
 def _short_enough_s(apart: Displacement, usual_s: float, interval_s: float) -> float:

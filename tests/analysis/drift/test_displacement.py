@@ -6,7 +6,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from analysis.drift.brownian import mean_square_angle_rad2
-from analysis.drift.displacement import CEILING_RAD2, displacement, square_angle
+from analysis.drift.displacement import CEILING_RAD2, displacement, measured_decorrelation_s, square_angle
 from analysis.fibre.sphere import rotation, turned
 from tests.analysis.drift.walks import about_start, noisy, walk
 from tests.reference.values import close, reference
@@ -44,6 +44,17 @@ def test_walk_and_noise():
     log_cosine = np.mean([one.log_cosine for one in found], axis=0)
     np.testing.assert_allclose(log_cosine[2] - log_cosine[1], 2e-5 * 56, rtol=0.1)
     assert found[0].noise_rad2 == pytest.approx(4e-4)
+
+
+def test_decorrelation_is_measured_without_the_noise():
+    """1/(2 D) = 50 s for a walk of D = 0.01 rad²/s, read with noise; a circling state never decorrelates."""
+    rng = np.random.default_rng(5)
+    found = displacement(noisy(walk(30_000, 0.01, rng), 0.05, rng), 1.0, np.arange(1, 200))
+    np.testing.assert_allclose(measured_decorrelation_s(found), 50.0, rtol=0.15)
+    turn = 0.1 * np.arange(2000)
+    circle = about_start(0.3 * np.stack([np.cos(turn), np.sin(turn)], axis=1))
+    assert np.isnan(measured_decorrelation_s(displacement(circle, 1.0)))
+    assert np.isnan(measured_decorrelation_s(displacement(circle[:2], 1.0)))
 
 
 @given(st.integers(0, 10**6), st.lists(st.floats(-3.0, 3.0), min_size=3, max_size=3))

@@ -26,6 +26,7 @@ import plistlib
 import random
 import re
 import signal
+import socket
 import sqlite3
 import ssl
 import struct
@@ -169,9 +170,9 @@ def _away_words(error: Exception, address: str) -> str:
         return f"{address} does not speak TLS here ({error.reason}); perhaps the address begins with http://"
     if isinstance(error, ConnectionRefusedError):
         return f"nobody listens at {address}; is labmon running, and is the port right?"
-    if isinstance(error, TimeoutError):
+    if isinstance(error, (TimeoutError, socket.timeout)):
         return f"{address} does not answer in time; is the network up, and does a firewall stand between?"
-    if isinstance(error, OSError) and type(error).__name__ == "gaierror":
+    if isinstance(error, socket.gaierror):
         return f"the name in {address} is not known; check its spelling, or write the number of the machine"
     if isinstance(error, FileNotFoundError):
         return "the ca_file of the settings is not there; correct its path"

@@ -18,6 +18,8 @@ class Calibration(models.Model):
     entered_by = models.CharField(max_length=150, blank=True, help_text="Who; the audit has the person.")
     zero1 = models.FloatField(default=0.0)
     zero2 = models.FloatField(default=0.0)
+    zero1_error = models.FloatField(null=True, help_text="1 sigma of zero1.")
+    zero2_error = models.FloatField(null=True, help_text="1 sigma of zero2.")
     zero_taken_at = models.DateTimeField(null=True)
     gain_ratio = models.FloatField(default=1.0, help_text="Gain of port 1 / gain of port 2.")
     floor1 = models.FloatField(default=0.0)

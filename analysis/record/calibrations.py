@@ -15,6 +15,8 @@ from ingest.times import us_of
 FIELDS = (
     "zero1",
     "zero2",
+    "zero1_error",
+    "zero2_error",
     "zero_taken_at",
     "gain_ratio",
     "floor1",
@@ -30,7 +32,8 @@ FIELDS = (
 )
 _NUMBERS = frozenset(FIELDS) - {"zero_taken_at", "leakage", "wanted_port", "wanted_state", "handedness"}
 _MAY_BE_NULL = frozenset(
-    {"zero_taken_at", "saturation1", "saturation2", "leakage", "monitor_ratio", "bright_nominal", "wanted_state"}
+    {"zero1_error", "zero2_error", "zero_taken_at", "saturation1", "saturation2", "leakage", "monitor_ratio", "bright_nominal",
+     "wanted_state"}
 )
 _ABOVE_ZERO = frozenset({"gain_ratio", "saturation1", "saturation2", "monitor_ratio", "bright_nominal"})
 #: A leakage matrix whose determinant is this small beside its entries cannot be undone with any meaning.
@@ -62,6 +65,9 @@ def new_version(tap: Tap, valid_from: datetime, changes: dict[str, Any], by: str
     kept = {field: getattr(before, field) for field in FIELDS} if before else {}
     if {"zero1", "zero2"} & checked.keys():
         checked.setdefault("zero_taken_at", valid_from)
+    for port in ("zero1", "zero2"):
+        if port in checked:
+            checked.setdefault(f"{port}_error", None)  # another zero has not the error of the one before
     version = Calibration.objects.create(tap=tap, valid_from=valid_from, entered_by=by, **kept | checked)
     mark_derived_due(tap.pk, valid_from)
     return version
@@ -126,6 +132,10 @@ def _checked_number(field: str, value: Any) -> float:
     if field in _ABOVE_ZERO and number <= 0:
         raise CalibrationError(
             field, f"{number:g} is not above 0.", "Give a value above 0, or null where the field may be empty."
+        )
+    if field.endswith("_error") and number < 0:
+        raise CalibrationError(
+            field, f"An error of {number:g} cannot be.", "Give the 1 sigma error of the zero, 0 or more, or null."
         )
     if field.startswith("floor") and number < 0:
         raise CalibrationError(

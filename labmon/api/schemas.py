@@ -120,6 +120,7 @@ ALARM = shape({
 
 CALIBRATION = shape({
     "tap": TAP_PATH, "valid_from": TIME, "entered_at": TIME, "entered_by": TEXT, "zero1": NUMBER, "zero2": NUMBER,
+    "zero1_error": or_null(NUMBER), "zero2_error": or_null(NUMBER),
     "zero_taken_at": or_null(TIME), "gain_ratio": NUMBER, "floor1": NUMBER, "floor2": NUMBER,
     "saturation1": or_null(NUMBER), "saturation2": or_null(NUMBER), "leakage": or_null(many(many(NUMBER))),
     "wanted_port": {"type": "integer", "enum": [1, 2]}, "monitor_ratio": or_null(NUMBER),

@@ -87,6 +87,8 @@ class NewCalibration(Body):
     valid_from: str | UnsetType = UNSET
     zero1: float | UnsetType = UNSET
     zero2: float | UnsetType = UNSET
+    zero1_error: float | None | UnsetType = UNSET
+    zero2_error: float | None | UnsetType = UNSET
     zero_taken_at: str | None | UnsetType = UNSET
     gain_ratio: float | UnsetType = UNSET
     floor1: float | UnsetType = UNSET
@@ -119,8 +121,8 @@ def patch_calibration(request: HttpRequest, person: Person, station: str, tap: s
 
 def calibration_facts(tap: Tap, version: Calibration) -> dict[str, Any]:
     """A version of a tap's calibration."""
-    numbers = ("zero1", "zero2", "gain_ratio", "floor1", "floor2", "saturation1", "saturation2", "leakage", "wanted_port",
-               "monitor_ratio", "bright_nominal", "wanted_state", "handedness", "entered_by")
+    numbers = ("zero1", "zero2", "zero1_error", "zero2_error", "gain_ratio", "floor1", "floor2", "saturation1", "saturation2",
+               "leakage", "wanted_port", "monitor_ratio", "bright_nominal", "wanted_state", "handedness", "entered_by")
     return {"tap": tap_path(tap), "valid_from": rfc3339(version.valid_from), "entered_at": rfc3339(version.entered_at),
             "zero_taken_at": rfc3339(version.zero_taken_at)} | {name: getattr(version, name) for name in numbers}
 

@@ -98,7 +98,7 @@ def _key_facts(key: StationKey) -> KeyFacts:
 
 def _tap_joining(tap: Tap, readings: Readings, now: NowSample | None, aside: SetAside | None) -> TapJoining:
     heard_us = tap.heard.last_arrival_us if hasattr(tap, "heard") else None
-    sent = [name for name in readings.columns if bool((readings.columns[name] == readings.columns[name]).any())]
+    sent = [name for name, values in readings.columns.items() if name != "uptime_ms" and bool((values == values).any())]
     return TapJoining(name=tap.name, kind=tap.kind, unit=tap.unit, heard_at=at_of(heard_us) if heard_us is not None else None,
                       columns=sent, unknown_columns=list(tap.unknown_columns), oddities=_oddities(tap, readings), now=now,
                       aside=aside)

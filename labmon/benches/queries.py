@@ -16,9 +16,12 @@ from analysis.models import Calibration
 from analysis.record.calibrations import versions_of
 from analysis.record.tap_state import TapState
 from ingest.models import DoorUp, SetAside, Station, StationBoot, StationKey, Tap, TapKind
+from ingest.store.columns import Readings
+from ingest.store.read import newest_readings
 from ingest.times import SECOND_US, at_of
 from ingest.times import now_us as server_now_us
 from labmon.alarms.models import AlarmState
+from labmon.benches.ceilings import READINGS_LOOKED_AT, TapCeiling, ceiling_of
 from labmon.benches.course import Course, courses_of
 from labmon.benches.show import (
     DEFAULT_SILENCE_S,
@@ -98,6 +101,7 @@ class TapFacts:
     calibration: Calibration | None
     unknown_columns: list[str]
     has_stokes: bool
+    ceiling: TapCeiling | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -217,6 +221,7 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
         limits.setdefault(limit.tap_id, []).append(limit)
     now, versions = timezone.now(), versions_of(tap.pk for tap in taps)
     in_force = {tap_id: next((one for one in reversed(own) if one.valid_from <= now), None) for tap_id, own in versions.items()}
+    newest = newest_readings([tap.pk for tap in taps], count=READINGS_LOOKED_AT)
     heard_us = max((tap.heard.last_arrival_us for tap in taps if hasattr(tap, "heard")), default=None)
     bench = getattr(station, "bench", None)
     return StationFacts(
@@ -225,7 +230,8 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
         owner=bench.owner.username if bench and bench.owner else None,
         owner_id=bench.owner_id if bench else None,
         purpose=bench.purpose if bench else "",
-        taps=[_tap_facts(standings[tap.pk], limits.get(tap.pk, []), in_force.get(tap.pk), clock_us) for tap in taps],
+        taps=[_tap_facts(standings[tap.pk], limits.get(tap.pk, []), in_force.get(tap.pk), newest[tap.pk], clock_us)
+              for tap in taps],
         keys=list(station.keys.select_related("use").order_by("-made_at")),
         boots=list(station.boots.order_by("-last_arrival_us")[:10]),
         last_heard_at=at_of(heard_us) if heard_us is not None else None,
@@ -233,7 +239,9 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
     )
 
 
-def _tap_facts(standing: _Standing, limits: list[LimitFacts], calibration: Calibration | None, now_us: int) -> TapFacts:
+def _tap_facts(
+    standing: _Standing, limits: list[LimitFacts], calibration: Calibration | None, newest: Readings, now_us: int
+) -> TapFacts:
     tap = standing.tap
     heard_us = tap.heard.last_arrival_us if hasattr(tap, "heard") else None
     return TapFacts(
@@ -253,6 +261,7 @@ def _tap_facts(standing: _Standing, limits: list[LimitFacts], calibration: Calib
         calibration=calibration,
         unknown_columns=list(tap.unknown_columns),
         has_stokes=tap.kind == TapKind.STOKES,
+        ceiling=ceiling_of(tap, calibration, newest),
     )
 
 

@@ -10,7 +10,7 @@ from labmon.screen.forms import Number
 
 TAP_ROWS = 3
 _KINDS = {
-    TapKind.TWO_PORT: "two ports behind a splitter",
+    TapKind.TWO_PORT: "two ports",
     TapKind.DARK_PORT: "dark port only",
     TapKind.STOKES: "polarimeter (Stokes)",
     TapKind.CLIMATE: "room air",

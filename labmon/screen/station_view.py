@@ -26,6 +26,7 @@ from labmon.screen.present import (
 )
 from labmon.screen.rail import Mark, own_rail
 from labmon.screen.standing import Standing, standing_of
+from labmon.screen.zero_view import ceiling_words, value_text
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -56,6 +57,8 @@ class TapView:
     measures_light: bool
     has_stokes: bool
     rail: SafeString
+    ceiling: str
+    has_zero: bool
 
 
 def station_sentence(name: str, facts: StationFacts, unacknowledged: int) -> str:
@@ -100,6 +103,8 @@ def tap_view(tap: TapFacts, now: datetime) -> TapView:
         heard=age_text(None if heard_at is None else (now - heard_at).total_seconds()),
         measures_light=tap.kind != "climate",
         has_stokes=tap.has_stokes,
+        ceiling=ceiling_words(tap.ceiling),
+        has_zero=tap.kind in ("two-port", "dark-port"),
     )
 
 
@@ -225,13 +230,14 @@ def calibration_words(tap: TapFacts) -> list[Fact]:
     unit = "W" if tap.unit == "dBm" else unit_text(tap.unit)
     facts = [
         ("In force since", time_text(version.valid_from)),
-        ("Zero of port 1", number_text(version.zero1, 9, unit)),
-        ("Zero of port 2", number_text(version.zero2, 9, unit)),
+        ("Zero of port 1", value_text(version.zero1, unit, version.zero1_error)),
+        ("Zero of port 2", value_text(version.zero2, unit, version.zero2_error)),
+        ("Zeros taken", time_text(version.zero_taken_at)),
         ("Gain of port 1 over port 2", number_text(version.gain_ratio, 4)),
-        ("Floor (1 σ) of port 1", number_text(version.floor1, 9, unit)),
-        ("Floor (1 σ) of port 2", number_text(version.floor2, 9, unit)),
-        ("Saturation of port 1", number_text(version.saturation1, 6, unit)),
-        ("Saturation of port 2", number_text(version.saturation2, 6, unit)),
+        ("Floor (1 σ) of port 1", value_text(version.floor1, unit)),
+        ("Floor (1 σ) of port 2", value_text(version.floor2, unit)),
+        ("Saturation of port 1", value_text(version.saturation1, unit)),
+        ("Saturation of port 2", value_text(version.saturation2, unit)),
     ]
     if tap.kind == "stokes":
         wanted = ", ".join(number_text(part, 3) for part in version.wanted_state) if version.wanted_state else "not set"

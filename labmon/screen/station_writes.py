@@ -8,14 +8,19 @@ from django.shortcuts import redirect, render
 from django.utils import timezone
 from django.views.decorators.http import require_http_methods, require_POST
 
+from analysis.record.calibrations import version_at
+from ingest.store.read import newest_readings
 from labmon.benches.actions import revoke_bench_key
 from labmon.benches.calibration import calibration_history, set_calibration
+from labmon.benches.ceilings import READINGS_LOOKED_AT, ceiling_of
+from labmon.benches.zeros import being_made_anew, has_zero
 from labmon.errors import WriteError
 from labmon.people.rights import Action, require
 from labmon.screen.door import for_people, put_refusal, say_refusal
 from labmon.screen.forms import CalibrationForm
 from labmon.screen.named import visible_station, visible_tap
 from labmon.screen.present import time_text
+from labmon.screen.zero_view import ceiling_words, due_words
 
 
 @require_POST
@@ -60,6 +65,8 @@ def calibration_page(request: HttpRequest, station: str, tap: str) -> HttpRespon
             )
             return redirect("station", station=station)
     status = 422 if request.method == "POST" else 200
+    newest = newest_readings([found.pk], count=READINGS_LOOKED_AT)[found.pk]
+    ceiling = ceiling_words(ceiling_of(found, version_at(found.pk, timezone.now()), newest))
     return render(
         request,
         "screen/calibration.html",
@@ -67,6 +74,9 @@ def calibration_page(request: HttpRequest, station: str, tap: str) -> HttpRespon
             "station": found.station,
             "tap": found,
             "form": form,
+            "sentence": f"{station}/{tap}: {ceiling[:1].lower() + ceiling[1:]}" if ceiling else f"Calibration of {station}/{tap}",
+            "due": due_words(being_made_anew(found)),
+            "has_zero": has_zero(found),
             "versions": calibration_history(found),
             "unit": "W" if found.unit == "dBm" else found.unit,
         },

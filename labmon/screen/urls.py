@@ -16,6 +16,7 @@ from labmon.screen import (
     station,
     station_writes,
     trail,
+    zero,
 )
 
 urlpatterns = [
@@ -38,6 +39,7 @@ urlpatterns = [
     path("stations/<slug:station>/taps/<slug:tap>/history.json", series.history_json, name="history-json"),
     path("stations/<slug:station>/taps/<slug:tap>/trail.json", trail.trail_json, name="trail-json"),
     path("stations/<slug:station>/taps/<slug:tap>/calibration/", station_writes.calibration_page, name="calibration"),
+    path("stations/<slug:station>/taps/<slug:tap>/zero/", zero.zero_page, name="zero"),
     path("alarms/", alarms.alarms_page, name="alarms"),
     path("alarms/<int:alarm_id>/acknowledge/", alarms.acknowledge, name="acknowledge"),
     path("experiments/", experiments.experiments_page, name="experiments"),

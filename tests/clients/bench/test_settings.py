@@ -79,7 +79,8 @@ def test_a_files_columns_and_time(tmp_path):
     assert source.time_columns == ("Date", "Time") and source.zone.utcoffset(None).total_seconds() == 3600
     assert not source.is_from_start
     cases = (("+01:00", "Europe/Berlin", "none of local, utc"), ("time = Date + Time", "begin = start", "need a time"),
-             ("time = Date + Time", "encoding = utf-16", "more than one byte"), ("  port1: Power: A", "  port1", "not of the form"))
+             ("time = Date + Time", "encoding = utf-16", "more than one byte"),
+             ("  port1: Power: A", "  port1", "not of the form"))
     for old, new, said in cases:
         text = GOOD.replace("source = stdin\ncolumns = port1 port2\n", lines.replace(old, new))
         assert any(said in line for line in fault_of(tmp_path, text))

@@ -21,7 +21,7 @@ from ingest.store.read import newest_readings
 from ingest.times import SECOND_US, at_of
 from ingest.times import now_us as server_now_us
 from labmon.alarms.models import AlarmState
-from labmon.benches.ceilings import READINGS_LOOKED_AT, TapCeiling, ceiling_of
+from labmon.benches.ceilings import TapCeiling, ceiling_of
 from labmon.benches.course import Course, courses_of
 from labmon.benches.show import (
     DEFAULT_SILENCE_S,
@@ -36,6 +36,7 @@ from labmon.benches.show import (
     smallest,
     state_of_tap,
 )
+from labmon.benches.troubles import NO_TROUBLES, Troubles, troubles_of
 from labmon.experiments.models import LimitVersion
 from labmon.experiments.queries import LimitFacts, limits_of
 from labmon.experiments.rules import rule_of
@@ -44,6 +45,8 @@ from labmon.people.rights import stations_visible_to
 
 #: Door spans older than this do not count for silence any more.
 DOOR_MEMORY_US: Final = 8 * 86_400 * SECOND_US
+#: Readings of a tap that its clock's course and its ceiling are told by: ten minutes at one a second.
+NEWEST_LOOKED_AT: Final = 600
 #: A door gives a sign of life each second; one whose last is no older than this is up.
 DOOR_SIGN_US: Final = 3 * SECOND_US
 
@@ -118,6 +121,7 @@ class StationFacts:
     boots: list[StationBoot]
     last_heard_at: datetime | None
     set_aside: int
+    troubles: Troubles = NO_TROUBLES
 
 
 @dataclass(frozen=True, slots=True)
@@ -221,7 +225,8 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
         limits.setdefault(limit.tap_id, []).append(limit)
     now, versions = timezone.now(), versions_of(tap.pk for tap in taps)
     in_force = {tap_id: next((one for one in reversed(own) if one.valid_from <= now), None) for tap_id, own in versions.items()}
-    newest = newest_readings([tap.pk for tap in taps], count=READINGS_LOOKED_AT)
+    newest = newest_readings([tap.pk for tap in taps], count=NEWEST_LOOKED_AT)
+    boots = list(station.boots.order_by("-last_arrival_us")[:10])
     heard_us = max((tap.heard.last_arrival_us for tap in taps if hasattr(tap, "heard")), default=None)
     bench = getattr(station, "bench", None)
     return StationFacts(
@@ -233,7 +238,8 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
         taps=[_tap_facts(standings[tap.pk], limits.get(tap.pk, []), in_force.get(tap.pk), newest[tap.pk], clock_us)
               for tap in taps],
         keys=list(station.keys.select_related("use").order_by("-made_at")),
-        boots=list(station.boots.order_by("-last_arrival_us")[:10]),
+        boots=boots,
+        troubles=troubles_of(station, boots, newest, clock_us),
         last_heard_at=at_of(heard_us) if heard_us is not None else None,
         set_aside=SetAside.objects.filter(station=station).count(),
     )

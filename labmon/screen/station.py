@@ -18,6 +18,7 @@ from labmon.screen.quantity import QUANTITIES, quantities_of
 from labmon.screen.shown import history_rows
 from labmon.screen.span import shown_span, ways
 from labmon.screen.station_view import boot_words, clock_words, station_sentence, tap_view
+from labmon.screen.trouble_view import clock_course_words, trouble_words
 
 RECENT_ALARMS = 12
 
@@ -40,6 +41,8 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
             "sentence": station_sentence(found.name, facts, len(waiting)),
             "taps": [tap_view(tap, now) for tap in facts.taps],
             "clock": clock_words(facts.boots),
+            "troubles": trouble_words(facts.troubles, facts.taps),
+            "clock_course": clock_course_words(facts.troubles.clock),
             "boots": [boot_words(boot) for boot in facts.boots],
             "waiting": waiting,
             "alarms": [view for view in alarms if not view.is_waiting],

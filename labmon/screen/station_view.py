@@ -9,6 +9,7 @@ from django.utils.safestring import SafeString, mark_safe
 from ingest.models import StationBoot
 from ingest.times import at_of
 from labmon.benches.queries import NowSample, StationFacts, TapFacts
+from labmon.screen.clock_view import clock_state
 from labmon.screen.level_words import level_words
 from labmon.screen.present import (
     MISSING,
@@ -255,7 +256,7 @@ def _trimmed(text: str) -> str:
 
 def clock_words(boots: Sequence[StationBoot]) -> list[str]:
     """What the newest boot's clock is worth, in words; nothing when it is good."""
-    return [boot.clock_fault for boot in boots[:1] if boot.clock_fault]
+    return [state.words for boot in boots[:1] if (state := clock_state(boot)).is_fault]
 
 
 def boot_words(boot: StationBoot) -> str:
@@ -265,7 +266,7 @@ def boot_words(boot: StationBoot) -> str:
         said += f", firmware {boot.firmware}"
     said += f": heard {time_text(at_of(boot.first_arrival_us))} to {time_text(at_of(boot.last_arrival_us))} UTC"
     if boot.clock_fault:
-        return f"{said}. {boot.clock_fault}"
+        return f"{said}. {clock_state(boot).words}"
     if boot.is_server_timed:
         return f"{said}. Readings are placed by their arrival."
     if boot.clock_offset_us is None:

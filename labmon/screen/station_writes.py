@@ -20,7 +20,7 @@ from labmon.screen.door import for_people, put_refusal, say_refusal
 from labmon.screen.forms import CalibrationForm
 from labmon.screen.named import visible_station, visible_tap
 from labmon.screen.present import time_text
-from labmon.screen.zero_view import ceiling_words, due_words
+from labmon.screen.zero_view import ceiling_words, due_words, version_words
 
 
 @require_POST
@@ -66,6 +66,7 @@ def calibration_page(request: HttpRequest, station: str, tap: str) -> HttpRespon
             return redirect("station", station=station)
     status = 422 if request.method == "POST" else 200
     newest = newest_readings([found.pk], count=READINGS_LOOKED_AT)[found.pk]
+    unit = "W" if found.unit == "dBm" else found.unit
     ceiling = ceiling_words(ceiling_of(found, version_at(found.pk, timezone.now()), newest))
     return render(
         request,
@@ -77,8 +78,8 @@ def calibration_page(request: HttpRequest, station: str, tap: str) -> HttpRespon
             "sentence": f"{station}/{tap}: {ceiling[:1].lower() + ceiling[1:]}" if ceiling else f"Calibration of {station}/{tap}",
             "due": due_words(being_made_anew(found)),
             "has_zero": has_zero(found),
-            "versions": calibration_history(found),
-            "unit": "W" if found.unit == "dBm" else found.unit,
+            "versions": [version_words(one, unit) for one in calibration_history(found)],
+            "unit": unit,
         },
         status=status,
     )

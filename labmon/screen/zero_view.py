@@ -5,12 +5,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from analysis.models import Calibration
 from analysis.reduce.ceiling import CeilingCause
 from analysis.reduce.zero import DARK_SHARE, Unfit
 from labmon.benches.ceilings import TapCeiling
 from labmon.benches.zeros import DuePart, ZeroTaking, refusal_words
-from labmon.screen.present import MINUS, age_text, count_text, er_text, time_text
+from labmon.screen.present import MINUS, MISSING, age_text, count_text, er_text, number_text, time_text
 
+_BASE = {"W": (1.0, "W"), "mW": (1e-3, "W"), "uW": (1e-6, "W"), "V": (1.0, "V")}
+_STEPS = [(1.0, ""), (1e-3, "m"), (1e-6, "µ"), (1e-9, "n"), (1e-12, "p")]
 _CAUSES = {
     CeilingCause.ZERO: "the error of its zero",
     CeilingCause.NOISE: "the noise of its dark port",
@@ -93,20 +96,46 @@ def _port_words(number: int, taking: ZeroTaking, unit: str) -> PortWords:
 
 
 def value_text(value: float | None, unit: str, error: float | None = None) -> str:
-    """A value in the tap's raw unit with as many digits as its error carries: ``(3.012 ± 0.004)e−07 W``."""
+    """A raw value in the step of its unit that reads well, with the digits that its error carries: ``199.90 ± 0.12 nW``."""
     if value is None or not np.isfinite(value):
-        return "–"
+        return MISSING
+    factor, base = _BASE.get(unit, (1.0, ""))
+    value, error = value * factor, None if error is None else error * factor
     size = max(abs(value), error or 0.0)
-    power = int(np.floor(np.log10(size))) if size > 0 else 0
-    power = 0 if -3 <= power < 4 else power
-    digits = 4
-    if error is not None and error > 0:
-        digits = int(np.clip(1 - np.floor(np.log10(error / 10.0**power)), 0, 6))
-    number = f"{value / 10.0**power:.{digits}f}"
-    if error is not None:
-        number = f"({number} ± {error / 10.0**power:.{digits}f})" if power or error > 0 else number
-    tail = f"e{power:+03d}" if power else ""
-    return f"{number}{tail} {unit.replace('uW', 'µW')}".replace("-", MINUS).strip()
+    step, prefix = (1.0, "") if not base or size == 0.0 else next(
+        ((step, prefix) for step, prefix in _STEPS if size >= step), _STEPS[-1])
+    digits = 3 if error is None or error <= 0.0 else int(np.clip(1 - np.floor(np.log10(error / step)), 0, 6))
+    number = f"{value / step:.4g}" if error is None else f"{value / step:.{digits}f} ± {error / step:.{digits}f}"
+    return f"{number} {prefix}{base or unit}".replace("-", MINUS).strip()
+
+
+@dataclass(frozen=True, slots=True)
+class VersionWords:
+    """One version's row of a calibration's history."""
+
+    holds_from: str
+    entered: str
+    by: str
+    zeros: tuple[str, str]
+    floors: tuple[str, str]
+    gain: str
+    wanted: str
+    handedness: str
+
+
+def version_words(version: Calibration, unit: str) -> VersionWords:
+    """A version of a calibration in words."""
+    state = version.wanted_state
+    return VersionWords(
+        holds_from=time_text(version.valid_from),
+        entered=time_text(version.entered_at),
+        by=version.entered_by,
+        zeros=(value_text(version.zero1, unit, version.zero1_error), value_text(version.zero2, unit, version.zero2_error)),
+        floors=(value_text(version.floor1, unit), value_text(version.floor2, unit)),
+        gain=f"{version.gain_ratio:.5g}",
+        wanted=", ".join(number_text(part, 3) for part in state) if state else str(version.wanted_port),
+        handedness=version.handedness,
+    )
 
 
 def share_text(share: float) -> str:

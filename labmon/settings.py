@@ -121,6 +121,7 @@ STORAGES = {
              "OPTIONS": env.get("DAYS_OPTIONS", parse_options, default={"location": str(DATA_DIR / "days")})},
 }
 MEDIA_ROOT = DATA_DIR / "files"
+WATCHED_FOLDER = env.get("WATCHED_FOLDER", Path, default=None)
 
 EMAIL_BACKEND = env.get("MAIL_BACKEND", str, default=(
     "django.core.mail.backends.smtp.EmailBackend" if os.environ.get("LABMON_MAIL_HOST")

@@ -1,5 +1,6 @@
 """Everyone can use the pages: axe finds nothing, nothing scrolls sideways, the keyboard reaches all."""
 
+from datetime import UTC, datetime
 from pathlib import Path
 
 import pytest
@@ -53,11 +54,20 @@ def addresses(lab) -> list[str]:
         "/stations/n2/taps/eom-in/calibration/",
         "/stations/n2/set-aside/",
         "/stations/n2/import/",
+        "/join/",
+        "/stations/n2/joining/",
+        "/stations/n2/taps/eom-in/zero/",
+        f"/stations/n2/taps/eom-in/zero/?from={now_text()}&seconds=30",
         "/people/",
         "/audit/",
         "/you/",
         "/nowhere/",
     ]
+
+
+def now_text() -> str:
+    """Now, as addresses say it."""
+    return datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
 
 
 def settled(page, url: str) -> None:

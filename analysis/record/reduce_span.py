@@ -20,7 +20,8 @@ from ingest.clocks import CLOCK_TOLERANCE_US
 from ingest.files.origin import FILE_BOOT
 from ingest.models import Tap, TapBoot, TapKind
 from ingest.store.columns import NO_TIME, Readings, concatenate
-from ingest.store.read import read_readings
+from ingest.store.days.faults import note_faults
+from ingest.store.read import DamagedStore, Hole, HoleKind, find_readings
 from ingest.times import us_of
 
 #: A zero older than this casts doubt (a proposal, no source).
@@ -63,13 +64,28 @@ def knowledge_of(tap_ids: Iterable[int], as_of: datetime | None = None) -> Knowl
 
 
 def reduced_samples(tap: Tap, from_us: int, until_us: int, as_of: datetime | None = None) -> Reduced:
-    """A tap's reduced samples of the half-open span, with the calibrations valid at each (known at ``as_of``)."""
+    """A tap's reduced samples of the half-open span, with the calibrations valid at each (known at ``as_of``).
+
+    Raises:
+        DamagedStore: Some of its readings cannot be read.
+    """
+    samples, holes = find_samples(tap, from_us, until_us, as_of)
+    if unreadable := [hole.why for hole in holes if hole.kind is HoleKind.UNREADABLE]:
+        raise DamagedStore("; ".join(unreadable))
+    return samples
+
+
+def find_samples(tap: Tap, from_us: int, until_us: int, as_of: datetime | None = None) -> tuple[Reduced, list[Hole]]:
+    """The same, with the span's holes (readings that cannot be read or are no longer kept) instead of an exception."""
     checkpoint = TapCheckpoint.objects.filter(tap=tap, at_us__lte=from_us).order_by("-at_us").first()
     start_us = checkpoint.at_us if checkpoint else from_us
     flat = checkpoint.state["flat"] if checkpoint else None
-    many = reduce_many([tap], {tap.pk: read_readings(tap.pk, start_us, until_us)}, knowledge_of([tap.pk], as_of), {tap.pk: flat})
+    found = find_readings(tap.pk, start_us, until_us)
+    note_faults(found.holes)
+    many = reduce_many([tap], {tap.pk: found.readings}, knowledge_of([tap.pk], as_of), {tap.pk: flat})
     result = many.samples_of(tap.pk)
-    return result.take(slice(int(np.searchsorted(result.at_us, from_us)), None))
+    holes = [hole for hole in found.holes if hole.until_us >= from_us]
+    return result.take(slice(int(np.searchsorted(result.at_us, from_us)), None)), holes
 
 
 @dataclass(frozen=True, slots=True)

@@ -19,7 +19,8 @@ from analysis.record.rollup_pages import add_to_page, page_cells, put_in_page
 from analysis.rollup.cells import LEVELS_S, Cells, cells_of, concatenate, empty_cells, holds_us, merge
 from analysis.rollup.rows import cells_of_rows, row_bodies
 from ingest.models import Tap
-from ingest.store.read import read_many
+from ingest.store.days.faults import note_faults
+from ingest.store.read import Hole, find_many
 from ingest.times import SECOND_US
 
 FINE_S, MINUTE_S, TEN_MINUTES_S, HOUR_S, DAY_S = LEVELS_S
@@ -48,11 +49,13 @@ def roll_up(taps: Sequence[Tap], spans: Mapping[int, Span], now_us: int) -> None
 
     A span must lie within one closed day, or in open days.
     """
-    fine = _fine_cells(sorted(taps, key=lambda tap: tap.pk), spans)
+    fine, holes = _fine_cells(sorted(taps, key=lambda tap: tap.pk), spans)
     closed = [tap_id for tap_id, span in spans.items() if is_closed(span.first_us // DAY_US * DAY_US, now_us)]
     is_in_closed = np.isin(fine.tap, closed)
     for tap_id in closed:
-        _store_closed(tap_id, fine.take(fine.tap == tap_id))
+        span = spans[tap_id]
+        has_holes = any(hole.from_us <= span.last_us and hole.until_us >= span.first_us for hole in holes.get(tap_id, ()))
+        _store_closed(tap_id, fine.take(fine.tap == tap_id), is_complete=not has_holes)
     _store_open(fine.take(~is_in_closed))
 
 
@@ -76,8 +79,8 @@ def compact_day(tap_id: int, day_us: int) -> None:
             _delete_rows(tap_id, level_s, day_us)
 
 
-def _fine_cells(taps: Sequence[Tap], spans: Mapping[int, Span]) -> Cells:
-    """10 s cells of all taps (sorted by id), ``tap`` being the tap's id."""
+def _fine_cells(taps: Sequence[Tap], spans: Mapping[int, Span]) -> tuple[Cells, dict[int, tuple[Hole, ...]]]:
+    """10 s cells of all taps (sorted by id), ``tap`` being the tap's id; and the holes among the readings per tap."""
     states = _states([tap.pk for tap in taps])
     bounds, starts = {}, {}
     for tap in taps:
@@ -91,9 +94,11 @@ def _fine_cells(taps: Sequence[Tap], spans: Mapping[int, Span]) -> Cells:
         starts[tap.pk] = next((snap for snap in reversed(state["snapshots"]) if snap[0] <= first_us), None) if state else None
     for tap_id, found in _checkpoints({tap_id: bounds[tap_id][0] for tap_id, start in starts.items() if start is None}).items():
         starts[tap_id] = found
-    readings = read_many(
+    found = find_many(
         {tap.pk: (starts[tap.pk][0] if starts[tap.pk] else bounds[tap.pk][0], bounds[tap.pk][2]) for tap in taps}
     )
+    note_faults(hole for one in found.values() for hole in one.holes)
+    readings = {tap_id: one.readings for tap_id, one in found.items()}
     reduced = reduce_many(
         taps, readings, knowledge_of(bounds), {tap_id: start[1] if start else None for tap_id, start in starts.items()}
     )
@@ -112,7 +117,7 @@ def _fine_cells(taps: Sequence[Tap], spans: Mapping[int, Span]) -> Cells:
             parts.append(
                 cells_of(group.samples.take(np.concatenate(kept)), FINE_S, np.concatenate(hold_parts), np.concatenate(owners))
             )
-    return concatenate(parts)
+    return concatenate(parts), {tap_id: one.holes for tap_id, one in found.items() if one.holes}
 
 
 def _interval_s(tap: Tap, state: Mapping[str, Any] | None) -> float:
@@ -157,15 +162,21 @@ def _store_open(fine: Cells) -> None:
     _write_rows(merge(_rows(minutes, FINE_S), MINUTE_S))
 
 
-def _store_closed(tap_id: int, fine: Cells) -> None:
-    """Pages of a closed day: cells made anew replace those of their buckets, the coarser levels follow."""
+def _store_closed(tap_id: int, fine: Cells, *, is_complete: bool) -> None:
+    """Pages of a closed day: cells made anew replace those of their buckets, the coarser levels follow.
+
+    Where raw readings are missing (no longer kept, or unreadable) the older cells know more than the new ones: they stay.
+    """
     if not len(fine):
         return
     day_us = int(fine.bucket_us[0]) // DAY_US * DAY_US
     compact_day(tap_id, day_us)
     old = page_cells(tap_id, FINE_S, day_us)
     if old is not None:
-        fine = concatenate([old.take(~np.isin(old.bucket_us, fine.bucket_us)), fine])
+        if is_complete:
+            fine = concatenate([old.take(~np.isin(old.bucket_us, fine.bucket_us)), fine])
+        else:
+            fine = concatenate([old, fine.take(~np.isin(fine.bucket_us, old.bucket_us))])
     for level_s in LEVELS_S:
         fine = merge(fine, level_s)
         put_in_page(tap_id, fine, day_us, day_us + DAY_US)

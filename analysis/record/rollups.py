@@ -7,7 +7,7 @@ import numpy as np
 
 from analysis.judge.rule import Quantity
 from analysis.quantities import FloatArray, IntArray, db_from_ratio
-from analysis.record.reduce_span import reduced_samples
+from analysis.record.reduce_span import find_samples
 from analysis.record.rollup_pages import page_columns
 from analysis.record.rollup_rows import open_cells
 from analysis.reduce.sample import Reduced
@@ -67,8 +67,12 @@ def history(tap_id: int, quantity: str, from_us: int, until_us: int, points: int
     if level_s is None:
         bucket_us = max(-(-(until_us - from_us) // points), 1)
         first_us = from_us // bucket_us * bucket_us
-        sums = _from_samples(reduced_samples(Tap.objects.get(pk=tap_id), first_us, until_us), quantity)
-    else:
+        samples, holes = find_samples(Tap.objects.get(pk=tap_id), first_us, until_us)
+        if holes:
+            level_s = LEVELS_S[0]  # the finest rollups are still there
+        else:
+            sums = _from_samples(samples, quantity)
+    if level_s is not None:
         bucket_us = max(-(-round(span_s) // (level_s * points)), 1) * level_s * SECOND_US
         first_us = from_us // bucket_us * bucket_us
         sums = _from_cells(tap_id, quantity, level_s, first_us, until_us)

@@ -86,6 +86,8 @@ class Hole:
     until_us: int
     kind: HoleKind
     why: str
+    name: str = ""
+    """The day file at fault, empty where it is none."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -201,7 +203,7 @@ def _opened_day(tap: int, row: tuple[Any, ...], wanted: frozenset[str] | None, s
         with OpenDay(entry) as day:
             return day.read_last(last, wanted)
     except DamagedBody as error:
-        holes.append(Hole(row[1], row[7], HoleKind.UNREADABLE, _damage(tap, row, "day file", error, "file")))
+        holes.append(Hole(row[1], row[7], HoleKind.UNREADABLE, _damage(tap, row, "day file", error, "file"), row[8]))
         return no_readings()
 
 

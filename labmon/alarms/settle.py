@@ -69,6 +69,7 @@ class Finding:
     Attributes:
         window_us: The stretch judged, first and behind-last µs; ``is_newest``: it reaches the newest reading.
         age_us: Age of the stretch's last reading by the station's clock, ``last_us`` its data time.
+        holes: Spans of the stretch whose raw readings are gone or unreadable: nothing told of them is taken back.
         existing: Alarms of the limit that overlap the stretch (live: the open one), oldest first.
     """
 
@@ -82,6 +83,7 @@ class Finding:
     last_us: int
     current_within_us: int
     existing: Sequence[Alarm]
+    holes: Sequence[tuple[int, int]] = ()
 
     @property
     def is_current(self) -> bool:
@@ -144,7 +146,7 @@ def _settle_limit(finding: Finding, name: str, changes: _Changes) -> None:
             left.remove(alarm)
             _bring_in_line(finding, episode, alarm, name, changes)
     for alarm in left:
-        if _belongs(alarm, finding):
+        if _belongs(alarm, finding) and not _is_beyond_proof(alarm, finding):
             _take_back(alarm, changes)
 
 
@@ -168,6 +170,13 @@ def _belongs(alarm: Alarm, finding: Finding) -> bool:
     if raised_us >= from_us:
         return raised_us < until_us or finding.is_newest
     return alarm.returned_at is None or us_of(alarm.returned_at) > from_us
+
+
+def _is_beyond_proof(alarm: Alarm, finding: Finding) -> bool:
+    """True if it was told of readings that are no longer there: what they said then stands."""
+    raised_us = us_of(alarm.raised_at)
+    returned_us = us_of(alarm.returned_at) if alarm.returned_at else finding.window_us[1]
+    return any(raised_us <= until_us and returned_us >= from_us for from_us, until_us in finding.holes)
 
 
 def _add(finding: Finding, episode: Episode, name: str, changes: _Changes) -> None:

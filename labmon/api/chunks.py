@@ -4,7 +4,7 @@ from collections.abc import Iterator
 
 from django.db.models import Max
 
-from ingest.models import Block, InboxRow
+from ingest.models import Block, DayFile, InboxRow
 
 READINGS_A_CHUNK = 25_000
 ROWS_LOOKED_AT = 1000
@@ -22,12 +22,24 @@ def chunks_of(tap_id: int, from_us: int, until_us: int) -> Iterator[tuple[int, i
                                        last_at_us__gte=from_us, first_at_us__lt=until_us).order_by("slot_us"))
         inbox = InboxRow.objects.filter(tap_id=tap_id, last_at_us__gte=from_us, first_at_us__lt=until_us)
         lists = [list(rows.values_list("first_at_us", "count")[:ROWS_LOOKED_AT])
-                 for rows in (blocks, inbox.order_by("first_at_us"))]
+                 for rows in (blocks, inbox.order_by("first_at_us"))] + [_shares_of_days(tap_id, from_us, until_us)]
         if not any(lists):
             return
         start_us = max(from_us, min(rows[0][0] for rows in lists if rows))
         from_us = cut_us(lists, start_us, until_us)
         yield start_us, from_us
+
+
+def _shares_of_days(tap_id: int, from_us: int, until_us: int) -> list[tuple[int, int]]:
+    """Day files as rows of at most ``READINGS_A_CHUNK`` readings, evenly spread: a file is read in parts."""
+    days = DayFile.objects.filter(tap_id=tap_id, last_at_us__gte=from_us, first_at_us__lt=until_us).order_by("day_us")
+    rows = []
+    for first_us, last_us, count in days.values_list("first_at_us", "last_at_us", "count")[:ROWS_LOOKED_AT]:
+        shares = -(-count // READINGS_A_CHUNK)
+        starts = [first_us + number * (last_us + 1 - first_us) // shares for number in range(shares)]
+        rows += [(start_us, count // shares) for start_us, end_us in zip(starts, [*starts[1:], last_us + 1], strict=True)
+                 if end_us > from_us and start_us < until_us]
+    return rows
 
 
 def cut_us(lists: list[list[tuple[int, int]]], from_us: int, until_us: int) -> int:

@@ -42,7 +42,8 @@ def answer(text: str, name: str) -> Schema:
 
 FAULT_TEXTS = {400: "Something sent cannot be used; field names it.", 401: "No usable key or session.",
                403: "The role does not allow it, or the CSRF token is missing.",
-               404: "Not there, or not for this person.", 413: "Too large.",
+               404: "Not there, or not for this person.",
+               409: "Readings of the span cannot be read; see unreadable.", 413: "Too large.",
                415: "Not announced as JSON.", 429: "Too fast; see Retry-After.",
                503: "Database away; see Retry-After."}
 
@@ -87,7 +88,8 @@ PATHS: dict[str, dict[str, Operation]] = {
                            for word, kind in READING_FORMATS.items()}}},
         parameters=(*TAP, SPAN,
                     in_query("format", {"type": "string", "enum": list(READING_FORMATS), "default": "json"}, "The form."),
-                    in_query("as_of", TIME, "Reduce with the calibrations that were entered by this time.")))},
+                    in_query("as_of", TIME, "Reduce with the calibrations that were entered by this time.")),
+        faults=(400, 401, 404, 409))},
     f"{BASE}/taps/{{station}}/{{tap}}/calibration": {"patch": call(
         "A new version of the calibration.", {200: answer("The new version.", "Calibration")},
         parameters=TAP, body="NewCalibration", faults=WRITE)},

@@ -3,6 +3,7 @@
 import itertools
 from collections.abc import AsyncIterator, Iterator
 from datetime import datetime
+from http import HTTPStatus
 from typing import Any
 
 import numpy as np
@@ -16,10 +17,13 @@ from analysis.record.reduce_span import Knowledge, knowledge_of, reduce_many
 from analysis.reduce.sample import Reduced
 from ingest.models import Tap, TapBoot
 from ingest.store.columns import Readings, no_readings
-from ingest.store.read import read_readings
+from ingest.store.days.faults import known_holes, note_faults
+from ingest.store.read import Hole, HoleKind, find_readings
+from ingest.times import rfc3339_of
 from labmon.api.chunks import chunks_of
 from labmon.api.formats import TYPES, written
 from labmon.api.named import tap_named, tap_path
+from labmon.api.problem import Problem
 from labmon.api.query import known_only, one_of, span_of, time_or_none
 from labmon.api.span import Span
 from labmon.api.table import table_of
@@ -34,14 +38,28 @@ def get_readings(request: HttpRequest, person: Person, station: str, tap: str) -
     form = one_of(request.GET, "format", TYPES, default="json")
     as_of = time_or_none(request.GET, "as_of")
     row = tap_named(person, station, tap)
+    holes = known_holes(row.pk, span.from_us, span.until_us)
+    refuse_unreadable(holes)
     tables = tables_of(row, span, as_of)
     first = next(tables)    # faults come before the answer has begun
-    about = {"tap": tap_path(row), "kind": row.kind, "unit": row.unit or None, "span": str(span), "as_of": rfc3339(as_of)}
+    about = {"tap": tap_path(row), "kind": row.kind, "unit": row.unit or None, "span": str(span), "as_of": rfc3339(as_of),
+             "not_kept": [[rfc3339_of(hole.from_us), rfc3339_of(hole.until_us + 1)] for hole in holes]}
     parts = written(form, first.schema, itertools.chain([first], tables), about)
     answer = StreamingHttpResponse(_for_server(request, parts), content_type=TYPES[form])
     answer.headers["Content-Disposition"] = f'attachment; filename="{station}-{tap}.{form}"'
     answer.headers["Cache-Control"] = "no-store"
+    if holes:
+        answer.headers["Labmon-Not-Kept"] = ", ".join("/".join(pair) for pair in about["not_kept"])
     return answer
+
+
+def refuse_unreadable(holes: list[Hole]) -> None:
+    """A span with readings that are known to be unreadable is not answered as if it were whole."""
+    unreadable = [hole for hole in holes if hole.kind is HoleKind.UNREADABLE]
+    if unreadable:
+        spans = [[rfc3339_of(hole.from_us), rfc3339_of(hole.until_us + 1)] for hole in unreadable]
+        raise Problem(HTTPStatus.CONFLICT, "Readings of this span cannot be read.",
+                      f"{unreadable[0].why} Ask for spans beside it.", more={"unreadable": spans})
 
 
 def tables_of(tap: Tap, span: Span, as_of: datetime | None) -> Iterator[pa.Table]:
@@ -56,7 +74,10 @@ def tables_of(tap: Tap, span: Span, as_of: datetime | None) -> Iterator[pa.Table
     start_us, flat = (before.at_us, before.state["flat"]) if before else (span.from_us, None)
     yield _table(tap, no_readings(), _reduced(tap, no_readings(), knowledge, None)[0], names)
     for from_us, until_us in chunks_of(tap.pk, start_us, span.until_us):
-        readings = read_readings(tap.pk, from_us, until_us)
+        found = find_readings(tap.pk, from_us, until_us)
+        note_faults(found.holes)
+        refuse_unreadable(list(found.holes))    # in the midst of an answer it breaks off: better than a silent hole
+        readings = found.readings
         reduced, flat = _reduced(tap, readings, knowledge, flat)
         wanted = slice(int(np.searchsorted(readings.at_us, span.from_us)), None)
         if until_us > span.from_us:

@@ -11,9 +11,10 @@ from labmon.people.models import Person
 
 
 def note(
-    person: Person | None, action: str, subject: Model | str, before: Any = None, after: Any = None, reason: str = ""
+    person: Person | None, action: str, subject: Model | str, before: Any = None, after: Any = None, reason: str = "",
+    *, as_name: str = "command line",
 ) -> AuditEntry:
-    """Write who did what to what. ``person`` is None for a command run at the machine itself.
+    """Write who did what to what. ``person`` is None for a command run at the machine itself, or for what ``as_name`` says.
 
     Raises:
         RuntimeError: Outside a transaction: the write and its audit row must stand or fall together.
@@ -22,7 +23,7 @@ def note(
         raise RuntimeError("note() must run in the transaction of the write it tells of")
     return AuditEntry.objects.create(
         person=person,
-        person_name=person.username if person else "command line",
+        person_name=person.username if person else as_name[:150],
         action=action,
         subject=subject if isinstance(subject, str) else name_of(subject),
         before=plain(before),

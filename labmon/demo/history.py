@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 from django.db import transaction
 
-from ingest.models import Block, StationBoot, Tap
+from ingest.models import Block, DayFile, StationBoot, Tap
 from ingest.store.append import write_blocks
 from labmon.demo.air import ROOMS, RoomPlan
 from labmon.demo.benches import BENCHES, BenchPlan
@@ -61,11 +61,15 @@ def write_history(world: World, axis: TimeAxis, say: Say) -> int:
     return total
 
 
+def _has_history(tap: Tap) -> bool:
+    return Block.objects.filter(tap=tap).exists() or DayFile.objects.filter(tap=tap).exists()
+
+
 @transaction.atomic
 def write_room(world: World, room: RoomPlan, axis: TimeAxis) -> int:
     """A room's climate readings, all or none."""
     tap = Tap.objects.select_related("station").get(station__name=room.station)
-    if Block.objects.filter(tap=tap).exists():
+    if _has_history(tap):
         return 0
     at_s = np.arange(0.0, axis.until_s, CLIMATE_CADENCE_S)
     at_us = axis.us_of(at_s)
@@ -80,7 +84,7 @@ def write_room(world: World, room: RoomPlan, axis: TimeAxis) -> int:
 def write_bench(world: World, bench: BenchPlan, axis: TimeAxis) -> int:
     """A bench's readings of all its boots, all or none."""
     tap = Tap.objects.select_related("station").get(station__name=bench.station)
-    if Block.objects.filter(tap=tap).exists():
+    if _has_history(tap):
         return 0
     count = 0
     for delivery in deliveries(bench, axis.until_s, axis.cadences, world.ledger, world.seed):

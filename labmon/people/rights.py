@@ -30,6 +30,8 @@ class Action(StrEnum):
     ADD_STATION = "add stations"
     ADD_TAP = "add taps"
     SET_FLOOR = "lock the least limit of a bench"
+    SET_KEEPING = "say how long raw readings are kept"
+    SEE_HEALTH = "see the lab's health"
     MANAGE_PEOPLE = "add people and set their roles"
 
 

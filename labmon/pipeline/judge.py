@@ -231,6 +231,7 @@ def _finding(step: Progress, limit: LimitWork, episodes: Sequence[Episode], exis
         last_us=step.last_us,
         current_within_us=step.current_within_us,
         existing=existing,
+        holes=step.holes,
     )
 
 

@@ -14,7 +14,8 @@ from django.db import connection, transaction
 
 from analysis.record.reduce_span import ManyReduced, knowledge_of, reduce_many
 from ingest.store.columns import Readings
-from ingest.store.read import read_many
+from ingest.store.days.faults import note_faults
+from ingest.store.read import find_many
 from ingest.times import now_us as server_now_us
 from labmon.alarms.settle import settle
 from labmon.alarms.untrusted import settle_untrusted
@@ -69,8 +70,10 @@ def _process_chunk(now_us: int, is_paced: bool) -> Processed | None:
     if not tap_ids:
         return None
     stretches = _affordable(plan_stretches(load_work(tap_ids)))
-    readings = read_many({one.work.tap.pk: (one.start_us, one.end_us) for one in stretches})
-    steps = [progress_of(one, readings[one.work.tap.pk], now_us) for one in stretches]
+    found = find_many({one.work.tap.pk: (one.start_us, one.end_us) for one in stretches})
+    note_faults(hole for one in found.values() for hole in one.holes)
+    readings = {tap_id: one.readings for tap_id, one in found.items()}
+    steps = [progress_of(one, found[one.work.tap.pk], now_us) for one in stretches]
     reduced = reduce_many(
         [step.tap for step in steps],
         readings,

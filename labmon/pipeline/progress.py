@@ -10,6 +10,7 @@ from analysis.judge.interval import pass_samples
 from analysis.judge.presence import CADENCE_COUNT
 from analysis.record.tap_state import TapState
 from ingest.store.columns import Readings
+from ingest.store.read import Found
 from ingest.times import SECOND_US
 from labmon.alarms.settle import CURRENT_WITHIN_US, TapHere
 from labmon.pipeline.save import NowRow
@@ -30,6 +31,7 @@ class Progress:
 
     Attributes:
         complete_us: Seconds before it are complete; what comes for them later is late.
+        holes: Spans (both ends included) of which raw readings are no longer kept or cannot be read.
         cut_us: Within the stretch the last moment worth a checkpoint or a snapshot (else the start).
     """
 
@@ -38,6 +40,7 @@ class Progress:
     complete_us: int
     cut_us: int
     now_us: int
+    holes: tuple[tuple[int, int], ...] = ()
 
     @property
     def work(self) -> TapWork:
@@ -157,8 +160,9 @@ class Progress:
         return (self.tap.pk, max(touched.first_us or 0, self.stretch.end_us), newest_us, touched.last_arrival_us or self.now_us)
 
 
-def progress_of(stretch: Stretch, readings: Readings, now_us: int) -> Progress:
+def progress_of(stretch: Stretch, found: Found, now_us: int) -> Progress:
     """How far the stretch's seconds are complete: by later readings, by silence, or by its own end."""
+    readings = found.readings
     complete_us = stretch.end_us
     if stretch.is_newest:
         complete_us = stretch.start_us
@@ -166,7 +170,8 @@ def progress_of(stretch: Stretch, readings: Readings, now_us: int) -> Progress:
             open_us = floor_s(int(readings.at_us[-1]))
             complete_us = open_us + SECOND_US if now_us >= quiet_from_us(readings, stretch.work) else open_us
     complete_us = max(complete_us, stretch.start_us)
-    return Progress(stretch, readings, complete_us, _cut(stretch.start_us, complete_us), now_us)
+    holes = tuple((hole.from_us, hole.until_us) for hole in found.holes)
+    return Progress(stretch, readings, complete_us, _cut(stretch.start_us, complete_us), now_us, holes)
 
 
 def quiet_from_us(readings: Readings, work: TapWork) -> int:

@@ -21,6 +21,12 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "roll up hours and days": _every("roll_up_coarse", 120.0),
     "seal": _every("seal", 60.0),
     "seal days": _every("seal_days", 120.0, expires=120.0),
+    "read day files again": _every("check_days", 3600.0, expires=3600.0),
+    "forget days past their rule": {
+        "task": "labmon.pipeline.forget_days",
+        "schedule": crontab(hour="2", minute="40"),
+        "options": {"expires": 6 * 3600},
+    },
     "take up left imports": _every("take_up_left_imports", 300.0),
     "compact closed days": {
         "task": "labmon.pipeline.compact",

@@ -3,9 +3,11 @@
 from celery import shared_task
 from django.db import OperationalError
 
+from ingest.store.days.check import check_days
 from ingest.store.days.left import sweep_left_files
 from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
+from labmon.benches.keeping import forget_old_days
 from labmon.pipeline.process import process_touched
 from labmon.pipeline.prune import prune_checkpoints
 from labmon.pipeline.rolling import compact_closed_days, roll_up_coarse_due, roll_up_due
@@ -16,6 +18,8 @@ from labmon.tell.outbox import send_waiting
 PROCESS_FOR_S = 20.0
 #: So long days are sealed at a time: after months without it (or with a new demo lab) judging keeps its share of the machine.
 SEAL_DAYS_FOR_S = 20.0
+#: So long day files are read again every hour.
+CHECK_DAYS_FOR_S = 20.0
 
 
 def _task(name: str, time_limit: int):  # type: ignore[no-untyped-def]
@@ -66,6 +70,18 @@ def seal_days_task() -> None:
     """Move days that are over into their files, some at a time; remove files that nobody needs."""
     seal_days(for_s=SEAL_DAYS_FOR_S)
     sweep_left_files()
+
+
+@_task("forget_days", 1800)
+def forget_days_task() -> None:
+    """Delete raw readings of days past their rule; each leaves its audit row."""
+    forget_old_days()
+
+
+@_task("check_days", 600)
+def check_days_task() -> None:
+    """Read the day files that were read whole longest ago, and compare them with what was written."""
+    check_days(for_s=CHECK_DAYS_FOR_S)
 
 
 @_task("send_mails", 300)

@@ -43,6 +43,7 @@ def _ways(request: HttpRequest) -> list[Way]:
     names = [("Lab", "lab"), ("Alarms", "alarms"), ("Experiments", "experiments")]
     role = role_of(person)
     names += [("Audit", "audit")] if role in {Role.OWNER, Role.MANAGER} else []
+    names += [("Health", "health")] if role is Role.MANAGER else []
     names += [("People", "people")] if role is Role.MANAGER else [("You", "you")]
     return [Way(name, reverse(view), _is_under(request.path, reverse(view))) for name, view in names]
 

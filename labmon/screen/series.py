@@ -9,11 +9,13 @@ from django.utils import timezone
 from django.views.decorators.http import require_safe
 
 from ingest.models import Tap, TapKind
+from ingest.store.days.faults import known_holes
 from labmon.alarms.queries import alarm_spans
 from labmon.api.span import Span, parse_span
 from labmon.benches.air import air_tap
 from labmon.experiments.queries import LimitFacts, VersionRow, limits_of_tap
 from labmon.screen.door import for_people
+from labmon.screen.holes import holes_sentence
 from labmon.screen.named import visible_tap
 from labmon.screen.present import time_text
 from labmon.screen.quantity import converted_level, quantities_of
@@ -60,7 +62,7 @@ def history_body(tap: Tap, quantity: str, span: Span, points: int, now: datetime
         "series": series,
         "temperature": _temperature_body(tap, span, points),
         "span_ms": [span.from_us / 1e3, span.until_us / 1e3],
-        "sentence": history_sentence(shown, gaps),
+        "sentence": history_sentence(shown, gaps) + holes_sentence(known_holes(tap.pk, span.from_us, span.until_us)),
         "now_ms": int(now.timestamp() * 1e3),
     }
 

@@ -8,11 +8,12 @@ from django.http import HttpRequest, HttpResponse, HttpResponseBadRequest, JsonR
 from django.views.decorators.http import require_safe
 
 from analysis.record.calibrations import version_at
-from analysis.record.reduce_span import reduced_samples
+from analysis.record.reduce_span import find_samples
 from analysis.reduce.sample import Reduced
 from ingest.models import Tap
 from labmon.api.span import Span, parse_span
 from labmon.screen.door import for_people
+from labmon.screen.holes import holes_sentence
 from labmon.screen.named import visible_tap
 from labmon.screen.present import angle_text, time_text
 from labmon.screen.scaled import whole_numbers
@@ -49,7 +50,7 @@ def shortened(span: Span) -> Span:
 
 def trail_body(tap: Tap, span: Span) -> dict[str, Any]:
     """Trail, wanted state, tolerance, and the sentence that says the same without a picture."""
-    reduced = reduced_samples(tap, span.from_us, span.until_us)
+    reduced, holes = find_samples(tap, span.from_us, span.until_us)
     at_us, sop = thinned(reduced)
     calibration = version_at(tap.pk, span.until_at)
     wanted = list(calibration.wanted_state) if calibration and calibration.wanted_state else None
@@ -62,7 +63,7 @@ def trail_body(tap: Tap, span: Span) -> dict[str, Any]:
         "has_wanted": wanted is not None,
         "tolerance_deg": tolerance_deg,
         "span_ms": [span.from_us / 1e3, span.until_us / 1e3],
-        "sentence": trail_sentence(reduced, tolerance_deg),
+        "sentence": trail_sentence(reduced, tolerance_deg) + holes_sentence(holes),
     }
 
 

@@ -9,13 +9,18 @@ import numpy as np
 import pyarrow as pa
 import pytest
 from asgiref.sync import sync_to_async
-from django.db import connections
+from django.db import connections, transaction
 from django.test import AsyncClient, Client
 from django.utils import timezone
 
-from ingest.store.read import read_readings
+from ingest.models import Block, DayFile
+from ingest.store.days.forget import forget_day
+from ingest.store.days.seal import days_due, seal_day
+from ingest.store.days.storage import days_storage
+from ingest.store.read import find_readings
 from labmon.api import chunks
 from labmon.api import readings as api_readings
+from labmon.api.problem import Problem
 from labmon.people.keys import make_person_key
 from tests.factories import NOON_US
 from tests.labmon.api.conftest import SECOND_US, write
@@ -86,7 +91,8 @@ def test_no_piece_holds_more_than_allowed_however_long_the_span(lab, monkeypatch
               port2=np.full(100, 1e-5))
     monkeypatch.setattr(chunks, "READINGS_A_CHUNK", 250)
     sizes = []
-    monkeypatch.setattr(api_readings, "read_readings", lambda *asked: sizes.append(len(found := read_readings(*asked))) or found)
+    monkeypatch.setattr(api_readings, "find_readings",
+                        lambda *asked: sizes.append(len((found := find_readings(*asked)).readings)) or found)
     assert len(rows(lab.manager, span="2001-01-01T00:00:00Z/P100Y")) == sum(sizes) == 1000
     assert max(sizes) <= 250 and len(sizes) == 5
 
@@ -125,3 +131,39 @@ def test_under_asgi_the_same_bytes_come_out(read_lab):
         return whole
 
     assert asyncio.run(fetched()) == by_wsgi
+
+
+@pytest.fixture
+def sealed_day(read_lab):
+    """The lab's readings in a day file."""
+    for tap_id, day_us in days_due(NOON_US + 10 * 86_400 * SECOND_US, 100):
+        seal_day(tap_id, day_us)
+    return read_lab
+
+
+def test_readings_of_a_day_file_look_as_before(read_lab, monkeypatch):
+    before = rows(read_lab.guest)
+    for tap_id, day_us in days_due(NOON_US + 10 * 86_400 * SECOND_US, 100):
+        seal_day(tap_id, day_us)
+    assert not Block.objects.exists() and rows(read_lab.guest) == before
+    monkeypatch.setattr(chunks, "READINGS_A_CHUNK", 7)
+    assert rows(read_lab.guest) == before
+
+
+def test_days_no_longer_kept_are_named(sealed_day):
+    day_us = NOON_US // (86_400 * SECOND_US) * 86_400 * SECOND_US
+    with transaction.atomic():
+        forget_day(sealed_day.tap.pk, day_us, "raw of the lab kept at least 30 days, set by maren")
+    answer = sealed_day.guest.get(f"{IN}/readings", span=SPAN)
+    said = json.loads(b"".join(answer.streaming_content))
+    assert said["readings"] == [] and said["not_kept"] == [["2031-03-04T00:00:00.000000Z", "2031-03-05T00:00:00.000000Z"]]
+    assert answer.headers["Labmon-Not-Kept"] == "2031-03-04T00:00:00.000000Z/2031-03-05T00:00:00.000000Z"
+
+
+def test_an_unreadable_day_is_refused_at_once_when_it_is_known_and_breaks_off_when_it_is_not(sealed_day):
+    file = DayFile.objects.get(tap=sealed_day.tap)
+    days_storage().delete(file.name)
+    with pytest.raises(Problem, match="cannot be read"):
+        list(sealed_day.guest.get(f"{IN}/readings", span=SPAN).streaming_content)
+    answer = sealed_day.guest.get(f"{IN}/readings", span=SPAN)
+    assert answer.status_code == 409 and file.name in answer.json()["detail"] and len(answer.json()["unreadable"]) == 1

@@ -41,6 +41,8 @@ TABLE = {
     Action.ADD_STATION: (NO, NO, NO, YES),
     Action.ADD_TAP: (NO, NO, OWN, YES),
     Action.SET_FLOOR: (NO, NO, NO, YES),
+    Action.SET_KEEPING: (NO, NO, NO, YES),
+    Action.SEE_HEALTH: (NO, NO, NO, YES),
     Action.MANAGE_PEOPLE: (NO, NO, NO, YES),
 }
 ROLES = (Role.GUEST, Role.RESEARCHER, Role.OWNER, Role.MANAGER)

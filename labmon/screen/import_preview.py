@@ -70,7 +70,7 @@ def preview_of(raw: BinaryIO, mapping: Mapping, tap: Tap) -> Preview:
     if part is None:
         return Preview("There is no row below the line of names.", [], [], [], [])
     names = list(part.columns)
-    reduced = _reduced(part, tap)
+    reduced = reduced_part(part, tap)
     quantities, texts = _reduced_texts(reduced, tap)
     rows = [PreviewRow(int(part.line[index]), _taken_text(int(part.at_us[index])),
                        [_raw_text(part.columns[name][index]) for name in names], texts[index]) for index in range(len(part))]
@@ -84,7 +84,7 @@ def _sentence(part: FileRows) -> str:
     return f"{said}; {len(part.refused)} would be set aside."
 
 
-def _reduced(part: FileRows, tap: Tap) -> Reduced:
+def reduced_part(part: FileRows, tap: Tap) -> Reduced:
     """The rows through the same reduction as stored readings, with the tap's calibrations."""
     count = len(part)
     readings = Readings(at_us=part.at_us, columns=part.columns, boot_id=np.zeros(count, np.int64), sequence=np.arange(count),

@@ -19,6 +19,7 @@ from labmon.pipeline.imports import begin_import, keep_upload, place_of
 from labmon.screen.door import for_people
 from labmon.screen.import_forms import ColumnsForm, FileForm, LayoutForm
 from labmon.screen.import_preview import header_of, preview_of
+from labmon.screen.import_summary import summary_of
 from labmon.screen.import_view import first_lines, import_view, rules_shown
 from labmon.screen.named import visible_station, visible_tap
 
@@ -76,7 +77,8 @@ def _name_columns(request: HttpRequest, station: Station, record: FileImport, ra
                              "proposal": proposal, "lines": first_lines(proposal.first_lines)}
     if mapping is not None:
         try:
-            shown |= {"preview": preview_of(raw, mapping, tap), "mapping_text": toml_of(mapping)}
+            shown |= {"preview": preview_of(raw, mapping, tap), "mapping_text": toml_of(mapping),
+                      "summary": summary_of(raw, mapping, tap) if request.POST.get("act") != "read" else ""}
         except MappingError as error:
             _put_faults(columns, error)
         else:

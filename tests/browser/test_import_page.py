@@ -44,6 +44,9 @@ def test_a_file_is_proposed_looked_at_and_read_in_once(signed_in, lab):
     first = page.locator("[aria-label='What the first rows become'] tbody tr").first.inner_text()
     assert "2025-03-04 11:00:00" in first
     assert "30.0" in first
+    said = page.inner_text("main").replace("\xa0", " ")
+    assert "The whole file: 40 readings from 2025-03-04 11:00:00 to 2025-03-04 11:00:39 UTC" in said
+    assert "extinction ratio 30.0 dB, 30.0 dB over all (mean of leak)" in said
     assert "Of the first 20 rows, 20 can be read." in page.inner_text("h1")
     page.click("button[value=read] >> nth=0")
     page.wait_for_selector("text=40 rows: 40 stored, 0 known, 0 set aside.")

@@ -57,6 +57,7 @@ def addresses(lab) -> list[str]:
         "/join/",
         "/stations/n2/joining/",
         "/stations/n2/taps/eom-in/zero/",
+        "/stations/n2/taps/eom-in/gain/",
         f"/stations/n2/taps/eom-in/zero/?from={now_text()}&seconds=30",
         "/people/",
         "/audit/",

@@ -8,6 +8,7 @@ for hours: whoever saw the older row can still open it.) That each identity is s
 What cannot be read is a hole with its reason: ``find_spans`` gives holes beside the readings, ``read_spans`` refuses them.
 """
 
+import logging
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from enum import StrEnum
@@ -22,6 +23,8 @@ from ingest.store.codec import Batch, unpack_batch, unpack_block
 from ingest.store.columns import FloatArray, ObjectArray, Readings, concatenate, no_readings
 from ingest.store.days.open import DayEntry, OpenDay, read_day
 from ingest.times import rfc3339_of
+
+log = logging.getLogger(__name__)
 
 LONGEST_SLOT_US = 86_400_000_000
 _TIME_LIMIT_US = 1 << 62
@@ -135,13 +138,14 @@ def find_many(spans: Mapping[int, tuple[int, int]], *, columns: Sequence[str] | 
 def newest_readings(tap_ids: Iterable[int], *, count: int = 1) -> dict[int, Readings]:
     """The ``count`` newest readings by data time of each tap (fewer where there are fewer); one query.
 
-    Raises:
-        DamagedStore: Some of them cannot be read.
+    Those that cannot be read are left out and logged: these are readings to look at, not to reckon with.
     """
     taps = list(tap_ids)
     rows = fetch(shared(), _NEWEST, taps, count, count, taps, count, taps, count, count)
     found = _assemble(rows, taps, None, last=count)
-    return {tap: _without_holes(tap, one).pick(slice(-count, None)) for tap, one in zip(taps, found, strict=True)}
+    for hole in (hole for one in found for hole in one.unreadable):
+        log.error("readings_unreadable", extra={"why": hole.why, "from_us": hole.from_us, "until_us": hole.until_us})
+    return {tap: one.readings.pick(slice(-count, None)) for tap, one in zip(taps, found, strict=True)}
 
 
 def read_spans(db: psycopg.Connection[Any], spans: Sequence[tuple[int, int, int]],
@@ -186,12 +190,19 @@ def _assemble(rows: list[tuple[Any, ...]], taps: Sequence[int], columns: Sequenc
             continue
         blocks, inbox, days, forgotten = (sorted(own, key=lambda row: row[1]) for own in by_place[place])
         holes = [Hole(row[1], row[7], HoleKind.NOT_KEPT, row[8]) for row in forgotten]
-        parts = [_opened_day(tap, row, wanted, spans[place] if spans else None, last, holes) for row in days]
-        parts += [_opened_block(tap, row, wanted, holes) for row in blocks]
+        parts = [_opened_block(tap, row, wanted, holes) for row in blocks]
         if inbox:
             parts.append(_opened_inbox(tap, inbox, wanted, holes))
+        for row in days if spans else reversed(days):
+            if spans or not _are_newer(parts, row[7], last):
+                parts.insert(0, _opened_day(tap, row, wanted, spans[place] if spans else None, last, holes))
         made.append(Found(concatenate(parts).sorted() if any(map(len, parts)) else no_readings(columns), tuple(holes)))
     return made
+
+
+def _are_newer(parts: list[Readings], at_us: int, count: int) -> bool:
+    """True if there are ``count`` readings later than a moment already: an older file need not be opened."""
+    return sum(int((part.at_us > at_us).sum()) for part in parts) >= count
 
 
 def _opened_day(tap: int, row: tuple[Any, ...], wanted: frozenset[str] | None, span: tuple[int, int] | None, last: int,

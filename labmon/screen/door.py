@@ -11,8 +11,10 @@ from django.forms import Form
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, resolve_url
 
+from ingest.store.read import DamagedStore
 from labmon.errors import NotAllowed, WriteError
 from labmon.people.rights import has_access
+from labmon.screen.faults import unreadable
 
 Page = Callable[..., HttpResponse]
 
@@ -26,7 +28,10 @@ def for_people(page: Page) -> Page:
             return redirect(f"{resolve_url(settings.LOGIN_URL)}?next={quote(request.get_full_path())}")
         if not has_access(request.user):
             raise NotAllowed("Your access is over. Ask a lab manager to prolong it.")
-        return page(request, *args, **kwargs)
+        try:
+            return page(request, *args, **kwargs)
+        except DamagedStore as error:
+            return unreadable(request, str(error))
 
     return guarded
 

@@ -26,6 +26,12 @@ def no_token(request: HttpRequest, reason: str = "") -> HttpResponse:
     return render(request, "screen/fault.html", {"sentence": "The form could not be accepted.", "detail": detail}, status=403)
 
 
+def unreadable(request: HttpRequest, why: str) -> HttpResponse:
+    """409: the page is about readings of which some cannot be read."""
+    return render(request, "screen/fault.html", {"sentence": "Stored readings that this page needs cannot be read.",
+                                                 "detail": f"{why} A lab manager finds it on the health page."}, status=409)
+
+
 def broken(request: HttpRequest) -> HttpResponse:
     """500: rendered without the database, which may be what broke."""
     return HttpResponseServerError(get_template("screen/broken.html").render({}))

@@ -134,6 +134,9 @@ def test_a_read_asks_one_question_and_opens_only_the_files_it_needs(past_day, mo
     assert (len(asked), len(opened)) == (2, 5)
     assert newest_readings([tap], count=7)[tap].sequence.tolist() == [200_003, 200_004, *range(300_000, 300_005)]
     assert (len(asked), len(opened)) == (3, 7)
+    past_day.send(two_port(500_000, 7, start_us=DAY_US))
+    assert newest_readings([tap], count=7)[tap].sequence.tolist() == list(range(500_000, 500_007))
+    assert (len(asked), len(opened)) == (4, 7), "what is newer than a file is enough"
 
 
 def break_at(monkeypatch, step, is_after):

@@ -66,7 +66,8 @@ def main() -> None:
         add_benches(20, 200, manager)
         catch_up()
         many_s, many_queries, many_bytes = timed_page(client)
-        row("lab page with 200 stations, server time", f"{many_s * 1e3:.0f} ms ({few_s * 1e3:.0f} ms with 20; {many_bytes / 1e3:.0f} kB)", "≤ 150 ms")
+        row("lab page with 200 stations, server time",
+            f"{many_s * 1e3:.0f} ms ({few_s * 1e3:.0f} ms with 20; {many_bytes / 1e3:.0f} kB)", "≤ 150 ms")
         row("lab page: queries with 20 / with 200 stations", f"{few_queries} / {many_queries}", "equal")
 
 

@@ -63,7 +63,8 @@ def main() -> None:
 
         def by_rows() -> None:
             with connection.cursor() as cursor:
-                cursor.execute(f"SELECT at_us, sequence, {names} FROM keyed WHERE tap = 1 AND at_us >= %s ORDER BY at_us", [START_US - 10**6])
+                cursor.execute(f"SELECT at_us, sequence, {names} FROM keyed WHERE tap = 1 AND at_us >= %s ORDER BY at_us",
+                               [START_US - 10**6])
                 assert len(np.array(cursor.fetchall())) == READINGS
 
         blocks, arrow, rows = ([best_of(1, action) for _ in range(ROUNDS)] for action in (by_blocks, by_pyarrow, by_rows))

@@ -27,7 +27,9 @@ def make_stations() -> list[tuple[str, list[str]]]:
             for number in range(STATIONS)]
 
 
-def lanes_of(stations: list[tuple[str, list[str]]], each: int, batches: int, first: int, *, as_msgpack: bool) -> list[list[Batch]]:
+def lanes_of(
+    stations: list[tuple[str, list[str]]], each: int, batches: int, first: int, *, as_msgpack: bool
+) -> list[list[Batch]]:
     """Per station, ``batches`` requests numbered from ``first``."""
     start_us = (time.time_ns() // 1000) - 3600 * 10**6
     return [[make_batch(key, taps, each, first + number, start_us, 100, as_msgpack=as_msgpack) for number in range(batches)]
@@ -46,7 +48,8 @@ def reference_rate() -> float:
     random = np.random.default_rng(7)
     with psycopg.connect(**conninfo_of(settings.DATABASES["default"])) as db:
         db.execute("DROP TABLE IF EXISTS keyed")
-        db.execute(f"CREATE TABLE keyed (tap int, boot int, sequence bigint, at_us bigint, {columns}, PRIMARY KEY (tap, boot, sequence))")
+        db.execute(f"CREATE TABLE keyed (tap int, boot int, sequence bigint, at_us bigint, {columns}, "
+                   "PRIMARY KEY (tap, boot, sequence))")
         db.execute(f"CREATE TEMP TABLE fresh (tap int, boot int, sequence bigint, at_us bigint, {columns})")
         db.commit()
         seconds = []
@@ -88,13 +91,15 @@ def main() -> None:
                 as_msgpack.append(run.readings / run.duration_s)
                 first += 2000
             row("reception over HTTP, JSON, 100 readings a request / COPY + on-conflict",
-                f"{median(as_json) / median(reference):.2f} x ({median(as_json):,.0f} / {median(reference):,.0f} readings/s)", "≥ 0.5 x")
+                f"{median(as_json) / median(reference):.2f} x ({median(as_json):,.0f} / {median(reference):,.0f} readings/s)",
+                "≥ 0.5 x")
             row("reception over HTTP, MessagePack, 1,000 a request / the same",
                 f"{median(as_msgpack) / median(reference):.2f} x ({median(as_msgpack):,.0f} readings/s)", "≥ 1.5 x")
             lanes = lanes_of(stations, 10, 500, 10_000, as_msgpack=False)
             run = checked(asyncio.run(send_all(port, lanes, every_s=STATIONS * 100 / 50_000)))
             row("acknowledgement at 50,000 readings/s (JSON, 100 a request): p50 / p99",
-                f"{run.percentile_ms(0.5):.0f} / {run.percentile_ms(0.99):.0f} ms at {run.readings / run.duration_s:,.0f} readings/s", "p99 ≤ 250 ms")
+                f"{run.percentile_ms(0.5):.0f} / {run.percentile_ms(0.99):.0f} ms at {run.readings / run.duration_s:,.0f} readings/s",
+                "p99 ≤ 250 ms")
 
 
 if __name__ == "__main__":

@@ -10,7 +10,7 @@ import pytest
 from tests.docker.files import FOLDER, PROJECT, compose, dockerfile
 
 KNOWN_KEYS = {"image", "build", "command", "environment", "env_file", "restart", "read_only", "tmpfs", "volumes", "cap_drop",
-              "security_opt", "depends_on", "healthcheck", "ports", "stop_grace_period", "shm_size", "profiles"}  # compose's words
+              "security_opt", "depends_on", "healthcheck", "ports", "stop_grace_period", "shm_size", "profiles"}
 PINNED = re.compile(r"[\w./-]+:\d+(\.\d+)*[\w.-]*")
 
 

@@ -74,7 +74,8 @@ def _theil_sen() -> float:
 
 def _arl(h: float, shift: float, published: float, tolerance: float) -> Case:
     return Case(
-        name=f"cusum-arl-h{h:g}-d{shift:g}", quantity=f"two-sided CUSUM, k 0.5, h {h:g}: run length at {shift:g} σ", unit="readings",
+        name=f"cusum-arl-h{h:g}-d{shift:g}", unit="readings",
+        quantity=f"two-sided CUSUM, k 0.5, h {h:g}: run length at {shift:g} σ",
         published=published, tolerance=tolerance, formula="F-84", source=MONTGOMERY, origin=Origin.MEMORY,
         compute=lambda: two_sided_cusum_run_length(0.5, h, shift),
     )
@@ -110,7 +111,8 @@ CASES = [
           lambda: single_change(_nile()).before),
     _case("nile-after", "Nile: mean after", 849.9722222, "1e8 m³", 1e-6, "F-87", COBB, Origin.LIBRARY,
           lambda: single_change(_nile()).after),
-    _case("nile-segments", "Nile: only change by penalised least squares (ruptures Pelt)", 28, "", 0.0, "F-88", COBB, Origin.LIBRARY,
+    _case("nile-segments", "Nile: only change by penalised least squares (ruptures Pelt)", 28, "", 0.0, "F-88", COBB,
+          Origin.LIBRARY,
           lambda: float(segments(_nile())[0])),
     _case("nile-pettitt", "Nile: Pettitt's K", 1617, "", 0.0, "F-89", "A. N. Pettitt, Appl. Stat. 28, 126 (1979), definition",
           Origin.MEMORY, lambda: pettitt(_nile()).statistic),
@@ -129,11 +131,13 @@ CASES = [
           lambda: correlation_effective_size(400, 0.8 ** np.arange(300), 0.6 ** np.arange(300))),
     _case("lomb", "Lomb–Scargle power at 0.11 Hz of 60 uneven readings", _astropy_power(), "", 1e-10, "F-78",
           "astropy LombScargle (fit_mean)", Origin.LIBRARY, lambda: float(power_at(*_uneven(), np.array([0.11]))[0])),
-    _case("fap-single", "chance of power 0.2 at one frequency, 60 readings", 0.0017300738, "", 1e-9, "F-79", BALUEV, Origin.LIBRARY,
+    _case("fap-single", "chance of power 0.2 at one frequency, 60 readings", 0.0017300738, "", 1e-9, "F-79", BALUEV,
+          Origin.LIBRARY,
           lambda: float(single_chance(np.array(0.2), 60))),
     _case("fap-baluev", "chance of a peak of 0.4 up to 0.5 Hz", 6.4365211e-05, "", 1e-11, "F-79", BALUEV, Origin.MEMORY,
           lambda: float(false_alarm_chance(np.array(0.4), _uneven()[0], 0.5))),
-    _case("hum", "period of 100 Hz ripple of 49.98 Hz mains sampled at 1 Hz", 25.0, "s", 1e-9, "F-81", "sampling theorem", Origin.MEMORY,
+    _case("hum", "period of 100 Hz ripple of 49.98 Hz mains sampled at 1 Hz", 25.0, "s", 1e-9, "F-81", "sampling theorem",
+          Origin.MEMORY,
           lambda: 1.0 / alias_hz(99.96, 1.0)),
     _case("circle-20", "worst ER of a circle of radius 11.421°", 20.0, "dB", 1e-7, "F-77", "law of Malus", Origin.MEMORY,
           lambda: worst_er_of_circle_db(math.radians(11.4211862749), 0.0)),

@@ -98,7 +98,8 @@ def main() -> None:
             lanes = lanes_of(stations, 10, 500, 10_000, as_msgpack=False)
             run = checked(asyncio.run(send_all(port, lanes, every_s=STATIONS * 100 / 50_000)))
             row("acknowledgement at 50,000 readings/s (JSON, 100 a request): p50 / p99",
-                f"{run.percentile_ms(0.5):.0f} / {run.percentile_ms(0.99):.0f} ms at {run.readings / run.duration_s:,.0f} readings/s",
+                f"{run.percentile_ms(0.5):.0f} / {run.percentile_ms(0.99):.0f} ms "
+                f"at {run.readings / run.duration_s:,.0f} readings/s",
                 "p99 ≤ 250 ms")
 
 

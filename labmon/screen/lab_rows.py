@@ -58,7 +58,7 @@ class LabRow:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
-class LabView:
+class LabPage:
     """Everything the lab page shows."""
 
     sentence: str
@@ -66,17 +66,17 @@ class LabView:
     rails: SafeString
 
 
-def lab_view(benches: Sequence[BenchRow], now: datetime) -> LabView:
+def lab_view(benches: Sequence[BenchRow], now: datetime) -> LabPage:
     """The page of ``benches``, which come worst first, then by margin."""
     rows = [_row(bench, now) for bench in benches]
     sentence = lab_sentence(
         [row.standing for row in rows], thinnest=_thinnest(rows), unacknowledged=sum(bench.unacknowledged for bench in benches)
     )
     by_station = {bench.station: bench.room or ELSEWHERE for bench in benches}
-    return LabView(sentence=sentence, rows=rows, rails=_rails(rows, by_station))
+    return LabPage(sentence=sentence, rows=rows, rails=_rails(rows, by_station))
 
 
-def as_json(view: LabView, *, with_course: bool) -> dict[str, Any]:
+def as_json(view: LabPage, *, with_course: bool) -> dict[str, Any]:
     """What lab.js patches into the page."""
     return {
         "sentence": view.sentence,
@@ -86,7 +86,7 @@ def as_json(view: LabView, *, with_course: bool) -> dict[str, Any]:
     }
 
 
-def title_of(view: LabView) -> str:
+def title_of(view: LabPage) -> str:
     """The sentence is the tab's title too."""
     return f"{view.sentence} labmon"
 

@@ -15,7 +15,7 @@ SYSTEMS = ("systemd", "windows", "launchd")
 
 def service_command(settings: Path) -> list[str]:
     """What the system is to start: this Python with this client, be it a package or one copied file."""
-    itself = Path(sys.modules["__main__"].__file__ or sys.argv[0]).absolute()
+    itself = Path(getattr(sys.modules["__main__"], "__file__", None) or sys.argv[0]).absolute()
     client = [str(itself)] if itself.name != "__main__.py" else ["-m", "labmon_bench"]
     return [sys.executable, *client, "run", str(settings.absolute())]
 

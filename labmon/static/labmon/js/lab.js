@@ -1,6 +1,6 @@
 // The lab page: rows and rails are patched from /lab.json, so that 200 benches cost little.
 
-import { noteTruth, onChange, serverNowMs, showAges } from './live.js';
+import { noteTruth, onChange, onStandStill, serverNowMs, showAges } from './live.js';
 
 const SVG = 'http://www.w3.org/2000/svg';
 const waiting = document.getElementById('waiting');
@@ -101,6 +101,12 @@ async function refresh() {
     if (isWanted) refresh();
   }, SHORTEST_GAP_MS);
 }
+
+if (body) onStandStill(() => {
+  const wasWanted = isWanted;
+  isWanted = false;
+  return wasWanted;
+});
 
 if (body) onChange((changed) => {
   const isUrgent = 'alarm' in changed || 'all' in changed;

@@ -8,6 +8,7 @@ const ASK_EVERY_MS = 10_000;
 const LONGEST_WAIT_MS = 30_000;
 
 const listeners = new Set();
+const wantDroppers = [];
 const clock = { skewMs: Number(document.documentElement.dataset.serverNow || Date.now()) - Date.now() };
 let socket = null;
 let lastHeardMs = Date.now();
@@ -32,9 +33,9 @@ export function noteTruth() {
   lastTruthMs = Date.now();
 }
 
-/** True while a person keeps the page still. */
-export function standsStill() {
-  return isStill;
+/** `dropWant` is called when a person stands the page still: it forgets a refresh that waits, and says whether there was one. */
+export function onStandStill(dropWant) {
+  wantDroppers.push(dropWant);
 }
 
 function tell(changed) {
@@ -119,7 +120,7 @@ function offerStandStill() {
     button.setAttribute('aria-pressed', String(isStill));
     button.textContent = isStill ? 'Move again' : 'Stand still';
     if (!isStill && missedWhileStill) tell({ all: [] });
-    missedWhileStill = false;
+    missedWhileStill = isStill && wantDroppers.map((dropWant) => dropWant()).includes(true);
     showPulse();
   });
 }

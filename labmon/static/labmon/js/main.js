@@ -1,7 +1,7 @@
 // Every page: connection, age clock, and the live parts the page names. A part is fetched anew with the page and put in
 // place; one in which a person is writing is left alone.
 
-import { noteTruth, onChange, showAges, start } from './live.js';
+import { noteTruth, onChange, onStandStill, showAges, start } from './live.js';
 
 const SHORTEST_GAP_MS = 1000;
 let isRunning = false;
@@ -46,6 +46,12 @@ async function refresh() {
     if (isWanted) refresh();
   }, SHORTEST_GAP_MS);
 }
+
+onStandStill(() => {
+  const wasWanted = isWanted;
+  isWanted = false;
+  return wasWanted;
+});
 
 /** Refreshes on changes of the given kinds; `ids` limits a kind to ids the page shows. */
 function refreshOn(kinds, ids = {}) {

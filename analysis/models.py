@@ -98,3 +98,24 @@ class RollupDue(models.Model):
     level_s = models.IntegerField(default=10)
     first_at_us = models.BigIntegerField()
     last_at_us = models.BigIntegerField()
+
+
+class DayStatistics(models.Model):
+    """Statistics of one closed UTC day of a tap (analysis.record.statistics), so that months are read without raw readings."""
+
+    pk = models.CompositePrimaryKey("tap_id", "day_us")
+    tap = models.ForeignKey("ingest.Tap", models.CASCADE, db_index=False)
+    day_us = models.BigIntegerField()
+    made_at = models.DateTimeField(auto_now=True)
+    readings = models.IntegerField()
+    facts = models.JSONField()
+
+
+class DayStatisticsDue(models.Model):
+    """A closed day of a tap whose statistics must be made (anew); marks are only added, whoever works on them takes them off."""
+
+    tap = models.ForeignKey("ingest.Tap", models.CASCADE)
+    day_us = models.BigIntegerField()
+
+    class Meta:
+        indexes = [models.Index(fields=["day_us", "tap"], name="day_statistics_due")]

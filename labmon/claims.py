@@ -8,7 +8,7 @@ from collections.abc import Iterable
 from django.db import connection
 
 #: First key of the two-key locks; the second is the tap's id (folded into 32 bits).
-JUDGING, ROLLING, BEAT = 0x6C61, 0x6C62, 0x6C63
+JUDGING, ROLLING, BEAT, STATISTICS = 0x6C61, 0x6C62, 0x6C63, 0x6C64
 
 
 def claim_taps(kind: int, tap_ids: Iterable[int], most: int) -> list[int]:

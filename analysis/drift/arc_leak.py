@@ -53,8 +53,8 @@ def fit_leak_arc(at_us: IntArray, leak: FloatArray, temperature_k: FloatArray) -
         leak: Unwanted over wanted port, linear, shape (N,); noise may carry it below 0. At floor give the net as read.
         temperature_k: Temperature of the fibre, K or °C, shape (N,); shift it first where the fibre lags.
     Returns:
-        The arc; NaN readings are left out. Below 30 readings, at a constant temperature, or where a swing is not shown (1 %
-        level, all κ tried), the verdict is ``NO_ARC`` and the figures are NaN. κ is sought for half arcs of 0.1 to 20 rad.
+        The arc; NaN readings are left out. Below 30 readings, at a constant temperature or leak, or where a swing is not shown
+        (1 % level, all κ tried), the verdict is ``NO_ARC`` and the figures are NaN. κ is sought for half arcs of 0.1 to 20 rad.
         Too short, too, where the band of κ reaches below ±0.45 rad or the temperature's noise passes 1/20 of half its range.
         Noise of the temperature (from fourth differences in time) is allowed for by effective variances. The band is a
         profile likelihood over κ, widened by autocorrelation and by that noise; its ends are -inf and inf where the data do
@@ -76,7 +76,7 @@ def fit_leak_arc(at_us: IntArray, leak: FloatArray, temperature_k: FloatArray) -
     edge = len(fraction) // 100
     ordered = np.partition(temperature_k, (edge, -1 - edge))
     low_k, high_k = ordered[edge], ordered[-1 - edge]
-    if not high_k > low_k:
+    if not (high_k > low_k and np.ptp(fraction) > 0.0):
         return _no_arc(len(fraction))
     half_k = 0.5 * (high_k - low_k)
     place = (temperature_k - 0.5 * (high_k + low_k)) / half_k

@@ -102,31 +102,34 @@ def night_statistics(reduced: Reduced, interval_s: float | None = None) -> Night
     interval_s = typical_interval_s(reduced.at_us) if interval_s is None else interval_s
     if not interval_s > 0.0:
         raise ValueError(f"interval_s={interval_s!r} must be above 0; name it where there are fewer than two readings.")
-    sop = _usable_sop(reduced)
-    angle_rad = _usable(reduced, Quantity.ANGLE_DEG, reduced.angle_rad)
+    sop = usable_sop(reduced)
+    angle_rad = usable_values(reduced, Quantity.ANGLE_DEG, reduced.angle_rad)
     motion = _angle_motion(reduced, angle_rad, interval_s) if sop is None else _sop_motion(reduced, sop, interval_s)
     sums = None if sop is None else direction_sums(sop)
     return NightStatistics(
         start_us=int(reduced.at_us[0]) if len(reduced) else 0, end_us=int(reduced.at_us[-1]) if len(reduced) else 0,
-        readings=len(reduced), interval_s=interval_s, er=_er(reduced), leak=summary_of(_leak(reduced)),
-        angle=summary_of(angle_rad), power=summary_of(_usable(reduced, Quantity.POWER_W, reduced.power_w)),
+        readings=len(reduced), interval_s=interval_s, er=_er(reduced), leak=summary_of(usable_leak(reduced)),
+        angle=summary_of(angle_rad), power=summary_of(usable_values(reduced, Quantity.POWER_W, reduced.power_w)),
         direction=None if sums is None else mean_direction(sums), spread=None if sums is None else spread(sums),
         **motion,
     )  # fmt: skip
 
 
-def _usable(reduced: Reduced, quantity: Quantity, values: FloatArray) -> FloatArray:
+def usable_values(reduced: Reduced, quantity: Quantity, values: FloatArray) -> FloatArray:
+    """The values, shape (N,), NaN where untrusted."""
     return np.where(is_usable(reduced.trust[quantity], values), values, np.nan)
 
 
-def _usable_sop(reduced: Reduced) -> FloatArray | None:
+def usable_sop(reduced: Reduced) -> FloatArray | None:
+    """Unit Stokes vectors, shape (N, 3), NaN where untrusted; None where the tap gives none."""
     if reduced.sop is None:
         return None
     usable = usable_directions(reduced)
     return reduced.sop if usable.all() else np.where(usable[:, None], reduced.sop, np.nan)
 
 
-def _leak(reduced: Reduced) -> FloatArray:
+def usable_leak(reduced: Reduced) -> FloatArray:
+    """Other over wanted port, signed, shape (N,), NaN where the ER is untrusted or the wanted port dark."""
     wanted = np.where(reduced.wanted_power > 0.0, reduced.wanted_power, np.nan)
     return np.where(is_usable(reduced.trust[Quantity.ER_DB], reduced.er_db), reduced.other_power / wanted, np.nan)
 
@@ -136,7 +139,7 @@ def _er(reduced: Reduced) -> ErStatistics:
     found, shares = reduced.er_db[usable], np.array(ER_SHARES)
     quantiles = np.quantile(found, shares, method="inverted_cdf") if len(found) else np.full(len(shares), np.nan)
     wanted, other = (float(np.nansum(power[usable])) for power in (reduced.wanted_power, reduced.other_power))
-    leak = _leak(reduced)
+    leak = usable_leak(reduced)
     some = np.isfinite(leak)
     return ErStatistics(
         count=len(found), lower_bounds=int(np.sum(usable & reduced.is_lower_bound)),

@@ -7,6 +7,7 @@ from django.http import HttpRequest, HttpResponse
 
 from labmon.api.answer import json_answer
 from labmon.api.schemas import ALARM_STATES, ID, MEASURED, NAME, NAMED, TIME, Schema, ref
+from labmon.api.statistics_shapes import STATISTICS
 
 Operation = dict[str, Any]
 
@@ -43,7 +44,7 @@ def answer(text: str, name: str) -> Schema:
 FAULT_TEXTS = {400: "Something sent cannot be used; field names it.", 401: "No usable key or session.",
                403: "The role does not allow it, or the CSRF token is missing.",
                404: "Not there, or not for this person.",
-               409: "Readings of the span cannot be read; see unreadable.", 413: "Too large.",
+               409: "Readings of the span cannot be read (see unreadable), or allow no figures.", 413: "Too large.",
                415: "Not announced as JSON.", 429: "Too fast; see Retry-After.",
                503: "Database away; see Retry-After."}
 
@@ -81,6 +82,10 @@ PATHS: dict[str, dict[str, Operation]] = {
                              "At most so many buckets."),
                     in_query("quantity", {"type": "string", "enum": list(MEASURED), "default": "er_db"},
                              "What to draw.")))},
+    f"{BASE}/taps/{{station}}/{{tap}}/statistics": {"get": call(
+        "Leak, angle, Allan deviations, drift model, temperature response and thermal arc of at most 8 days.",
+        {200: answer("The figures, each with its uncertainty and count.", "Statistics")}, parameters=(*TAP, SPAN),
+        faults=(400, 401, 404, 409))},
     f"{BASE}/taps/{{station}}/{{tap}}/readings": {"get": call(
         "Raw and reduced samples, streamed. Columns named raw_… are as sent; the unit ends each name.",
         {200: {"description": "The samples, in order of time.",
@@ -141,7 +146,7 @@ def document() -> dict[str, Any]:
                  "Additions are free, changes are not: clients must accept members that they do not know."},
         "paths": PATHS,
         "components": {
-            "schemas": NAMED,
+            "schemas": NAMED | {"Statistics": STATISTICS},
             "securitySchemes": {
                 "personKey": {"type": "http", "scheme": "bearer", "description": "A person's key."},
                 "session": {"type": "apiKey", "in": "cookie", "name": "sessionid",

@@ -9,6 +9,7 @@ from labmon.api.experiments import get_experiments, get_limits, post_experiment,
 from labmon.api.openapi import get_openapi
 from labmon.api.readings import get_readings
 from labmon.api.stations import get_stations
+from labmon.api.statistics import get_statistics
 from labmon.api.taps import get_history, get_now, patch_calibration
 
 
@@ -45,6 +46,7 @@ urlpatterns = [
     path("stations", by_method(GET=get_stations), name="stations"),
     path(TAP + "now", by_method(GET=get_now), name="now"),
     path(TAP + "history", by_method(GET=get_history), name="history"),
+    path(TAP + "statistics", by_method(GET=get_statistics), name="statistics"),
     path(TAP + "readings", by_method(GET=get_readings), name="readings"),
     path(TAP + "calibration", by_method(PATCH=patch_calibration), name="calibration"),
     path("experiments", by_method(GET=get_experiments, POST=post_experiment), name="experiments"),

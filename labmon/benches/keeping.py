@@ -86,7 +86,7 @@ def _forget(tap: Tap, day_us: int, rule: KeepRule) -> bool:
     """One day, one transaction, one audit row."""
     day = at_of(day_us).strftime("%Y-%m-%d")
     if not _is_rolled_up(tap.pk, day_us):
-        log.warning("day_not_forgotten", extra={"tap_id": tap.pk, "day": day, "why": "its rollups are not made yet"})
+        log.warning("day_not_forgotten", extra={"tap_id": tap.pk, "day": day, "why": "rollups or statistics are not made yet"})
         return False
     forgotten = forget_day(tap.pk, day_us, rule_text(rule))
     note(None, "delete raw readings of a day", name_of(tap), {"day": day, "readings": forgotten.count, "bytes": forgotten.size},
@@ -96,7 +96,7 @@ def _forget(tap: Tap, day_us: int, rule: KeepRule) -> bool:
 
 
 def _is_rolled_up(tap_id: int, day_us: int) -> bool:
-    """Nothing of the day waits to be stored, judged or rolled up, and it has cells of 10 s."""
+    """Nothing of the day waits to be stored, judged, rolled up or told in statistics, and it has cells of 10 s."""
     with connection.cursor() as cursor:
         cursor.execute(
             """
@@ -105,6 +105,7 @@ def _is_rolled_up(tap_id: int, day_us: int) -> bool:
                                WHERE tap_id = %(tap)s AND first_at_us < %(end)s AND last_at_us >= %(day)s)
                AND NOT EXISTS (SELECT FROM analysis_rollupdue
                                WHERE tap_id = %(tap)s AND first_at_us < %(end)s AND last_at_us >= %(day)s)
+               AND NOT EXISTS (SELECT FROM analysis_daystatisticsdue WHERE tap_id = %(tap)s AND day_us = %(day)s)
                AND NOT EXISTS (SELECT FROM ingest_inboxrow
                                WHERE tap_id = %(tap)s AND first_at_us < %(end)s AND last_at_us >= %(day)s)""",
             {"tap": tap_id, "day": day_us, "end": day_us + DAY_US},

@@ -12,6 +12,7 @@ from ingest.models import Tap
 from ingest.times import SECOND_US
 from ingest.times import now_us as server_now_us
 from labmon.claims import ROLLING, claim_taps
+from labmon.pipeline.nightly import mark_days
 
 CHUNK_TAPS: Final = 256
 FINE_S: Final = 10
@@ -69,6 +70,7 @@ def _fine_chunk(now_us: int) -> int:
         for span in pieces.values()
         if not is_closed(span.first_us // DAY_US * DAY_US, now_us)
     ]
+    mark_days([(due.tap, pieces[due.tap.pk].first_us // DAY_US * DAY_US) for due in chosen], now_us)
     _replace([one for due in chosen for one in due.ids], rests + hours)
     return len(chosen)
 

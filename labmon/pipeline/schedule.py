@@ -27,6 +27,7 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
         "schedule": crontab(hour="2", minute="40"),
         "options": {"expires": 6 * 3600},
     },
+    "statistics of closed days": _every("day_statistics", 300.0, expires=300.0),
     "take up left imports": _every("take_up_left_imports", 300.0),
     "compact closed days": {
         "task": "labmon.pipeline.compact",

@@ -8,6 +8,7 @@ from ingest.store.days.left import sweep_left_files
 from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
 from labmon.benches.keeping import forget_old_days
+from labmon.pipeline.nightly import make_day_statistics
 from labmon.pipeline.process import process_touched
 from labmon.pipeline.prune import prune_checkpoints
 from labmon.pipeline.rolling import compact_closed_days, roll_up_coarse_due, roll_up_due
@@ -20,6 +21,9 @@ PROCESS_FOR_S = 20.0
 SEAL_DAYS_FOR_S = 20.0
 #: So long day files are read again every hour.
 CHECK_DAYS_FOR_S = 20.0
+
+#: So long statistics of closed days are made at a time; one tap-day takes a second or two.
+DAY_STATISTICS_FOR_S = 20.0
 
 
 def _task(name: str, time_limit: int):  # type: ignore[no-untyped-def]
@@ -82,6 +86,12 @@ def forget_days_task() -> None:
 def check_days_task() -> None:
     """Read the day files that were read whole longest ago, and compare them with what was written."""
     check_days(for_s=CHECK_DAYS_FOR_S)
+
+
+@_task("day_statistics", 600)
+def day_statistics_task() -> None:
+    """Make statistics of closed days, some at a time."""
+    make_day_statistics(for_s=DAY_STATISTICS_FOR_S)
 
 
 @_task("send_mails", 300)

@@ -121,3 +121,8 @@ def test_noise_in_proportion_to_the_level():
     level = course * (1 + 0.02 * np.random.default_rng(0).normal(size=len(course)))
     floor, rise = noise_of(np.arange(len(course)) * 1_000_000, level)
     assert np.sqrt(rise) == pytest.approx(0.02, rel=0.1) and floor < 1e-4
+
+
+def test_a_constant_leak_shows_no_arc():
+    at_us = np.arange(100) * 1_000_000
+    assert fit_leak_arc(at_us, np.full(100, 0.01), np.linspace(20.0, 22.0, 100)).verdict is ArcVerdict.NO_ARC

@@ -24,7 +24,7 @@ def routed(resolver, before="/"):
             yield from routed(one, address)
         elif hasattr(one.callback, "methods"):
             yield from ((method.lower(), address) for method in one.callback.methods)
-        elif address.startswith(("/api/", "/health/")):
+        elif address.startswith(("/api/", "/health/")) and address != "/health/":  # the lab's health page, for people
             assert one.name == "unknown", f"{address} was not made by by_method or open_to_all"
 
 
@@ -47,6 +47,6 @@ def test_every_parameter_in_a_path_is_described():
             assert said == set(re.findall(r"{(\w+)}", path))
 
 
-@pytest.mark.parametrize("word", ["runs", "clearance", "shelve", "rehearse", "statistics"])
+@pytest.mark.parametrize("word", ["runs", "clearance", "shelve", "rehearse"])
 def test_what_is_not_built_is_not_published(word):
     assert not any(path.endswith(f"/{word}") for _method, path in described())

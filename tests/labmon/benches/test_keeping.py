@@ -16,6 +16,7 @@ from labmon.benches.keeping import end_keep_rule, forget_old_days, set_keep_rule
 from labmon.errors import NotAllowed, WriteError
 from labmon.people.models import Role
 from labmon.pipeline.catch_up import catch_up
+from labmon.pipeline.nightly import make_day_statistics
 from labmon.pipeline.process import process_touched
 from labmon.pipeline.rolling import compact_closed_days, roll_up_due
 from tests.factories import make_person, make_tap, store_readings
@@ -35,6 +36,7 @@ def old_days(tap, days=(0, 1, 35)):
         store_readings(tap, at_us, port1=1e-3, port2=1e-6)
     catch_up(now_us=NOW_US)
     compact_closed_days(NOW_US)
+    make_day_statistics(NOW_US)
     seal_days(NOW_US)
 
 

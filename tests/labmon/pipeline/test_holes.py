@@ -11,6 +11,7 @@ from labmon.alarms.models import Alarm
 from labmon.benches.keeping import forget_old_days, set_keep_rule
 from labmon.experiments.actions import set_limit
 from labmon.pipeline.catch_up import catch_up
+from labmon.pipeline.nightly import make_day_statistics
 from labmon.pipeline.process import process_touched
 from labmon.pipeline.rolling import compact_closed_days
 from tests.factories import make_experiment, make_tap, store_readings
@@ -33,7 +34,7 @@ def told_day():
     catch_up(now_us=NOW_US)
     compact_closed_days(NOW_US)
     seal_days(NOW_US)
-    Alarm.objects.update(is_late=False)
+    Alarm.objects.update(is_late=False, state="returned-unacknowledged")
     return tap, limit
 
 
@@ -50,6 +51,7 @@ def judge_again(tap):
 
 def forget(tap):
     set_keep_rule(tap, 1, by=None)
+    make_day_statistics(NOW_US)
     assert forget_old_days(NOW_US) == 1
 
 

@@ -11,6 +11,7 @@ from ingest.store.read import DamagedStore, Hole, HoleKind
 from labmon.benches.keeping import forget_old_days, set_keep_rule
 from labmon.people.models import Role
 from labmon.pipeline.catch_up import catch_up
+from labmon.pipeline.nightly import make_day_statistics
 from labmon.pipeline.rolling import compact_closed_days
 from labmon.screen.door import for_people
 from labmon.screen.holes import holes_sentence
@@ -46,6 +47,7 @@ def body(client, tap, span, name="history-json", **query):
 @pytest.mark.parametrize("span", [HALF_AN_HOUR, WHOLE_DAY])
 def test_a_day_no_longer_kept_is_drawn_from_rollups_and_says_so(client, old_tap, span):
     set_keep_rule(None, 30, by=None)
+    make_day_statistics(NOW_US)
     assert forget_old_days(NOW_US) == 1
     said = body(client, old_tap, span)
     assert "Raw no longer kept on 2025-06-15: shown from rollups (raw of the lab kept at least 30 days" in said["sentence"]

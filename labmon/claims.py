@@ -35,3 +35,9 @@ def claim_name(name: str) -> bool:
     with connection.cursor() as cursor:
         cursor.execute("SELECT pg_try_advisory_xact_lock(%s, hashtext(%s))", [BEAT, name])
         return bool(cursor.fetchone()[0])
+
+
+def lock_name(name: str) -> None:
+    """Wait for the named job to be free, and hold it until the transaction ends. Before `lock_tap`, never after it."""
+    with connection.cursor() as cursor:
+        cursor.execute("SELECT pg_advisory_xact_lock(%s, hashtext(%s))", [BEAT, name])

@@ -1,11 +1,11 @@
 """Gathers the models of labmon's nouns for Django."""
 
-from labmon.alarms.models import Alarm, AlarmBounds
+from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold
 from labmon.audit.models import AuditEntry
 from labmon.benches.models import Bench, DoorRefusal, KeyUse
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitVersion
 from labmon.people.models import Person, PersonKey
 from labmon.tell.models import OutboxMail
 
-__all__ = ["Alarm", "AlarmBounds", "AuditEntry", "Bench", "DoorRefusal", "Experiment", "FoldCheckpoint", "KeyUse", "Limit",
-           "LimitVersion", "OutboxMail", "Person", "PersonKey"]
+__all__ = ["Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "DoorRefusal", "Experiment", "FoldCheckpoint", "KeyUse",
+           "Limit", "LimitVersion", "OutboxMail", "Person", "PersonKey"]

@@ -8,6 +8,8 @@ import numpy as np
 
 from ingest.models import Room, Station, StationBoot, Tap, TapBoot, TapKind, Unit
 from ingest.store.append import write_blocks
+from labmon.alarms.models import Alarm
+from labmon.alarms.states import state_of
 from labmon.benches.models import Bench
 from labmon.experiments.models import Experiment
 from labmon.people.models import Person, Role
@@ -66,6 +68,14 @@ def make_experiment(*taps: Tap, owner: Person | None = None, **fields: Any) -> E
     experiment = Experiment.objects.create(**{"name": f"experiment {next(_number)}", "owner": owner} | fields)
     experiment.taps.set(taps)
     return experiment
+
+
+def store_alarm(**fields: Any) -> Alarm:
+    """An alarm with the state that its facts give."""
+    alarm = Alarm(**fields)
+    alarm.state = state_of(alarm)
+    alarm.save()
+    return alarm
 
 
 def store_readings(tap: Tap, at_us: Any, *, arrival_us: Any = None, boot: str = "", sequence: Any = None, **columns: Any) -> None:

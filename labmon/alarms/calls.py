@@ -10,11 +10,11 @@ from labmon.people.models import Person, Role
 from labmon.tell.outbox import Mail, queue_mails
 
 #: What a mail may be about; with the alarm's number it is the event's key.
-RAISED, ROSE = "raised", "rose"
+RAISED, ROSE, BACK = "raised", "rose", "back"
 
 
 def call_people(alarms: Iterable[tuple[Alarm, str]], names: Mapping[int, str]) -> None:
-    """Queue a mail for each (alarm, RAISED or ROSE); the same again changes nothing.
+    """Queue a mail for each (alarm, RAISED, ROSE or BACK with the number of the hold that ended); the same again changes nothing.
 
     Args:
         names: Of the alarms' taps, ``station/tap``, by tap id.

@@ -12,8 +12,9 @@ from analysis.judge.phases import Episode, Phase
 from analysis.judge.rule import Quantity
 from ingest.times import SECOND_US, at_of, us_of
 from labmon.alarms.calls import RAISED, ROSE, call_people
-from labmon.alarms.models import Alarm, AlarmBounds, AlarmKind, AlarmState
-from labmon.alarms.states import state_of
+from labmon.alarms.holds import StandingHolds
+from labmon.alarms.models import Alarm, AlarmBounds, AlarmKind
+from labmon.alarms.states import is_quiet, state_of
 from labmon.alarms.words import limit_sentence
 
 #: An event whose reading is older than this when it is judged (by the station's own clock) is past: it calls nobody.
@@ -32,6 +33,9 @@ _CHANGED = (
     "message",
     "is_late",
     "is_withdrawn",
+    "is_suppressed",
+    "shelved_until",
+    "is_out_of_service",
     "changed",
 )
 
@@ -99,6 +103,7 @@ class Finding:
 class _Changes:
     """What is to be written, gathered over all limits so that the number of statements stays the same."""
 
+    holds: StandingHolds
     new: list[Alarm] = field(default_factory=list)
     changed: dict[int, Alarm] = field(default_factory=dict)
     deleted: list[int] = field(default_factory=list)
@@ -108,9 +113,10 @@ class _Changes:
 
 def settle(findings: Iterable[Finding]) -> list[int]:
     """Write what the findings say; returns the ids of the alarms that changed."""
-    changes = _Changes()
+    given = list(findings)
+    changes = _Changes(StandingHolds.of({finding.tap.pk for finding in given}))
     names: dict[int, str] = {}
-    for finding in findings:
+    for finding in given:
         names[finding.tap.pk] = finding.tap.full_name
         _settle_limit(finding, names[finding.tap.pk], changes)
     _write(changes)
@@ -187,13 +193,15 @@ def _add(finding: Finding, episode: Episode, name: str, changes: _Changes) -> No
         limit_id=finding.limit.pk,
         tap_id=finding.tap.pk,
         quantity=finding.limit.quantity,
-        state=AlarmState.SUPPRESSED if phase.in_runs_only else AlarmState.UNACKNOWLEDGED,
+        is_suppressed=phase.in_runs_only,
         is_late=not phase.in_runs_only,
     )
     _fill(alarm, finding, episode, name)
+    changes.holds.mark(alarm)
     if not phase.in_runs_only and _is_to_be_called(finding, episode):
         alarm.is_late = False
-        changes.calls.append((alarm, RAISED))
+        if not is_quiet(alarm):
+            changes.calls.append((alarm, RAISED))
     alarm.state = state_of(alarm)
     changes.new.append(alarm)
 
@@ -204,14 +212,16 @@ def _bring_in_line(finding: Finding, episode: Episode, alarm: Alarm, name: str, 
     if alarm.is_withdrawn:
         alarm.is_withdrawn = False
     _fill(alarm, finding, episode, name)
+    changes.holds.mark(alarm)
     if was_told and was_warning and alarm.level == Level.ALARM:
         alarm.acknowledged_at = alarm.acknowledged_by = None
         is_fresh = alarm.alarm_at is not None and not finding.is_past(us_of(alarm.alarm_at))
-        if alarm.state != AlarmState.SUPPRESSED and (is_fresh or finding.is_current):
+        if not is_quiet(alarm) and (is_fresh or finding.is_current):
             changes.calls.append((alarm, ROSE))
-    elif not was_told and alarm.state != AlarmState.SUPPRESSED and _is_to_be_called(finding, episode):
+    elif not was_told and not alarm.is_suppressed and _is_to_be_called(finding, episode):
         alarm.is_late = False
-        changes.calls.append((alarm, RAISED))
+        if not is_quiet(alarm):
+            changes.calls.append((alarm, RAISED))
     alarm.state = state_of(alarm)
     if all(getattr(alarm, field) == value for field, value in before.items()):
         return

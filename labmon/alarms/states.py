@@ -1,18 +1,38 @@
-"""How an alarm's state changes: the one place where states follow from what happened (names of IEC 62682)."""
+"""How an alarm's state follows from what happened (names of IEC 62682): pure, and the same as the database's own check."""
 
-from labmon.alarms.models import Alarm, AlarmState
+from typing import Protocol
 
-KEPT = frozenset({AlarmState.SHELVED, AlarmState.SUPPRESSED, AlarmState.OUT_OF_SERVICE})
+from labmon.alarms.models import AlarmState
 
 
-def state_of(alarm: Alarm) -> AlarmState:
-    """The state that follows from the row's own facts; shelved, suppressed and out of service stay while it is open."""
+class AlarmFacts(Protocol):
+    """What decides an alarm's state; a row of `Alarm` has it."""
+
+    is_withdrawn: bool
+    is_late: bool
+    is_suppressed: bool
+    is_out_of_service: bool
+    shelved_until: object | None
+    returned_at: object | None
+    acknowledged_at: object | None
+
+
+def state_of(alarm: AlarmFacts) -> AlarmState:
+    """The state that follows from the row's facts; of several reasons to be quiet the strongest names it."""
     if alarm.is_withdrawn:
         return AlarmState.NORMAL
-    is_open = alarm.returned_at is None
-    if alarm.state in KEPT and is_open:
-        return AlarmState(alarm.state)
-    if is_open:
-        return AlarmState.ACKNOWLEDGED if alarm.acknowledged_at else AlarmState.UNACKNOWLEDGED
-    needs_nobody = alarm.acknowledged_at is not None or alarm.is_late or alarm.state in KEPT
-    return AlarmState.NORMAL if needs_nobody else AlarmState.RETURNED_UNACKNOWLEDGED
+    if alarm.returned_at is not None:
+        needs_nobody = alarm.acknowledged_at is not None or alarm.is_late or is_quiet(alarm)
+        return AlarmState.NORMAL if needs_nobody else AlarmState.RETURNED_UNACKNOWLEDGED
+    if alarm.is_out_of_service:
+        return AlarmState.OUT_OF_SERVICE
+    if alarm.is_suppressed:
+        return AlarmState.SUPPRESSED
+    if alarm.shelved_until is not None:
+        return AlarmState.SHELVED
+    return AlarmState.ACKNOWLEDGED if alarm.acknowledged_at else AlarmState.UNACKNOWLEDGED
+
+
+def is_quiet(alarm: AlarmFacts) -> bool:
+    """True where it calls nobody: shelved, suppressed by design or out of service."""
+    return alarm.is_out_of_service or alarm.is_suppressed or alarm.shelved_until is not None

@@ -6,9 +6,10 @@ from datetime import datetime
 
 from ingest.times import at_of
 from labmon.alarms.calls import RAISED, call_people
+from labmon.alarms.holds import StandingHolds
 from labmon.alarms.models import Alarm, AlarmKind, AlarmLevel
 from labmon.alarms.settle import TapHere
-from labmon.alarms.states import state_of
+from labmon.alarms.states import is_quiet, state_of
 from labmon.alarms.words import untrusted_sentence
 
 
@@ -43,8 +44,13 @@ def settle_untrusted(findings: Iterable[UntrustedFinding], now_us: int) -> list[
     if returned:
         Alarm.objects.bulk_update(returned, ["returned_at", "state", "changed"])
     if raised:
+        standing = StandingHolds.of(alarm.tap_id for alarm in raised)
+        for alarm in raised:
+            standing.mark(alarm)
+            alarm.state = state_of(alarm)
         Alarm.objects.bulk_create(raised)
-        call_people([(alarm, RAISED) for alarm in raised], {pk: one.tap.full_name for pk, one in wanted.items()})
+        names = {pk: one.tap.full_name for pk, one in wanted.items()}
+        call_people([(alarm, RAISED) for alarm in raised if not is_quiet(alarm)], names)
     return [alarm.pk for alarm in (*raised, *returned)]
 
 

@@ -19,6 +19,7 @@ class Action(StrEnum):
     MAKE_OWN_KEY = "make a key of your own"
     ACKNOWLEDGE = "acknowledge alarms"
     SHELVE = "shelve alarms"
+    TAKE_OUT = "take alarms out of service"
     LOG = "write in the logbook"
     PLAN_RUN = "plan runs"
     MAKE_EXPERIMENT = "make or change an experiment"
@@ -38,8 +39,8 @@ class Action(StrEnum):
 _GUEST = frozenset({Action.READ, Action.MAKE_OWN_KEY})
 _RESEARCHER = _GUEST | {Action.ACKNOWLEDGE, Action.SHELVE, Action.LOG, Action.PLAN_RUN}
 _OWNER_OF_IT = frozenset(
-    {Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.CALIBRATE, Action.MAKE_STATION_KEY, Action.ADD_TAP, Action.IMPORT_FILE,
-     Action.READ_AUDIT}
+    {Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.TAKE_OUT, Action.CALIBRATE, Action.MAKE_STATION_KEY, Action.ADD_TAP,
+     Action.IMPORT_FILE, Action.READ_AUDIT}
 )
 
 #: What a role may do to whatever it sees, and what an owner may do besides to what is their own.

@@ -16,8 +16,9 @@ from ingest.models import Tap
 from ingest.times import SECOND_US, at_of
 from ingest.times import now_us as server_now_us
 from labmon.alarms.calls import RAISED, call_people
+from labmon.alarms.holds import StandingHolds
 from labmon.alarms.models import Alarm, AlarmKind, AlarmLevel
-from labmon.alarms.states import state_of
+from labmon.alarms.states import is_quiet, state_of
 from labmon.alarms.words import no_reading_sentence
 from labmon.benches.queries import call_after_s, door_spans
 from labmon.benches.show import LEAST_USUAL_S, Silence, silences_of
@@ -152,8 +153,12 @@ def _write(changes: _Changes, names: Mapping[int, str]) -> None:
     if changes.changed:
         Alarm.objects.bulk_update(changes.changed, ["level", "alarm_at", "message", "returned_at", "state", "changed"])
     if changes.new:
+        standing = StandingHolds.of(alarm.tap_id for alarm in changes.new)
+        for alarm in changes.new:
+            standing.mark(alarm)
+            alarm.state = state_of(alarm)
         Alarm.objects.bulk_create(changes.new)
-    call_people([(alarm, RAISED) for alarm in changes.called], names)
+    call_people([(alarm, RAISED) for alarm in changes.called if not is_quiet(alarm)], names)
 
 
 def _name(tap: Tap) -> str:

@@ -7,6 +7,7 @@ from ingest.store.days.check import check_days
 from ingest.store.days.left import sweep_left_files
 from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
+from labmon.alarms.holding import end_due_holds
 from labmon.benches.keeping import forget_old_days
 from labmon.pipeline.nightly import make_day_statistics
 from labmon.pipeline.process import process_touched
@@ -48,6 +49,12 @@ def process_task() -> None:
 def silence_task() -> None:
     """Look for taps that have fallen silent."""
     judge_silence()
+
+
+@_task("end_holds", 60)
+def end_holds_task() -> None:
+    """End shelvings and times out of service that are over."""
+    end_due_holds()
 
 
 @_task("roll_up", 120)

@@ -4,10 +4,10 @@ import pytest
 from django.db import connection
 from django.test.utils import CaptureQueriesContext
 
-from labmon.alarms.models import Alarm, AlarmBounds, AlarmState
+from labmon.alarms.models import AlarmBounds
 from labmon.alarms.queries import alarm_row, alarm_rows, alarm_spans
 from labmon.people.models import Role
-from tests.factories import NOON, NOON_US, make_experiment, make_person, make_station, make_tap
+from tests.factories import NOON, NOON_US, make_experiment, make_person, make_station, make_tap, store_alarm
 
 pytestmark = pytest.mark.django_db
 MINUTE_US = 60_000_000
@@ -15,7 +15,7 @@ MINUTE_US = 60_000_000
 
 def make_alarm(minute=0, tap=None, **fields):
     tap = tap or make_tap()
-    return Alarm.objects.create(
+    return store_alarm(
         **{
             "kind": "untrusted",
             "tap": tap,
@@ -30,7 +30,7 @@ def make_alarm(minute=0, tap=None, **fields):
 def test_newest_first_and_filters():
     tap = make_tap(make_station("n2"))
     old, new = make_alarm(0), make_alarm(5, tap)
-    done = make_alarm(3, returned_at=NOON + timedelta(minutes=4), state=AlarmState.NORMAL)
+    done = make_alarm(3, returned_at=NOON + timedelta(minutes=4), acknowledged_at=NOON)
     reader = make_person()
     assert [row.id for row in alarm_rows(reader)] == [new.pk, done.pk, old.pk]
     assert [row.id for row in alarm_rows(reader, state="normal")] == [done.pk]

@@ -6,9 +6,9 @@ import pytest
 from django.db import connection
 from django.test.utils import CaptureQueriesContext
 
-from labmon.alarms.models import Alarm, AlarmKind, AlarmState
+from labmon.alarms.models import AlarmKind
 from labmon.audit.models import AuditEntry
-from tests.factories import NOON, make_experiment, make_tap
+from tests.factories import NOON, make_experiment, make_tap, store_alarm
 
 ALARMS = "/api/v1/alarms"
 #: The contract's list, word for word.
@@ -17,8 +17,8 @@ FIELDS = {"id", "experiment", "tap", "quantity", "level", "state", "raised_at", 
 
 
 def make_alarm(tap, experiment=None, **fields):
-    return Alarm.objects.create(**{"kind": AlarmKind.UNTRUSTED, "tap": tap, "experiment": experiment, "raised_at": NOON,
-                                   "returned_at": NOON + timedelta(minutes=1), "message": "Value frozen"} | fields)
+    return store_alarm(**{"kind": AlarmKind.UNTRUSTED, "tap": tap, "experiment": experiment, "raised_at": NOON,
+                          "returned_at": NOON + timedelta(minutes=1), "message": "Value frozen"} | fields)
 
 
 def alarms(caller, **query):
@@ -38,7 +38,7 @@ def test_an_alarm_has_the_fields_of_the_contract(lab):
 def test_alarms_by_state_and_experiment(lab):
     other = make_experiment(lab.tap)
     one = make_alarm(lab.tap, lab.experiment)
-    two = make_alarm(lab.tap, other, state=AlarmState.ACKNOWLEDGED)
+    two = make_alarm(lab.tap, other, returned_at=None, acknowledged_at=NOON)
     assert [row["id"] for row in alarms(lab.manager, state="acknowledged")] == [two.pk]
     assert [row["id"] for row in alarms(lab.manager, experiment=lab.experiment.pk)] == [one.pk]
     assert alarms(lab.manager, state="shelved") == []
@@ -103,5 +103,5 @@ def test_the_number_of_queries_does_not_grow_with_alarms(lab):
     few = count()
     for _number in range(5):
         tap = make_tap()
-        make_alarm(tap, make_experiment(tap), acknowledged_by=lab.people["owner"], state=AlarmState.ACKNOWLEDGED)
+        make_alarm(tap, make_experiment(tap), acknowledged_by=lab.people["owner"], acknowledged_at=NOON)
     assert count() == few

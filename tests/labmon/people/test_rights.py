@@ -30,6 +30,7 @@ TABLE = {
     Action.MAKE_OWN_KEY: (NAMED, YES, YES, YES),
     Action.ACKNOWLEDGE: (NO, YES, YES, YES),
     Action.SHELVE: (NO, YES, YES, YES),
+    Action.TAKE_OUT: (NO, NO, OWN, YES),
     Action.LOG: (NO, YES, YES, YES),
     Action.PLAN_RUN: (NO, YES, YES, YES),
     Action.MAKE_EXPERIMENT: (NO, NO, OWN, YES),

@@ -7,12 +7,15 @@ from django.shortcuts import render
 from django.utils import timezone
 from django.views.decorators.http import require_safe
 
+from analysis.record.statistics import newest_days
 from ingest.models import Station
+from ingest.times import at_of
 from labmon.alarms.queries import alarm_rows
 from labmon.benches.queries import StationFacts, station_facts
 from labmon.people.rights import Action, may
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people
+from labmon.screen.drift_view import DriftView, drift_view
 from labmon.screen.named import visible_station
 from labmon.screen.quantity import QUANTITIES, quantities_of
 from labmon.screen.shown import history_rows
@@ -40,6 +43,7 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
             "facts": facts,
             "sentence": station_sentence(found.name, facts, len(waiting)),
             "taps": [tap_view(tap, now) for tap in facts.taps],
+            "drifts": _drifts(facts),
             "clock": clock_words(facts.boots),
             "troubles": trouble_words(facts.troubles, facts.taps),
             "clock_course": clock_course_words(facts.troubles.clock),
@@ -51,6 +55,14 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
         }
         | _shown(request, facts, found, now),
     )
+
+
+def _drifts(facts: StationFacts) -> list[DriftView]:
+    """How each tap that measures light drifted on its newest whole day; one query."""
+    taps = [tap for tap in facts.taps if tap.kind != "climate"]
+    days = newest_days([tap.id for tap in taps])
+    return [drift_view(tap.id, tap.name, at_of(days[tap.id].day_us) if tap.id in days else None,
+                       days[tap.id].facts if tap.id in days else None) for tap in taps]
 
 
 def _rights(request: HttpRequest, station: Station) -> dict[str, bool]:

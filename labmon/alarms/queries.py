@@ -4,12 +4,13 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 from datetime import datetime
 
-from django.db.models import Prefetch, Q, QuerySet
+from django.db.models import F, Prefetch, Q, QuerySet
 
 from ingest.times import at_of, us_of
-from labmon.alarms.models import Alarm, AlarmBounds, AlarmState
+from labmon.alarms.holds import standing_holds
+from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold, AlarmState
 from labmon.people.models import Person
-from labmon.people.rights import alarms_visible_to
+from labmon.people.rights import alarms_visible_to, experiments_visible_to, taps_visible_to
 
 OPEN_STATES = (
     AlarmState.UNACKNOWLEDGED,
@@ -46,6 +47,7 @@ class AlarmRow:
     message: str
     is_late: bool
     is_withdrawn: bool
+    shelved_until: datetime | None
     earlier_bounds: list[tuple[datetime, datetime | None]]
 
     @property
@@ -133,8 +135,18 @@ def _row(alarm: Alarm) -> AlarmRow:
         message=alarm.message,
         is_late=alarm.is_late,
         is_withdrawn=alarm.is_withdrawn,
+        shelved_until=alarm.shelved_until if alarm.state == AlarmState.SHELVED else None,
         earlier_bounds=[(one.raised_at, one.returned_at) for one in alarm.earlier_bounds.all()],
     )
+
+
+def hold_rows(person: Person, *, station: str | None = None) -> list[AlarmHold]:
+    """Standing holds that ``person`` may see, those that end first in front; one query."""
+    rows = standing_holds().filter(tap__in=taps_visible_to(person))
+    rows = rows.filter(Q(limit=None) | Q(limit__experiment__in=experiments_visible_to(person)))
+    if station is not None:
+        rows = rows.filter(tap__station__name=station)
+    return list(rows.select_related("tap__station", "limit__experiment", "by").order_by(F("until").asc(nulls_last=True), "pk"))
 
 
 def alarm_spans(tap_id: int, from_us: int, until_us: int) -> list[tuple[int, int | None, str, str]]:

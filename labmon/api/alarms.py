@@ -5,6 +5,8 @@ from typing import Any
 from django.http import HttpRequest, HttpResponse
 
 from labmon.alarms.actions import acknowledge_alarm
+from labmon.alarms.holding import Held, shelve, unshelve_alarm
+from labmon.alarms.models import Alarm
 from labmon.alarms.queries import AlarmRow, alarm_row, alarm_rows
 from labmon.api.answer import json_answer
 from labmon.api.body import Body, Text, body_of
@@ -37,6 +39,7 @@ def alarm_facts(row: AlarmRow) -> dict[str, Any]:
              "quantity": row.quantity or None, "level": row.level, "state": row.state,
              "acknowledged_by": row.acknowledged_by or None, "note": row.note, "value": row.value, "limit": row.limit,
              "cause": row.cause or None, "message": row.message, "is_late": row.is_late, "is_withdrawn": row.is_withdrawn,
+             "shelved_until": rfc3339(row.shelved_until),
              "earlier_bounds": [{"raised_at": rfc3339(raised_at), "returned_at": rfc3339(returned_at)}
                                 for raised_at, returned_at in row.earlier_bounds]}
             | {name: rfc3339(getattr(row, name)) for name in times})
@@ -51,10 +54,41 @@ class Acknowledgement(Body):
 def post_acknowledge(request: HttpRequest, person: Person, alarm_id: int) -> HttpResponse:
     """Say that the alarm was seen; a second time changes nothing."""
     known_only(request.GET)
-    alarm = alarms_visible_to(person).filter(pk=alarm_id).first()
-    if alarm is None:
-        raise not_found("There is no such alarm for you.", "GET /api/v1/alarms lists those that you may see.")
+    alarm = _alarm_named(person, alarm_id)
     require(person, Action.ACKNOWLEDGE, alarm)
     wish = body_of(request, Acknowledgement) if request.body else Acknowledgement()
     acknowledge_alarm(alarm.pk, by=person, note=wish.note)
+    return json_answer(alarm_facts(alarm_row(alarm.pk, person)))
+
+
+def _alarm_named(person: Person, alarm_id: int) -> Alarm:
+    alarm = alarms_visible_to(person).select_related("tap__station", "limit").filter(pk=alarm_id).first()
+    if alarm is None:
+        raise not_found("There is no such alarm for you.", "GET /api/v1/alarms lists those that you may see.")
+    return alarm
+
+
+class Shelving(Body):
+    """The body of POST …/shelve."""
+
+    for_s: float
+    reason: Text
+
+
+def post_shelve(request: HttpRequest, person: Person, alarm_id: int) -> HttpResponse:
+    """Keep the alarm, and what its limit may raise meanwhile, quiet for a stated time; it comes back by itself."""
+    known_only(request.GET)
+    alarm = _alarm_named(person, alarm_id)
+    require(person, Action.SHELVE, alarm)
+    wish = body_of(request, Shelving)
+    shelve(Held.of_alarm(alarm), by=person, for_s=wish.for_s, reason=wish.reason)
+    return json_answer(alarm_facts(alarm_row(alarm.pk, person)))
+
+
+def post_unshelve(request: HttpRequest, person: Person, alarm_id: int) -> HttpResponse:
+    """End every shelving that keeps the alarm quiet; where there is none nothing changes."""
+    known_only(request.GET)
+    alarm = _alarm_named(person, alarm_id)
+    require(person, Action.SHELVE, alarm)
+    unshelve_alarm(alarm, by=person)
     return json_answer(alarm_facts(alarm_row(alarm.pk, person)))

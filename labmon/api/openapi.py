@@ -118,6 +118,21 @@ PATHS: dict[str, dict[str, Operation]] = {
     f"{BASE}/alarms/{{id}}/acknowledge": {"post": call(
         "Say that you have seen an alarm; a second time changes nothing.", {200: answer("The alarm.", "Alarm")},
         parameters=(in_path("id", ID),), body="Acknowledgement", is_body_required=False, faults=WRITE)},
+    f"{BASE}/alarms/{{id}}/shelve": {"post": call(
+        "Keep an alarm, and what its limit (or its tap, of this kind) may raise meanwhile, quiet for at most 4 h; it comes back "
+        "by itself. Shelving again replaces the end.", {200: answer("The alarm.", "Alarm")},
+        parameters=(in_path("id", ID),), body="Shelving", faults=WRITE)},
+    f"{BASE}/alarms/{{id}}/unshelve": {"post": call(
+        "End every shelving that keeps an alarm quiet; where there is none nothing changes.",
+        {200: answer("The alarm.", "Alarm")}, parameters=(in_path("id", ID),), faults=WRITE)},
+    f"{BASE}/holds": {"get": call("What is kept quiet now, by whom, why and until when.", {200: answer("The holds.", "Holds")},
+                                  faults=(400, 401))},
+    f"{BASE}/holds/{{id}}/end": {"post": call(
+        "End a hold before its time; a second time changes nothing.", {200: answer("The hold.", "Hold")},
+        parameters=(in_path("id", ID),), faults=WRITE)},
+    f"{BASE}/taps/{{station}}/{{tap}}/holds": {"post": call(
+        "Shelve alarms of a tap (at most 4 h), or take them out of service (the bench's owner and managers).",
+        {201: answer("The hold.", "Hold")}, parameters=TAP, body="NewHold", faults=WRITE)},
     f"{BASE}/readings": {"post": {
         "summary": "The station door: a batch of readings. Answered after the commit, never before.",
         "security": [{"stationKey": []}],

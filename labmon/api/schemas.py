@@ -114,6 +114,7 @@ ALARM = shape({
     "raised_at": TIME, "alarm_at": or_null(TIME), "returned_at": or_null(TIME), "acknowledged_at": or_null(TIME),
     "acknowledged_by": or_null(TEXT), "note": TEXT, "value": or_null(NUMBER), "limit": or_null(NUMBER),
     "cause": or_null(TEXT), "message": TEXT, "is_late": YES_NO, "is_withdrawn": YES_NO,
+    "shelved_until": or_null(TIME),
     "earlier_bounds": many(shape({"raised_at": TIME, "returned_at": or_null(TIME)})),
 }, text="value: the worst while open; limit: the level that it is held against. Times of limit alarms are data times. "
         "earlier_bounds: as it was told before late data moved it.")
@@ -137,6 +138,15 @@ NEW_CALIBRATION = shape({name: schema for name, schema in CALIBRATION["propertie
                         optional=(*CALIBRATION["properties"], "reason"),
                         text="A missing field is taken from the version valid at valid_from (now, where that is missing).")
 ACKNOWLEDGEMENT = shape({"note": TEXT}, optional=("note",))
+FOR_S = {"type": "number", "exclusiveMinimum": 0}
+SHELVING = shape({"for_s": FOR_S | {"maximum": 14_400}, "reason": TEXT}, text="reason is asked for: it stands in the banner.")
+HOLD_KIND: Schema = {"type": "string", "enum": ["shelved", "out-of-service"]}
+HELD: Schema = {"type": "string", "enum": ["all", "limit", "no-reading", "untrusted"]}
+HOLD = shape({"id": ID, "kind": HOLD_KIND, "tap": TAP_PATH, "alarms": HELD, "limit": or_null(ID), "by": or_null(TEXT),
+              "reason": TEXT, "begun_at": TIME, "until": or_null(TIME), "ended_at": or_null(TIME)},
+             text="Alarms of a tap (all, of one limit, or of one kind) kept quiet. Readings are judged all the same.")
+NEW_HOLD = shape({"kind": HOLD_KIND, "reason": TEXT, "alarms": HELD, "limit": or_null(ID), "for_s": or_null(FOR_S)},
+                 optional=("alarms", "limit", "for_s"))
 
 COLUMNS = ("By tap name, columns of equal length. Any tap: sequence, at (RFC 3339 or microseconds since 1970), uptime_ms, "
            "temperature_c, humidity_pct, drive_ma. Two-port: port1, port2, each with _min, _max, _sd, and averaged, clipped. "
@@ -165,7 +175,9 @@ ACCEPTED = {
 NAMED: dict[str, Schema] = {
     "Problem": PROBLEM, "Tap": TAP, "Station": STATION, "Now": NOW, "History": HISTORY, "Experiment": EXPERIMENT,
     "Limit": LIMIT, "Limits": LIMITS, "Alarm": ALARM, "Calibration": CALIBRATION, "NewExperiment": NEW_EXPERIMENT,
-    "NewLimit": NEW_LIMIT, "NewCalibration": NEW_CALIBRATION, "Acknowledgement": ACKNOWLEDGEMENT, "Batch": BATCH,
+    "NewLimit": NEW_LIMIT, "NewCalibration": NEW_CALIBRATION, "Acknowledgement": ACKNOWLEDGEMENT,
+    "Shelving": SHELVING, "Hold": HOLD, "NewHold": NEW_HOLD, "Holds": shape({"holds": many(ref("Hold"))}),
+    "Batch": BATCH,
     "Accepted": ACCEPTED,
     "Stations": shape({"stations": many(ref("Station"))}),
     "Experiments": shape({"experiments": many(ref("Experiment"))}),

@@ -3,9 +3,10 @@
 from django.urls import path, re_path, register_converter
 
 from ingest.models import NAME_PATTERN
-from labmon.api.alarms import get_alarms, post_acknowledge
+from labmon.api.alarms import get_alarms, post_acknowledge, post_shelve, post_unshelve
 from labmon.api.call import by_method, open_to_all, unknown_address
 from labmon.api.experiments import get_experiments, get_limits, post_experiment, post_limit
+from labmon.api.holds import get_holds, post_end_hold, post_hold
 from labmon.api.openapi import get_openapi
 from labmon.api.readings import get_readings
 from labmon.api.stations import get_stations
@@ -53,6 +54,11 @@ urlpatterns = [
     path("experiments/<row:experiment_id>/limits", by_method(GET=get_limits, POST=post_limit), name="limits"),
     path("alarms", by_method(GET=get_alarms), name="alarms"),
     path("alarms/<row:alarm_id>/acknowledge", by_method(POST=post_acknowledge), name="acknowledge"),
+    path("alarms/<row:alarm_id>/shelve", by_method(POST=post_shelve), name="shelve"),
+    path("alarms/<row:alarm_id>/unshelve", by_method(POST=post_unshelve), name="unshelve"),
+    path("holds", by_method(GET=get_holds), name="holds"),
+    path("holds/<row:hold_id>/end", by_method(POST=post_end_hold), name="end-hold"),
+    path(TAP + "holds", by_method(POST=post_hold), name="hold"),
     path("openapi.json", open_to_all(GET=get_openapi), name="openapi"),
     re_path(r"", unknown_address, name="unknown"),
 ]

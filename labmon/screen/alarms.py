@@ -14,6 +14,7 @@ from labmon.errors import WriteError
 from labmon.people.rights import Action, alarms_visible_to, may, require, stations_visible_to
 from labmon.screen.alarm_view import STATE_WORDS, alarm_view, alarms_sentence
 from labmon.screen.door import for_people, say_refusal
+from labmon.screen.holds import holds_shown
 
 PAGE_SIZE = 100
 CHOICES = [("", "open or waiting"), ("all", "all, newest first"), *STATE_WORDS.items()]
@@ -46,6 +47,7 @@ def alarms_page(request: HttpRequest) -> HttpResponse:
             "views": views,
             "waiting_views": [view for view in views if view.is_waiting],
             "other_views": [view for view in views if not view.is_waiting],
+            **holds_shown(request, now, station=asked["station"] or None),
             "may_acknowledge": may(request.user, Action.ACKNOWLEDGE),
             "older": older,
             "asked": asked,

@@ -14,6 +14,7 @@ from labmon.benches.queries import bench_rows
 from labmon.people.rights import Action, may
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people
+from labmon.screen.holds import holds_shown
 from labmon.screen.lab_rows import as_json, lab_view, title_of
 from labmon.screen.snapshot import snapshot
 
@@ -49,6 +50,7 @@ def _waiting(request: HttpRequest) -> dict[str, Any]:
     ]
     views = [alarm_view(row, now) for row in rows]
     return {
+        **holds_shown(request, now),
         "waiting": views[:MOST_WAITING],
         "more_waiting": max(0, len(views) - MOST_WAITING),
         "may_acknowledge": may(request.user, Action.ACKNOWLEDGE),

@@ -16,6 +16,7 @@ from labmon.people.rights import Action, may
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people
 from labmon.screen.drift_view import DriftView, drift_view
+from labmon.screen.holds import holds_shown, quiet_choices
 from labmon.screen.named import visible_station
 from labmon.screen.quantity import QUANTITIES, quantities_of
 from labmon.screen.shown import history_rows
@@ -52,6 +53,8 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
             "alarms": [view for view in alarms if not view.is_waiting],
             "tap_ids": " ".join(str(tap.id) for tap in facts.taps),
             "rights": _rights(request, found),
+            **holds_shown(request, now, station=found.name),
+            **quiet_choices(request, found),
         }
         | _shown(request, facts, found, now),
     )

@@ -35,6 +35,7 @@ def row(**fields) -> AlarmRow:
         "message": "",
         "is_late": False,
         "is_withdrawn": False,
+        "shelved_until": None,
         "earlier_bounds": [],
     }
     return AlarmRow(**(usual | fields))

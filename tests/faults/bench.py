@@ -61,13 +61,14 @@ class Told:
     episodes: list[tuple[Any, ...]]
 
 
-def make_taps(visitor: Visitor, name: str) -> list[Tap]:
-    """Two stations, one with a two-port tap and one with a Stokes tap, each watched."""
+def make_taps(visitor: Visitor, name: str, courses: tuple[Course, Course] | None = None, interval_s: float = 0.25) -> list[Tap]:
+    """Two stations, one with a two-port tap and one with a Stokes tap, each watched; the usual course, or others."""
     folder = visitor.lab.folder
+    first, second = courses or (two_port_course(1), stokes_course(2))
     made = []
-    for station, tap, option, unit, limit, course in ((f"{name}-a", "in", "--two-port", "mW", ER_LIMIT, two_port_course(1)),
-                                                      (f"{name}-b", "out", "--stokes", "uW", ANGLE_LIMIT, stokes_course(2))):
-        words = ["add_station", station, option, f"{tap}={unit}", "--interval-s", f"{tap}=0.25"]
+    for station, tap, option, unit, limit, course in ((f"{name}-a", "in", "--two-port", "mW", ER_LIMIT, first),
+                                                      (f"{name}-b", "out", "--stokes", "uW", ANGLE_LIMIT, second)):
+        words = ["add_station", station, option, f"{tap}={unit}", "--interval-s", f"{tap}={interval_s}"]
         key = json.loads(manage(*words, folder=folder))["key"]
         if option == "--stokes":
             since = (datetime.now(UTC) - timedelta(days=2)).isoformat()
@@ -78,11 +79,12 @@ def make_taps(visitor: Visitor, name: str) -> list[Tap]:
     return made
 
 
-def start_senders(lab: RunningLab, taps: list[Tap], *, seed: int, **shares: float) -> list[HonestSender]:
-    """One sender a tap, all from the same whole second, a second from now."""
-    started_us = (time.time_ns() // 1_000_000_000 + 1) * 1_000_000
-    senders = [HonestSender(port=lab.port, key=tap.key, tap=tap.name, course=tap.course, started_us=started_us,
-                            seed=seed + number, **shares) for number, tap in enumerate(taps)]
+def start_senders(lab: RunningLab, taps: list[Tap], *, seed: int, started_us: int | None = None, port: int | None = None,
+                  **habits: Any) -> list[HonestSender]:
+    """One sender a tap, all from the same whole second, a second from now where no other start of the course is given."""
+    started_us = started_us or (time.time_ns() // 1_000_000_000 + 1) * 1_000_000
+    senders = [HonestSender(port=port or lab.port, key=tap.key, tap=tap.name, course=tap.course, started_us=started_us,
+                            seed=seed + number, **habits) for number, tap in enumerate(taps)]
     for sender in senders:
         sender.start()
     return senders

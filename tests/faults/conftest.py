@@ -7,7 +7,14 @@ from pathlib import Path
 import pytest
 
 from tests.faults.bench import LONGEST_RUN_S, Told, await_all_sent, await_judged, make_taps, start_senders, told_of, visitor_of
+from tests.faults.figures import table_lines
 from tests.running_lab import RunningLab, processes_of, until_true
+
+
+def pytest_terminal_summary(terminalreporter):
+    """The fault table, of whatever faults ran."""
+    for line in table_lines():
+        terminalreporter.write_line(line)
 
 
 @pytest.fixture(scope="session")

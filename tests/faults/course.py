@@ -9,7 +9,9 @@ from analysis.quantities import FloatArray, IntArray
 STEP_US = 250_000
 #: The first sample of each second, behind the whole second.
 OFFSET_US = 100_000
-SEGMENTS = ((30.0, 5), (18.0, 2), (30.0, 3), (18.0, 6), (30.0, 5), (22.0, 5), (18.0, 5), (30.0, 9))
+Segments = tuple[tuple[float, int], ...]
+#: (extinction ratio in dB, whole seconds that it holds).
+SEGMENTS: Segments = ((30.0, 5), (18.0, 2), (30.0, 3), (18.0, 6), (30.0, 5), (22.0, 5), (18.0, 5), (30.0, 9))
 DURATION_S = sum(seconds for _, seconds in SEGMENTS)
 #: Limits that mean the same light: 20 dB is 11.4 degrees on the sphere, 23 dB is 8.1 (tan²(γ/2) = 10^(−ER/10)).
 DELAYS = {"on_delay_s": 3.0, "off_delay_s": 3.0, "deadband": 1.0}
@@ -32,25 +34,26 @@ class Course:
         return len(self.after_us)
 
 
-def _er_db(generator: np.random.Generator) -> tuple[IntArray, FloatArray]:
-    after_us = np.arange(0, DURATION_S * 1_000_000, STEP_US) + OFFSET_US
-    by_second = np.repeat([er_db for er_db, _ in SEGMENTS], [seconds for _, seconds in SEGMENTS])
+def _er_db(generator: np.random.Generator, segments: Segments, step_us: int) -> tuple[IntArray, FloatArray]:
+    duration_s = sum(seconds for _, seconds in segments)
+    after_us = np.arange(0, duration_s * 1_000_000, step_us) + min(OFFSET_US, step_us // 2)
+    by_second = np.repeat([er_db for er_db, _ in segments], [seconds for _, seconds in segments])
     return after_us, by_second[after_us // 1_000_000] + generator.normal(0.0, 0.05, len(after_us))
 
 
-def two_port_course(seed: int) -> Course:
+def two_port_course(seed: int, segments: Segments = SEGMENTS, step_us: int = STEP_US) -> Course:
     """Port powers, mW, of the course, with a little noise."""
     generator = np.random.default_rng(seed)
-    after_us, er_db = _er_db(generator)
+    after_us, er_db = _er_db(generator, segments, step_us)
     port1 = 0.998 * (1.0 + generator.normal(0.0, 1e-3, len(er_db)))
     temperature_c = 21.0 + generator.normal(0.0, 0.01, len(er_db))
     return Course(after_us, {"port1": port1, "port2": port1 * 10.0 ** (-er_db / 10.0), "temperature_c": temperature_c})
 
 
-def stokes_course(seed: int) -> Course:
+def stokes_course(seed: int, segments: Segments = SEGMENTS, step_us: int = STEP_US) -> Course:
     """Stokes parameters, uW, as far from (1, 0, 0) as the two-port light's leak says."""
     generator = np.random.default_rng(seed)
-    after_us, er_db = _er_db(generator)
+    after_us, er_db = _er_db(generator, segments, step_us)
     gamma_rad = 2.0 * np.arctan(10.0 ** (-er_db / 20.0))
     around_rad = generator.uniform(0.0, 2.0 * np.pi, len(er_db))
     s0 = 250.0 * (1.0 + generator.normal(0.0, 1e-3, len(er_db)))

@@ -1,6 +1,6 @@
 """An honest station (CONTRACT 1): it numbers its readings, keeps each until it is acknowledged, and sends again.
 
-Nothing of ours is used here: standard library and the contract only.
+Nothing of ours is used here: standard library, numpy and the contract only.
 """
 
 import http.client
@@ -10,6 +10,8 @@ import threading
 import time
 from dataclasses import dataclass, field
 from typing import Any
+
+import numpy as np
 
 from tests.faults.course import Course
 
@@ -27,7 +29,8 @@ class Tally:
     Attributes:
         acknowledged_s: For each acknowledged batch when it was sent (monotonic clock) and how long the answer took.
         unanswered: Attempts without a whole answer; ``lost``: answers thrown away on purpose.
-        told_to_wait: Answers 429 and 503; ``unforeseen``: every other answer that is not 200.
+        told_to_wait: Answers 429 and 503, each with Retry-After; ``told_503``: those of them that were 503.
+        unforeseen: Every other answer that is not 200.
     """
 
     acknowledged_s: list[tuple[float, float]] = field(default_factory=list)
@@ -36,6 +39,7 @@ class Tally:
     unanswered: int = 0
     lost: int = 0
     told_to_wait: int = 0
+    told_503: int = 0
     unforeseen: list[tuple[int, str]] = field(default_factory=list)
 
 
@@ -50,14 +54,17 @@ class HonestSender(threading.Thread):
         seed: Of everything random: waits, which batch goes first, which answers get lost.
         lost_share: Share of answers that are thrown away, as if the line broke behind the commit.
         newest_share: Share of batches that begin with the newest readings instead of the oldest.
+        most: Readings in a batch, at most.
+        pause_s: Between two batches.
     """
 
-    def __init__(self, *, port: int, key: str, tap: str, course: Course, started_us: int, seed: int,
-                 lost_share: float = 0.0, newest_share: float = 0.0) -> None:
+    def __init__(self, *, port: int, key: str, tap: str, course: Course, started_us: int, seed: int, lost_share: float = 0.0,
+                 newest_share: float = 0.0, most: int = MOST, pause_s: float = PAUSE_S) -> None:
         super().__init__(name=f"sender-{tap}", daemon=True)
         self.port, self.key, self.tap, self.course, self.started_us = port, key, tap, course, started_us
         self.random = random.Random(seed)
         self.lost_share, self.newest_share = lost_share, newest_share
+        self.most, self.pause_s = most, pause_s
         self.boot = f"{self.random.getrandbits(32):08x}"
         self.tally = Tally()
         self.made = 0
@@ -72,19 +79,20 @@ class HonestSender(threading.Thread):
             self._make_readings()
             wait_s = self._send_some() if self.waiting else 0.0
             failures = 0 if wait_s == 0.0 else failures + 1
-            self.given_up.wait(PAUSE_S + wait_s * self.random.uniform(0.5, 1.0) * min(failures, 4))
+            self.given_up.wait(self.pause_s + wait_s * self.random.uniform(0.5, 1.0) * min(failures, 4))
         self._hang_up()
 
     def _make_readings(self) -> None:
         now_us = time.time_ns() // 1000
-        while self.made < len(self.course) and self.started_us + self.course.after_us[self.made] <= now_us:
-            self.waiting.append(self.made)
-            self.made += 1
+        made = int(np.searchsorted(self.course.after_us, now_us - self.started_us, side="right"))
+        self.waiting += range(self.made, made)
+        self.made = max(self.made, made)
 
     def _send_some(self) -> float:
         """One attempt; seconds to wait before the next, 0 where it went well."""
         newest_first = self.random.random() < self.newest_share
-        batch = self.waiting[-self.random.randint(1, 6):] if newest_first else self.waiting[:self.random.randint(MOST // 2, MOST)]
+        count = self.random.randint(1, 6) if newest_first else self.random.randint(self.most // 2, self.most)
+        batch = self.waiting[-count:] if newest_first else self.waiting[:count]
         began_s = time.monotonic()
         answer = self._post(json.dumps(self._message(batch)).encode())
         if answer is None:
@@ -92,19 +100,19 @@ class HonestSender(threading.Thread):
             return 0.25
         status, headers, body = answer
         if status == 200:
-            self._heed(began_s, json.loads(body))
+            self._heed(began_s, batch, json.loads(body))
             return 0.0
         if status in (429, 503):
             self.tally.told_to_wait += 1
+            self.tally.told_503 += status == 503
             return min(float(headers["Retry-After"]), LONGEST_WAIT_S)
         self.tally.unforeseen.append((status, body.decode(errors="replace")[:300]))
         self.given_up.set()
         return 0.0
 
     def _message(self, batch: list[int]) -> dict[str, Any]:
-        columns: dict[str, list[Any]] = {"sequence": batch,
-                                         "at": [self.started_us + int(self.course.after_us[index]) for index in batch]}
-        columns |= {name: [float(values[index]) for index in batch] for name, values in self.course.columns.items()}
+        columns: dict[str, list[Any]] = {"sequence": batch, "at": (self.started_us + self.course.after_us[batch]).tolist()}
+        columns |= {name: values[batch].tolist() for name, values in self.course.columns.items()}
         return {"boot": self.boot, "now": {"at": time.time_ns() // 1000}, "taps": {self.tap: columns}}
 
     def _post(self, body: bytes) -> tuple[int, Any, bytes] | None:
@@ -124,7 +132,7 @@ class HonestSender(threading.Thread):
             self.connection.close()
             self.connection = None
 
-    def _heed(self, began_s: float, answer: dict[str, Any]) -> None:
+    def _heed(self, began_s: float, batch: list[int], answer: dict[str, Any]) -> None:
         if self.random.random() < self.lost_share:
             self.tally.lost += 1
             return
@@ -132,4 +140,5 @@ class HonestSender(threading.Thread):
         self.tally.stored += answer["stored"]
         self.tally.known += answer["known"]
         held = {number for first, last in answer["accepted"]["ranges"][self.tap] for number in range(first, last + 1)}
-        self.waiting = [number for number in self.waiting if number not in held]
+        left = [number for number in batch if number not in held]
+        self.waiting = (left + self.waiting[len(batch):] if batch[0] == self.waiting[0] else self.waiting[:-len(batch)] + left)

@@ -22,6 +22,8 @@ from tests.faults.bench import (
     visitor_of,
 )
 from tests.faults.course import EPISODES
+from tests.faults.figures import note_fault
+from tests.faults.history import balances, calls_of
 from tests.running_lab import RunningLab, clean_environ
 
 pytestmark = pytest.mark.slow
@@ -87,6 +89,11 @@ def test_reception_does_not_feel_it_and_judgement_catches_up(broker, lab_with, v
     with capsys.disabled():
         print(f"\n[broker {go_away.__name__.strip('_')}] answer took {_words(calm_s)} before, {_words(away_s)} while away; "
               f"a person's write took {write_s:.2f} s then; judged {judged_s:.1f} s after the last acknowledgement")
+    total = balances(visitor_with, taps, senders)
+    note_fault(f"broker {go_away.__name__.strip('_')}", f"for {AWAY_S:.0f} s of 40 s of sending", total,
+               calls=len(calls_of(lab_with, taps)),
+               recovered=f"reception did not feel it; judged {judged_s:.1f} s after the last acknowledgement",
+               also=f"answer took {_words(calm_s)} before, {_words(away_s)} while away")
     for tap, sender in zip(taps, senders, strict=True):
         assert sender.tally.unanswered == sender.tally.told_to_wait == 0
         told = told_of(visitor_with, tap, sender)

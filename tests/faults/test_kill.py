@@ -24,6 +24,8 @@ from tests.faults.bench import (
     visitor_of,
 )
 from tests.faults.course import DURATION_S, EPISODES
+from tests.faults.figures import note_fault
+from tests.faults.history import balances, calls_of, longest_wait_s
 from tests.running_lab import RunningLab, processes_of, until_true
 
 pytestmark = pytest.mark.slow
@@ -60,6 +62,9 @@ def test_killed_parts_lose_nothing_and_change_no_episode(lab, visitor, undisturb
         told = told_of(visitor, tap, sender)
         assert told.readings == expected_readings(sender)
         assert told.episodes == calm.episodes
+    note_fault("kill -9: " + ", ".join(victims), "at seeded moments of 40 s of sending",
+               balances(visitor, taps, senders),
+               calls=len(calls_of(lab, taps)), recovered=_recovery(senders, judged_s))
     _print_figures(capsys, killed, senders, judged_s)
     assert sum(sender.tally.known for sender in senders) > 0, "no reading was ever sent twice: the run shows nothing"
     assert _workers(lab) <= 3, processes_of(lab.folder)
@@ -86,6 +91,9 @@ def test_killed_supervisor_takes_all_down_and_the_next_start_goes_on(capsys):
             told = told_of(watcher, tap, sender)
             assert told.readings == expected_readings(sender)
             assert [episode[:4] for episode in told.episodes] == list(EPISODES)
+        note_fault("kill -9: supervisor (as a power cut)", "lab started anew on its folder",
+                   balances(watcher, taps, senders),
+                   calls=len(calls_of(second, taps)), recovered=_recovery(senders, judged_s))
         second.stop()
     _print_figures(capsys, [f"supervisor {CUT_AT_S} s"], senders, judged_s)
     shutil.rmtree(folder)
@@ -103,6 +111,11 @@ def _kill_at_random(lab, victims, generator):
         os.kill(lab.pid_of(WORDS[victim]), signal.SIGKILL)
         killed.append(f"{victim} {time.monotonic() - began_s:.1f} s")
     return killed
+
+
+def _recovery(senders, judged_s):
+    return (f"longest time between two acknowledgements {max(longest_wait_s(sender) for sender in senders):.1f} s, "
+            f"judged {judged_s:.1f} s after the last")
 
 
 def _workers(lab):

@@ -18,6 +18,7 @@ from benchmarks.lab import cpu_s, descendants, median, row, throw_away_lab
 
 PARTS_A_SECOND = 10
 SETTLE_S = 8.0
+LEAST_PROCESSES = 4  # worker, its two, beat
 
 
 def make_taps(taps: int, rate_hz: int) -> list[tuple[int, int]]:
@@ -122,13 +123,14 @@ def oldest_mark_s() -> float:
     return 0.0 if since_us is None else (now_us() - since_us) / 1e6
 
 
-def measure(taps: int, rate_hz: int, for_s: float, workers: list[int], postmaster: int) -> None:
+def measure(taps: int, rate_hz: int, for_s: float, runs: list[int], postmaster: int) -> None:
     """Feed, wait until it runs smoothly, then count."""
     feeder = Feeder(make_taps(taps, rate_hz), rate_hz)
     feeder.start()
     time.sleep(SETTLE_S)
     began, stored = time.monotonic(), feeder.stored
-    database = descendants(postmaster)
+    database, workers = descendants(postmaster), [pid for run in runs for pid in descendants(run)]
+    assert len(workers) >= LEAST_PROCESSES, "the worker has not started its processes"
     pipeline_s, database_s = cpu_s(workers), cpu_s(database)
     lags = []
     while time.monotonic() - began < for_s:
@@ -160,10 +162,9 @@ def main() -> None:
         ]
         try:
             time.sleep(4)
-            workers = [pid for run in runs for pid in descendants(run.pid)]
             postmaster = next(pid for pid in map(int, filter(str.isdigit, os.listdir("/proc"))) if _is_postgres(pid, folder))
             for taps, rate_hz in ((200, 10), (1000, 1)):
-                measure(taps, rate_hz, for_s, workers, postmaster)
+                measure(taps, rate_hz, for_s, [run.pid for run in runs], postmaster)
         finally:
             for run in runs:
                 run.terminate()

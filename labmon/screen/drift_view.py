@@ -59,13 +59,14 @@ def _facts(facts: Mapping[str, Any]) -> list[Fact]:
         Fact(name="ER of the mean leak", text=_er_text(facts["er"])),
         Fact(name="Spread", text=_spread_text(facts)),
         Fact(name="Kind of motion", text=_motion_text(facts["drift_model"])),
-        Fact(name=wander, text=_wander_text(facts)),
     ]
+    if facts["drift_model"]["motion"] not in ("bounded", "cyclic"):
+        found.append(Fact(name=wander, text=_wander_text(facts)))
     if facts["direction"] is not None and is_walk:
         found.append(Fact(name="Forgets its state within", text=_decorrelation_text(facts["drift_model"])))
     found += [
         Fact(name="Trend of the angle", text=_trend_text(facts["trend"]["angle_deg_per_day"])),
-        Fact(name="With temperature", text=_response_text(facts["temperature_response"], facts["temperature_from"])),
+        Fact(name="With temperature", text=_response_text(facts)),
         Fact(name="Worst ER of the thermal arc", text=_arc_text(facts["thermal_arc"], facts["direction"] is not None)),
     ]
     return found
@@ -120,10 +121,14 @@ def _trend_text(trend: Mapping[str, Any]) -> str:
     return f"{value} a day ({low} to {high})"
 
 
-def _response_text(response: Mapping[str, Any] | None, source: str | None) -> str:
+def _response_text(facts: Mapping[str, Any]) -> str:
+    """The straight-line response; a fibre whose phase turns far shows none, and yet a thermal arc."""
+    response, source, arc = facts["temperature_response"], facts["temperature_from"], facts["thermal_arc"]
     if response is None:
         return "no temperature known"
     beside = f" (temperatures of {source})" if source else ""
+    if response["verdict"] != "relation shown" and arc is not None and (arc["seen_as"], arc["verdict"]) == ("leak", "measured"):
+        return "turns the fibre's phase, see the thermal arc; no straight line" + beside
     if response["verdict"] != "relation shown":
         return response["verdict"] + beside
     value = number_text(response["angle_deg_per_k"], 2, "°", always_signed=True)

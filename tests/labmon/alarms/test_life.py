@@ -79,8 +79,9 @@ class Life(RuleBasedStateMachine):
         self.tap = make_tap()
         experiment = make_experiment(self.tap, owner=self.people[0])
         delays = {"on_delay_s": 3.0, "off_delay_s": 3.0, "deadband": 1.0}
+        since, owner = NOON - timedelta(hours=1), self.people[0]
         self.limit = set_limit(
-            experiment, self.tap, "er_db", alarm=20.0, warning=23.0, valid_from=NOON - timedelta(hours=1), by=self.people[0], **delays
+            experiment, self.tap, "er_db", alarm=20.0, warning=23.0, valid_from=since, by=owner, **delays
         ).limit
 
     def teardown(self):

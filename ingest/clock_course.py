@@ -3,6 +3,7 @@
 Each batch was sent at a moment of the station's clock and arrived at one of the server's: their difference is the clock's
 offset plus the way, and the way is never negative. So the lowest differences follow the clock (the minimum filter of NTP's
 clock filter, RFC 5905 section 10; from memory). Offset, skew and step come from the lowest of each of some bins.
+Source: docs/formulas.md, F-119.
 """
 
 from dataclasses import dataclass

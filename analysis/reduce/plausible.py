@@ -2,6 +2,7 @@
 
 The bounds are our own: powers beyond them are not met in a laboratory's single-mode fibres. A continuous 10 W destroys a
 usual fibre connector; 0.1 pW lies below any slow detector that is not cooled (common practice, no source).
+Source: docs/formulas.md, F-117.
 """
 
 from enum import StrEnum

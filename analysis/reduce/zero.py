@@ -4,7 +4,7 @@ The error of the mean comes from the means of consecutive batches, so that slow 
 readings (batch means: Law and Kelton, Simulation Modeling and Analysis; from memory). A stretch is *not steady* where its
 two halves differ by more than their errors allow, or one reading stands far off: someone opened the shutter meanwhile. It
 is *not dark* where a port shows more than a small share of the usual *bright* light: a dark port's own usual reading may be
-mostly zero, and says nothing.
+mostly zero, and says nothing. Source: docs/formulas.md, F-115, F-116.
 """
 
 from dataclasses import dataclass

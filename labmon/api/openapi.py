@@ -108,6 +108,10 @@ PATHS: dict[str, dict[str, Operation]] = {
                     parameters=(in_path("id", ID),)),
         "post": call("A new limit, or a new version of it.", {201: answer("The version.", "Limit")},
                      parameters=(in_path("id", ID),), body="NewLimit", faults=WRITE)},
+    f"{BASE}/experiments/{{id}}/limits/rehearse": {"post": call(
+        "Try a proposed limit on the stored past, with the fold that judges live; writes nothing.",
+        {200: answer("What it would have raised.", "Rehearsal")}, parameters=(in_path("id", ID),), body="Proposal",
+        faults=WRITE)},
     f"{BASE}/alarms": {"get": call(
         "Alarms, newest first.", {200: answer("The alarms.", "Alarms")},
         parameters=(in_query("state", {"type": "string", "enum": list(ALARM_STATES)}, "Only in this state."),

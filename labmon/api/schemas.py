@@ -133,6 +133,18 @@ NEW_EXPERIMENT = shape({"name": TEXT, "taps": many(TAP_PATH), "no_reading_after_
                         "untrusted_after_s": NUMBER}, optional=("no_reading_after_s", "untrusted_after_s"))
 NEW_LIMIT = shape({"tap": TAP_PATH, "quantity": {"type": "string", "enum": list(LIMITED)}, **_LIMIT_VALUES},
                   optional=tuple(name for name in _LIMIT_VALUES if name != "alarm"))
+PROPOSAL = shape(
+    {"tap": TAP_PATH, "quantity": {"type": "string", "enum": list(LIMITED)}}
+    | {name: schema for name, schema in _LIMIT_VALUES.items() if name not in {"in_runs_only", "reason"}}
+    | {"hard": or_null(NUMBER), "days": {"type": "number", "exclusiveMinimum": 0, "maximum": 31, "default": 30}},
+    optional=("warning", "on_delay_s", "off_delay_s", "deadband", "hard", "days"),
+    text="hard: the level that lead times are measured to.")
+REHEARSAL = shape({
+    "from": TIME, "until": TIME, "count": COUNT, "at_night": COUNT, "longest_s": or_null(NUMBER), "open_s": NUMBER,
+    "read_share": NUMBER,
+    "calls": many(shape({"raised_at": TIME, "returned_at": or_null(TIME), "alarm_at": or_null(TIME),
+                         "lead_s": or_null(NUMBER)})),
+}, text="at_night: begun between 22:00 and 06:00 UTC. lead_s: from the call to the first second beyond hard; negative: too late.")
 NEW_CALIBRATION = shape({name: schema for name, schema in CALIBRATION["properties"].items()
                          if name not in {"tap", "entered_at", "entered_by"}} | {"reason": TEXT},
                         optional=(*CALIBRATION["properties"], "reason"),
@@ -176,7 +188,8 @@ NAMED: dict[str, Schema] = {
     "Problem": PROBLEM, "Tap": TAP, "Station": STATION, "Now": NOW, "History": HISTORY, "Experiment": EXPERIMENT,
     "Limit": LIMIT, "Limits": LIMITS, "Alarm": ALARM, "Calibration": CALIBRATION, "NewExperiment": NEW_EXPERIMENT,
     "NewLimit": NEW_LIMIT, "NewCalibration": NEW_CALIBRATION, "Acknowledgement": ACKNOWLEDGEMENT,
-    "Shelving": SHELVING, "Hold": HOLD, "NewHold": NEW_HOLD, "Holds": shape({"holds": many(ref("Hold"))}),
+    "Proposal": PROPOSAL, "Rehearsal": REHEARSAL, "Shelving": SHELVING,
+    "Hold": HOLD, "NewHold": NEW_HOLD, "Holds": shape({"holds": many(ref("Hold"))}),
     "Batch": BATCH,
     "Accepted": ACCEPTED,
     "Stations": shape({"stations": many(ref("Station"))}),

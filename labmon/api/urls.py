@@ -9,6 +9,7 @@ from labmon.api.experiments import get_experiments, get_limits, post_experiment,
 from labmon.api.holds import get_holds, post_end_hold, post_hold
 from labmon.api.openapi import get_openapi
 from labmon.api.readings import get_readings
+from labmon.api.rehearsal import post_rehearse
 from labmon.api.stations import get_stations
 from labmon.api.statistics import get_statistics
 from labmon.api.taps import get_history, get_now, patch_calibration
@@ -52,6 +53,7 @@ urlpatterns = [
     path(TAP + "calibration", by_method(PATCH=patch_calibration), name="calibration"),
     path("experiments", by_method(GET=get_experiments, POST=post_experiment), name="experiments"),
     path("experiments/<row:experiment_id>/limits", by_method(GET=get_limits, POST=post_limit), name="limits"),
+    path("experiments/<row:experiment_id>/limits/rehearse", by_method(POST=post_rehearse), name="rehearse"),
     path("alarms", by_method(GET=get_alarms), name="alarms"),
     path("alarms/<row:alarm_id>/acknowledge", by_method(POST=post_acknowledge), name="acknowledge"),
     path("alarms/<row:alarm_id>/shelve", by_method(POST=post_shelve), name="shelve"),

@@ -1,5 +1,8 @@
 """Experiments: the list, a new one, and one with its limits."""
 
+from datetime import datetime
+from typing import Any, Final
+
 from django.contrib import messages
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import get_object_or_404, redirect, render
@@ -7,22 +10,28 @@ from django.utils import timezone
 from django.views.decorators.http import require_http_methods, require_POST, require_safe
 
 from ingest.models import Tap
+from ingest.times import SECOND_US, now_us
 from labmon.alarms.queries import alarm_rows
 from labmon.errors import NotAllowed, WriteError
 from labmon.experiments.actions import create_experiment, retire_limit, set_limit
 from labmon.experiments.models import Experiment
 from labmon.experiments.queries import experiment_facts, experiment_rows
+from labmon.experiments.rehearsal import rehearse_limit
+from labmon.experiments.rules import LimitWish
 from labmon.people.models import Person, Role
 from labmon.people.rights import Action, may, require, role_of, taps_visible_to
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people, put_refusal, say_refusal
 from labmon.screen.experiment_view import experiment_sentence, experiments_sentence, ladder, limit_view
 from labmon.screen.forms import ExperimentForm, LimitForm
+from labmon.screen.holds import holds_shown
 from labmon.screen.named import visible_experiment
 from labmon.screen.present import age_text
+from labmon.screen.rehearsal_view import RehearsalView, rehearsal_view
 
 RECENT_ALARMS = 30
 USUAL_SILENCE_S = 60.0
+REHEARSED_US: Final = 30 * 86_400 * SECOND_US
 
 
 @require_safe
@@ -93,6 +102,40 @@ def set_limit_page(request: HttpRequest, experiment_id: int) -> HttpResponse:
 
 @require_POST
 @for_people
+def rehearse_limit_page(request: HttpRequest, experiment_id: int) -> HttpResponse:
+    """What the limit in the form would have done in the last 30 days; writes nothing."""
+    found = visible_experiment(request.user, experiment_id)
+    require(request.user, Action.SET_LIMIT, found)
+    form = _limit_form(found, request.POST)
+    form.fields["reason"].required = False
+    rehearsal = None
+    if form.is_valid():
+        try:
+            rehearsal = _rehearsed(found, form.cleaned_data)
+        except WriteError as error:
+            put_refusal(form, error)
+    if "X-Labmon-Part" in request.headers:
+        return render(request, "screen/_rehearsal.html", {"rehearsal": rehearsal}, status=200 if rehearsal else 422)
+    return _show(request, found, form, 200 if rehearsal else 422, rehearsal)
+
+
+def _rehearsed(experiment: Experiment, typed: dict[str, Any]) -> RehearsalView:
+    tap = _taps_of(experiment)[typed["tap"]]
+    own = {name: typed[name] for name in ("alarm", "warning", "on_delay_s", "off_delay_s", "deadband")}
+    standing = [
+        limit.alarm
+        for limit in experiment_facts(experiment).limits
+        if (limit.tap_id, limit.quantity) == (tap.pk, typed["quantity"]) and not limit.is_retired
+    ]
+    clock_us = now_us()
+    found = rehearse_limit(
+        tap, typed["quantity"], LimitWish(**own), clock_us - REHEARSED_US, clock_us, clock_us, hard=next(iter(standing), None)
+    )
+    return rehearsal_view(found)
+
+
+@require_POST
+@for_people
 def retire_limit_page(request: HttpRequest, experiment_id: int, limit_id: int) -> HttpResponse:
     """End a limit; its history stays."""
     found = visible_experiment(request.user, experiment_id)
@@ -107,7 +150,8 @@ def retire_limit_page(request: HttpRequest, experiment_id: int, limit_id: int) -
     return redirect("experiment", experiment_id=found.pk)
 
 
-def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, status: int = 200) -> HttpResponse:
+def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, status: int = 200,
+          rehearsal: RehearsalView | None = None) -> HttpResponse:
     facts = experiment_facts(experiment)
     now = timezone.now()
     alarms = [alarm_view(row, now) for row in alarm_rows(request.user, experiment=experiment.pk, limit=RECENT_ALARMS)]
@@ -127,11 +171,20 @@ def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, 
             "waiting": [view for view in alarms if view.is_waiting],
             "alarms": [view for view in alarms if not view.is_waiting],
             "ladder": ladder(),
+            "rehearsal": rehearsal,
+            **_holds_of(request, experiment, now),
             "silence": age_text(experiment.no_reading_after_s or USUAL_SILENCE_S),
             "untrusted": age_text(experiment.untrusted_after_s),
         },
         status=status,
     )
+
+
+def _holds_of(request: HttpRequest, experiment: Experiment, now: datetime) -> dict[str, Any]:
+    """The banner, for the taps that the experiment watches."""
+    shown = holds_shown(request, now)
+    names = set(_taps_of(experiment))
+    return shown | {"holds": [hold for hold in shown["holds"] if hold.tap in names]}
 
 
 def _limit_form(experiment: Experiment, typed=None) -> LimitForm:

@@ -53,6 +53,7 @@ urlpatterns = [
     path("experiments/new/", experiments.new_experiment_page, name="new-experiment"),
     path("experiments/<int:experiment_id>/", experiments.experiment_page, name="experiment"),
     path("experiments/<int:experiment_id>/limits/", experiments.set_limit_page, name="set-limit"),
+    path("experiments/<int:experiment_id>/limits/rehearse/", experiments.rehearse_limit_page, name="rehearse-limit"),
     path("experiments/<int:experiment_id>/limits/<int:limit_id>/retire/", experiments.retire_limit_page, name="retire-limit"),
     path("audit/", audit.audit_page, name="audit"),
     path("health/", health.health_page, name="health"),

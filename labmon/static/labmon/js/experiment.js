@@ -24,4 +24,35 @@ function follow(form) {
   show();
 }
 
-for (const form of document.querySelectorAll('form[data-limits]')) follow(form);
+const QUIET_MS = 400;
+
+/** Asks anew what the limit would have done, when nothing was typed for a moment; an older answer never covers a newer one. */
+function rehearse(form) {
+  const button = form.querySelector('[data-rehearse]');
+  const shown = form.querySelector('#rehearsal');
+  if (!button || !shown) return;
+  let timer = 0;
+  let asked = null;
+  const ask = async () => {
+    asked?.abort();
+    asked = new AbortController();
+    try {
+      const answer = await fetch(button.formAction, {
+        method: 'POST', body: new FormData(form), headers: { 'X-Labmon-Part': '1' }, signal: asked.signal,
+      });
+      if (answer.ok || answer.status === 422) shown.innerHTML = await answer.text();
+    } catch {
+      // Typed on, or the server is away: the button still asks.
+    }
+  };
+  form.addEventListener('input', (event) => {
+    if (event.target.name === 'reason') return;
+    clearTimeout(timer);
+    timer = setTimeout(ask, QUIET_MS);
+  });
+}
+
+for (const form of document.querySelectorAll('form[data-limits]')) {
+  follow(form);
+  rehearse(form);
+}

@@ -16,8 +16,9 @@ from analysis.quantities import US_PER_S, FloatArray, IntArray
 
 #: Cells are kept in single precision: one this close to the level, relative to it, is looked at in full.
 NEAR_SHARE: Final = 1e-3
-#: So long a span is read at a time while something is open.
+#: So long a span is read at a time; four times as long as before where the next is near too, up to `LONGEST_STEP_US`.
 STEP_US: Final = 3600 * US_PER_S
+LONGEST_STEP_US: Final = 4 * 86_400 * US_PER_S
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,10 +73,12 @@ def rehearse(
     events: list[Event] = []
     hard_us: list[int] = []
     read_us = index = 0
+    step_us = STEP_US
     while index < len(near_us) or (position < until_us and not is_idle(state)):
-        if is_idle(state):
-            position = max(int(near_us[index]), position)
-        end_us = min(position + STEP_US, until_us)
+        start = max(int(near_us[index]), position) if is_idle(state) else position
+        step_us = min(4 * step_us, LONGEST_STEP_US) if read_us and start - position < STEP_US else STEP_US
+        position = start
+        end_us = min(position + step_us, until_us)
         index = max(int(np.searchsorted(near_us, end_us - cell_us, side="right")), index)
         if end_us <= position:
             break

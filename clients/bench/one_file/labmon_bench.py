@@ -1657,6 +1657,8 @@ class Source(Protocol):
 _HEAD_BYTES = 1_024
 _TAIL_BYTES = 4_096
 _AT_ONCE_BYTES = 256 << 10
+_LOOKS = 3
+"""A file that is renamed between the listing and the look is in the next listing."""
 _PACKED = {".gz", ".bz2", ".xz", ".zip", ".zst"}
 
 
@@ -1752,12 +1754,13 @@ class CsvFile:
 
     def _found_again(self, point: _Point) -> _Point | None:
         """The point in its file, or in the file's new name; None where what was read stands nowhere."""
-        path = Path(point.path)
-        found = [place for place in [path, *(self._beside(path) if point.offset else [])] if _stands_in(place, point)]
-        if not found:
-            return None
-        same = [place for place in found if _file_number(place) == point.file_number]  # decides where a header is all there is
-        return replace(point, path=str((same or found)[0]))
+        path, found = Path(point.path), []
+        for _ in range(_LOOKS if point.offset else 1):
+            found = [place for place in [path, *(self._beside(path) if point.offset else [])] if _stands_in(place, point)]
+            same = [place for place in found if _file_number(place) == point.file_number]
+            if same:  # decides where a header is all there is
+                return replace(point, path=str(same[0]))
+        return replace(point, path=str(found[0])) if found else None
 
     def _beside(self, path: Path) -> list[Path]:
         """Files that rotation may have made: ``power.csv.1``, ``power-2.csv``, ``power.1.csv``."""
@@ -1775,6 +1778,7 @@ class CsvFile:
                 found = file.read(_AT_ONCE_BYTES)
                 whole = found[:found.rfind(b"\n") + 1]
                 head, tail = _digests(file, point.offset + len(whole))
+                number = os.fstat(file.fileno()).st_ino  # of the file that was read, whatever has its name by now
         except OSError as error:
             raise SourceFault(f"{path} cannot be read ({error.strerror}); may this user read it?") from error
         is_end = len(found) < _AT_ONCE_BYTES
@@ -1784,7 +1788,7 @@ class CsvFile:
             self._is_watched = self._is_watched or is_end
             return [], None
         rows, after = self._rows(whole, replace(point, offset=point.offset + len(whole), head=head, tail=tail,
-                                                file_number=_file_number(path)))
+                                                file_number=number))
         new, counts, passed = self._new_rows(rows, point)
         readings = self._readings(new, after)
         after = replace(after, is_again=point.is_again and not is_end, is_skipped=point.is_skipped and not is_end)

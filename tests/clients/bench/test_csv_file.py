@@ -310,3 +310,25 @@ def test_local_time_that_happened_twice_is_refused(monkeypatch):
     finally:
         monkeypatch.undo()
         time.tzset()
+
+
+@pytest.mark.parametrize("last", [1, 12], ids=["only its header was read", "rows were read"])
+def test_a_file_renamed_between_the_listing_and_the_look_is_read_to_its_end(followed, monkeypatch, last):
+    """Found by killing the client under load: its listing was older than the rotation, and the old file's last row was lost."""
+    followed.file.write_text(HEADER + rows(1, last))
+    followed.poll()
+    true_beside, turns = CsvFile._beside, []
+
+    def beside(self, path):
+        listed = true_beside(self, path)
+        if not turns:
+            turns.append(followed.file.write_text(HEADER + rows(1, last + 1)))
+            followed.file.rename(followed.folder / "power.csv.1")
+            followed.file.write_text(HEADER)
+        return listed
+
+    monkeypatch.setattr(CsvFile, "_beside", beside)
+    followed.poll()
+    followed.file.write_text(HEADER + rows(last + 1, last + 3))
+    followed.poll()
+    assert turns and followed.numbers() == list(range(1, last + 3))

@@ -12,6 +12,7 @@ import pytest
 
 from ingest.models import SetAside, StationBoot
 from tests.clients.bench.conftest import client, free_port, server, status_of, write_settings
+from tests.faults.figures import balance_of, note_fault
 from tests.running_lab import until_true
 
 PORTS = """
@@ -111,7 +112,12 @@ def test_killed_twice_and_the_door_once(sender, tmp_path):
 @pytest.mark.parametrize("seed", [2, 3])
 def test_killed_many_times(sender, tmp_path, seed):
     logger, status = killed_course(sender, tmp_path, 19, seed)
-    print(judge(sender, tmp_path, 19, logger, status))
+    counted = judge(sender, tmp_path, 19, logger, status)
+    rows = [int(value) for value in sender.stored("adc").column("port1").tolist()]
+    note_fault("bench client kill -9", "19 lives, and the door killed in every third", balance_of(range(logger.count), rows),
+               recovered="by the next life",
+               also=f"rows of a followed file; of {counted['calls']} calls of a function "
+               f"{counted['in hand when killed']} were in hand when killed")
 
 
 def test_a_pipe_that_ends_is_sent_to_its_end(sender, tmp_path):

@@ -13,6 +13,7 @@ from django.db import connection
 from ingest.models import DoorUp, SetAside, Station, StationKey, TapBoot
 from ingest.stations import revoke_key
 from ingest.store.read import read_readings
+from tests.faults.figures import balance_of, note_fault
 from tests.ingest.conftest import EVER, two_port
 from tests.ingest.mqtt.conftest import Bench, SubscriberProcess, until
 
@@ -182,7 +183,10 @@ def test_a_broker_killed_hard_loses_what_it_took_and_the_bench_has_it_still(send
     assert list(station.kept) == list(range(10, 60))
     station.measure(list(station.kept))
     station.hear(50)
-    assert not station.kept and sorted(sender.stored().sequence.tolist()) == list(range(61))
+    found = sorted(sender.stored().sequence.tolist())
+    note_fault("MQTT broker kill -9", "it lost 50 messages that it had acknowledged", balance_of(range(61), found),
+               recovered="with the bench's repeat", also="identities compared")
+    assert not station.kept and found == list(range(61))
     again.stop()
 
 
@@ -201,6 +205,11 @@ def test_killed_at_any_moment_every_message_is_stored_once(sender, bench, broker
     last = SubscriberProcess(broker)
     until(lambda: len(sender.stored()) == 10 * sent, within_s=60)
     last.stop()
-    assert sender.stored().sequence.tolist() == list(range(10 * sent))
+    stored = sender.stored()
+    rows = list(zip(stored.sequence.tolist(), stored.column("port1").tolist(), stored.column("port2").tolist(), strict=True))
+    made = two_port(0, 10 * sent)["taps"]["eom-in"]
+    balance = balance_of(zip(made["sequence"], made["port1"], made["port2"], strict=True), rows)
+    note_fault("MQTT subscriber kill -9", "ten subscribers in turn, under load", balance, recovered="by the next subscriber")
+    assert balance.is_exact and stored.sequence.tolist() == list(range(10 * sent))
     tap = TapBoot.objects.get().tap_id
     assert len(read_readings(tap, *EVER)) == 10 * sent

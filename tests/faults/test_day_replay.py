@@ -29,7 +29,8 @@ def test_a_day_of_spool_is_sent_and_judged(lab, visitor):
     sent_s = time.monotonic() - began_s
     await_judged(lab)
     took_s = time.monotonic() - began_s
-    found, calls, expected = balance(visitor, tap, senders[0]), calls_of(lab, taps), episodes_by_fold(tap, STEP_US / 1e6)
+    calls = [call for call in calls_of(lab, taps) if call[1] == "limit"]  # the silence behind the day is of now, and may call
+    found, expected = balance(visitor, tap, senders[0]), episodes_by_fold(tap, STEP_US / 1e6)
     told = episodes_of_span(lab, tap, senders[0])
     note_fault("24 h spool replayed", "1 tap at 10 Hz by one HTTP connection, JSON", found,
                calls=f"{len(calls)} of {len(expected)} episodes",

@@ -124,7 +124,8 @@ def test_twenty_fold_storm(lab, visitor, second_port, is_together):
     total = balances(visitor, taps, senders)
     for tap, sender in zip(taps, senders, strict=True):
         assert [episode[:3] for episode in told_of(visitor, tap, sender).episodes] == episodes_by_fold(tap, STEP_US / 1e6)
-    calls, sent = calls_of(lab, taps), sum(lane.readings for lane in lanes)
+    calls = [call for call in calls_of(lab, taps) if call[1] == "limit"]  # the silence behind the storm is of now, and may call
+    sent = sum(lane.readings for lane in lanes)
     note_fault("duplicate storm", f"every reading sent {TIMES} times over {TIMES} connections a station to 2 web processes, "
                + ("the same batch at once" if is_together else "each lane cut and ordered in its own way"), total,
                calls=f"{len(calls)} of 4 episodes", recovered=f"judged {judged_s:.1f} s after the last answer",

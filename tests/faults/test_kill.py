@@ -91,7 +91,7 @@ def test_killed_supervisor_takes_all_down_and_the_next_start_goes_on(capsys):
             told = told_of(watcher, tap, sender)
             assert told.readings == expected_readings(sender)
             assert [episode[:4] for episode in told.episodes] == list(EPISODES)
-        note_fault("kill -9: supervisor (as a power cut)", "lab started anew on its folder",
+        note_fault("kill -9: supervisor, and all with it", "lab started anew on its folder",
                    balances(watcher, taps, senders),
                    calls=len(calls_of(second, taps)), recovered=_recovery(senders, judged_s))
         second.stop()

@@ -23,11 +23,11 @@ def acknowledge_alarm(alarm_id: int, *, by: Person, note: str = "") -> Alarm:
     """
     alarm = Alarm.objects.select_for_update(of=("self",)).select_related("tap__station").get(pk=alarm_id)
     if alarm.acknowledged_at is None:
-        before = alarm.state
-        alarm.acknowledged_at, alarm.acknowledged_by, alarm.note = timezone.now(), by, note[:500]
+        before, note = alarm.state, note.replace("\0", "")[:500]  # the database takes no NUL
+        alarm.acknowledged_at, alarm.acknowledged_by, alarm.note = timezone.now(), by, note
         alarm.state, alarm.changed = state_of(alarm), alarm.changed + 1
         alarm.save(update_fields=["acknowledged_at", "acknowledged_by", "note", "state", "changed"])
-        audit_note(by, "acknowledge alarm", alarm, {"state": before}, {"state": alarm.state}, note[:500])
+        audit_note(by, "acknowledge alarm", alarm, {"state": before}, {"state": alarm.state}, note)
         log.info("alarm_acknowledged", extra={"alarm_id": alarm.pk, "person_id": by.pk})
         publish({"kind": "alarm", "ids": [alarm.pk]})
     return alarm

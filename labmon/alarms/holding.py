@@ -113,7 +113,7 @@ def _lock(tap_id: int) -> None:
 
 
 def _begin(kind: HoldKind, held: Held, by: Person, reason: str, lasts: timedelta | None) -> AlarmHold:
-    why = reason.strip()[:500]
+    why = reason.replace("\0", "").strip()[:500]  # the database takes no NUL
     if not why:
         raise WriteError("reason", "Nobody would know why.", "Say in a few words why it is quiet.")
     _lock(held.tap.pk)

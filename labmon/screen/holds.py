@@ -1,5 +1,6 @@
 """Keeping alarms quiet: the banner that says so, and the forms that begin and end it."""
 
+from collections import defaultdict
 from datetime import datetime
 from typing import Any
 
@@ -40,10 +41,13 @@ def quiet_choices(request: HttpRequest, station: Station) -> dict[str, Any]:
     """What of a bench one may keep quiet, and for how long."""
     taps = list(station.taps.order_by("name"))
     limits = Limit.objects.filter(tap__in=taps, experiment__in=experiments_visible_to(request.user))
+    limits_of: dict[int, list[Limit]] = defaultdict(list)
+    for limit in limits.select_related("experiment", "tap").order_by("pk"):
+        limits_of[limit.tap_id].append(limit)
     choices = []
     for tap in taps:
         choices.append((f"{tap.pk}::", f"{tap.name}: all its alarms"))
-        for limit in limits.filter(tap=tap).select_related("experiment").order_by("pk"):
+        for limit in limits_of[tap.pk]:
             words = held_words(AlarmHold(tap=tap, limit=limit, alarm_kind=AlarmKind.LIMIT))
             choices.append((f"{tap.pk}:limit:{limit.pk}", f"{tap.name}: {words}"))
         for kind in (AlarmKind.NO_READING, AlarmKind.UNTRUSTED):

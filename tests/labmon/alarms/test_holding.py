@@ -51,6 +51,12 @@ def test_never_for_longer_than_four_hours(alarm, owner, for_s):
         shelve(Held.of_alarm(alarm), by=owner, for_s=for_s, reason="x")
 
 
+def test_a_nul_in_a_text_is_left_out(alarm, owner):
+    """PostgreSQL stores no NUL in text; a form may send one."""
+    assert shelve(Held.of_alarm(alarm), by=owner, for_s=HOUR_S, reason="new\0 cord").reason == "new cord"
+    assert acknowledge_alarm(alarm.pk, by=owner, note="se\0en").note == "seen"
+
+
 def test_never_without_a_reason(alarm, owner):
     for begin in (lambda: shelve(Held.of_alarm(alarm), by=owner, for_s=60, reason=" "),
                   lambda: take_out_of_service(Held(alarm.tap), by=owner, reason="")):

@@ -116,9 +116,7 @@ def test_missing_readings_are_told(stokes):
 
 
 @pytest.mark.django_db
-def test_the_page_has_a_section_a_tap_at_one_query_however_many_taps_and_days(client, stokes, two_port, monkeypatch):
-    # The choices of what to keep quiet ask once a tap; that is theirs to mend, and left out of the count here.
-    monkeypatch.setattr("labmon.screen.station.quiet_choices", lambda *_: {"quiet_choices": [], "quiet_times": []})
+def test_the_page_has_a_section_a_tap_at_one_query_however_many_taps_and_days(client, stokes, two_port):
     client.force_login(make_person(Role.RESEARCHER))
     station = make_station("n2")
 

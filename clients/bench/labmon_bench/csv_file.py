@@ -2,12 +2,14 @@
 
 The place is an offset with digests of what stands before it. Where they no longer fit, the file was rotated, cut or written
 anew: the rest of the old one is looked for beside it, then the file is read from its start, and lines seen before are left
-out. The file is never held open, so its writer may rename it.
+out. The file is never held open, so its writer may rename it at any instant: what was read counts only if the files beside
+it had the same names before and after.
 """
 
 from __future__ import annotations
 
 import csv
+import fnmatch
 import hashlib
 import os
 from collections import Counter
@@ -27,7 +29,7 @@ _HEAD_BYTES = 1_024
 _TAIL_BYTES = 4_096
 _AT_ONCE_BYTES = 256 << 10
 _LOOKS = 3
-"""A file that is renamed between the listing and the look is in the next listing."""
+"""How often a folder is looked at anew, where files were renamed while it was looked at, before it is left for the next time."""
 _PACKED = {".gz", ".bz2", ".xz", ".zip", ".zst"}
 
 
@@ -69,7 +71,7 @@ class CsvFile:
         state = store.place(self.source)
         self._point = None if state is None else _Point(**state)
         if self._point is not None and self._point.is_again:
-            self._point = _Point(self._point.path, is_skipped=self._point.is_skipped)
+            self._point = _Point(self._point.path, file_number=self._point.file_number, is_skipped=self._point.is_skipped)
         self._passed: Counter[bytes] = Counter()
         self._is_watched = False
         self._next: tuple[_Point, Counter[bytes], bool] | None = None
@@ -80,6 +82,23 @@ class CsvFile:
         if self._odd:
             odd, self._odd = self._odd, []
             raise OddLine(f"{len(odd)} lines of {self.settings.file.name} were left out, the first: {odd[0]}")
+        kept = self._is_watched, self._passed
+        for turn in range(_LOOKS):
+            names = self._names()
+            try:
+                found = self._look()
+            except SourceFault:
+                if self._names() == names or turn == _LOOKS - 1:
+                    raise
+            else:
+                if self._names() == names:
+                    return found
+            self._is_watched, self._passed = kept
+            self._next, self._odd = None, []
+        return [], None
+
+    def _look(self) -> tuple[list[Reading], Place | None]:
+        """New rows, right only if no file is renamed meanwhile."""
         current = self._current()
         if self._point is None:
             return self._read_on(_Point(str(current), is_skipped=not self.settings.is_from_start))
@@ -89,7 +108,7 @@ class CsvFile:
             if place is not None or Path(point.path) == current:
                 return readings, place
             current = self._following(Path(point.path), current)
-        self._passed.clear()
+        self._passed = Counter()
         return self._read_on(_Point(str(current)))
 
     def kept(self) -> None:
@@ -123,18 +142,28 @@ class CsvFile:
 
     def _found_again(self, point: _Point) -> _Point | None:
         """The point in its file, or in the file's new name; None where what was read stands nowhere."""
-        path, found = Path(point.path), []
-        for _ in range(_LOOKS if point.offset else 1):
-            found = [place for place in [path, *(self._beside(path) if point.offset else [])] if _stands_in(place, point)]
-            same = [place for place in found if _file_number(place) == point.file_number]
-            if same:  # decides where a header is all there is
-                return replace(point, path=str(same[0]))
+        path = Path(point.path)
+        found = [place for place in [path, *self._beside(path)] if _stands_in(place, point)]
+        same = [place for place in found if _file_number(place) == point.file_number]
+        if same:  # decides where a header is all there is
+            return replace(point, path=str(same[0]))
+        if not point.offset:  # stands in every file
+            found = [place for place in found if place == path]
         return replace(point, path=str(found[0])) if found else None
+
+    def _names(self) -> dict[str, int]:
+        """The files that rotation concerns, by name, each with the system's number."""
+        file = self.settings.file
+        try:
+            with os.scandir(file.parent) as entries:
+                return {entry.name: entry.inode() for entry in entries if entry.name.startswith(_stem(file))
+                        and (file.suffix in Path(entry.name).suffixes or fnmatch.fnmatch(entry.name, file.name))}
+        except OSError:
+            return {}
 
     def _beside(self, path: Path) -> list[Path]:
         """Files that rotation may have made: ``power.csv.1``, ``power-2.csv``, ``power.1.csv``."""
-        file = self.settings.file
-        stem = file.name.split(".")[0].split("*")[0].split("?")[0].split("[")[0]
+        file, stem = self.settings.file, _stem(self.settings.file)
         return sorted(other for other in file.parent.glob("*") if other != path and other.name.startswith(stem)
                       and file.suffix in other.suffixes and other.suffix not in _PACKED and other.is_file())
 
@@ -221,6 +250,11 @@ class CsvFile:
 def _fitting(file: Path) -> list[Path]:
     """Files that a name or a pattern means."""
     return list(file.parent.glob(file.name)) if any(sign in file.name for sign in "*?[") else [file]
+
+
+def _stem(file: Path) -> str:
+    """What the names of all files begin with that rotation may make."""
+    return file.name.split(".")[0].split("*")[0].split("?")[0].split("[")[0]
 
 
 def _cell(cells: Sequence[str], column: str, names: Sequence[str]) -> str:

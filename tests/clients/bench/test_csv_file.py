@@ -332,3 +332,78 @@ def test_a_file_renamed_between_the_listing_and_the_look_is_read_to_its_end(foll
     followed.file.write_text(HEADER + rows(last + 1, last + 3))
     followed.poll()
     assert turns and followed.numbers() == list(range(1, last + 3))
+
+
+def rotated(followed, turn, old, new):
+    """The writer ends its file with some rows and begins another under its name."""
+    with followed.file.open("a") as file:
+        file.write(old)
+    followed.file.rename(followed.folder / f"power.csv.{turn}")
+    followed.file.write_text(HEADER + new)
+
+
+def once_behind(monkeypatch, name, when, then):
+    """Something that happens just behind the first call of a method that fits."""
+    true, done = getattr(CsvFile, name), []
+
+    def method(self, *words):
+        found = true(self, *words)
+        if not done and when(*words):
+            done.append(then())
+        return found
+
+    monkeypatch.setattr(CsvFile, name, method)
+    return done
+
+
+def test_a_file_renamed_between_the_look_and_the_reading(followed, monkeypatch):
+    """Only its header was read, so the new file goes on behind the place as well as the old one does."""
+    followed.file.write_text(HEADER)
+    followed.poll()
+    done = once_behind(monkeypatch, "_found_again", lambda point: True, lambda: rotated(followed, 1, rows(0, 3), rows(3, 5)))
+    followed.poll()
+    followed.poll()
+    assert done and followed.numbers() == list(range(5))
+
+
+def test_a_file_renamed_while_its_forerunner_is_left(followed, monkeypatch):
+    """Two rotations: the second falls into the search for what follows the first file."""
+    followed.file.write_text(HEADER + rows(0, 3))
+    followed.poll()
+    rotated(followed, 1, rows(3, 5), rows(5, 8))
+    followed.store.keep(*followed.source.read())
+    followed.source.kept()
+    done = once_behind(monkeypatch, "_beside", lambda path: path.name == "power.csv.1",
+                       lambda: rotated(followed, 2, rows(8, 9), rows(9, 11)))
+    for _ in range(3):
+        followed.poll()
+    assert done and sorted(followed.numbers()) == list(range(11))
+
+
+def test_an_empty_file_that_was_seen_and_is_rotated_full(followed):
+    """A writer opens its file before it writes the header."""
+    followed.file.write_text("")
+    followed.poll()
+    followed.kill()
+    rotated(followed, 1, HEADER + rows(0, 3), rows(3, 5))
+    for _ in range(3):
+        followed.poll()
+    assert followed.numbers() == list(range(5))
+
+
+def test_a_folder_that_never_stands_still_is_left_for_the_next_time(followed, monkeypatch):
+    followed.file.write_text(HEADER + rows(0, 3))
+    turns = iter(range(100))
+    true_current = CsvFile._current
+
+    def current(self):
+        (followed.folder / f"power.csv.old{next(turns)}").write_text("")
+        return true_current(self)
+
+    with monkeypatch.context() as patch:
+        patch.setattr(CsvFile, "_current", current)
+        assert followed.source.read() == ([], None)
+        followed.source.kept()
+    assert next(turns) == 3
+    followed.poll()
+    assert followed.numbers() == [0, 1, 2]

@@ -1,6 +1,7 @@
 """A beat that sends tasks only while it holds the lab's one beat lock, so that two may run and one counts."""
 
 import logging
+from contextlib import suppress
 from typing import Any
 
 import psycopg
@@ -42,8 +43,10 @@ class BeatLock:
         return False
 
     def release(self) -> None:
-        """Give it back."""
+        """Give it back, at once where the database is there: a closed connection's lock goes a moment after it."""
         if self.connection is not None:
+            with suppress(psycopg.Error):
+                self.connection.execute("select pg_advisory_unlock(%s)", [BEAT_LOCK])
             self.connection.close()
             self.connection = None
 

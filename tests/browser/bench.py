@@ -73,10 +73,9 @@ def settle() -> None:
     beside(catch_up)
 
 
-def judge() -> float:
-    """Reduce and judge what has arrived; gives the monotonic time at which it was done."""
+def judge() -> None:
+    """Reduce and judge what has arrived."""
     beside(process_touched)
-    return time.monotonic()
 
 
 def beside(work: Callable[..., Any], *arguments: Any, **options: Any) -> Any:

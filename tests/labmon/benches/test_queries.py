@@ -1,6 +1,5 @@
 """What a bench's row and page say, and at which cost."""
 
-import time
 from datetime import timedelta
 
 import numpy as np
@@ -154,17 +153,3 @@ def test_queries_do_not_grow_with_benches():
             bench_rows(reader, now_us=NOON_US + 30 * S)
         counts.append(len(queries))
     assert counts[0] == counts[1] <= 12
-
-
-@pytest.mark.slow
-def test_two_hundred_benches_are_quick():
-    for _ in range(200):
-        make_bench(30.0)
-    process_touched(now_us=NOON_US + 30 * S)
-    roll_up_due(now_us=NOON_US + 30 * S)
-    roll_up_coarse_due()
-    reader = make_person()
-    bench_rows(reader, now_us=NOON_US + 30 * S)
-    began = time.perf_counter()
-    assert len(bench_rows(reader, now_us=NOON_US + 30 * S)) == 200
-    assert time.perf_counter() - began < 0.15

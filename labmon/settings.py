@@ -81,6 +81,10 @@ CSRF_FAILURE_VIEW = "labmon.screen.faults.no_token"
 LOGIN_URL = "login"
 LOGIN_REDIRECT_URL = "lab"
 LOGOUT_REDIRECT_URL = "login"
+PASSWORD_HASHERS = [  # the first makes new ones; a password kept by the second is made anew at the next sign-in
+    "django.contrib.auth.hashers.Argon2PasswordHasher",
+    "django.contrib.auth.hashers.PBKDF2PasswordHasher",
+]
 AUTH_PASSWORD_VALIDATORS = [
     {"NAME": "django.contrib.auth.password_validation.MinimumLengthValidator", "OPTIONS": {"min_length": 10}},
     {"NAME": "django.contrib.auth.password_validation.CommonPasswordValidator"},

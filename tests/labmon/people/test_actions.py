@@ -1,4 +1,5 @@
 import pytest
+from django.contrib.auth.hashers import make_password
 from django.utils import timezone
 
 from labmon.audit.models import AuditEntry
@@ -86,3 +87,13 @@ def test_guest_gets_benches_and_a_date():
     set_guest(guest, [bench], until, by=None)
     assert list(guest.guest_stations.all()) == [bench]
     assert AuditEntry.objects.get().after == {"guest_until": until.isoformat(), "guest_stations": ["north-1"]}
+
+
+def test_passwords_are_kept_by_argon2_and_older_ones_made_anew_at_sign_in(client):
+    """RFC 9106 (Argon2; from memory) id variant; the older hash is Django's PBKDF2."""
+    assert add_person("asha", "owner", password="a long enough one").password.startswith("argon2$argon2id$")
+    older = make_person(username="older", password=make_password("a long enough one", hasher="pbkdf2_sha256"))
+    assert older.password.startswith("pbkdf2_sha256$")
+    assert client.login(username="older", password="a long enough one")
+    older.refresh_from_db()
+    assert older.password.startswith("argon2$argon2id$")

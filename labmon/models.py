@@ -6,10 +6,11 @@ from labmon.benches.models import Bench, DoorRefusal, KeyUse
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitVersion
 from labmon.logbook.models import ConfigurationChange, LogEntry, LogEntryBefore
 from labmon.people.models import Person, PersonKey
+from labmon.runs.models import Run, RunLimit, RunTap
 from labmon.tell.models import OutboxMail
 
 __all__ = [
     "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "ConfigurationChange", "DoorRefusal", "Experiment",
     "FoldCheckpoint", "KeyUse", "Limit", "LimitVersion", "LogEntry", "LogEntryBefore", "OutboxMail", "Person",
-    "PersonKey",
+    "PersonKey", "Run", "RunLimit", "RunTap",
 ]

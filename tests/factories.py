@@ -1,6 +1,6 @@
 """Rows with sensible defaults, for every test that needs a lab."""
 
-from datetime import UTC, datetime
+from datetime import UTC, datetime, timedelta
 from itertools import count
 from typing import Any
 
@@ -13,6 +13,7 @@ from labmon.alarms.states import state_of
 from labmon.benches.models import Bench
 from labmon.experiments.models import Experiment
 from labmon.people.models import Person, Role
+from labmon.runs.models import Run
 
 #: A moment that tests start from: a whole minute, a whole hour.
 NOON = datetime(2031, 3, 4, 12, tzinfo=UTC)
@@ -68,6 +69,16 @@ def make_experiment(*taps: Tap, owner: Person | None = None, **fields: Any) -> E
     experiment = Experiment.objects.create(**{"name": f"experiment {next(_number)}", "owner": owner} | fields)
     experiment.taps.set(taps)
     return experiment
+
+
+def make_run(experiment: Experiment, starts_at: datetime = NOON, length_s: float = 3600.0, **fields: Any) -> Run:
+    """A run on all that ``experiment`` watches, written as it is: no check, no audit."""
+    ends_at = starts_at + timedelta(seconds=length_s)
+    run = Run.objects.create(
+        **{"experiment": experiment, "name": f"run {next(_number)}", "starts_at": starts_at, "ends_at": ends_at} | fields
+    )
+    run.taps.set(experiment.taps.all())
+    return run
 
 
 def store_alarm(**fields: Any) -> Alarm:

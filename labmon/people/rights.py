@@ -10,6 +10,7 @@ from labmon.alarms.models import Alarm
 from labmon.errors import NotAllowed
 from labmon.experiments.models import Experiment, Limit
 from labmon.people.models import Person, Role
+from labmon.runs.models import Run
 
 
 class Action(StrEnum):
@@ -22,6 +23,8 @@ class Action(StrEnum):
     TAKE_OUT = "take alarms out of service"
     LOG = "write in the logbook"
     PLAN_RUN = "plan runs"
+    PLAN_FOR_OTHERS = "plan runs for others"
+    CHANGE_RUN = "change this run"
     MAKE_EXPERIMENT = "make or change an experiment"
     SET_LIMIT = "set limits"
     CALIBRATE = "set zeros and calibrations"
@@ -40,16 +43,17 @@ _GUEST = frozenset({Action.READ, Action.MAKE_OWN_KEY})
 _RESEARCHER = _GUEST | {Action.ACKNOWLEDGE, Action.SHELVE, Action.LOG, Action.PLAN_RUN}
 _OWNER_OF_IT = frozenset(
     {Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.TAKE_OUT, Action.CALIBRATE, Action.MAKE_STATION_KEY, Action.ADD_TAP,
-     Action.IMPORT_FILE, Action.READ_AUDIT}
+     Action.IMPORT_FILE, Action.READ_AUDIT, Action.PLAN_FOR_OTHERS}
 )
+_OWN_RUN = frozenset({Action.CHANGE_RUN})
 
 #: What a role may do to whatever it sees, and what an owner may do besides to what is their own.
 EVERYWHERE = {Role.GUEST: _GUEST, Role.RESEARCHER: _RESEARCHER, Role.OWNER: _RESEARCHER, Role.MANAGER: frozenset(Action)}
-ON_OWN = {Role.OWNER: _OWNER_OF_IT}
+ON_OWN = {Role.RESEARCHER: _OWN_RUN, Role.OWNER: _OWNER_OF_IT | _OWN_RUN}
 
 
 def may(person: Person, action: Action, subject: Model | None = None) -> bool:
-    """True if ``person`` may do ``action`` to ``subject`` (a station, tap, experiment, limit or alarm).
+    """True if ``person`` may do ``action`` to ``subject`` (a station, tap, experiment, limit, alarm or run).
 
     Without subject the question is about the lab as a whole: an owner then may what they may on any bench of their own
     only where the action asks for no bench (nothing today), so it answers for managers and for what roles may everywhere.
@@ -93,6 +97,8 @@ def owns(person: Person, subject: Model) -> bool:
             return subject.experiment.owner_id == person.pk or owns(person, subject.tap)
         case Alarm():
             return owns(person, subject.tap)
+        case Run():
+            return person.pk in (subject.owner_id, subject.deputy_id) or subject.experiment.owner_id == person.pk
     return False
 
 
@@ -108,6 +114,8 @@ def _is_named_for(guest: Person, subject: Model) -> bool:
             return experiments_visible_to(guest).filter(pk=subject.experiment_id).exists()
         case Alarm():
             return alarms_visible_to(guest).filter(pk=subject.pk).exists()
+        case Run():
+            return experiments_visible_to(guest).filter(pk=subject.experiment_id).exists()
     return False
 
 

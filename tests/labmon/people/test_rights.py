@@ -19,7 +19,7 @@ from labmon.people.rights import (
     stations_visible_to,
     taps_visible_to,
 )
-from tests.factories import NOON, make_experiment, make_person, make_station, make_tap
+from tests.factories import NOON, make_experiment, make_person, make_run, make_station, make_tap
 
 pytestmark = pytest.mark.django_db
 
@@ -33,6 +33,8 @@ TABLE = {
     Action.TAKE_OUT: (NO, NO, OWN, YES),
     Action.LOG: (NO, YES, YES, YES),
     Action.PLAN_RUN: (NO, YES, YES, YES),
+    Action.PLAN_FOR_OTHERS: (NO, NO, OWN, YES),
+    Action.CHANGE_RUN: (NO, OWN, OWN, YES),
     Action.MAKE_EXPERIMENT: (NO, NO, OWN, YES),
     Action.SET_LIMIT: (NO, NO, OWN, YES),
     Action.CALIBRATE: (NO, NO, OWN, YES),
@@ -50,7 +52,7 @@ ROLES = (Role.GUEST, Role.RESEARCHER, Role.OWNER, Role.MANAGER)
 
 
 def make_subjects(owner):
-    """A station with a tap, an experiment, a limit and an alarm, all of them ``owner``'s."""
+    """A station with a tap, an experiment, a limit, an alarm and a run, all of them ``owner``'s."""
     station = make_station(owner=owner)
     tap = make_tap(station)
     experiment = make_experiment(tap, owner=owner)
@@ -58,7 +60,8 @@ def make_subjects(owner):
     alarm = Alarm.objects.create(
         kind="limit", experiment=experiment, limit=limit, tap=tap, quantity="er_db", raised_at=NOON, message="low"
     )
-    return {"station": station, "tap": tap, "experiment": experiment, "limit": limit, "alarm": alarm}
+    run = make_run(experiment, owner=owner)
+    return {"station": station, "tap": tap, "experiment": experiment, "limit": limit, "alarm": alarm, "run": run}
 
 
 def test_table_names_every_action():
@@ -67,7 +70,7 @@ def test_table_names_every_action():
 
 @pytest.mark.parametrize("action", Action)
 @pytest.mark.parametrize("column", range(4), ids=ROLES)
-@pytest.mark.parametrize("subject", ["station", "tap", "experiment", "limit", "alarm"])
+@pytest.mark.parametrize("subject", ["station", "tap", "experiment", "limit", "alarm", "run"])
 def test_every_action_of_every_role(action, column, subject):
     person = make_person(ROLES[column])
     own, foreign = make_subjects(person), make_subjects(make_person(Role.OWNER))

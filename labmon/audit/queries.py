@@ -7,6 +7,7 @@ from labmon.audit.models import AuditEntry
 from labmon.experiments.models import Experiment, Limit
 from labmon.people.models import Person, Role
 from labmon.people.rights import has_access, role_of
+from labmon.runs.models import Run
 
 
 def audit_rows(person: Person, *, subject: str | None = None, before_id: int | None = None, limit: int = 100) -> list[AuditEntry]:
@@ -30,6 +31,7 @@ def _readable_by(person: Person) -> Q:
     taps = Tap.objects.filter(station__bench__owner=person).values_list("station__name", "name")
     experiments = Experiment.objects.filter(owner=person).values_list("pk", flat=True)
     limits = Limit.objects.filter(Q(experiment__owner=person) | Q(tap__station__bench__owner=person)).values_list("pk", flat=True)
+    runs = Run.objects.filter(Q(experiment__owner=person) | Q(owner=person)).values_list("pk", flat=True)
     stations = {station for station, _ in taps} | set(person.benches.values_list("station__name", flat=True))
     return Q(
         subject__in=[
@@ -37,5 +39,6 @@ def _readable_by(person: Person) -> Q:
             *(f"station/{one}" for one in stations),
             *(f"experiment/{one}" for one in experiments),
             *(f"limit/{one}" for one in limits),
+            *(f"run/{one}" for one in runs),
         ]
     )

@@ -11,11 +11,18 @@ class Quantity(StrEnum):
     ANGLE_DEG = "angle_deg"
     DOP = "dop"
     POWER_W = "power_w"
+    TRUSTED_SHARE = "trusted_share"
+    TIME_TO_LIMIT_S = "time_to_limit_s"
 
     @property
     def is_bad_above(self) -> bool:
         """True where larger is worse."""
         return self is Quantity.ANGLE_DEG
+
+    @property
+    def is_derived(self) -> bool:
+        """True where it is not of a sample but of the minutes before: judged from one-minute cells, live and in replay."""
+        return self in (Quantity.TRUSTED_SHARE, Quantity.TIME_TO_LIMIT_S)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -58,8 +58,9 @@ def history(tap_id: int, quantity: str, from_us: int, until_us: int, points: int
     Raises:
         ValueError: The quantity is unknown, the span is empty, or ``points`` is below 1.
     """
-    if quantity not in [*(one.value for one in Quantity), *AIR]:
-        raise ValueError(f"{quantity!r} has no history; use one of {', '.join([*(one.value for one in Quantity), *AIR])}.")
+    known = [*(one.value for one in QUANTITIES), *AIR]
+    if quantity not in known:
+        raise ValueError(f"{quantity!r} has no history; use one of {', '.join(known)}.")
     if until_us <= from_us or points < 1:
         raise ValueError("A history needs an end behind its start, and at least one point.")
     span_s = (until_us - from_us) / SECOND_US

@@ -71,7 +71,7 @@ class Alarm(models.Model):
     limit = models.ForeignKey("labmon.Limit", models.CASCADE, null=True, related_name="alarms")
     version = models.ForeignKey("labmon.LimitVersion", models.CASCADE, null=True, related_name="alarms")
     tap = models.ForeignKey("ingest.Tap", models.CASCADE, related_name="alarms")
-    quantity = models.CharField(max_length=10, blank=True)
+    quantity = models.CharField(max_length=20, blank=True)
     level = models.CharField(max_length=7, choices=AlarmLevel, default=AlarmLevel.ALARM)
     state = models.CharField(max_length=24, choices=AlarmState, default=AlarmState.UNACKNOWLEDGED)
     raised_at = models.DateTimeField()

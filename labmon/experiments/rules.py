@@ -8,6 +8,8 @@ from ingest.models import Tap, TapKind, Unit
 from labmon.errors import WriteError
 from labmon.experiments.models import LimitVersion
 
+#: What limits may be set on.
+LIMITED = tuple(one for one in Quantity if not one.is_derived)
 LONGEST_DELAY_S = 7 * 86_400.0
 _UNITS_WITHOUT_WATTS = frozenset({Unit.VOLT, Unit.COUNT})
 _DEADBAND = {Quantity.ER_DB: 1.0, Quantity.ANGLE_DEG: 1.0, Quantity.DOP: 0.01}
@@ -49,8 +51,8 @@ def checked_quantity(quantity: str, tap: Tap) -> Quantity:
     Raises:
         WriteError: It is unknown, or the tap cannot give it.
     """
-    if quantity not in list(Quantity):
-        raise WriteError("quantity", f"{quantity!r} is no quantity.", f"Use one of {', '.join(Quantity)}.")
+    if quantity not in LIMITED:
+        raise WriteError("quantity", f"{quantity!r} is no quantity.", f"Use one of {', '.join(LIMITED)}.")
     if tap.kind == TapKind.CLIMATE:
         raise WriteError("quantity", "A climate tap measures no light.", "Choose a tap that does.")
     if quantity == Quantity.DOP and tap.kind != TapKind.STOKES:

@@ -12,7 +12,7 @@ from analysis.quantities import angle_rad_from_er_db, sop_from_angles
 from analysis.reduce.calibration import TapCalibration
 from analysis.reduce.stokes import SAMPLES_AT_ONCE, dop_and_sop
 from analysis.reduce.tap import TrustContext, reduce_tap
-from analysis.reduce.trust import Reason, Trust
+from analysis.reduce.trust import QUANTITIES, Reason, Trust
 from tests.reference.values import close, reference, references
 from tests.strategies import unit_sops
 
@@ -178,7 +178,7 @@ def test_angles_without_dop_leave_er_open():
 
 def test_frozen_polarimeter_is_untrusted_in_all():
     found = stokes([1, 0.9, 0.3, -0.2], wanted_state=H, context=TrustContext(is_flat=np.array([[True]])))
-    assert all(found.trust[quantity][0] == Trust.UNTRUSTED for quantity in Quantity)
+    assert all(found.trust[quantity][0] == Trust.UNTRUSTED for quantity in QUANTITIES)
 
 
 def test_lost_and_saturated_readings():
@@ -237,7 +237,7 @@ def test_long_records_are_reduced_in_runs_as_short_ones():
         alone = stokes(rows[part], wanted_state=states[part], handedness=hands[part], floor1=1e-3, floor2=1e-3)
         for name in ("er_db", "angle_rad", "dop", "sop", "power_w", "er_sigma_db", "is_lower_bound", "azimuth_rad"):
             np.testing.assert_array_equal(getattr(whole, name)[part], getattr(alone, name))
-        for quantity in Quantity:
+        for quantity in QUANTITIES:
             np.testing.assert_array_equal(whole.reasons[quantity][part], alone.reasons[quantity])
 
 

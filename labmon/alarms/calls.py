@@ -1,4 +1,6 @@
-"""Who is told of an alarm: the experiment's owner; if that is nobody who can be reached, the managers. One mail an event."""
+"""Who is told of an alarm: the experiment's owner, and while a run lasts its owner and deputy; if none of them can be reached,
+the managers. One mail an event.
+"""
 
 from collections.abc import Iterable, Mapping
 
@@ -7,14 +9,18 @@ from django.conf import settings
 from labmon.alarms.models import Alarm, AlarmKind
 from labmon.experiments.models import Experiment
 from labmon.people.models import Person, Role
+from labmon.runs.models import Run
+from labmon.runs.queries import runs_now
 from labmon.tell.outbox import Mail, queue_mails
 
 #: What a mail may be about; with the alarm's number it is the event's key.
-RAISED, ROSE, BACK = "raised", "rose", "back"
+RAISED, ROSE, BACK, RUN_BEGAN = "raised", "rose", "back", "run"
 
 
 def call_people(alarms: Iterable[tuple[Alarm, str]], names: Mapping[int, str]) -> None:
-    """Queue a mail for each (alarm, RAISED, ROSE or BACK with the number of the hold that ended); the same again changes nothing.
+    """Queue a mail for each (alarm, event); the same again changes nothing.
+
+    Events are RAISED, ROSE, BACK with the number of the hold that ended, RUN_BEGAN with the number of the run that began.
 
     Args:
         names: Of the alarms' taps, ``station/tap``, by tap id.
@@ -25,10 +31,11 @@ def call_people(alarms: Iterable[tuple[Alarm, str]], names: Mapping[int, str]) -
     experiments = Experiment.objects.select_related("owner").in_bulk(
         {alarm.experiment_id for alarm, _ in events if alarm.experiment_id}
     )
+    runs = runs_now(experiments) if experiments else {}
     managers: list[str] | None = None
     mails = []
     for alarm, event in events:
-        recipients = _owner_address(experiments.get(alarm.experiment_id))
+        recipients = _owner_addresses(experiments.get(alarm.experiment_id), runs.get(alarm.experiment_id))
         if not recipients:
             managers = _manager_addresses() if managers is None else managers
             recipients = managers
@@ -38,9 +45,10 @@ def call_people(alarms: Iterable[tuple[Alarm, str]], names: Mapping[int, str]) -
     queue_mails(mails)
 
 
-def _owner_address(experiment: Experiment | None) -> list[str]:
-    owner = experiment.owner if experiment else None
-    return [owner.email] if owner and owner.is_active and owner.email else []
+def _owner_addresses(experiment: Experiment | None, run: Run | None) -> list[str]:
+    people = [run.owner, run.deputy] if run else []
+    people += [experiment.owner] if experiment else []
+    return list(dict.fromkeys(one.email for one in people if one and one.is_active and one.email))
 
 
 def _manager_addresses() -> list[str]:

@@ -14,6 +14,7 @@ from ingest.times import SECOND_US, at_of, us_of
 from labmon.alarms.calls import RAISED, ROSE, call_people
 from labmon.alarms.holds import StandingHolds
 from labmon.alarms.models import Alarm, AlarmBounds, AlarmKind
+from labmon.alarms.runs_around import RunsAround
 from labmon.alarms.states import is_quiet, state_of
 from labmon.alarms.words import limit_sentence
 
@@ -104,6 +105,7 @@ class _Changes:
     """What is to be written, gathered over all limits so that the number of statements stays the same."""
 
     holds: StandingHolds
+    runs: RunsAround
     new: list[Alarm] = field(default_factory=list)
     changed: dict[int, Alarm] = field(default_factory=dict)
     deleted: list[int] = field(default_factory=list)
@@ -114,7 +116,7 @@ class _Changes:
 def settle(findings: Iterable[Finding]) -> list[int]:
     """Write what the findings say; returns the ids of the alarms that changed."""
     given = list(findings)
-    changes = _Changes(StandingHolds.of({finding.tap.pk for finding in given}))
+    changes = _Changes(StandingHolds.of({finding.tap.pk for finding in given}), _runs_around(given))
     names: dict[int, str] = {}
     for finding in given:
         names[finding.tap.pk] = finding.tap.full_name
@@ -122,6 +124,16 @@ def settle(findings: Iterable[Finding]) -> list[int]:
     _write(changes)
     call_people(changes.calls, names)
     return [alarm.pk for alarm in changes.new] + list(changes.changed) + changes.deleted
+
+
+def _runs_around(findings: Iterable[Finding]) -> RunsAround:
+    """The runs that decide whether a limit "in runs only" is suppressed; asked for where one has an episode."""
+    asked = [one for one in findings if one.episodes and any(phase.in_runs_only for phase in one.phases)]
+    if not asked:
+        return RunsAround()
+    from_us = min(episode.raised_us for one in asked for episode in one.episodes)
+    until_us = max(one.last_us for one in asked)
+    return RunsAround.of(((one.limit.experiment_id, one.tap.pk) for one in asked), from_us, max(from_us, until_us))
 
 
 def _write(changes: _Changes) -> None:
@@ -186,19 +198,19 @@ def _is_beyond_proof(alarm: Alarm, finding: Finding) -> bool:
 
 
 def _add(finding: Finding, episode: Episode, name: str, changes: _Changes) -> None:
-    phase = _phase_of(finding, episode)
+    is_suppressed = _is_outside_runs(finding, episode, changes.runs)
     alarm = Alarm(
         kind=AlarmKind.LIMIT,
         experiment_id=finding.limit.experiment_id,
         limit_id=finding.limit.pk,
         tap_id=finding.tap.pk,
         quantity=finding.limit.quantity,
-        is_suppressed=phase.in_runs_only,
-        is_late=not phase.in_runs_only,
+        is_suppressed=is_suppressed,
+        is_late=not is_suppressed,
     )
     _fill(alarm, finding, episode, name)
     changes.holds.mark(alarm)
-    if not phase.in_runs_only and _is_to_be_called(finding, episode):
+    if not is_suppressed and _is_to_be_called(finding, episode):
         alarm.is_late = False
         if not is_quiet(alarm):
             changes.calls.append((alarm, RAISED))
@@ -208,6 +220,8 @@ def _add(finding: Finding, episode: Episode, name: str, changes: _Changes) -> No
 
 def _bring_in_line(finding: Finding, episode: Episode, alarm: Alarm, name: str, changes: _Changes) -> None:
     before = {field: getattr(alarm, field) for field in _CHANGED}
+    if alarm.is_suppressed and not _is_outside_runs(finding, episode, changes.runs):
+        alarm.is_suppressed, alarm.is_late = False, True  # a run has begun, or was declared: now it counts as untold
     was_warning, was_told = alarm.level == Level.WARNING, not alarm.is_late
     if alarm.is_withdrawn:
         alarm.is_withdrawn = False
@@ -233,6 +247,14 @@ def _bring_in_line(finding: Finding, episode: Episode, alarm: Alarm, name: str, 
             AlarmBounds(alarm=alarm, raised_at=before["raised_at"], returned_at=before["returned_at"], value=before["value"])
         )
     changes.changed[alarm.pk] = alarm
+
+
+def _is_outside_runs(finding: Finding, episode: Episode, runs: RunsAround) -> bool:
+    """True where the limit holds in runs only and no run covers any of the episode, as far as the readings go."""
+    if not _phase_of(finding, episode).in_runs_only:
+        return False
+    until_us = max(finding.last_us, episode.raised_us) if episode.returned_us is None else episode.returned_us
+    return not runs.cover(finding.limit.experiment_id, finding.tap.pk, episode.raised_us, until_us)
 
 
 def _is_to_be_called(finding: Finding, episode: Episode) -> bool:

@@ -17,6 +17,7 @@ from labmon.experiments.models import Experiment, Limit, LimitVersion
 from labmon.experiments.rules import LimitWish, checked_quantity, checked_wish
 from labmon.live.publish import publish
 from labmon.people.models import Person
+from labmon.runs.limits import check_not_into_a_run, note_in_runs
 
 #: A tap's first limit also looks at the day before it was set: an excursion that is under way is then seen as what it is.
 FIRST_LIMIT_LOOKS_BACK = timedelta(days=1)
@@ -156,10 +157,13 @@ def _next_version(limit: Limit, valid_from: datetime | None, *, by: Person | Non
         raise WriteError(
             "valid_from", f"The present version holds since {last.valid_from.isoformat()}.", "Choose a later moment."
         )
+    if valid_from is not None:
+        check_not_into_a_run(limit, valid_from, now)
     version = LimitVersion.objects.create(
         limit=limit, number=last.number + 1 if last else 1, valid_from=begins, set_by=by, reason=reason, **values
     )
     _judge_again(limit.tap_id, begins)
+    note_in_runs(version, now)
     note(
         by,
         "retire limit" if version.is_retired else "set limit",

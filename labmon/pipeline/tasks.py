@@ -14,6 +14,7 @@ from labmon.pipeline.process import process_touched
 from labmon.pipeline.prune import prune_checkpoints
 from labmon.pipeline.rolling import compact_closed_days, roll_up_coarse_due, roll_up_due
 from labmon.pipeline.silence import judge_silence
+from labmon.runs.starting import start_due_runs
 from labmon.tell.outbox import send_waiting
 
 #: A run of judging ends after this and leaves the rest to the next, so that no task is long.
@@ -55,6 +56,12 @@ def silence_task() -> None:
 def end_holds_task() -> None:
     """End shelvings and times out of service that are over."""
     end_due_holds()
+
+
+@_task("start_runs", 60)
+def start_runs_task() -> None:
+    """Start runs whose time has come."""
+    start_due_runs()
 
 
 @_task("roll_up", 120)

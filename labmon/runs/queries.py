@@ -17,7 +17,7 @@ _OVER_AT = Coalesce("ended_at", "ends_at", output_field=DateTimeField())
 
 def declared_runs() -> QuerySet[Run]:
     """Runs that were not cancelled, each with its ``over`` time, as the database can ask for it."""
-    return Run.objects.filter(cancelled_at=None).alias(over=_OVER_AT)
+    return Run.objects.filter(cancelled_at=None).annotate(over=_OVER_AT)
 
 
 def runs_visible_to(person: Person) -> QuerySet[Run]:
@@ -43,6 +43,12 @@ def runs_between(from_at: datetime, until_at: datetime, experiments: Iterable[in
     if experiments is not None:
         found = found.filter(experiment__in=_ids(experiments))
     return list(found.select_related("experiment", "owner", "deputy").order_by("starts_at", "pk"))
+
+
+def declared_taps(from_at: datetime, until_at: datetime, tap_ids: Iterable[int]) -> list[tuple[int, int, datetime, datetime]]:
+    """(experiment id, tap id, start, end) of runs that rely on the taps and touch the closed span; one query."""
+    found = declared_runs().filter(starts_at__lte=until_at, over__gt=from_at, run_taps__tap__in=list(tap_ids))
+    return list(found.values_list("experiment_id", "run_taps__tap_id", "starts_at", "over"))
 
 
 def _ids(experiments: Iterable[int | Experiment]) -> list[int]:

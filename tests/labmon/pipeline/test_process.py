@@ -15,7 +15,7 @@ from labmon.experiments.models import FoldCheckpoint
 from labmon.people.models import Role
 from labmon.pipeline.process import process_touched
 from labmon.tell.models import OutboxMail
-from tests.factories import NOON, NOON_US, make_experiment, make_person, make_tap, store_readings
+from tests.factories import NOON, NOON_US, make_experiment, make_person, make_run, make_tap, store_readings
 from tests.labmon.pipeline.lab import Feed, S, episodes, ports_of
 
 pytestmark = pytest.mark.django_db
@@ -259,6 +259,43 @@ def test_limit_in_runs_only_is_suppressed_and_calls_nobody(owner):
     limit = make_limit(make_tap(), owner, on_delay_s=5.0, in_runs_only=True)
     Feed(limit.tap, excursion((18, 10))).send(np.arange(10))
     assert Alarm.objects.get().state == AlarmState.SUPPRESSED and not OutboxMail.objects.exists()
+
+
+def test_in_a_declared_run_such_a_limit_calls_the_runs_people(owner):
+    limit = make_limit(make_tap(), owner, on_delay_s=5.0, in_runs_only=True)
+    make_run(limit.experiment, NOON, 14 * 3600, owner=make_person(Role.RESEARCHER, email="night@lab.example"))
+    feed = Feed(limit.tap, excursion((18, 10)))
+    for index in range(10):
+        feed.send(index)
+    assert Alarm.objects.get().state == AlarmState.UNACKNOWLEDGED
+    assert OutboxMail.objects.get().recipients == ["night@lab.example", "owner@lab.example"]
+
+
+def test_an_excursion_open_when_the_run_begins_is_heard_once(owner):
+    limit = make_limit(make_tap(), owner, on_delay_s=5.0, in_runs_only=True)
+    make_run(limit.experiment, NOON + timedelta(seconds=10))
+    feed = Feed(limit.tap, excursion((18, 15)))
+    for index in range(15):
+        feed.send(index)
+        assert Alarm.objects.filter(state=AlarmState.SUPPRESSED).exists() is (5 <= index < 10)
+    assert Alarm.objects.get().state == AlarmState.UNACKNOWLEDGED and OutboxMail.objects.count() == 1
+
+
+def test_a_run_on_other_taps_of_the_experiment_leaves_the_limit_suppressed(owner):
+    limit = make_limit(make_tap(), owner, on_delay_s=5.0, in_runs_only=True)
+    make_run(limit.experiment, NOON).taps.set([make_tap()])
+    Feed(limit.tap, excursion((18, 10))).send(np.arange(10))
+    assert Alarm.objects.get().state == AlarmState.SUPPRESSED and not OutboxMail.objects.exists()
+
+
+def test_an_excursion_in_late_data_of_a_run_is_shown_and_calls_nobody(owner):
+    limit = make_limit(make_tap(), owner, on_delay_s=5.0, off_delay_s=5.0, in_runs_only=True)
+    make_run(limit.experiment, NOON, 60.0)
+    feed = Feed(limit.tap, excursion((30, 10), (18, 10), (30, 200)))
+    feed.send(np.arange(220), now_us=NOON_US + 3600 * S)
+    alarm = Alarm.objects.get()
+    assert (alarm.state, alarm.is_late, alarm.is_suppressed) == (AlarmState.NORMAL, True, False)
+    assert not OutboxMail.objects.exists()
 
 
 def test_newest_sample_is_by_data_time():

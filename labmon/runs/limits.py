@@ -84,7 +84,8 @@ def ruling_limits(run: Run) -> list[RulingLimit]:
 
 
 def _noted(run: Run) -> list[RunLimit]:
-    return list(run.limits.select_related("limit_version__limit__tap__station", "limit_version__set_by").order_by("from_at", "pk"))
+    rows = run.limits.select_related("limit_version__limit__tap__station", "limit_version__set_by")
+    return list(rows.order_by("from_at", "pk"))
 
 
 def _in_force(run: Run, at: datetime) -> list[LimitVersion]:

@@ -78,6 +78,7 @@ lint: dev
 contracts: dev
 	@$(BIN)/lint-imports
 	@cd clients/bench && ../../$(BIN)/lint-imports
+	@cd clients/notebook && ../../$(BIN)/lint-imports
 
 bench: dev
 	@for script in benchmarks/bench_*.py; do echo "== $$script"; $(BIN)/python -m benchmarks.$$(basename $$script .py) || exit 1; done

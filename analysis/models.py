@@ -27,6 +27,7 @@ class Calibration(models.Model):
     saturation1 = models.FloatField(null=True)
     saturation2 = models.FloatField(null=True)
     leakage = models.JSONField(null=True, help_text="[[a, b], [c, d]]: readings = leakage @ (wanted of port 1, of port 2).")
+    leakage_sigma = models.JSONField(null=True, help_text="1 sigma of each entry of leakage; empty: taken as exact.")
     wanted_port = models.PositiveSmallIntegerField(default=1)
     monitor_ratio = models.FloatField(null=True, help_text="Bright power / monitor power.")
     bright_nominal = models.FloatField(null=True)

@@ -24,16 +24,17 @@ FIELDS = (
     "saturation1",
     "saturation2",
     "leakage",
+    "leakage_sigma",
     "wanted_port",
     "monitor_ratio",
     "bright_nominal",
     "wanted_state",
     "handedness",
 )
-_NUMBERS = frozenset(FIELDS) - {"zero_taken_at", "leakage", "wanted_port", "wanted_state", "handedness"}
+_NUMBERS = frozenset(FIELDS) - {"zero_taken_at", "leakage", "leakage_sigma", "wanted_port", "wanted_state", "handedness"}
 _MAY_BE_NULL = frozenset(
-    {"zero1_error", "zero2_error", "zero_taken_at", "saturation1", "saturation2", "leakage", "monitor_ratio", "bright_nominal",
-     "wanted_state"}
+    {"zero1_error", "zero2_error", "zero_taken_at", "saturation1", "saturation2", "leakage", "leakage_sigma", "monitor_ratio",
+     "bright_nominal", "wanted_state"}
 )
 _ABOVE_ZERO = frozenset({"gain_ratio", "saturation1", "saturation2", "monitor_ratio", "bright_nominal"})
 #: A leakage matrix whose determinant is this small beside its entries cannot be undone with any meaning.
@@ -68,6 +69,8 @@ def new_version(tap: Tap, valid_from: datetime, changes: dict[str, Any], by: str
     for port in ("zero1", "zero2"):
         if port in checked:
             checked.setdefault(f"{port}_error", None)  # another zero has not the error of the one before
+    if "leakage" in checked:
+        checked.setdefault("leakage_sigma", None)
     version = Calibration.objects.create(tap=tap, valid_from=valid_from, entered_by=by, **kept | checked)
     mark_derived_due(tap.pk, valid_from)
     return version
@@ -114,6 +117,7 @@ def _checked(field: str, value: Any) -> Any:
         return _checked_number(field, value)
     return {
         "leakage": _checked_leakage,
+        "leakage_sigma": _checked_leakage_sigma,
         "wanted_state": _checked_state,
         "wanted_port": _checked_port,
         "handedness": _checked_handedness,
@@ -146,17 +150,29 @@ def _checked_number(field: str, value: Any) -> float:
 
 def _checked_leakage(value: Any) -> list[list[float]]:
     do = "Give [[a, b], [c, d]] with readings = leakage @ (port 1, port 2); [[1, 0], [0, 1]] is no leakage."
+    matrix = _matrix("leakage", value, do)
+    (a, b), (c, d) = matrix
+    if abs(a * d - b * c) <= LEAST_DETERMINANT * max(abs(one) for row in matrix for one in row) ** 2:
+        raise CalibrationError("leakage", "The matrix is singular: both ports would see the same mixture.", do)
+    return matrix
+
+
+def _checked_leakage_sigma(value: Any) -> list[list[float]]:
+    do = "Give the 1 sigma uncertainty of each of the four shares, 0 or more, as [[a, b], [c, d]]."
+    matrix = _matrix("leakage_sigma", value, do)
+    if any(one < 0 for row in matrix for one in row):
+        raise CalibrationError("leakage_sigma", "An uncertainty cannot be negative.", do)
+    return matrix
+
+
+def _matrix(field: str, value: Any, do: str) -> list[list[float]]:
     if not (
         isinstance(value, (list, tuple))
         and len(value) == 2
         and all(isinstance(row, (list, tuple)) and len(row) == 2 for row in value)
     ):
-        raise CalibrationError("leakage", "It is not a 2 by 2 matrix.", do)
-    matrix = [[_number("leakage", one) for one in row] for row in value]
-    (a, b), (c, d) = matrix
-    if abs(a * d - b * c) <= LEAST_DETERMINANT * max(abs(one) for row in matrix for one in row) ** 2:
-        raise CalibrationError("leakage", "The matrix is singular: both ports would see the same mixture.", do)
-    return matrix
+        raise CalibrationError(field, "It is not a 2 by 2 matrix.", do)
+    return [[_number(field, one) for one in row] for row in value]
 
 
 def _checked_state(value: Any) -> list[float]:

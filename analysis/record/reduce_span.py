@@ -299,6 +299,7 @@ def tap_calibration(version: Calibration | None) -> TapCalibration:
         saturation1=version.saturation1,
         saturation2=version.saturation2,
         leakage=version.leakage,
+        leakage_sigma=version.leakage_sigma,
         wanted_port=version.wanted_port,
         monitor_ratio=version.monitor_ratio,
         bright_nominal=version.bright_nominal,

@@ -80,7 +80,7 @@ def port_zero(raw: FloatArray, bright: float | None) -> PortZero:
     error = mean_error(raw)
     share = np.nan if bright is None or bright <= 0.0 else mean / bright
     unfit = []
-    if not is_frozen and not _is_steady(raw):
+    if not is_frozen and not is_steady(raw):
         unfit.append(Unfit.NOT_STEADY)
     if np.isnan(share):
         unfit.append(Unfit.NO_LIGHT_KNOWN)
@@ -102,7 +102,8 @@ def mean_error(values: FloatArray) -> float:
     return float(max(means.std(ddof=1) / np.sqrt(count), values.std(ddof=1) / np.sqrt(len(values))))
 
 
-def _is_steady(values: FloatArray) -> bool:
+def is_steady(values: FloatArray) -> bool:
+    """Whether a stretch, shape (N,), finite, is one level: no reading far off, and halves that agree."""
     middle = np.median(values)
     spread = _MAD_TO_SIGMA * np.median(np.abs(values - middle))
     if spread > 0.0 and bool((np.abs(values - middle) > OUTLIER_BEYOND * spread).any()):

@@ -124,6 +124,7 @@ CALIBRATION = shape({
     "zero1_error": or_null(NUMBER), "zero2_error": or_null(NUMBER),
     "zero_taken_at": or_null(TIME), "gain_ratio": NUMBER, "floor1": NUMBER, "floor2": NUMBER,
     "saturation1": or_null(NUMBER), "saturation2": or_null(NUMBER), "leakage": or_null(many(many(NUMBER))),
+    "leakage_sigma": or_null(many(many(NUMBER))),
     "wanted_port": {"type": "integer", "enum": [1, 2]}, "monitor_ratio": or_null(NUMBER),
     "bright_nominal": or_null(NUMBER), "wanted_state": or_null(many(NUMBER)),
     "handedness": {"type": "string", "enum": ["ieee", "optics"]},

@@ -96,6 +96,7 @@ class NewCalibration(Body):
     saturation1: float | None | UnsetType = UNSET
     saturation2: float | None | UnsetType = UNSET
     leakage: tuple[tuple[float, float], tuple[float, float]] | None | UnsetType = UNSET
+    leakage_sigma: tuple[tuple[float, float], tuple[float, float]] | None | UnsetType = UNSET
     wanted_port: Literal[1, 2] | UnsetType = UNSET
     monitor_ratio: float | None | UnsetType = UNSET
     bright_nominal: float | None | UnsetType = UNSET
@@ -122,7 +123,8 @@ def patch_calibration(request: HttpRequest, person: Person, station: str, tap: s
 def calibration_facts(tap: Tap, version: Calibration) -> dict[str, Any]:
     """A version of a tap's calibration."""
     numbers = ("zero1", "zero2", "zero1_error", "zero2_error", "gain_ratio", "floor1", "floor2", "saturation1", "saturation2",
-               "leakage", "wanted_port", "monitor_ratio", "bright_nominal", "wanted_state", "handedness", "entered_by")
+               "leakage", "leakage_sigma", "wanted_port", "monitor_ratio", "bright_nominal", "wanted_state", "handedness",
+               "entered_by")
     return {"tap": tap_path(tap), "valid_from": rfc3339(version.valid_from), "entered_at": rfc3339(version.entered_at),
             "zero_taken_at": rfc3339(version.zero_taken_at)} | {name: getattr(version, name) for name in numbers}
 

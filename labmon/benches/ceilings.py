@@ -34,12 +34,13 @@ def ceiling_of(tap: Tap, version: Calibration | None, readings: Readings) -> Tap
         return None
     scale = version.gain_ratio if dark_port == 2 else 1.0
     zero_error, floor = getattr(version, f"zero{dark_port}_error"), getattr(version, f"floor{dark_port}")
-    missing = tuple(name for name, is_there in (("error of the zero", zero_error is not None), ("floor", floor > 0.0))
-                    if not is_there)
+    is_leakage_known = version.leakage is None or version.leakage_sigma is not None
+    missing = tuple(name for name, is_there in (("error of the zero", zero_error is not None), ("floor", floor > 0.0),
+                                                ("uncertainty of the leakage", is_leakage_known)) if not is_there)
     if floor <= 0.0 and zero_error is None:
         return TapCeiling(None, None, missing)
     ceiling = joint_er_ceiling(bright, zero_sigma=scale * (zero_error or 0.0), noise_sigma=scale * floor,
-                               leakage=version.leakage, wanted_port=3 - dark_port)
+                               leakage=version.leakage, leakage_sigma=version.leakage_sigma, wanted_port=3 - dark_port)
     return TapCeiling(ceiling.er_db if np.isfinite(ceiling.er_db) else None, ceiling.worst, missing)
 
 

@@ -10,7 +10,7 @@ from analysis.models import Calibration, RollupDue
 from analysis.quantities import FloatArray, linear_from_raw
 from analysis.record.calibrations import version_at
 from analysis.reduce.zero import PortZero, Unfit, bright_level, dark_stretches, port_zero
-from ingest.models import Tap, TapKind, Touch
+from ingest.models import Tap, TapHeard, TapKind, Touch
 from ingest.store.columns import Readings
 from ingest.store.read import newest_readings, read_readings
 from ingest.times import SECOND_US, at_of, us_of
@@ -64,10 +64,16 @@ class ZeroTaking:
 
 @dataclass(frozen=True, slots=True)
 class DuePart:
-    """How much of a tap waits to be derived anew: spans, and their length in all."""
+    """How much of a tap waits to be derived anew: spans, the longest of them, and the whole that was to be made anew."""
 
     spans: int
     seconds: float
+    whole_s: float
+
+    @property
+    def percent(self) -> int:
+        """How much is done."""
+        return round(100 * (1.0 - min(self.seconds / self.whole_s, 1.0))) if self.whole_s > 0.0 else 0
 
 
 def has_zero(tap: Tap) -> bool:
@@ -93,7 +99,7 @@ def zero_taking(tap: Tap, stretch: Stretch, *, now_us: int | None = None) -> Zer
         stretch=stretch,
         ports=ports,
         elapsed_s=min(max((clock_us - first_us) / SECOND_US, 0.0), stretch.seconds),
-        is_complete=clock_us > until_us + COME_LATE_S * SECOND_US or _has_newer(tap, until_us),
+        is_complete=clock_us > until_us + COME_LATE_S * SECOND_US or has_newer(tap, until_us),
         holds_until=following.valid_from if following else None,
         before=version_at(tap.pk, stretch.from_at),
     )
@@ -153,14 +159,35 @@ def being_made_anew(tap: Tap) -> DuePart:
     rows = [*RollupDue.objects.filter(tap=tap).values_list("first_at_us", "last_at_us"),
             *Touch.objects.filter(tap=tap).values_list("first_at_us", "last_at_us")]
     spans = [(last_us - first_us) / SECOND_US for first_us, last_us in rows if last_us - first_us > 120 * SECOND_US]
-    return DuePart(len(spans), max(spans, default=0.0))
+    return DuePart(len(spans), max(spans, default=0.0), _whole_s(tap) if spans else 0.0)
+
+
+def _whole_s(tap: Tap) -> float:
+    """The readings that the version entered last holds for."""
+    entered = tap.calibrations.order_by("-entered_at", "-pk").first()
+    heard = TapHeard.objects.filter(tap=tap).first()
+    if entered is None or heard is None:
+        return 0.0
+    following = tap.calibrations.filter(valid_from__gt=entered.valid_from).order_by("valid_from").first()
+    until_us = min(us_of(following.valid_from), heard.last_at_us) if following else heard.last_at_us
+    return max((until_us - us_of(entered.valid_from)) / SECOND_US, 0.0)
 
 
 def _check(tap: Tap, stretch: Stretch, clock_us: int) -> None:
     if not has_zero(tap):
         raise WriteError("tap", f"A {tap.kind} tap has no zero of its own.", "Choose a two-port or dark-port tap.")
+    check_stretch(stretch, clock_us)
+
+
+def check_stretch(stretch: Stretch, clock_us: int) -> None:
+    """A stretch that can be watched.
+
+    Raises:
+        WriteError: It is too short, too long or begins in the future.
+    """
     if not SHORTEST_S <= stretch.seconds <= LONGEST_S:
-        raise WriteError("seconds", f"{stretch.seconds:g} s is no time for a zero.", f"Give {SHORTEST_S:g} to {LONGEST_S:g} s.")
+        raise WriteError("seconds", f"{stretch.seconds:g} s is too short or too long.",
+                         f"Give {SHORTEST_S:g} to {LONGEST_S:g} s.")
     if us_of(stretch.from_at) > clock_us + 60 * SECOND_US:
         raise WriteError("from", "The stretch begins in the future.", "Begin now, or at a time that has been.")
 
@@ -177,6 +204,7 @@ def _bright_before(tap: Tap, first_us: int) -> float | None:
     return bright_level(*_ports(tap, readings)) if len(readings) else None
 
 
-def _has_newer(tap: Tap, until_us: int) -> bool:
+def has_newer(tap: Tap, until_us: int) -> bool:
+    """Whether a reading from behind a data time has come."""
     newest = newest_readings([tap.pk])[tap.pk]
     return bool(len(newest)) and int(newest.at_us[-1]) >= until_us

@@ -75,6 +75,9 @@ class CalibrationForm(forms.Form):
         required=False,
         help_text="Four shares a b c d: reading of port 1 = a·wanted 1 + b·wanted 2, of port 2 = c, d.",
     )
+    leakage_sigma = forms.CharField(
+        label="Its uncertainty, 1 σ", required=False, help_text="Four shares a b c d. Empty with a new leakage: taken as exact."
+    )
     monitor_ratio = Number(label="Bright power / monitor", required=False)
     bright_nominal = Number(label="Declared bright power", required=False)
     wanted_state = forms.CharField(label="Wanted state s1 s2 s3", required=False, help_text="Three numbers with blanks between.")
@@ -83,7 +86,8 @@ class CalibrationForm(forms.Form):
     )
     reason = forms.CharField(label="Reason", max_length=500)
 
-    PORTS = ("zero1", "zero2", "gain_ratio", "floor1", "floor2", "saturation1", "saturation2", "leakage", "wanted_port")
+    PORTS = ("zero1", "zero2", "gain_ratio", "floor1", "floor2", "saturation1", "saturation2", "leakage", "leakage_sigma",
+             "wanted_port")
     OF_KIND = {
         "two-port": PORTS,
         "dark-port": (*PORTS, "monitor_ratio", "bright_nominal"),
@@ -100,8 +104,10 @@ class CalibrationForm(forms.Form):
         return _numbers(self.cleaned_data["wanted_state"], 3)
 
     def clean_leakage(self) -> list[list[float]] | None:
-        numbers = _numbers(self.cleaned_data["leakage"], 4)
-        return None if numbers is None else [numbers[:2], numbers[2:]]
+        return _matrix(self.cleaned_data["leakage"])
+
+    def clean_leakage_sigma(self) -> list[list[float]] | None:
+        return _matrix(self.cleaned_data["leakage_sigma"])
 
     def changes(self) -> dict[str, Any]:
         """Only what was filled in."""
@@ -110,6 +116,12 @@ class CalibrationForm(forms.Form):
             for name, value in self.cleaned_data.items()
             if name not in {"valid_from", "reason"} and value not in (None, "")
         }
+
+
+def _matrix(text: str) -> list[list[float]] | None:
+    """Four numbers as rows of two."""
+    numbers = _numbers(text, 4)
+    return None if numbers is None else [numbers[:2], numbers[2:]]
 
 
 def _numbers(text: str, count: int) -> list[float] | None:

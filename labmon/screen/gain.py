@@ -1,55 +1,62 @@
-"""The gain of two ports by exchange of the polarizations: name two stretches, look at the proposal, enter it."""
+"""The gain of two ports by exchange of the polarizations, on a page."""
+
+from typing import Any
 
 from django import forms
-from django.contrib import messages
-from django.http import Http404, HttpRequest, HttpResponse
-from django.shortcuts import redirect, render
+from django.http import HttpRequest, HttpResponse
 from django.views.decorators.http import require_http_methods
 
-from ingest.models import TapKind
+from analysis.models import Calibration
+from ingest.models import Tap
 from labmon.benches.gains import GainTaking, enter_gain, gain_taking
 from labmon.benches.zeros import Stretch
-from labmon.errors import WriteError
-from labmon.people.rights import Action, require
-from labmon.screen.door import for_people, put_refusal
-from labmon.screen.forms import Number
-from labmon.screen.named import visible_tap
+from labmon.people.models import Person
+from labmon.screen.door import for_people
+from labmon.screen.exposure_view import ExposureWords, Proposal
+from labmon.screen.exposures import ExposureForm, exposures_page
 from labmon.screen.present import er_text, number_text
 
 
-class GainForm(forms.Form):
-    """Two stretches."""
+class GainForm(ExposureForm):
+    """Two stretches of the past."""
 
-    straight = forms.DateTimeField(label="Light in its wanted port from (UTC)", help_text="e.g. 2031-03-04 02:00:10")
-    exchanged = forms.DateTimeField(label="Light turned by 90° from (UTC)", help_text="e.g. 2031-03-04 02:01:30")
-    seconds = Number(label="Each for, s", initial=30, min_value=1, max_value=3600)
+    straight = forms.DateTimeField(label="Light in its wanted port from (UTC)", help_text="e.g. 2031-03-04 02:00:10",
+                                   required=False)
+    exchanged = forms.DateTimeField(label="Light turned by 90° from (UTC)", help_text="e.g. 2031-03-04 02:01:30", required=False)
 
-    def stretches(self) -> tuple[Stretch, Stretch]:
-        """What was typed."""
-        typed = self.cleaned_data
-        return Stretch(typed["straight"], typed["seconds"]), Stretch(typed["exchanged"], typed["seconds"])
+
+class Gain:
+    """The gain ratio as a quantity of two exposures."""
+
+    name = "gain"
+    form = GainForm
+    words = ExposureWords(
+        title="Gain",
+        begin="How much more does port 1 of {name} read than port 2? One exchange of the light tells.",
+        how="Let the light stand in its wanted port for a while, turn it by 90° (a half-wave plate by 45°), and let it stand "
+            "again. Take the zero first. The power may change between the two, the state may not but for the turn. Unequal "
+            "leakages of the splitter show as a gain: enter the leakage too.",
+        first="Light in its wanted port",
+        second="Light turned by 90°",
+        first_act="The light stands in its wanted port: watch it now",
+        second_act="The light is turned by 90° and stands: watch it now",
+    )
+
+    def proposal(self, name: str, tap: Tap, first: Stretch, second: Stretch, **options: Any) -> Proposal:
+        return Proposal(gain_words(name, gain_taking(tap, first, second)), [])
+
+    def enter(self, tap: Tap, first: Stretch, second: Stretch, *, by: Person, **options: Any) -> Calibration:
+        return enter_gain(tap, first, second, by=by)
+
+    def entered(self, name: str, version: Calibration) -> str:
+        return f"The gain of {name} is {version.gain_ratio:.5g} from the earlier stretch on."
 
 
 @require_http_methods(["GET", "HEAD", "POST"])
 @for_people
 def gain_page(request: HttpRequest, station: str, tap: str) -> HttpResponse:
-    """The form; *look* shows what the stretches give, *enter* makes a version of it."""
-    found = visible_tap(request.user, station, tap)
-    require(request.user, Action.CALIBRATE, found)
-    if found.kind != TapKind.TWO_PORT:
-        raise Http404("This tap has no gain of two ports.")
-    form, sentence = GainForm(request.POST or None), ""
-    if request.method == "POST" and form.is_valid():
-        try:
-            if request.POST.get("act") == "enter":
-                version = enter_gain(found, *form.stretches(), by=request.user)
-                messages.success(request, f"The gain of {station}/{tap} is {version.gain_ratio:.5g} from the earlier stretch on.")
-                return redirect("calibration", station=station, tap=tap)
-            sentence = gain_words(f"{station}/{tap}", gain_taking(found, *form.stretches()))
-        except WriteError as error:
-            put_refusal(form, error)
-    shown = {"station": found.station, "tap": found, "form": form, "sentence": sentence}
-    return render(request, "screen/gain.html", shown, status=422 if form.errors else 200)
+    """Watch two stretches or name them, look at the proposal, enter it."""
+    return exposures_page(request, station, tap, Gain())
 
 
 def gain_words(name: str, taking: GainTaking) -> str:

@@ -6,6 +6,7 @@ from datetime import datetime
 
 from django.utils.safestring import SafeString, mark_safe
 
+from analysis.models import Calibration
 from ingest.models import StationBoot
 from ingest.times import at_of
 from labmon.benches.queries import NowSample, StationFacts, TapFacts
@@ -27,7 +28,7 @@ from labmon.screen.present import (
 )
 from labmon.screen.rail import Mark, own_rail
 from labmon.screen.standing import Standing, standing_of
-from labmon.screen.zero_view import ceiling_words, value_text
+from labmon.screen.zero_view import ceiling_words, leakage_texts, value_text
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -235,6 +236,7 @@ def calibration_words(tap: TapFacts) -> list[Fact]:
         ("Zero of port 2", value_text(version.zero2, unit, version.zero2_error)),
         ("Zeros taken", time_text(version.zero_taken_at)),
         ("Gain of port 1 over port 2", number_text(version.gain_ratio, 4)),
+        *_leakage_facts(version),
         ("Floor (1 σ) of port 1", value_text(version.floor1, unit)),
         ("Floor (1 σ) of port 2", value_text(version.floor2, unit)),
         ("Saturation of port 1", value_text(version.saturation1, unit)),
@@ -246,6 +248,13 @@ def calibration_words(tap: TapFacts) -> list[Fact]:
     else:
         facts.append(("Wanted port", str(version.wanted_port)))
     return [Fact(name=name, text=_trimmed(text)) for name, text in facts]
+
+
+def _leakage_facts(version: Calibration) -> list[tuple[str, str]]:
+    if version.leakage is None:
+        return []
+    into2, into1 = leakage_texts(version)
+    return [("Leakage into port 2", into2), ("Leakage into port 1", into1)]
 
 
 def _trimmed(text: str) -> str:

@@ -66,6 +66,7 @@ def calibration_page(request: HttpRequest, station: str, tap: str) -> HttpRespon
             return redirect("station", station=station)
     status = 422 if request.method == "POST" else 200
     newest = newest_readings([found.pk], count=READINGS_LOOKED_AT)[found.pk]
+    due = being_made_anew(found)
     unit = "W" if found.unit == "dBm" else found.unit
     ceiling = ceiling_words(ceiling_of(found, version_at(found.pk, timezone.now()), newest))
     return render(
@@ -76,7 +77,8 @@ def calibration_page(request: HttpRequest, station: str, tap: str) -> HttpRespon
             "tap": found,
             "form": form,
             "sentence": f"{station}/{tap}: {ceiling[:1].lower() + ceiling[1:]}" if ceiling else f"Calibration of {station}/{tap}",
-            "due": due_words(being_made_anew(found)),
+            "due": due_words(due),
+            "due_percent": due.percent,
             "has_zero": has_zero(found),
             "versions": [version_words(one, unit) for one in calibration_history(found)],
             "unit": unit,

@@ -119,6 +119,7 @@ class VersionWords:
     zeros: tuple[str, str]
     floors: tuple[str, str]
     gain: str
+    leakage: tuple[str, str]
     wanted: str
     handedness: str
 
@@ -133,9 +134,28 @@ def version_words(version: Calibration, unit: str) -> VersionWords:
         zeros=(value_text(version.zero1, unit, version.zero1_error), value_text(version.zero2, unit, version.zero2_error)),
         floors=(value_text(version.floor1, unit), value_text(version.floor2, unit)),
         gain=f"{version.gain_ratio:.5g}",
+        leakage=leakage_texts(version),
         wanted=", ".join(number_text(part, 3) for part in state) if state else str(version.wanted_port),
         handedness=version.handedness,
     )
+
+
+def leakage_texts(version: Calibration) -> tuple[str, str]:
+    """Leakage of port 1's light into port 2, and of port 2's into port 1."""
+    if version.leakage is None:
+        return MISSING, MISSING
+    sigma = version.leakage_sigma
+    return (leak_text(version.leakage[1][0], sigma[1][0] if sigma else None),
+            leak_text(version.leakage[0][1], sigma[0][1] if sigma else None))
+
+
+def leak_text(share: float, sigma: float | None) -> str:
+    """``0.0620 ± 0.0012 %``; without an uncertainty ``0.062 %``."""
+    if sigma is None:
+        return f"{100 * share:.3g} %"
+    error = 100.0 * sigma
+    digits = int(np.clip(1 - np.floor(np.log10(error)), 0, 8)) if error > 0.0 else 4
+    return f"{100.0 * share:.{digits}f} ± {error:.{digits}f} %"
 
 
 def share_text(share: float) -> str:

@@ -58,6 +58,8 @@ def addresses(lab) -> list[str]:
         "/stations/n2/joining/",
         "/stations/n2/taps/eom-in/zero/",
         "/stations/n2/taps/eom-in/gain/",
+        "/stations/n2/taps/eom-in/leakage/",
+        f"/stations/n2/taps/eom-in/leakage/?straight={now_text()}&seconds=30&light_er_db=40",
         f"/stations/n2/taps/eom-in/zero/?from={now_text()}&seconds=30",
         "/people/",
         "/audit/",

@@ -78,7 +78,8 @@ def test_history_names_the_parameter_at_fault(lab, query, field):
 def test_a_calibration_is_a_new_version_that_keeps_what_is_left_out(lab):
     first = lab.owner.patch(f"{IN}/calibration", {"valid_from": "2031-03-04T00:00:00Z", "zero1": 1e-6, "zero2": 2e-6,
                                                   "gain_ratio": 1.05, "floor1": 1e-9, "floor2": 1e-9, "saturation1": 2e-3,
-                                                  "leakage": [[1, 0.001], [0.002, 1]], "wanted_port": 2,
+                                                  "leakage": [[1, 0.001], [0.002, 1]],
+                                                  "leakage_sigma": [[0, 1e-5], [2e-5, 0]], "wanted_port": 2,
                                                   "wanted_state": [0, 0, 1], "handedness": "ieee"})
     assert first.status_code == 200 and first.json()["valid_from"] == "2031-03-04T00:00:00.000000Z"
     second = lab.owner.patch(f"{IN}/calibration", {"valid_from": "2031-03-05T00:00:00+01:00", "zero2": 3e-6, "saturation1": None,
@@ -86,6 +87,7 @@ def test_a_calibration_is_a_new_version_that_keeps_what_is_left_out(lab):
     assert (second["zero1"], second["zero2"], second["gain_ratio"]) == (1e-6, 3e-6, 1.05)
     assert second["valid_from"] == "2031-03-04T23:00:00.000000Z" and second["saturation1"] is None
     assert second["leakage"] == [[1.0, 0.001], [0.002, 1.0]] and second["handedness"] == "ieee"
+    assert second["leakage_sigma"] == [[0.0, 1e-5], [2e-5, 0.0]]
     assert Calibration.objects.filter(tap=lab.tap).count() == 2
     assert AuditEntry.objects.filter(person=lab.people["owner"], reason="warm-up").count() == 1
 
@@ -102,7 +104,8 @@ def test_who_calibrates(lab, role, status):
     ({"gain_ratio": -1}, "gain_ratio"),
     ({"wanted_port": 3}, "wanted_port"), ({"handedness": "left"}, "handedness"), ({"valid_from": "yesterday"}, "valid_from"),
     ({"valid_from": "2031-03-04T00:00:00"}, "valid_from"), ({"wanted_state": [0, 0, 0]}, "wanted_state"),
-    ({"leakage": [[1, 1], [1, 1]]}, "leakage"), ({"floor1": -1}, "floor1"), ({"zero3": 1}, "zero3"),
+    ({"leakage": [[1, 1], [1, 1]]}, "leakage"), ({"leakage_sigma": [[-1, 0], [0, 0]]}, "leakage_sigma"),
+    ({"floor1": -1}, "floor1"), ({"zero3": 1}, "zero3"),
     ({"saturation1": 0}, "saturation1")])
 def test_a_calibration_names_the_field_at_fault(lab, body, field):
     answer = lab.owner.patch(f"{IN}/calibration", {"valid_from": "2031-03-04T00:00:00Z"} | body)

@@ -34,5 +34,9 @@ def test_the_ceiling_is_one_sentence_and_says_what_is_missing():
 
 
 def test_what_is_made_anew_is_told_only_while_it_waits():
-    assert due_words(DuePart(0, 0.0)) == ""
-    assert "24 min of readings to go" in due_words(DuePart(1, 1450.0)).replace("\xa0", " ")
+    assert due_words(DuePart(0, 0.0, 0.0)) == ""
+    assert "24 min of readings to go" in due_words(DuePart(1, 1450.0, 5800.0)).replace("\xa0", " ")
+
+
+def test_the_bar_says_how_much_is_done():
+    assert (DuePart(1, 1450.0, 5800.0).percent, DuePart(2, 9000.0, 5800.0).percent, DuePart(1, 10.0, 0.0).percent) == (75, 0, 0)

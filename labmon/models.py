@@ -4,14 +4,18 @@ from labmon.ahead.models import AheadDue, AheadScore, LimitOutlook
 from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold
 from labmon.audit.models import AuditEntry
 from labmon.benches.models import Bench, DoorRefusal, KeyUse
+from labmon.drills.models import Drill
+from labmon.events.models import CallRules, Event, OnCall
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitFloor, LimitRequest, LimitVersion
 from labmon.logbook.models import ConfigurationChange, LogEntry, LogEntryBefore
 from labmon.people.models import Person, PersonKey
 from labmon.runs.models import Run, RunLimit, RunTap
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Delivery, DeliveryTry, Message, PushDevice, QuietHours, SigningKey, Webhook
 
 __all__ = [
-    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "ConfigurationChange",
-    "DoorRefusal", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitFloor", "LimitOutlook", "LimitRequest",
-    "LimitVersion", "LogEntry", "LogEntryBefore", "OutboxMail", "Person", "PersonKey", "Run", "RunLimit", "RunTap",
+    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "CallRules",
+    "ConfigurationChange", "Delivery", "DeliveryTry", "DoorRefusal", "Drill", "Event", "Experiment",
+    "FoldCheckpoint", "KeyUse", "Limit", "LimitFloor", "LimitOutlook", "LimitRequest", "LimitVersion", "LogEntry",
+    "LogEntryBefore", "Message", "OnCall", "Person", "PersonKey", "PushDevice", "QuietHours", "Run", "RunLimit",
+    "RunTap", "SigningKey", "Webhook",
 ]

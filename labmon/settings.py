@@ -137,6 +137,8 @@ EMAIL_HOST_PASSWORD = env.get("MAIL_PASSWORD", str, default="")
 EMAIL_USE_TLS = env.get("MAIL_TLS", parse_bool, default=False)
 EMAIL_TIMEOUT = env.get("MAIL_TIMEOUT_S", parse_positive, default=10.0)
 DEFAULT_FROM_EMAIL = env.get("MAIL_FROM", str, default="labmon@localhost")
+PUSH_LOCAL = env.get("PUSH_LOCAL", parse_bool, default=False)   # push services on this machine, without TLS: for trials only
+DOOR_URL = env.get("DOOR_URL", str, default="")
 PUBLIC_URL = env.get("PUBLIC_URL", str, default="http://127.0.0.1:8000")
 DATA_UPLOAD_MAX_MEMORY_SIZE = 8 * 2**20
 FILE_UPLOAD_MAX_MEMORY_SIZE = 2 * 2**20

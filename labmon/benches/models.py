@@ -10,6 +10,10 @@ class Bench(models.Model):
     station = models.OneToOneField("ingest.Station", models.CASCADE, related_name="bench")
     owner = models.ForeignKey(settings.AUTH_USER_MODEL, models.SET_NULL, null=True, blank=True, related_name="benches")
     purpose = models.CharField(max_length=300, blank=True)
+    laser = models.CharField(max_length=100, blank=True, help_text="The laser it is fed by.")
+    logger = models.CharField(max_length=100, blank=True, help_text="The computer or board it is read by.")
+    network = models.CharField(max_length=100, blank=True, help_text="The network its readings travel on.")
+    is_drill = models.BooleanField(default=False, help_text="No bench: where marked false readings of drills come from.")
 
 
 class KeyUse(models.Model):

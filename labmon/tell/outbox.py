@@ -1,33 +1,56 @@
-"""Mails wait here from the event's transaction until they are sent: one a event, retried, safe with several workers."""
+"""Messages wait here from the transaction of what they tell of until they are handed over: each once, at least once.
 
-import logging
-import smtplib
+Entry points: `queue` (a message to a person by all their channels, and to webhooks), `queue_mails` (to bare addresses), and
+`send_waiting` (the worker's). The same key again changes nothing. Every message has a stable id on each channel
+(Message-ID of a mail, Topic of a notification, Idempotency-Key of a webhook), so that what a crash sent twice is
+recognised as one by whoever gets it.
+"""
+
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
-from datetime import timedelta
-from hashlib import sha256
+from dataclasses import dataclass, field
+from datetime import datetime
+from typing import Any
 
 from django.conf import settings
-from django.core.mail import EmailMessage
-from django.db import transaction
-from django.db.models import F
 from django.utils import timezone
 
-from labmon.tell.models import OutboxMail
-
-FIRST_WAIT_S = 15.0
-LONGEST_WAIT_S = 3600.0
-log = logging.getLogger(__name__)
+from labmon.people.models import Person
+from labmon.tell.models import Channel, Delivery, Message, MessageKind, PushDevice, Webhook
 
 
 @dataclass(frozen=True, slots=True)
 class Mail:
-    """A mail to be sent; ``event`` makes it one mail an event."""
+    """A mail to bare addresses; ``event`` (any words) makes it one mail for each of what it tells of."""
 
     event: str
     recipients: Sequence[str]
     subject: str
     body: str
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Telling:
+    """A message to be told.
+
+    Attributes:
+        key: Makes it one message for each reason to tell.
+        person: Who is told, by mail and on their devices; None: the lab's own mailbox.
+        webhook: Instead of a person, one address that is posted ``facts``.
+        not_before: Handed over no earlier (quiet hours).
+    """
+
+    key: str
+    subject: str
+    body: str
+    kind: str = MessageKind.NOTICE
+    person: Person | None = None
+    webhook: Webhook | None = None
+    event_id: int | None = None
+    level: str = ""
+    duty: str = ""
+    path: str = ""
+    facts: dict[str, Any] = field(default_factory=dict)
+    not_before: datetime | None = None
 
 
 def queue_mail(event: str, recipients: Sequence[str], subject: str, body: str) -> None:
@@ -36,70 +59,89 @@ def queue_mail(event: str, recipients: Sequence[str], subject: str, body: str) -
 
 
 def queue_mails(mails: Iterable[Mail]) -> None:
-    """As `queue_mail` for many, in one statement.
+    """As `queue_mail` for many, in a fixed number of statements.
 
     Without recipients a mail goes to the lab's own mailbox (LABMON_MAIL_FROM), so that no event is told to nobody.
     """
-    rows = [
-        OutboxMail(
-            event=mail.event,
-            recipients=list(dict.fromkeys(mail.recipients)) or [settings.DEFAULT_FROM_EMAIL],
-            subject=one_line(mail.subject),
-            body=mail.body,
-        )
-        for mail in mails
+    given = list(mails)
+    fresh = _fresh(Message(key=mail.event, subject=one_line(mail.subject), body=mail.body) for mail in given)
+    addresses = {mail.event: ", ".join(dict.fromkeys(mail.recipients)) or settings.DEFAULT_FROM_EMAIL for mail in given}
+    now = timezone.now()
+    _add(Delivery(message=one, channel=Channel.MAIL, address=addresses[one.key], next_try_at=now) for one in fresh)
+
+
+def queue(tellings: Iterable[Telling]) -> list[Message]:
+    """Write messages with a delivery for each channel; returns those that are new. A fixed number of statements."""
+    given = {telling.key: telling for telling in tellings}
+    fresh = _fresh(_message(telling) for telling in given.values())
+    if not fresh:
+        return []
+    persons = {telling.person.pk for telling in given.values() if telling.person}
+    devices: dict[int, list[PushDevice]] = {}
+    for device in PushDevice.objects.filter(person__in=persons, ended_at=None).order_by("pk") if persons else ():
+        devices.setdefault(device.person_id, []).append(device)
+    now = timezone.now()
+    _add(
+        delivery
+        for message in fresh
+        for delivery in _deliveries(message, given[message.key], devices.get(message.person_id or 0, []), now)
+    )
+    return fresh
+
+
+def _message(telling: Telling) -> Message:
+    return Message(
+        key=telling.key,
+        kind=telling.kind,
+        event_id=telling.event_id,
+        person=telling.person,
+        level=telling.level,
+        duty=telling.duty,
+        subject=one_line(telling.subject),
+        body=telling.body,
+        path=telling.path,
+        facts=telling.facts or None,
+    )
+
+
+def _fresh(messages: Iterable[Message]) -> list[Message]:
+    """Insert those whose key is new; only one of two workers gets each."""
+    rows = {row.key: row for row in messages}
+    if not rows:
+        return []
+    known = set(Message.objects.filter(key__in=rows).values_list("key", flat=True))
+    wanted = [row for key, row in rows.items() if key not in known]
+    if not wanted:
+        return []
+    Message.objects.bulk_create(wanted, ignore_conflicts=True)
+    # A row that another worker wrote meanwhile has deliveries already: _add leaves them as they are.
+    return list(Message.objects.filter(key__in=[row.key for row in wanted]).order_by("pk"))
+
+
+def _deliveries(message: Message, telling: Telling, devices: Sequence[PushDevice], now: datetime) -> Iterable[Delivery]:
+    due = max(telling.not_before or now, now)
+    if telling.webhook is not None:
+        hook = telling.webhook
+        return [Delivery(message=message, channel=Channel.WEBHOOK, address=f"webhook-{hook.pk}", webhook=hook, next_try_at=due)]
+    found = [
+        Delivery(message=message, channel=Channel.PUSH, address=f"device-{one.pk}", device=one, next_try_at=due) for one in devices
     ]
+    address = telling.person.email if telling.person else ""
+    if address or not found:
+        found.append(
+            Delivery(
+                message=message, channel=Channel.MAIL, address=address or settings.DEFAULT_FROM_EMAIL, next_try_at=due
+            )
+        )
+    return found
+
+
+def _add(deliveries: Iterable[Delivery]) -> None:
+    rows = list(deliveries)
     if rows:
-        OutboxMail.objects.bulk_create(rows, ignore_conflicts=True)
+        Delivery.objects.bulk_create(rows, ignore_conflicts=True)
 
 
 def one_line(text: str) -> str:
-    """A subject without line breaks, at most 250 characters."""
-    return " ".join(text.split())[:250]
-
-
-def send_waiting(limit: int = 50) -> int:
-    """Send what is due, at most ``limit``; returns how many went out. Two workers never take the same mail."""
-    sent = 0
-    for _ in range(limit):
-        outcome = _send_next()
-        if outcome is None:
-            break
-        sent += outcome
-    return sent
-
-
-@transaction.atomic
-def _send_next() -> bool | None:
-    mail = (
-        OutboxMail.objects.select_for_update(skip_locked=True)
-        .filter(sent_at=None, next_try_at__lte=timezone.now())
-        .order_by("next_try_at", "pk")
-        .first()
-    )
-    if mail is None:
-        return None
-    try:
-        _message(mail).send()
-    except (OSError, smtplib.SMTPException) as fault:
-        _note_failure(mail, fault)
-        return False
-    OutboxMail.objects.filter(pk=mail.pk).update(sent_at=timezone.now(), tries=F("tries") + 1, last_error="")
-    log.info("mail_sent", extra={"mail_event": mail.event, "recipients": len(mail.recipients)})
-    return True
-
-
-def _message(mail: OutboxMail) -> EmailMessage:
-    """The same event has the same Message-ID: a mail sent twice by a crash is recognised as one by the reader's program."""
-    identity = sha256(f"{settings.PUBLIC_URL} {mail.event}".encode()).hexdigest()[:32]
-    return EmailMessage(mail.subject, mail.body, to=mail.recipients, headers={"Message-ID": f"<{identity}@labmon>"})
-
-
-def _note_failure(mail: OutboxMail, fault: Exception) -> None:
-    wait_s = min(FIRST_WAIT_S * 2.0 ** min(mail.tries, 20), LONGEST_WAIT_S)
-    OutboxMail.objects.filter(pk=mail.pk).update(
-        tries=F("tries") + 1,
-        next_try_at=timezone.now() + timedelta(seconds=wait_s),
-        last_error=f"{type(fault).__name__}: {fault}"[:500],
-    )
-    log.warning("mail_failed", extra={"mail_event": mail.event, "tries": mail.tries + 1, "wait_s": wait_s, "fault": str(fault)})
+    """A subject without line breaks, at most 250 characters; the database takes no NUL."""
+    return " ".join(text.replace("\0", "").split())[:250]

@@ -36,7 +36,7 @@ from labmon.pipeline.hint import ask_for_judging
 from labmon.pipeline.schedule import BEAT_SCHEDULE
 from labmon.pipeline.silence import judge_silence
 from labmon.pipeline.tasks import send_mails_task
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import make_person
 from tests.running_lab import free_port, until_true
 
@@ -189,7 +189,7 @@ def test_from_the_door_to_the_open_page_and_the_mailbox(story, worker):
     assert story.send(low) == {"stored": 0, "known": 12, "set_aside": []}
     story.sweep()
     assert story.stored() == list(range(22))
-    assert Alarm.objects.get().changed == alarm.changed and OutboxMail.objects.count() == 1
+    assert Alarm.objects.get().changed == alarm.changed and Message.objects.count() == 1
 
     # The owner acknowledges: the audit says so, and every open page hears of it.
     assert story.acknowledge(alarm, "polarizer was touched")["state"] == "acknowledged"
@@ -226,7 +226,7 @@ def test_a_dead_broker_costs_hints_only(story, settings, monkeypatch, caplog):
     story.send(story.batch(12, 1, er_db=18.0))
     story.sweep()
     assert story.page_hears("tap") == [story.tap.pk]
-    assert Alarm.objects.count() == OutboxMail.objects.count() == 1 and not Touch.objects.exists()
+    assert Alarm.objects.count() == Message.objects.count() == 1 and not Touch.objects.exists()
 
 
 def test_silence_is_noticed_on_the_servers_clock(story):
@@ -239,7 +239,7 @@ def test_silence_is_noticed_on_the_servers_clock(story):
 
     # Three intervals of silence are shown; the experiment's 30 s call its owner, once.
     judge_silence(heard_us + 5 * S)
-    assert Alarm.objects.get().kind == "no-reading" and not OutboxMail.objects.exists()
+    assert Alarm.objects.get().kind == "no-reading" and not Message.objects.exists()
     for after_s in (31, 32, 60):
         judge_silence(heard_us + after_s * S)
     send_mails_task()

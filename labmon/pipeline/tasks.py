@@ -15,7 +15,7 @@ from labmon.pipeline.prune import prune_checkpoints
 from labmon.pipeline.rolling import compact_closed_days, roll_up_coarse_due, roll_up_due
 from labmon.pipeline.silence import judge_silence
 from labmon.runs.starting import start_due_runs
-from labmon.tell.outbox import send_waiting
+from labmon.tell.sending import send_waiting
 
 #: A run of judging ends after this and leaves the rest to the next, so that no task is long.
 PROCESS_FOR_S = 20.0

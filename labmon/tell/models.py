@@ -40,6 +40,12 @@ class Message(models.Model):
     facts = models.JSONField(null=True, help_text="For programs: what a webhook posts.")
     made_at = models.DateTimeField(auto_now_add=True)
 
+    @property
+    def recipients(self) -> list[str]:
+        """Mail addresses it goes to."""
+        found = self.deliveries.filter(channel=Channel.MAIL).order_by("pk").values_list("address", flat=True)
+        return [address for together in found for address in together.split(", ")]
+
 
 class Delivery(models.Model):
     """A message on one channel to one address; tried until it is handed over or cannot be."""

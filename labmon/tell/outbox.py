@@ -1,9 +1,9 @@
 """Messages wait here from the transaction of what they tell of until they are handed over: each once, at least once.
 
-Entry points: `queue` (a message to a person by all their channels, and to webhooks), `queue_mails` (to bare addresses), and
-`send_waiting` (the worker's). The same key again changes nothing. Every message has a stable id on each channel
-(Message-ID of a mail, Topic of a notification, Idempotency-Key of a webhook), so that what a crash sent twice is
-recognised as one by whoever gets it.
+Entry points: `queue` (a message to a person by all their channels, or to a webhook), `queue_mails` (to bare addresses); the
+worker hands over by `labmon.tell.sending.send_waiting`. The same key again changes nothing. Every message has a stable id on
+each channel (Message-ID of a mail, Topic of a notification, Idempotency-Key of a webhook), so that what a crash sent
+twice is recognised as one by whoever gets it.
 """
 
 from collections.abc import Iterable, Sequence
@@ -124,14 +124,13 @@ def _deliveries(message: Message, telling: Telling, devices: Sequence[PushDevice
         hook = telling.webhook
         return [Delivery(message=message, channel=Channel.WEBHOOK, address=f"webhook-{hook.pk}", webhook=hook, next_try_at=due)]
     found = [
-        Delivery(message=message, channel=Channel.PUSH, address=f"device-{one.pk}", device=one, next_try_at=due) for one in devices
+        Delivery(message=message, channel=Channel.PUSH, address=f"device-{device.pk}", device=device, next_try_at=due)
+        for device in devices
     ]
     address = telling.person.email if telling.person else ""
     if address or not found:
         found.append(
-            Delivery(
-                message=message, channel=Channel.MAIL, address=address or settings.DEFAULT_FROM_EMAIL, next_try_at=due
-            )
+            Delivery(message=message, channel=Channel.MAIL, address=address or settings.DEFAULT_FROM_EMAIL, next_try_at=due)
         )
     return found
 

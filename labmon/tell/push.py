@@ -1,4 +1,4 @@
-"""Browser notifications: encrypted for the device (RFC 8291), posted to its push service (RFC 8030), signed by VAPID (RFC 8292)."""
+"""Browser notifications: encrypted for the device (RFC 8291), posted to its push service (RFC 8030), signed (VAPID, RFC 8292)."""
 
 import base64
 import json

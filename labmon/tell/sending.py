@@ -11,7 +11,7 @@ from contextlib import contextmanager
 from datetime import timedelta
 from typing import Final
 
-from django.db import DatabaseError, InterfaceError, OperationalError, connection, transaction
+from django.db import InterfaceError, OperationalError, connection, transaction
 from django.db.models import Case, F, IntegerField, Q, When
 from django.utils import timezone
 
@@ -137,6 +137,3 @@ def _spare(delivery: Delivery, until) -> None:
     same = Q(webhook=delivery.webhook_id) if delivery.webhook_id else Q(device=delivery.device_id)
     if delivery.channel != Channel.MAIL:
         Delivery.objects.filter(same, sent_at=None, gave_up_at=None, next_try_at__lt=until).update(next_try_at=until)
-
-
-__all__ = ["DatabaseError", "send_waiting"]

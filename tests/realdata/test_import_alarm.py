@@ -14,7 +14,7 @@ from ingest.models import TapKind, Unit
 from labmon.alarms.models import Alarm, AlarmKind
 from labmon.experiments.actions import set_limit
 from labmon.pipeline.process import process_touched
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import make_experiment, make_person, make_tap
 from tests.realdata.sets import imported
 
@@ -38,7 +38,7 @@ def test_run_c_is_one_late_episode_that_calls_nobody():
     returned_late_s = (alarm.returned_at - ZERO).total_seconds() - 157.628
     assert -1.0 <= raised_late_s <= 1.0 and 0.0 <= returned_late_s <= 2.0
     assert alarm.value == pytest.approx(-3.359, abs=1e-3)
-    assert alarm.is_late and not OutboxMail.objects.exists()
+    assert alarm.is_late and not Message.objects.exists()
     imported(tap, "fibre_sop_runs/run_c.csv.gz", "fibre_run_c.toml")
     assert process_touched().readings == 0
     assert Alarm.objects.get(kind=AlarmKind.LIMIT).changed == alarm.changed

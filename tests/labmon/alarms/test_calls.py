@@ -5,7 +5,7 @@ import pytest
 from labmon.alarms.calls import RAISED, ROSE, call_people
 from labmon.alarms.models import Alarm
 from labmon.people.models import Role
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import NOON, make_experiment, make_person, make_tap
 
 pytestmark = pytest.mark.django_db
@@ -21,7 +21,7 @@ def make_alarm(owner):
 def recipients_for(owner):
     alarm = make_alarm(owner)
     call_people([(alarm, RAISED)], {alarm.tap_id: "b/t"})
-    return OutboxMail.objects.get().recipients
+    return Message.objects.get().recipients
 
 
 def test_owner_first():
@@ -42,6 +42,6 @@ def test_raised_and_rose_are_two_events_and_each_is_told_once(settings):
     alarm = make_alarm(make_person(Role.OWNER, email="owner@lab.example"))
     for _ in range(2):
         call_people([(alarm, RAISED), (alarm, ROSE)], {alarm.tap_id: "b08/eom-in"})
-    mails = OutboxMail.objects.order_by("pk")
-    assert [mail.event for mail in mails] == [f"alarm-{alarm.pk}-raised", f"alarm-{alarm.pk}-rose"]
+    mails = Message.objects.order_by("pk")
+    assert [mail.key for mail in mails] == [f"alarm-{alarm.pk}-raised", f"alarm-{alarm.pk}-rose"]
     assert "https://lab.example/stations/b08/" in mails[0].body and "2031-03-04 12:00:00 UTC" in mails[0].body

@@ -12,7 +12,7 @@ from labmon.alarms.models import AlarmHold
 from labmon.audit.models import AuditEntry
 from labmon.errors import WriteError
 from labmon.people.models import Role
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import NOON, make_experiment, make_person, make_tap, store_alarm
 
 pytestmark = pytest.mark.django_db
@@ -42,7 +42,7 @@ def test_shelved_by_whom_why_and_until(alarm, owner):
     entry = AuditEntry.objects.get()
     assert (entry.person, entry.action, entry.reason) == (owner, "shelve", "new patch cord")
     assert entry.subject == f"tap/{alarm.tap.station.name}/{alarm.tap.name}"
-    assert not OutboxMail.objects.exists()
+    assert not Message.objects.exists()
 
 
 @pytest.mark.parametrize("for_s", [0.0, -1.0, 4 * HOUR_S + 1, float("nan"), float("inf")])
@@ -69,7 +69,7 @@ def test_comes_back_by_itself_once_and_calls(alarm, owner):
     assert end_due_holds(hold.until - timedelta(seconds=1)) == [] and state(alarm) == "shelved"
     assert end_due_holds(hold.until) == [hold.pk] and state(alarm) == "unacknowledged"
     assert end_due_holds(hold.until) == [] and end_due_holds(hold.until + timedelta(hours=1)) == []
-    assert OutboxMail.objects.get().event == f"alarm-{alarm.pk}-back-{hold.pk}"
+    assert Message.objects.get().key == f"alarm-{alarm.pk}-back-{hold.pk}"
     last = AuditEntry.objects.order_by("-pk").first()
     assert (last.person, last.person_name, last.action, last.reason) == (None, "labmon", "unshelve", "its time was over")
     assert AuditEntry.objects.count() == 2
@@ -79,7 +79,7 @@ def test_an_acknowledged_one_comes_back_acknowledged_and_calls_nobody(alarm, own
     acknowledge_alarm(alarm.pk, by=owner)
     hold = shelve(Held.of_alarm(alarm), by=owner, for_s=HOUR_S, reason="cord")
     end_hold(hold.pk, by=owner)
-    assert state(alarm) == "acknowledged" and not OutboxMail.objects.exists()
+    assert state(alarm) == "acknowledged" and not Message.objects.exists()
 
 
 def test_unshelved_by_hand_once(alarm, owner):
@@ -103,7 +103,7 @@ def test_out_of_service_wins_until_it_is_put_back(alarm, owner):
     assert end_due_holds(timezone.now() + timedelta(days=300)) and state(alarm) == "out-of-service"
     end_hold(out.pk, by=owner)
     end_hold(out.pk, by=owner)
-    assert state(alarm) == "unacknowledged" and OutboxMail.objects.count() == 1
+    assert state(alarm) == "unacknowledged" and Message.objects.count() == 1
     assert list(AuditEntry.objects.values_list("action", flat=True).order_by("pk")) == [
         "shelve", "take out of service", "unshelve", "put back into service"]  # fmt: skip
 

@@ -22,7 +22,7 @@ from labmon.audit.models import AuditEntry
 from labmon.experiments.actions import set_limit
 from labmon.people.models import Role
 from labmon.pipeline.process import process_touched
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import NOON, NOON_US, make_experiment, make_person, make_tap, store_alarm, store_readings
 from tests.labmon.pipeline.lab import S, ports_of
 
@@ -55,7 +55,7 @@ def check_life() -> None:
         assert before == (alarm.shelved_until, alarm.is_out_of_service), "an open alarm shows what holds it, no more and no less"
     for hold in AlarmHold.objects.all():
         assert hold.kind != HoldKind.SHELVED or hold.until - hold.begun_at <= timedelta(hours=4)
-    events = list(OutboxMail.objects.values_list("event", flat=True))
+    events = list(Message.objects.values_list("key", flat=True))
     assert len(events) == len(set(events))
     ended = AlarmHold.objects.exclude(ended_at=None).count()
     told = AuditEntry.objects.filter(action__in=["unshelve", "put back into service"]).count()
@@ -171,7 +171,7 @@ class Life(RuleBasedStateMachine):
     def nobody_is_called_while_out_of_service(self):
         if not hasattr(self, "mails"):
             self.mails = 0
-        count = OutboxMail.objects.count()
+        count = Message.objects.count()
         is_out = AlarmHold.objects.filter(ended_at=None, kind=HoldKind.OUT_OF_SERVICE, alarm_kind="").exists()
         assert not (is_out and getattr(self, "was_out", False)) or count == self.mails
         self.mails, self.was_out = count, is_out

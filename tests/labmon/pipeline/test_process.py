@@ -14,7 +14,7 @@ from labmon.experiments.actions import set_limit
 from labmon.experiments.models import FoldCheckpoint
 from labmon.people.models import Role
 from labmon.pipeline.process import process_touched
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import NOON, NOON_US, make_experiment, make_person, make_run, make_tap, store_readings
 from tests.labmon.pipeline.lab import Feed, S, episodes, ports_of
 
@@ -61,9 +61,9 @@ def test_delay_and_hysteresis_of_the_job_paper(owner):
     feed.finish()
     assert episodes(limit) == [(210.0, 210.0, 391.0, "alarm", 19.5)]
     assert Alarm.objects.get().state == AlarmState.RETURNED_UNACKNOWLEDGED
-    assert [mail.event for mail in OutboxMail.objects.all()] == [f"alarm-{Alarm.objects.get().pk}-raised"]
-    assert OutboxMail.objects.get().recipients == ["owner@lab.example"]
-    assert "extinction ratio 19.5 dB is below its alarm limit 20.0 dB by 0.5 dB (0.7°)" in OutboxMail.objects.get().subject
+    assert [mail.key for mail in Message.objects.all()] == [f"alarm-{Alarm.objects.get().pk}-raised"]
+    assert Message.objects.get().recipients == ["owner@lab.example"]
+    assert "extinction ratio 19.5 dB is below its alarm limit 20.0 dB by 0.5 dB (0.7°)" in Message.objects.get().subject
 
 
 DAY = excursion((30, 40), (22, 90), (18, 80), (30, 100), (19, 75), (25, 200), (21, 100), (28, 50))
@@ -166,10 +166,10 @@ def test_running_twice_changes_nothing(owner):
     limit = make_limit(make_tap(), owner)
     feed = Feed(limit.tap, excursion((30, 10), (18, 70)))
     feed.send(np.arange(80))
-    before = (list(Alarm.objects.values()), OutboxMail.objects.count())
+    before = (list(Alarm.objects.values()), Message.objects.count())
     Touch.objects.create(tap=limit.tap, first_at_us=NOON_US, last_at_us=int(feed.at_us[-1]), arrival_us=NOON_US)
     process_touched(now_us=int(feed.at_us[-1]) + 200_000)
-    assert (list(Alarm.objects.values()), OutboxMail.objects.count()) == before
+    assert (list(Alarm.objects.values()), Message.objects.count()) == before
 
 
 def test_late_excursion_that_is_over_calls_nobody(owner):
@@ -183,7 +183,7 @@ def test_late_excursion_that_is_over_calls_nobody(owner):
     feed.finish()
     assert episodes(limit) == [(160.0, 160.0, 260.0, "alarm", 18.0)]
     alarm = Alarm.objects.get()
-    assert alarm.is_late and alarm.state == AlarmState.NORMAL and not OutboxMail.objects.exists()
+    assert alarm.is_late and alarm.state == AlarmState.NORMAL and not Message.objects.exists()
 
 
 def test_back_fill_that_ends_below_calls_once_when_it_becomes_current(owner):
@@ -192,11 +192,11 @@ def test_back_fill_that_ends_below_calls_once_when_it_becomes_current(owner):
     now_us = int(feed.at_us[-1])
     feed.send(np.arange(0, 400), now_us=now_us)
     alarm = Alarm.objects.get()
-    assert alarm.is_late and alarm.returned_at is None and not OutboxMail.objects.exists()
+    assert alarm.is_late and alarm.returned_at is None and not Message.objects.exists()
     feed.send(np.arange(400, 1000), now_us=now_us)
     feed.send(np.arange(990, 1000), now_us=now_us)
     alarm.refresh_from_db()
-    assert not alarm.is_late and OutboxMail.objects.count() == 1
+    assert not alarm.is_late and Message.objects.count() == 1
     assert alarm.raised_at == NOON + timedelta(seconds=160)
 
 
@@ -214,7 +214,7 @@ def test_late_data_move_told_bounds_and_keep_the_old_ones(owner):
     assert moved.pk == told.pk and moved.raised_at == NOON + timedelta(seconds=90)
     (earlier,) = moved.earlier_bounds.all()
     assert (earlier.raised_at, earlier.returned_at) == (told.raised_at, told.returned_at)
-    assert OutboxMail.objects.count() == 1
+    assert Message.objects.count() == 1
 
 
 def test_told_alarm_that_late_data_deny_is_withdrawn_not_deleted(owner):
@@ -222,7 +222,7 @@ def test_told_alarm_that_late_data_deny_is_withdrawn_not_deleted(owner):
     feed = Feed(limit.tap, np.where(np.arange(40) % 2, 18.0, 30.0))
     for index in range(1, 25, 2):
         feed.send(index)
-    assert Alarm.objects.count() == 1 and OutboxMail.objects.count() == 1
+    assert Alarm.objects.count() == 1 and Message.objects.count() == 1
     feed.send(np.arange(0, 40, 2), now_us=int(feed.at_us[24]))
     alarm = Alarm.objects.get()
     assert alarm.is_withdrawn and alarm.state == AlarmState.NORMAL
@@ -235,13 +235,13 @@ def test_rising_is_the_second_message_and_asks_anew(owner):
     for index in range(20):
         feed.send(index)
     alarm = Alarm.objects.get()
-    assert alarm.level == "warning" and OutboxMail.objects.get().subject.startswith("warning: ")
+    assert alarm.level == "warning" and Message.objects.get().subject.startswith("warning: ")
     Alarm.objects.update(acknowledged_at=NOON, acknowledged_by=owner, state=AlarmState.ACKNOWLEDGED)
     for index in range(20, 45):
         feed.send(index)
     alarm.refresh_from_db()
     assert (alarm.level, alarm.state, alarm.acknowledged_at) == ("alarm", AlarmState.UNACKNOWLEDGED, None)
-    assert [mail.event.rsplit("-", 1)[1] for mail in OutboxMail.objects.order_by("pk")] == ["raised", "rose"]
+    assert [mail.key.rsplit("-", 1)[1] for mail in Message.objects.order_by("pk")] == ["raised", "rose"]
 
 
 def test_acknowledged_alarm_returns_to_normal(owner):
@@ -258,7 +258,7 @@ def test_acknowledged_alarm_returns_to_normal(owner):
 def test_limit_in_runs_only_is_suppressed_and_calls_nobody(owner):
     limit = make_limit(make_tap(), owner, on_delay_s=5.0, in_runs_only=True)
     Feed(limit.tap, excursion((18, 10))).send(np.arange(10))
-    assert Alarm.objects.get().state == AlarmState.SUPPRESSED and not OutboxMail.objects.exists()
+    assert Alarm.objects.get().state == AlarmState.SUPPRESSED and not Message.objects.exists()
 
 
 def test_in_a_declared_run_such_a_limit_calls_the_runs_people(owner):
@@ -268,7 +268,7 @@ def test_in_a_declared_run_such_a_limit_calls_the_runs_people(owner):
     for index in range(10):
         feed.send(index)
     assert Alarm.objects.get().state == AlarmState.UNACKNOWLEDGED
-    assert OutboxMail.objects.get().recipients == ["night@lab.example", "owner@lab.example"]
+    assert Message.objects.get().recipients == ["night@lab.example", "owner@lab.example"]
 
 
 def test_an_excursion_open_when_the_run_begins_is_heard_once(owner):
@@ -278,14 +278,14 @@ def test_an_excursion_open_when_the_run_begins_is_heard_once(owner):
     for index in range(15):
         feed.send(index)
         assert Alarm.objects.filter(state=AlarmState.SUPPRESSED).exists() is (5 <= index < 10)
-    assert Alarm.objects.get().state == AlarmState.UNACKNOWLEDGED and OutboxMail.objects.count() == 1
+    assert Alarm.objects.get().state == AlarmState.UNACKNOWLEDGED and Message.objects.count() == 1
 
 
 def test_a_run_on_other_taps_of_the_experiment_leaves_the_limit_suppressed(owner):
     limit = make_limit(make_tap(), owner, on_delay_s=5.0, in_runs_only=True)
     make_run(limit.experiment, NOON).taps.set([make_tap()])
     Feed(limit.tap, excursion((18, 10))).send(np.arange(10))
-    assert Alarm.objects.get().state == AlarmState.SUPPRESSED and not OutboxMail.objects.exists()
+    assert Alarm.objects.get().state == AlarmState.SUPPRESSED and not Message.objects.exists()
 
 
 def test_an_excursion_in_late_data_of_a_run_is_shown_and_calls_nobody(owner):
@@ -295,7 +295,7 @@ def test_an_excursion_in_late_data_of_a_run_is_shown_and_calls_nobody(owner):
     feed.send(np.arange(220), now_us=NOON_US + 3600 * S)
     alarm = Alarm.objects.get()
     assert (alarm.state, alarm.is_late, alarm.is_suppressed) == (AlarmState.NORMAL, True, False)
-    assert not OutboxMail.objects.exists()
+    assert not Message.objects.exists()
 
 
 def test_newest_sample_is_by_data_time():
@@ -330,7 +330,7 @@ def test_untrusted_reading_raises_its_own_alarm_and_never_an_er_alarm(owner):
     process_touched(now_us=int(feed.at_us[-1]) + 5 * S)
     alarm = Alarm.objects.get()
     assert alarm.kind == "untrusted" and "port saturated" in alarm.message
-    assert OutboxMail.objects.count() == 1
+    assert Message.objects.count() == 1
     later = feed.at_us[-1] + np.arange(1, 30) * S
     store_readings(limit.tap, later, **{name: values[:29] for name, values in ports_of(np.full(200, 30.0)).items()})
     process_touched(now_us=int(later[-1]) + 5 * S)
@@ -404,7 +404,7 @@ def test_first_limit_looks_back_a_day(owner, monkeypatch):
     limit = set_limit(make_experiment(tap, owner=owner), tap, "er_db", alarm=20.0, by=owner).limit
     feed.send(np.arange(500, 600))
     assert episodes(limit) == [(160.0, 160.0, None, "alarm", 18.0)]
-    assert OutboxMail.objects.count() == 1
+    assert Message.objects.count() == 1
 
 
 def test_new_calibration_judges_the_past_again_and_calls_nobody(owner):
@@ -415,10 +415,10 @@ def test_new_calibration_judges_the_past_again_and_calls_nobody(owner):
     for batch in np.array_split(np.arange(400), 40):
         feed.send(batch)
     assert Alarm.objects.count() == 1
-    mails = OutboxMail.objects.count()
+    mails = Message.objects.count()
     new_version(limit.tap, NOON - timedelta(days=1), {"gain_ratio": 0.5})
     feed.finish()
-    assert Alarm.objects.get().is_withdrawn and OutboxMail.objects.count() == mails
+    assert Alarm.objects.get().is_withdrawn and Message.objects.count() == mails
     assert RollupDue.objects.filter(tap=limit.tap).exists()
 
 

@@ -10,7 +10,7 @@ from labmon.alarms.models import Alarm, AlarmState
 from labmon.people.models import Role
 from labmon.pipeline.process import process_touched
 from labmon.pipeline.silence import judge_silence
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import NOON_US, make_experiment, make_person, make_tap, store_readings
 from tests.labmon.pipeline.lab import S, ports_of
 
@@ -47,12 +47,12 @@ def test_shown_at_three_intervals_called_at_the_set_time_once():
     )
     for later_s in (29, 30, 31, 90):
         judge_silence(LAST_US + later_s * S)
-        assert OutboxMail.objects.count() == (later_s >= 30)
+        assert Message.objects.count() == (later_s >= 30)
     alarm.refresh_from_db()
     assert (
         alarm.level == "alarm"
         and alarm.message.endswith("no reading for 30 s")
-        and OutboxMail.objects.get().recipients == ["owner@lab.example"]
+        and Message.objects.get().recipients == ["owner@lab.example"]
     )
 
 
@@ -71,7 +71,7 @@ def test_hiccup_that_nobody_was_called_for_leaves_no_row():
     assert Alarm.objects.count() == 1
     store_readings(tap, [LAST_US + 11 * S], **ports_of(np.array([30.0])))
     judge_silence(LAST_US + 12 * S)
-    assert not Alarm.objects.exists() and not OutboxMail.objects.exists()
+    assert not Alarm.objects.exists() and not Message.objects.exists()
 
 
 def test_time_with_the_door_down_is_not_silence(door):

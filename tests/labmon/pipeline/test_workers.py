@@ -14,7 +14,7 @@ from labmon.experiments.actions import set_limit
 from labmon.pipeline import process
 from labmon.pipeline.process import process_touched
 from labmon.pipeline.rolling import roll_up_due
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import NOON, NOON_US, make_experiment, make_person, make_tap, store_readings
 from tests.labmon.pipeline.lab import S, ports_of
 
@@ -61,7 +61,7 @@ def test_four_workers_judge_each_tap_once(monkeypatch):
     make_low_taps(40)
     side_by_side(4, lambda: process_touched(now_us=NOON_US + 31 * S))
     assert not Touch.objects.exists()
-    assert Alarm.objects.count() == OutboxMail.objects.count() == TapNow.objects.count() == 40
+    assert Alarm.objects.count() == Message.objects.count() == TapNow.objects.count() == 40
     side_by_side(3, lambda: roll_up_due(now_us=NOON_US + 31 * S))
     assert not RollupDue.objects.filter(level_s=10).exists()
 

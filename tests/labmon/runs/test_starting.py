@@ -9,7 +9,7 @@ from labmon.experiments.actions import set_limit
 from labmon.people.models import Role
 from labmon.runs.models import Run
 from labmon.runs.starting import start_due_runs
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import NOON, make_experiment, make_person, make_run, make_tap, store_alarm
 
 pytestmark = pytest.mark.django_db
@@ -50,8 +50,8 @@ def test_a_suppressed_alarm_is_heard_and_calls_the_runs_people_once(experiment):
     start_due_runs()
     alarm.refresh_from_db()
     assert alarm.state == AlarmState.UNACKNOWLEDGED
-    mail = OutboxMail.objects.get()
-    assert mail.event == f"alarm-{alarm.pk}-run-{run.pk}" and mail.recipients == ["night@lab.example", "owner@lab.example"]
+    mail = Message.objects.get()
+    assert mail.key == f"alarm-{alarm.pk}-run-{run.pk}" and mail.recipients == ["night@lab.example", "owner@lab.example"]
 
 
 def test_an_acknowledgement_of_an_earlier_run_does_not_count_for_this_one(experiment):
@@ -66,14 +66,14 @@ def test_an_alarm_of_a_limit_that_always_calls_is_left_alone(experiment):
     alarm = open_alarm(experiment, in_runs_only=False, acknowledged_at=NOON - MINUTE)
     make_run(experiment, NOON)
     start_due_runs()
-    assert Alarm.objects.get(pk=alarm.pk).state == AlarmState.ACKNOWLEDGED and not OutboxMail.objects.exists()
+    assert Alarm.objects.get(pk=alarm.pk).state == AlarmState.ACKNOWLEDGED and not Message.objects.exists()
 
 
 def test_a_shelved_alarm_is_told_of_by_its_shelf_not_by_the_run(experiment):
     alarm = open_alarm(experiment, is_suppressed=True, shelved_until=NOON + 60 * MINUTE)
     make_run(experiment, NOON)
     start_due_runs()
-    assert Alarm.objects.get(pk=alarm.pk).state == AlarmState.SHELVED and not OutboxMail.objects.exists()
+    assert Alarm.objects.get(pk=alarm.pk).state == AlarmState.SHELVED and not Message.objects.exists()
 
 
 def test_a_run_declared_when_it_was_over_wakes_nobody(experiment):

@@ -1,71 +1,37 @@
-import smtplib
-from datetime import timedelta
-from threading import Thread
+"""What waits in the outbox: one message for each reason to tell, one delivery for each channel."""
 
 import pytest
-from django.core import mail as django_mail
-from django.db import connection, transaction
-from django.utils import timezone
+from django.db import transaction
 
-from labmon.tell.models import OutboxMail
-from labmon.tell.outbox import queue_mail, send_waiting
+from labmon.people.models import Role
+from labmon.tell.keys import key_in_force
+from labmon.tell.models import Delivery, KeyPurpose, Message, PushDevice, Webhook
+from labmon.tell.outbox import Mail, Telling, queue, queue_mail, queue_mails
+from tests.factories import make_person
 
-
-def fail_with(monkeypatch, fault):
-    def send(self, fail_silently=False):
-        raise fault
-
-    monkeypatch.setattr("django.core.mail.EmailMessage.send", send)
+pytestmark = pytest.mark.django_db
 
 
-@pytest.mark.django_db
-def test_one_mail_an_event():
-    for _ in range(3):
-        queue_mail("alarm-7-raised", ["owner@lab.example"], "ER is low", "ER is 19 dB.")
-    assert send_waiting() == 1 and send_waiting() == 0
-    (sent,) = django_mail.outbox
-    assert (sent.to, sent.subject, sent.body) == (["owner@lab.example"], "ER is low", "ER is 19 dB.")
-
-
-@pytest.mark.django_db
 def test_subject_is_one_line():
-    queue_mail("e", ["a@b.example"], "two\nlines\r\nBcc: x@y.example", "")
-    assert OutboxMail.objects.get().subject == "two lines Bcc: x@y.example"
+    queue_mail("e", ["a@b.example"], "two\nlines\r\nBcc: x@y.example\0", "")
+    assert Message.objects.get().subject == "two lines Bcc: x@y.example"
 
 
-@pytest.mark.django_db
 def test_no_event_is_told_to_nobody(settings):
     queue_mail("e", [], "s", "b")
-    assert OutboxMail.objects.get().recipients == [settings.DEFAULT_FROM_EMAIL]
+    queue([Telling(key="f", subject="s", body="b")])
+    queue([Telling(key="g", subject="s", body="b", person=make_person(email=""))])
+    assert [one.recipients for one in Message.objects.order_by("pk")] == 3 * [[settings.DEFAULT_FROM_EMAIL]]
 
 
-@pytest.mark.django_db
-@pytest.mark.parametrize("fault", [ConnectionRefusedError("no"), TimeoutError("slow"), smtplib.SMTPServerDisconnected("gone")])
-def test_failed_mail_waits_longer_each_time_and_goes_out_in_the_end(monkeypatch, fault):
-    queue_mail("e", ["a@b.example"], "s", "b")
-    waits = []
-    with monkeypatch.context() as patch:
-        fail_with(patch, fault)
-        for _ in range(12):
-            before = timezone.now()
-            assert send_waiting() == 0
-            row = OutboxMail.objects.get()
-            waits.append((row.next_try_at - before).total_seconds())
-            assert type(fault).__name__ in row.last_error
-            OutboxMail.objects.update(next_try_at=timezone.now() - timedelta(seconds=1))
-    assert waits == pytest.approx([min(15 * 2**n, 3600) for n in range(12)], abs=1.0)
-    assert send_waiting() == 1
-    assert OutboxMail.objects.get().tries == 13
+def test_the_same_key_again_changes_nothing():
+    for text in ("one", "two"):
+        queue_mails([Mail("e", ["a@b.example", "a@b.example", "c@d.example"], text, text)])
+        queue([Telling(key="f", subject=text, body=text, person=make_person(email="x@y.example"))])
+    assert sorted(Message.objects.values_list("key", "subject")) == [("e", "one"), ("f", "one")]
+    assert Message.objects.get(key="e").recipients == ["a@b.example", "c@d.example"] and Delivery.objects.count() == 2
 
 
-@pytest.mark.django_db
-def test_mail_not_due_stays():
-    queue_mail("e", ["a@b.example"], "s", "b")
-    OutboxMail.objects.update(next_try_at=timezone.now() + timedelta(minutes=1))
-    assert send_waiting() == 0
-
-
-@pytest.mark.django_db
 def test_event_that_is_rolled_back_tells_nobody():
     @transaction.atomic
     def fail():
@@ -74,22 +40,26 @@ def test_event_that_is_rolled_back_tells_nobody():
 
     with pytest.raises(ZeroDivisionError):
         fail()
-    assert send_waiting() == 0
+    assert not Message.objects.exists()
 
 
-@pytest.mark.django_db(transaction=True)
-def test_two_workers_send_each_mail_once():
-    for number in range(20):
-        queue_mail(f"e{number}", ["a@b.example"], f"mail {number}", "b")
+def make_device(person, number, **fields):
+    key = key_in_force(KeyPurpose.PUSH)
+    return PushDevice.objects.create(
+        person=person, key=key, endpoint=f"https://push.example/{number}", p256dh="p", auth="a", name="phone", **fields
+    )
 
-    def work():
-        send_waiting()
-        connection.close()
 
-    workers = [Thread(target=work) for _ in range(4)]
-    for worker in workers:
-        worker.start()
-    for worker in workers:
-        worker.join()
-    assert sorted(sent.subject for sent in django_mail.outbox) == sorted(f"mail {number}" for number in range(20))
-    assert not OutboxMail.objects.filter(sent_at=None).exists()
+def test_a_person_is_told_on_every_channel_of_theirs(django_assert_max_num_queries):
+    people = [make_person(Role.OWNER, email=f"{number}@lab.example") for number in range(30)]
+    for number, person in enumerate(people):
+        make_device(person, number)
+    make_device(people[0], 1000, ended_at=people[0].date_joined)
+    hook = Webhook.objects.create(name="log", url="http://hook.example/")
+    tellings = [Telling(key=f"m{number}", subject="s", body="b", person=person) for number, person in enumerate(people)]
+    with django_assert_max_num_queries(6):
+        queue([*tellings, Telling(key="hook", subject="s", body="b", webhook=hook, facts={"a": 1})])
+    kinds = sorted(Delivery.objects.filter(message__key="m0").values_list("channel", "address"))
+    assert kinds == [("mail", "0@lab.example"), ("push", f"device-{people[0].devices.get(ended_at=None).pk}")]
+    assert list(Delivery.objects.filter(message__key="hook").values_list("channel", "webhook")) == [("webhook", hook.pk)]
+    assert Delivery.objects.count() == 61

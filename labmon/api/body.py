@@ -12,6 +12,8 @@ T = TypeVar("T")
 LARGEST_BODY = 2**20
 #: What the database can hold as a line of text: no NUL, at most 500 characters.
 Text = Annotated[str, msgspec.Meta(max_length=500, pattern=r"^[^\x00]*$")]
+#: The words of a log entry.
+LongText = Annotated[str, msgspec.Meta(max_length=4000, pattern=r"^[^\x00]*$")]
 _PATH = re.compile(r" - at `\$\.?(?P<path>[^`]*)`\Z")
 _NAMED = re.compile(r"field `(?P<name>[^`]*)`")
 

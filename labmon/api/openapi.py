@@ -6,6 +6,7 @@ from typing import Any
 from django.http import HttpRequest, HttpResponse
 
 from labmon.api.answer import json_answer
+from labmon.api.log_shapes import LOG_SHAPES, TAG
 from labmon.api.schemas import ALARM_STATES, ID, MEASURED, NAME, NAMED, TIME, Schema, ref
 from labmon.api.statistics_shapes import STATISTICS
 
@@ -137,6 +138,25 @@ PATHS: dict[str, dict[str, Operation]] = {
     f"{BASE}/taps/{{station}}/{{tap}}/holds": {"post": call(
         "Shelve alarms of a tap (at most 4 h), or take them out of service (the bench's owner and managers).",
         {201: answer("The hold.", "Hold")}, parameters=TAP, body="NewHold", faults=WRITE)},
+    f"{BASE}/stations/{{station}}/log": {
+        "get": call("A bench's logbook, newest first.", {200: answer("The entries.", "LogEntries")},
+                    parameters=(in_path("station", NAME),
+                                in_query("span", {"type": "string"}, "Only what touches this ISO 8601 interval."),
+                                in_query("tag", TAG, "Only entries about this."),
+                                in_query("before", ID, "Only those that stand below this entry."),
+                                in_query("count", {"type": "integer", "minimum": 1, "maximum": 1000, "default": 100},
+                                         "At most so many."))),
+        "post": call("Write an entry; it may be a configuration change of the bench.", {201: answer("The entry.", "LogEntry")},
+                     parameters=(in_path("station", NAME),), body="NewLogEntry", faults=WRITE)},
+    f"{BASE}/log/{{id}}": {"patch": call(
+        "Edit an entry (who wrote it, the bench's owner, managers); how it read before is kept.",
+        {200: answer("The entry.", "LogEntry")}, parameters=(in_path("id", ID),), body="LogEntryChange", faults=WRITE)},
+    f"{BASE}/log/{{id}}/change": {"post": call(
+        "Say whether it was a configuration change, and of which kind.", {200: answer("The entry.", "LogEntry")},
+        parameters=(in_path("id", ID),), body="WasChange", faults=WRITE)},
+    f"{BASE}/log/{{id}}/strike": {"post": call(
+        "Strike an entry out: it stays readable, and a configuration change of it counts no more.",
+        {200: answer("The entry.", "LogEntry")}, parameters=(in_path("id", ID),), faults=WRITE)},
     f"{BASE}/readings": {"post": {
         "summary": "The station door: a batch of readings. Answered after the commit, never before.",
         "security": [{"stationKey": []}],
@@ -165,7 +185,7 @@ def document() -> dict[str, Any]:
                  "Additions are free, changes are not: clients must accept members that they do not know."},
         "paths": PATHS,
         "components": {
-            "schemas": NAMED | {"Statistics": STATISTICS},
+            "schemas": NAMED | {"Statistics": STATISTICS} | LOG_SHAPES,
             "securitySchemes": {
                 "personKey": {"type": "http", "scheme": "bearer", "description": "A person's key."},
                 "session": {"type": "apiKey", "in": "cookie", "name": "sessionid",

@@ -7,6 +7,7 @@ from labmon.api.alarms import get_alarms, post_acknowledge, post_shelve, post_un
 from labmon.api.call import by_method, open_to_all, unknown_address
 from labmon.api.experiments import get_experiments, get_limits, post_experiment, post_limit
 from labmon.api.holds import get_holds, post_end_hold, post_hold
+from labmon.api.log import get_log, patch_entry, post_change, post_log, post_strike
 from labmon.api.openapi import get_openapi
 from labmon.api.readings import get_readings
 from labmon.api.rehearsal import post_rehearse
@@ -61,6 +62,10 @@ urlpatterns = [
     path("holds", by_method(GET=get_holds), name="holds"),
     path("holds/<row:hold_id>/end", by_method(POST=post_end_hold), name="end-hold"),
     path(TAP + "holds", by_method(POST=post_hold), name="hold"),
+    path("stations/<short:station>/log", by_method(GET=get_log, POST=post_log), name="log"),
+    path("log/<row:entry_id>", by_method(PATCH=patch_entry), name="log-entry"),
+    path("log/<row:entry_id>/change", by_method(POST=post_change), name="log-change"),
+    path("log/<row:entry_id>/strike", by_method(POST=post_strike), name="log-strike"),
     path("openapi.json", open_to_all(GET=get_openapi), name="openapi"),
     re_path(r"", unknown_address, name="unknown"),
 ]

@@ -11,6 +11,7 @@ from labmon.audit.actions import note
 from labmon.errors import NotAllowed, WriteError
 from labmon.live.publish import publish
 from labmon.logbook.models import ChangeKind, ConfigurationChange, LogEntry, LogEntryBefore, LogTag
+from labmon.logbook.pictures import Upload, store_picture
 from labmon.people.models import Person, Role
 from labmon.people.rights import Action, may, owns, require, role_of
 
@@ -22,21 +23,29 @@ AHEAD: Final = timedelta(minutes=5)
 @transaction.atomic
 def write_entry(
     station: Station, *, by: Person, at: datetime, until_at: datetime | None = None, tap: Tap | None = None,
-    text: str = "", tag: str = LogTag.NOTE, change: str | None = None,
+    text: str = "", tag: str = LogTag.NOTE, change: str | None = None, picture: Upload | None = None,
 ) -> LogEntry:
     """An entry about a moment or a span; with ``change`` (a ChangeKind) it is a configuration change too.
 
+    Whether a touch was a configuration change stays open until someone says so (``say_change``).
     Raises:
         NotAllowed: The person may not write in the logbook.
-        WriteError: The time, the tag, the tap or the kind cannot be meant, or an entry says nothing.
+        WriteError: The time, the tag, the tap, the kind or the picture cannot be meant, or an entry says nothing.
     """
     require(by, Action.LOG, station)
     _check(at, until_at, text, tag)
     _check_tap(station, tap)
-    if not text.strip() and tag == LogTag.NOTE:
+    if not text.strip() and picture is None and tag == LogTag.NOTE:
         raise WriteError("text", "A note without words says nothing.", "Write what happened.")
-    entry = LogEntry.objects.create(station=station, tap=tap, at=at, until_at=until_at, text=text.strip(), tag=tag, by=by)
-    note(by, "write log entry", tap or station, after={"entry": entry.pk, "at": at, "until_at": until_at, "tag": str(tag)})
+    if change is not None and change not in ChangeKind.values:
+        raise WriteError("change", f"{change!r} is no kind of change.", f"Use one of {', '.join(ChangeKind.values)}.")
+    entry = LogEntry.objects.create(
+        station=station, tap=tap, at=at, until_at=until_at, text=text.strip(), tag=tag, by=by,
+        was_change=None if tag == LogTag.TOUCHED and change is None else False,
+        picture=store_picture(picture) if picture is not None else "",
+    )
+    note(by, "write log entry", tap or station,
+         after={"entry": entry.pk, "at": at, "until_at": until_at, "tag": str(tag), "has_picture": picture is not None})
     if change is not None:
         _store_change(entry, change, by)
     publish({"kind": "logbook", "ids": [station.pk]})
@@ -90,6 +99,7 @@ def say_change(entry: LogEntry, kind: str | None, *, by: Person) -> Configuratio
     if kind is not None:
         change = _store_change(locked, kind, by)
     else:
+        LogEntry.objects.filter(pk=locked.pk).update(was_change=False)
         change = ConfigurationChange.objects.filter(entry=locked, withdrawn_at=None).first()
         if change is not None:
             change.withdrawn_at = timezone.now()
@@ -128,6 +138,7 @@ def _store_change(entry: LogEntry, kind: str, by: Person) -> ConfigurationChange
     said: dict[str, Any] = {"station": entry.station, "tap": entry.tap, "at": entry.at, "kind": kind, "text": entry.text,
                             "by": by, "withdrawn_at": None}
     change, _ = ConfigurationChange.objects.update_or_create(entry=entry, defaults=said)
+    LogEntry.objects.filter(pk=entry.pk).update(was_change=True)
     note(by, "say configuration change", entry.tap or entry.station, after={"entry": entry.pk, "kind": kind, "at": entry.at})
     return change
 

@@ -38,6 +38,7 @@ class LogEntry(models.Model):
     text = models.CharField(max_length=4000, blank=True)
     tag = models.CharField(max_length=10, choices=LogTag, default=LogTag.NOTE)
     picture = models.FileField(upload_to="log", blank=True)
+    was_change = models.BooleanField(null=True, help_text="Whether it was a configuration change; null: not answered yet.")
     by = models.ForeignKey(settings.AUTH_USER_MODEL, models.PROTECT, null=True, related_name="+")
     written_at = models.DateTimeField(auto_now_add=True)
     edited_at = models.DateTimeField(null=True, blank=True)

@@ -5,6 +5,7 @@ from datetime import UTC, datetime
 from typing import Any
 
 from django.http import HttpRequest, HttpResponse, HttpResponseBadRequest, JsonResponse
+from django.urls import reverse
 from django.utils import timezone
 from django.views.decorators.http import require_safe
 
@@ -14,8 +15,10 @@ from labmon.alarms.queries import alarm_spans
 from labmon.api.span import Span, parse_span
 from labmon.benches.air import air_tap
 from labmon.experiments.queries import LimitFacts, VersionRow, limits_of_tap
+from labmon.logbook.queries import marks_of
 from labmon.screen.door import for_people
 from labmon.screen.holes import holes_sentence
+from labmon.screen.log_view import MarkView, mark_view
 from labmon.screen.named import visible_tap
 from labmon.screen.present import time_text
 from labmon.screen.quantity import converted_level, quantities_of
@@ -61,6 +64,7 @@ def history_body(tap: Tap, quantity: str, span: Span, points: int, now: datetime
     return {
         "series": series,
         "temperature": _temperature_body(tap, span, points),
+        "marks": mark_lines([tap], span),
         "span_ms": [span.from_us / 1e3, span.until_us / 1e3],
         "sentence": history_sentence(shown, gaps) + holes_sentence(known_holes(tap.pk, span.from_us, span.until_us)),
         "now_ms": int(now.timestamp() * 1e3),
@@ -91,6 +95,18 @@ def _temperature_body(tap: Tap, span: Span, points: int) -> dict[str, Any] | Non
             if shown.is_known.any():
                 return _series_body(shown)
     return None
+
+
+def mark_lines(taps: Sequence[Tap], span: Span) -> list[dict[str, Any]]:
+    """What people wrote of these taps and their benches in the span, for plot and list."""
+    return [mark_line(mark_view(mark)) for mark in marks_of(taps, span.from_at, span.until_at)]
+
+
+def mark_line(mark: MarkView) -> dict[str, Any]:
+    """A mark with the address of its entry."""
+    href = None if mark.entry_id is None else reverse("log-entry", args=[mark.station, mark.entry_id])
+    return {"at_ms": mark.at_ms, "until_ms": mark.until_ms, "word": mark.word, "when": mark.when, "text": mark.text,
+            "is_change": mark.is_change, "href": href}
 
 
 def limit_lines(tap: Tap, quantity: str, span: Span) -> list[dict[str, Any]]:

@@ -19,6 +19,7 @@ from labmon.screen.drift_view import DriftView, drift_view
 from labmon.screen.holds import holds_shown, quiet_choices
 from labmon.screen.named import visible_station
 from labmon.screen.quantity import QUANTITIES, quantities_of
+from labmon.screen.series import mark_lines
 from labmon.screen.shown import history_rows
 from labmon.screen.span import shown_span, ways
 from labmon.screen.station_view import boot_words, clock_words, station_sentence, tap_view
@@ -74,6 +75,7 @@ def _rights(request: HttpRequest, station: Station) -> dict[str, bool]:
         "calibrate": Action.CALIBRATE,
         "keys": Action.MAKE_STATION_KEY,
         "import": Action.IMPORT_FILE,
+        "log": Action.LOG,
     }
     return {name: may(request.user, action, station) for name, action in wanted.items()}
 
@@ -100,4 +102,5 @@ def _shown(request: HttpRequest, facts: StationFacts, station: Station, now) -> 
         "span": span,
         "ways": ways(span.span, now),
         "rows": [] if is_part else history_rows(tap, quantity, span.span),
+        "marks": [] if is_part else mark_lines([tap], span.span),
     }

@@ -64,6 +64,27 @@ function alarmTraces(series, [from, until], paint) {
   });
 }
 
+/** The logbook: an upright line for each entry, whole where the configuration changed; a span is a bar along the foot. */
+function markShapes(marks, paint) {
+  const lines = marks.map((mark) => ({ type: 'line', xref: 'x', yref: 'paper', x0: mark.at_ms, x1: mark.at_ms, y0: 0, y1: 1, layer: 'above',
+    line: { color: mark.is_change ? paint.ink : paint.soft, width: mark.is_change ? 1.6 : 1, dash: mark.is_change ? 'solid' : 'dot' } }));
+  const bars = marks.filter((mark) => mark.until_ms !== null).map((mark) => ({ type: 'rect', xref: 'x', yref: 'paper', x0: mark.at_ms,
+    x1: mark.until_ms, y0: 0, y1: 0.012, layer: 'above', line: { width: 0 }, fillcolor: paint.soft }));
+  return [...lines, ...bars];
+}
+
+/** Words at the head of the lines; of a crowd the changes and the first keep theirs, the list below has all. */
+function markWords(marks, [from, until], isNarrow, paint) {
+  const inside = marks.filter((mark) => mark.at_ms >= from && mark.at_ms <= until);
+  const kept = [];
+  const nearest = (until - from) * (isNarrow ? 0.09 : 0.03);
+  for (const mark of [...inside].sort((a, b) => Number(b.is_change) - Number(a.is_change))) {
+    if (kept.every((other) => Math.abs(other.at_ms - mark.at_ms) > nearest)) kept.push(mark);
+  }
+  return kept.map((mark) => ({ x: mark.at_ms, xref: 'x', y: 1, yref: 'paper', yanchor: 'top', textangle: -90, text: mark.word.replaceAll('<', '‹'),
+    xanchor: mark.at_ms > until - nearest ? 'right' : 'left', showarrow: false, font: { color: paint.ink, size: 12 }, bgcolor: paint.sheet, opacity: 0.9 }));
+}
+
 function mainTraces(series, name, axes, paint) {
   const band = envelope(series);
   const times = timesOf(series);
@@ -124,7 +145,8 @@ function figure(answer, isNarrow) {
     margin: { l: isNarrow ? 44 : 62, r: isNarrow ? 40 : 62, t: 12, b: 40 }, height: (temperature ? 540 : 400) * (isNarrow ? 0.8 : 1),
     xaxis: { ...axis, type: 'date', range: span, fixedrange: false, ticks: 'outside', anchor: temperature ? 'y2' : 'y' },
     yaxis: { ...axis, range, domain: temperature ? [0.32, 1] : [0, 1], title: { text: isNarrow ? '' : NAMES[series.quantity] } },
-    annotations: gapWords(series, span, paint),
+    annotations: [...gapWords(series, span, paint), ...markWords(answer.marks, span, isNarrow, paint)],
+    shapes: markShapes(answer.marks, paint),
     hoverlabel: { bgcolor: paint.sheet, font: { color: paint.ink } },
   };
   const traces = [gapTraces(series, range, paint), ...mainTraces(series, NAMES[series.quantity], {}, paint), doubtTrace(series, paint),
@@ -187,8 +209,30 @@ class History {
       this.root.dataset.drawn = spanText(...this.span);
     });
     this.sentence.textContent = answer.sentence;
+    this.list(answer.marks);
     this.drawnMs = Date.now();
     noteTruth();
+  }
+
+  /** The same marks as a list, for keyboard and ear. */
+  list(marks) {
+    const place = this.root.querySelector('[data-marks]');
+    if (!place || place.contains(document.activeElement)) return;
+    place.hidden = marks.length === 0;
+    place.querySelector('ol').replaceChildren(...marks.map((mark) => {
+      const line = document.createElement('li');
+      const said = document.createElement(mark.href ? 'a' : 'span');
+      if (mark.href) said.href = mark.href;
+      said.textContent = `${mark.when} ${mark.word}`;
+      line.append(said);
+      if (mark.text && mark.text !== mark.word) {
+        const text = document.createElement('span');
+        text.className = 'soft';
+        text.textContent = ` ${mark.text}`;
+        line.append(text);
+      }
+      return line;
+    }));
   }
 
   listen() {
@@ -240,7 +284,7 @@ function startHistory(root) {
     });
   }
   onChange((changed) => {
-    if ('all' in changed || 'alarm' in changed || (changed.tap && (changed.tap.length === 0 || changed.tap.includes(view.tap)))) view.follow();
+    if ('all' in changed || 'alarm' in changed || 'logbook' in changed || (changed.tap && (changed.tap.length === 0 || changed.tap.includes(view.tap)))) view.follow();
   });
   window.matchMedia('(prefers-color-scheme: dark)').addEventListener('change', () => view.answer && view.show(view.answer));
   return view;

@@ -6,7 +6,7 @@ from django.db import migrations, models
 class Migration(migrations.Migration):
 
     dependencies = [
-        ('labmon', '0007_logbook'),
+        ('labmon', '0008_runs'),
     ]
 
     operations = [

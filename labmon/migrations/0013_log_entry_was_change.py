@@ -6,7 +6,7 @@ from django.db import migrations, models
 class Migration(migrations.Migration):
 
     dependencies = [
-        ('labmon', '0009_limit_floors_and_outlooks'),
+        ('labmon', '0012_remove_outbox_mail'),
     ]
 
     operations = [

@@ -103,8 +103,8 @@ def plain_samples_of(reduced: Reduced, quantity: Quantity) -> Seconds:
     return _grouped(reduced, quantity, np.arange(len(reduced)), 0.0)
 
 
-def statuses(seconds: Seconds, level: float) -> NDArray[np.int8]:
-    """`Status` of each second against a level, shape (M,): below is `<` (angle: `>`).
+def statuses(seconds: Seconds, level: float | FloatArray) -> NDArray[np.int8]:
+    """`Status` of each second against a level (one, or one for each), shape (M,): below is `<` (angle: `>`).
 
     Below if any certain value is below; else inside if any judged one certainly is not; else undecided.
     """

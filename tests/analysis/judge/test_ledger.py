@@ -17,7 +17,8 @@ HOUR, MINUTE = 3600, 60
 
 def er_fold(samples, length_s, from_s=0):
     from_us = from_s * SECOND_US
-    return fold_tap(TapFold(), samples, [Ruling(ER, 20.0, 0, 1 << 60)], from_us, from_us + length_s * SECOND_US, interval_s=1.0)[1]
+    limit = Ruling(ER, 20.0, 0, 1 << 60)
+    return fold_tap(TapFold(), samples, [limit], from_us, from_us + length_s * SECOND_US, interval_s=1.0)[1]
 
 
 def tap_of(klass, why=None, doubtful=None):

@@ -38,6 +38,32 @@ class Calibration(models.Model):
         indexes = [models.Index(fields=["tap", "valid_from", "entered_at"], name="calibration_by_time")]
 
 
+class Doubt(models.Model):
+    """A span of a tap that is doubtful until a person has spoken: new firmware, ports that look exchanged.
+
+    ``until_us`` is empty while it lasts. With the answer *right* it casts no doubt any more, with *mended* it did until then.
+    """
+
+    class Answer(models.TextChoices):
+        NONE = "", "not answered"
+        RIGHT = "right", "all is right"
+        MENDED = "mended", "mended"
+
+    tap = models.ForeignKey("ingest.Tap", models.CASCADE, related_name="doubts")
+    reason = models.CharField(max_length=20, help_text="Code of the reason (analysis.reduce.trust.Reason).")
+    about = models.CharField(max_length=100, help_text="What it is about, once per tap and reason: a boot, a moment.")
+    from_us = models.BigIntegerField()
+    until_us = models.BigIntegerField(null=True)
+    text = models.CharField(max_length=500, help_text="What was seen, in words.")
+    noted_at = models.DateTimeField(auto_now_add=True)
+    answer = models.CharField(max_length=6, choices=Answer, default=Answer.NONE, blank=True)
+    answered_at = models.DateTimeField(null=True)
+    answered_by = models.CharField(max_length=150, blank=True, help_text="Who; the audit has the person.")
+
+    class Meta:
+        constraints = [models.UniqueConstraint(fields=["tap", "reason", "about"], name="doubt_once")]
+
+
 class TapNow(models.Model):
     """The newest reduced sample of a tap, as the pages and the API show it."""
 

@@ -82,9 +82,15 @@ def mark_derived_due(tap_id: int, from_at: datetime) -> None:
     following = Calibration.objects.filter(tap_id=tap_id, valid_from__gt=from_at).order_by("valid_from").first()
     first_us = us_of(from_at)
     last_us = min(us_of(following.valid_from) - 1 if following else heard.last_at_us, heard.last_at_us) if heard else first_us - 1
+    if heard:
+        mark_span_due(heard, first_us, last_us)
+
+
+def mark_span_due(heard: TapHeard, first_us: int, last_us: int) -> None:
+    """What was derived of a tap's readings of a span is to be made anew; an empty span leaves no mark."""
     if first_us <= last_us:
-        RollupDue.objects.create(tap_id=tap_id, first_at_us=first_us, last_at_us=last_us)
-        Touch.objects.create(tap_id=tap_id, first_at_us=first_us, last_at_us=last_us, arrival_us=heard.last_arrival_us)
+        RollupDue.objects.create(tap_id=heard.tap_id, first_at_us=first_us, last_at_us=last_us)
+        Touch.objects.create(tap_id=heard.tap_id, first_at_us=first_us, last_at_us=last_us, arrival_us=heard.last_arrival_us)
 
 
 def version_at(tap_id: int, at: datetime, as_of: datetime | None = None) -> Calibration | None:

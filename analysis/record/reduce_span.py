@@ -10,6 +10,7 @@ import numpy as np
 from analysis.models import Calibration, TapCheckpoint
 from analysis.quantities import BoolArray, FloatArray, IntArray
 from analysis.record.calibrations import versions_of
+from analysis.record.doubts import DoubtSpan, doubts_of
 from analysis.reduce import sample
 from analysis.reduce.calibration import TapCalibration, stack
 from analysis.reduce.flat import FlatState, flat_from_json, mark_flat
@@ -51,16 +52,18 @@ class Knowledge:
     Attributes:
         calibrations: Versions in force per tap, oldest first.
         overlaps: Spans (µs) in which two boots of a tap were heard at once, per tap.
+        doubts: Spans that are doubtful until a person has spoken, per tap.
     """
 
     calibrations: Mapping[int, list[Calibration]]
     overlaps: Mapping[int, list[tuple[int, int]]]
+    doubts: Mapping[int, list[DoubtSpan]]
 
 
 def knowledge_of(tap_ids: Iterable[int], as_of: datetime | None = None) -> Knowledge:
-    """Two queries however many taps."""
+    """Three queries however many taps."""
     asked = list(tap_ids)
-    return Knowledge(versions_of(asked, as_of), _overlaps_of(asked))
+    return Knowledge(versions_of(asked, as_of), _overlaps_of(asked), doubts_of(asked))
 
 
 def reduced_samples(tap: Tap, from_us: int, until_us: int, as_of: datetime | None = None) -> Reduced:
@@ -166,6 +169,7 @@ def _reduce_alike(
     marks = clock_marks(raw.own_at_us, raw.arrival_us, _has_wrong_stamp(raw))
     marks |= _two_devices(taps, raw.at_us, first, knowledge.overlaps)
     marks |= _old_zeros(versions, index, raw.at_us)
+    marks |= _doubts(taps, raw.at_us, first, knowledge.doubts, versions, index)
     calibration = _as_calibration(versions, index)
     samples = _reduced(kind, unit, raw.at_us, columns, calibration, marks, is_flat)
     return Group(taps, first, first + counts, samples), flats
@@ -316,6 +320,30 @@ def _old_zeros(versions: list[Calibration | None], index: IntArray, at_us: IntAr
     )
     if (old_from_us != never).any():
         marks[at_us > old_from_us[index]] = np.uint32(Reason.OLD_ZERO)
+    return marks
+
+
+def _doubts(
+    taps: list[TapLike],
+    at_us: IntArray,
+    first: IntArray,
+    doubts: Mapping[int, list[DoubtSpan]],
+    versions: list[Calibration | None],
+    index: IntArray,
+) -> ReasonArray:
+    """Spans that wait for a person's word; new firmware's end also where zeros have been taken since."""
+    marks = np.zeros(len(at_us), dtype=np.uint32)
+    if not any(tap.pk in doubts for tap in taps):
+        return marks
+    taken_us = np.array([us_of(one.zero_taken_at) if one and one.zero_taken_at else NO_TIME for one in versions])
+    ends = np.append(first[1:], len(at_us))
+    for tap, begin, end in zip(taps, first.tolist(), ends.tolist(), strict=True):
+        own, zero_us = at_us[begin:end], taken_us[index[begin:end]]
+        for doubt in doubts.get(tap.pk, ()):
+            inside = (own >= doubt.from_us) & (own < doubt.until_us)
+            if doubt.reason is Reason.NEW_FIRMWARE:
+                inside &= zero_us < doubt.from_us
+            marks[begin:end][inside] |= np.uint32(doubt.reason)
     return marks
 
 

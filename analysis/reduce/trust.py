@@ -52,6 +52,8 @@ class Reason(IntFlag):
     NO_POWER_UNIT = 1 << 16
     UNDECIDED = 1 << 17
     NO_DOP = 1 << 18
+    NEW_FIRMWARE = 1 << 19
+    PORTS_SWAPPED = 1 << 20
 
     @property
     def code(self) -> str:
@@ -84,6 +86,8 @@ _WORDS: Final = {
     Reason.NO_POWER_UNIT: "The tap's unit is not a power",
     Reason.UNDECIDED: "At floor, cannot tell",
     Reason.NO_DOP: "Degree of polarization not measured",
+    Reason.NEW_FIRMWARE: "New firmware: zeros not taken again, nobody has confirmed",
+    Reason.PORTS_SWAPPED: "Ports exchanged, or the light turned by 90°: nobody has said which",
 }
 
 # Reasons that forbid judging, and those that only cast doubt. The reducers put a reason on a quantity only where it
@@ -99,6 +103,8 @@ DOUBTFUL_REASONS: Final = (
     | Reason.OLD_ZERO
     | Reason.HUM
     | Reason.UNDECIDED
+    | Reason.NEW_FIRMWARE
+    | Reason.PORTS_SWAPPED
 )
 NONE_REASONS: Final = Reason.NO_WANTED_STATE | Reason.NO_BRIGHT | Reason.NO_POWER_UNIT | Reason.NO_DOP
 

@@ -1,7 +1,7 @@
 """Benches as the lab page, the station page and the API need them; a fixed number of queries, however many benches."""
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from datetime import datetime
 from typing import Any, Final
 
@@ -23,6 +23,7 @@ from ingest.times import now_us as server_now_us
 from labmon.alarms.models import AlarmState
 from labmon.benches.ceilings import TapCeiling, ceiling_of
 from labmon.benches.course import Course, courses_of
+from labmon.benches.doubts import OpenDoubt, open_doubts
 from labmon.benches.show import (
     DEFAULT_SILENCE_S,
     WORST_FIRST,
@@ -122,6 +123,7 @@ class StationFacts:
     last_heard_at: datetime | None
     set_aside: int
     troubles: Troubles = NO_TROUBLES
+    doubts: list[OpenDoubt] = field(default_factory=list)
 
 
 @dataclass(frozen=True, slots=True)
@@ -239,7 +241,8 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
               for tap in taps],
         keys=list(station.keys.select_related("use").order_by("-made_at")),
         boots=boots,
-        troubles=troubles_of(station, boots, newest, clock_us),
+        troubles=troubles_of(station, newest, clock_us),
+        doubts=open_doubts(station, in_force),
         last_heard_at=at_of(heard_us) if heard_us is not None else None,
         set_aside=SetAside.objects.filter(station=station).count(),
     )

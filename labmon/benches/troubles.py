@@ -1,9 +1,8 @@
-"""What a station's boots tell: its clock's course, two devices on one key, new firmware, readings that never came."""
+"""What a station's boots tell: its clock's course, two devices on one key, readings that never came."""
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import datetime
-from itertools import pairwise
 from typing import Final
 
 import numpy as np
@@ -12,7 +11,7 @@ from django.db import connection
 from analysis.record.reduce_span import OVERLAP_LEAST_US
 from ingest.clock_course import ClockCourse, clock_course
 from ingest.files.origin import FILE_BOOT
-from ingest.models import Station, StationBoot
+from ingest.models import Station
 from ingest.store.columns import Readings
 from ingest.times import at_of
 
@@ -32,15 +31,6 @@ class TwoDevices:
 
 
 @dataclass(frozen=True, slots=True)
-class NewFirmware:
-    """A boot that came with another firmware than the one before it."""
-
-    before: str
-    after: str
-    at: datetime
-
-
-@dataclass(frozen=True, slots=True)
 class Missing:
     """Numbers of a boot that were counted and never came: overrun of a buffer, or still under way."""
 
@@ -55,11 +45,10 @@ class Troubles:
 
     clock: ClockCourse | None
     two_devices: list[TwoDevices]
-    firmware: list[NewFirmware]
     missing: list[Missing]
 
 
-NO_TROUBLES: Final = Troubles(None, [], [], [])
+NO_TROUBLES: Final = Troubles(None, [], [])
 _BOOTS = """
     SELECT tap.name, boot.boot, boot.remote_address, held.first_at_us, held.last_at_us,
         upper(held.held) - lower(held.held) - (SELECT sum(upper(part) - lower(part)) FROM unnest(held.held) AS part)
@@ -69,11 +58,10 @@ _BOOTS = """
     ORDER BY tap.name, held.first_at_us LIMIT 500"""
 
 
-def troubles_of(station: Station, boots: Sequence[StationBoot], newest: Mapping[int, Readings], now_us: int) -> Troubles:
+def troubles_of(station: Station, newest: Mapping[int, Readings], now_us: int) -> Troubles:
     """What the newest boots and batches tell; one query.
 
     Args:
-        boots: The station's newest boots, newest first.
         newest: Newest readings by tap.
     """
     with connection.cursor() as cursor:
@@ -82,7 +70,6 @@ def troubles_of(station: Station, boots: Sequence[StationBoot], newest: Mapping[
     return Troubles(
         clock=_clock(newest.values()),
         two_devices=_two_devices(rows),
-        firmware=_firmware(boots, now_us),
         missing=[Missing(tap, boot, int(count)) for tap, boot, _, _, _, count in rows if count],
     )
 
@@ -108,11 +95,3 @@ def _two_devices(rows: Sequence[tuple]) -> list[TwoDevices]:
         else:
             reach = row
     return list(found.values())
-
-
-def _firmware(boots: Sequence[StationBoot], now_us: int) -> list[NewFirmware]:
-    """Changes among the newest boots, by their first arrival."""
-    known = sorted((boot for boot in boots if boot.firmware and not boot.boot.startswith(FILE_BOOT)),
-                   key=lambda boot: boot.first_arrival_us)
-    return [NewFirmware(before.firmware, after.firmware, at_of(after.first_arrival_us)) for before, after in pairwise(known)
-            if before.firmware != after.firmware and after.first_arrival_us > now_us - RECENT_US]

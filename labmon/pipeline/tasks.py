@@ -9,6 +9,7 @@ from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
 from labmon.alarms.holding import end_due_holds
 from labmon.benches.keeping import forget_old_days
+from labmon.pipeline.doubting import cast_doubts
 from labmon.pipeline.nightly import make_day_statistics
 from labmon.pipeline.process import process_touched
 from labmon.pipeline.prune import prune_checkpoints
@@ -62,6 +63,12 @@ def end_holds_task() -> None:
 def start_runs_task() -> None:
     """Start runs whose time has come."""
     start_due_runs()
+
+
+@_task("cast_doubts", 120)
+def cast_doubts_task() -> None:
+    """Ask people about new firmware and ports that exchanged their light."""
+    cast_doubts()
 
 
 @_task("roll_up", 120)

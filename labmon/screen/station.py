@@ -23,7 +23,7 @@ from labmon.screen.series import mark_lines
 from labmon.screen.shown import history_rows
 from labmon.screen.span import shown_span, ways
 from labmon.screen.station_view import boot_words, clock_words, station_sentence, tap_view
-from labmon.screen.trouble_view import clock_course_words, trouble_words
+from labmon.screen.trouble_view import clock_course_words, questions, trouble_words
 
 RECENT_ALARMS = 12
 
@@ -47,7 +47,8 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
             "taps": [tap_view(tap, now) for tap in facts.taps],
             "drifts": _drifts(facts),
             "clock": clock_words(facts.boots),
-            "troubles": trouble_words(facts.troubles, facts.taps),
+            "troubles": trouble_words(facts.troubles, facts.taps, facts.doubts),
+            "questions": questions(facts.doubts),
             "clock_course": clock_course_words(facts.troubles.clock),
             "boots": [boot_words(boot) for boot in facts.boots],
             "waiting": waiting,

@@ -8,11 +8,13 @@ from django.shortcuts import redirect, render
 from django.utils import timezone
 from django.views.decorators.http import require_http_methods, require_POST
 
+from analysis.models import Doubt
 from analysis.record.calibrations import version_at
 from ingest.store.read import newest_readings
 from labmon.benches.actions import revoke_bench_key
 from labmon.benches.calibration import calibration_history, set_calibration
 from labmon.benches.ceilings import READINGS_LOOKED_AT, ceiling_of
+from labmon.benches.doubts import answer_doubt
 from labmon.benches.zeros import being_made_anew, has_zero
 from labmon.errors import WriteError
 from labmon.people.rights import Action, require
@@ -37,6 +39,22 @@ def revoke_key(request: HttpRequest, station: str, key_id: int) -> HttpResponse:
         say_refusal(request, error)
     else:
         messages.success(request, "The key is revoked. Readings sent with it are refused from now on.")
+    return redirect("station", station=found.name)
+
+
+@require_POST
+@for_people
+def answer_doubts(request: HttpRequest, station: str) -> HttpResponse:
+    """A person's word on new firmware, or on ports that exchanged their light."""
+    found = visible_station(request.user, station)
+    asked = Doubt.objects.filter(tap__station=found, pk__in=[one for one in request.POST.getlist("doubt") if one.isdecimal()])
+    try:
+        for doubt in asked.order_by("pk"):
+            answer_doubt(doubt.pk, request.POST.get("answer", ""), by=request.user)
+    except WriteError as error:
+        say_refusal(request, error)
+    else:
+        messages.success(request, "Thank you: it is noted, and what was derived since then is made anew.")
     return redirect("station", station=found.name)
 
 

@@ -40,6 +40,7 @@ urlpatterns = [
     path("stations/<slug:station>/keys/", joining.make_key, name="make-key"),
     path("stations/<slug:station>/joining/", joining.joining_page, name="joining"),
     path("stations/<slug:station>/taps/", joining.add_tap_page, name="add-tap"),
+    path("stations/<slug:station>/doubts/", station_writes.answer_doubts, name="answer-doubts"),
     path("stations/<slug:station>/keys/<int:key_id>/revoke/", station_writes.revoke_key, name="revoke-key"),
     path("stations/<slug:station>/taps/<slug:tap>/history.json", series.history_json, name="history-json"),
     path("stations/<slug:station>/taps/<slug:tap>/trail.json", trail.trail_json, name="trail-json"),

@@ -44,12 +44,6 @@ def test_an_old_boots_spool_beside_live_data_is_not_two_devices(sender):  # noqa
     assert said_of(sender.station) == ""
 
 
-def test_new_firmware_asks_for_new_zeros(sender):  # noqa: F811
-    sender.send(body(0, 5, boot="aaaa", ago_s=300, firmware="board 1.4"))
-    sender.send(body(0, 5, boot="bbbb", ago_s=100, firmware="board 1.5"))
-    said = said_of(sender.station)
-    assert "board 1.5 after board 1.4" in said and "take the zeros again" in said
-
 
 def test_numbers_that_never_came_are_counted(sender):  # noqa: F811
     sender.send(body(0, 10))

@@ -62,7 +62,8 @@ class Clearance:
         failure_bound: One-sided 95 % upper bound on the chance of failure.
         median_s, tenth_s: Times by which half and a tenth of the replays had reached the limit, s; inf: not within the run.
         trusted_share: Smallest share of judged time among the windows that count; NaN for N = 0.
-        failed: The windows that failed, oldest first. widened: How the kind was widened to find these.
+        counted: Starts of the windows that count, µs, oldest first. failed: Those that failed, oldest first.
+        widened: How the kind was widened to find these.
         set_aside: Starts of windows that do not count, µs, with the reason. open_causes: As given.
         remedy: What would change it.
     """
@@ -76,6 +77,7 @@ class Clearance:
     median_s: float
     tenth_s: float
     trusted_share: float
+    counted: tuple[int, ...]
     failed: tuple[FailedWindow, ...]
     widened: tuple[Widening, ...]
     set_aside: tuple[tuple[int, SetAside], ...]
@@ -127,6 +129,7 @@ def _clearance(windows: Sequence[PastWindow] | Paths, run: PlannedRun, now: Star
         share=(count - failed) / count if count else float("nan"), failure_bound=float(failure_bound(failed, count, level=LEVEL)),
         median_s=quantiles[0], tenth_s=quantiles[1],
         trusted_share=float(paths.trusted_share[index].min()) if count else float("nan"),
+        counted=tuple(paths.windows[number].start_us for number in index),
         failed=tuple(_failed_window(paths.windows[number], replays, number) for number in index if replays.has_failed[number]),
         widened=chosen.widened, set_aside=tuple((paths.windows[number].start_us, why) for number, why in chosen.set_aside),
         open_causes=now.open_causes, remedy=_remedy(replays, chosen, run.length_s, failed, count))
@@ -138,8 +141,8 @@ def _nothing(run: PlannedRun, now: StartReading, *, has_windows: bool) -> Cleara
                Reason.CHANGED: run.changed_at_us is not None and not has_windows, Reason.OPEN_CAUSE: bool(now.open_causes)}
     none = float("nan")
     return Clearance(verdict=Verdict.NOT_ENOUGH, reasons=tuple(reason for reason, holds in reasons.items() if holds), held=0,
-                     count=0, share=none, failure_bound=1.0, median_s=none, tenth_s=none, trusted_share=none, failed=(),
-                     widened=(), set_aside=(), open_causes=now.open_causes,
+                     count=0, share=none, failure_bound=1.0, median_s=none, tenth_s=none, trusted_share=none, counted=(),
+                     failed=(), widened=(), set_aside=(), open_causes=now.open_causes,
                      remedy=Remedy(further_windows=None if has_windows else CLEARED_WINDOWS, limit_rad=none, length_s=none))
 
 

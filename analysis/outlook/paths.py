@@ -24,6 +24,7 @@ class Paths:
         start: State at each window's start, shape (W,) or (W, 3); NaN where nothing was judged.
         is_start_bound: Shape (W,): the first judged angle is only an upper bound; ``start`` is then 0.
         followed_s: How long each window was followed, s, shape (W,): its length, or up to its cut.
+        excess_rad: What a replay adds to each sample's angle, rad, shape (N,); None: nothing.
         trusted_share: Judged seconds over ``followed_s``, shape (W,).
     """
 
@@ -36,12 +37,14 @@ class Paths:
     is_start_bound: BoolArray
     followed_s: FloatArray
     trusted_share: FloatArray
+    excess_rad: FloatArray | None = None
 
     def upto(self, count: int) -> "Paths":
         """The first ``count`` windows, without copying a sample."""
         last = int(self.first[count])
         return Paths(self.windows[:count], self.first[:count + 1], self.at_us[:last], self.state[:last], self.held_s[:last],
-                     self.start[:count], self.is_start_bound[:count], self.followed_s[:count], self.trusted_share[:count])
+                     self.start[:count], self.is_start_bound[:count], self.followed_s[:count], self.trusted_share[:count],
+                     None if self.excess_rad is None else self.excess_rad[:last])
 
 
 def gather_paths(windows: Sequence[PastWindow], length_s: float | None = None) -> Paths:
@@ -67,7 +70,14 @@ def gather_paths(windows: Sequence[PastWindow], length_s: float | None = None) -
     followed_s = (end_us - start_us) / US_PER_S
     share = _sums(held_s, first) / np.where(followed_s > 0.0, followed_s, np.nan)
     start, is_bound = _starts(windows, first, state, held_s)
-    return Paths(tuple(windows), first, at_us, state, held_s, start, is_bound, followed_s, np.nan_to_num(share))
+    return Paths(tuple(windows), first, at_us, state, held_s, start, is_bound, followed_s, np.nan_to_num(share),
+                 _excess_rad(windows))
+
+
+def _excess_rad(windows: Sequence[PastWindow]) -> FloatArray | None:
+    if all(window.excess_rad is None for window in windows):
+        return None
+    return np.concatenate([np.zeros(len(window.at_us)) if window.excess_rad is None else window.excess_rad for window in windows])
 
 
 def _end_us(window: PastWindow, length_s: float | None) -> int:
@@ -83,6 +93,11 @@ def _held_s(at_us: IntArray, first: IntArray, start_us: IntArray, end_us: IntArr
     spacing_us[at_last] = np.iinfo(np.int64).max
     longest_us = np.array([round(HELD_INTERVALS * US_PER_S * _interval_s(window)) for window in windows], np.int64)
     until_us = at_us + np.minimum(spacing_us, np.repeat(longest_us, size))
+    if any(window.held_s is not None for window in windows):
+        until_us = np.concatenate([
+            until_us[first[number]:first[number + 1]] if window.held_s is None
+            else window.at_us + np.round(np.asarray(window.held_s) * US_PER_S).astype(np.int64)
+            for number, window in enumerate(windows)])
     until_us = np.minimum(until_us, np.repeat(end_us, size))
     return np.where(at_us >= np.repeat(start_us, size), np.maximum(until_us - at_us, 0) / US_PER_S, 0.0)
 

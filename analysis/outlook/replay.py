@@ -56,8 +56,7 @@ def replay_angles(paths: Paths, angle_now_rad: float, limit_rad: float, *, allow
     Source: docs/formulas.md, F-93.
     """
     _check(paths, 1, limit_rad, allowed_s)
-    offset_rad = float(angle_now_rad) - np.repeat(paths.start, np.diff(paths.first))
-    return _tell(paths, paths.state + offset_rad, limit_rad, allowed_s)
+    return _tell(paths, replayed_angles_rad(paths, angle_now_rad, None), limit_rad, allowed_s)
 
 
 def replay_sops(paths: Paths, sop_now: FloatArray, wanted: FloatArray, limit_rad: float, *, allowed_s: float = 0.0) -> Replays:
@@ -68,20 +67,37 @@ def replay_sops(paths: Paths, sop_now: FloatArray, wanted: FloatArray, limit_rad
         sop_now, wanted: Today's and the wanted state, shape (3,).
         limit_rad, allowed_s: As of `replay_angles`.
     Returns:
-        `Replays`. Where a window's state is opposite to its start, the axis is unknown and the worst one is taken.
+        `Replays`. Where a window's state is opposite to its start, the axis is unknown and the worst one is taken. A window's
+        ``excess_rad`` is added to the angle, whatever its direction was (own; errs to neither side on the whole).
     Raises:
         ValueError: ``paths`` hold angles, or a vector is null.
     Source: docs/formulas.md, F-92.
     """
     _check(paths, 3, limit_rad, allowed_s)
-    now, wanted = _unit("sop_now", sop_now), _unit("wanted", wanted)
+    return _tell(paths, replayed_angles_rad(paths, sop_now, wanted), limit_rad, allowed_s)
+
+
+def replayed_angles_rad(paths: Paths, now: FloatArray | float, wanted: FloatArray | None) -> FloatArray:
+    """Angle of every sample of every window as replayed from today's state, rad, shape (N,); NaN where nothing was read.
+
+    Args:
+        paths: Windows. now: Today's angle, rad; of Stokes windows today's state, shape (3,). wanted: None for angles.
+    Source: docs/formulas.md, F-92, F-93.
+    """
+    if wanted is None:
+        return paths.state + (float(np.asarray(now)) - np.repeat(paths.start, np.diff(paths.first)))
+    now, wanted = _unit("sop_now", np.asarray(now)), _unit("wanted", wanted)
     length = np.sqrt(np.einsum("ij,ij->i", paths.state, paths.state))
     length[length == 0.0] = np.nan
     cosine = np.empty(len(length))
     for number, start in enumerate(paths.start / np.linalg.norm(paths.start, axis=1, keepdims=True)):
         part = slice(int(paths.first[number]), int(paths.first[number + 1]))
         cosine[part] = _replayed_cosine(paths.state[part], length[part], start, now, wanted)
-    return _tell(paths, np.arccos(np.clip(cosine, -1.0, 1.0)), limit_rad, allowed_s)
+    return _with_excess(paths, np.arccos(np.clip(cosine, -1.0, 1.0)))
+
+
+def _with_excess(paths: Paths, angle_rad: FloatArray) -> FloatArray:
+    return angle_rad if paths.excess_rad is None else angle_rad + paths.excess_rad
 
 
 def _replayed_cosine(state: FloatArray, length: FloatArray, start: FloatArray, now: FloatArray, wanted: FloatArray) -> FloatArray:
@@ -158,5 +174,5 @@ def held_itself(paths: Paths, wanted: FloatArray | None, limit_rad: float, *, al
         paths, limit_rad, allowed_s: As of `replay_angles`. wanted: Shape (3,) for Stokes windows, None for angles.
     """
     _check(paths, 1 if wanted is None else 3, limit_rad, allowed_s)
-    angle_rad = paths.state if wanted is None else angle_between_rad(paths.state, _unit("wanted", wanted))
+    angle_rad = paths.state if wanted is None else _with_excess(paths, angle_between_rad(paths.state, _unit("wanted", wanted)))
     return _tell(paths, angle_rad, limit_rad, allowed_s)

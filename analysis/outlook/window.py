@@ -31,6 +31,10 @@ class PastWindow:
         is_upper_bound: Shape (N,), two ports at the floor: the angle is at most this. A start at the floor counts from 0.
         cut_at_us: Moment at which somebody realigned; what follows is another story and is not followed.
         interval_s: Nominal spacing of the samples, s; without it the median spacing. A sample holds for three at most.
+        held_s: Judged seconds of each sample, shape (N,), where they are known (minutes of many seconds); goes before
+            ``interval_s``.
+        excess_rad: Stokes, shape (N,): by how much the worst second of a sample was further from the wanted state than
+            ``state`` (then the minute's mean direction), rad, not below 0. A replay adds it.
         temperature_k: Lowest and highest room temperature, K, where known.
         labels: Named stretches, from which a failure takes its *why*.
     """
@@ -47,6 +51,8 @@ class PastWindow:
     is_upper_bound: BoolArray | None = None
     cut_at_us: int | None = None
     interval_s: float | None = None
+    held_s: FloatArray | None = None
+    excess_rad: FloatArray | None = None
     temperature_k: tuple[float, float] | None = None
     labels: tuple[LabelledSpan, ...] = ()
 
@@ -55,6 +61,12 @@ class PastWindow:
         if np.shape(self.state) not in ((count,), (count, 3)) or np.shape(self.is_trusted) != (count,):
             raise ValueError(f"state has shape {np.shape(self.state)}, is_trusted {np.shape(self.is_trusted)} for {count} times; "
                              "pass one angle or one Stokes vector and one mark per time.")
+        for name in ("held_s", "excess_rad"):
+            beside = getattr(self, name)
+            if beside is not None and np.shape(beside) != (count,):
+                raise ValueError(f"{name} has shape {np.shape(beside)} for {count} times; pass one per time.")
+        if self.excess_rad is not None and np.ndim(self.state) == 1:
+            raise ValueError("excess_rad belongs to Stokes vectors; of angles pass the worst one as state.")
         if count > 1 and not np.all(self.at_us[1:] > self.at_us[:-1]):
             raise ValueError("at_us must rise strictly; sort the samples and drop repeats.")
         if not self.length_s > 0.0:

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from analysis.outlook.backtest import summed_up, walk_forward_angles, walk_forward_sops
-from analysis.outlook.verdict import Verdict
+from analysis.outlook.verdict import Reason, Verdict
 from analysis.outlook.window import LabelledSpan
 from analysis.quantities import angle_between_rad, angle_rad_from_er_db
 from tests.analysis.outlook.invented import bench_sop, nights
@@ -58,11 +58,25 @@ def test_changes_cut_history_from_then_on():
 
 
 def test_nights_that_begin_beyond_or_at_the_floor():
+    """A bound within the limit is asked about as if the angle were as large; one beyond the limit cannot be asked about."""
     windows = [*fortnight(), calm(14, angle_deg=12.0, is_working_day=True),
-               calm(15, is_working_day=True, is_upper_bound=np.ones(720, bool))]
+               calm(15, is_working_day=True, is_upper_bound=np.ones(720, bool)),
+               calm(16, angle_deg=12.0, is_working_day=True, is_upper_bound=np.ones(720, bool))]
     rows = walk_forward_angles(windows, LIMIT_RAD)
     assert windows[14].start_us not in {row.start_us for row in rows}
-    assert rows[-1].start_us == windows[15].start_us and rows[-1].said.verdict is Verdict.NOT_ENOUGH
+    assert [row.start_us for row in rows[-2:]] == [windows[15].start_us, windows[16].start_us]
+    assert rows[-2].said.verdict is Verdict.NOT_CLEARED and rows[-2].said.count == 15
+    assert rows[-1].said.verdict is Verdict.NOT_ENOUGH and Reason.AT_FLOOR in rows[-1].said.reasons
+
+
+def test_what_is_told_sums_up_alike_and_the_rules_are_shown_beside():
+    """The naive rules of the fortnight by hand: "3 dB above" goes for all 7 (5 held), 90 % of the past for 6 (4 held)."""
+    rows = walk_forward_angles(fortnight(), LIMIT_RAD)
+    test = summed_up(rows)
+    assert repr(summed_up([row.told() for row in rows])) == repr(test)
+    assert (test.margin_rule.cleared, test.margin_rule.cleared_held) == (7, 5)
+    assert (test.past_rule.cleared, test.past_rule.cleared_held) == (6, 4)
+    assert test.margin_rule.parts.score == test.margin and test.past_rule.parts.score == test.past
 
 
 def test_nothing_to_walk():

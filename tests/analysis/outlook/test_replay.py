@@ -136,3 +136,15 @@ def test_wrong_kinds_and_limits_are_refused():
         replay_angles(angles, 0.1, 0.0)
     with pytest.raises(ValueError, match="sop_now"):
         replay_sops(sops, np.zeros(3), WANTED, LIMIT_RAD)
+
+
+def test_an_excess_is_added_wherever_today_is():
+    """A minute whose worst second stood 0.03 rad further out: by itself and replayed."""
+    sop = np.tile([np.cos(0.1), np.sin(0.1), 0.0], (720, 1))
+    excess = np.zeros(720)
+    excess[100] = 0.03
+    paths = gather_paths([night(0, sop, excess_rad=excess)])
+    wanted = np.array([1.0, 0.0, 0.0])
+    np.testing.assert_allclose(held_itself(paths, wanted, 0.2).worst_rad, [0.13], atol=1e-9)
+    aside = replay_sops(paths, np.array([0.0, 1.0, 0.0]), wanted, 0.2)
+    np.testing.assert_allclose(aside.worst_rad, [np.pi / 2 + 0.03], atol=1e-9)

@@ -34,3 +34,14 @@ def test_lengths_are_above_nothing(length_s):
 def test_a_reading_is_trusted_unless_said_otherwise():
     reading = StartReading(state=0.1)
     assert reading.is_trusted and not reading.is_at_floor and reading.open_causes == ()
+
+
+@pytest.mark.parametrize("beside", ["held_s", "excess_rad"])
+def test_what_stands_beside_samples_has_their_number(beside):
+    with pytest.raises(ValueError, match=beside):
+        night(0, np.tile([1.0, 0.0, 0.0], (720, 1)), **{beside: np.zeros(3)})
+
+
+def test_angles_have_no_excess():
+    with pytest.raises(ValueError, match="excess_rad"):
+        night(0, np.zeros(720), excess_rad=np.zeros(720))

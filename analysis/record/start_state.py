@@ -1,4 +1,4 @@
-"""The state a run would start from: a tap's last minute, and whether it may be believed."""
+"""The state a run would start from: a tap's newest minute, and whether it may be believed."""
 
 from dataclasses import dataclass
 from typing import Final
@@ -13,7 +13,8 @@ from analysis.reduce.trust import Reason, Trust, is_usable, reasons_in
 from ingest.models import Tap
 from ingest.times import SECOND_US
 
-SPAN_US: Final = 60 * SECOND_US
+LEAST_SPAN_US: Final = 60 * SECOND_US
+LEAST_INTERVALS: Final = 3.0
 #: The state is believed if at least this share of the last minute's readings is trusted (own choice).
 TRUSTED_SHARE: Final = 0.5
 
@@ -38,13 +39,15 @@ class StartState:
     is_bound: bool = False
 
 
-def start_state(tap: Tap, quantity: Quantity, at_us: int, limit_rad: float, *, is_on_sphere: bool) -> StartState:
-    """State of the minute up to the newest reading at or before ``at_us``; looks back no further than a minute before it.
+def start_state(tap: Tap, quantity: Quantity, at_us: int, limit_rad: float, *, interval_s: float,
+                is_on_sphere: bool) -> StartState:
+    """State of the minute (slow taps: of three intervals) that ends at ``at_us``.
 
     Args:
         limit_rad: A bound beyond it leaves the angle unknown. is_on_sphere: A direction is wanted (Stokes), not an angle.
     """
-    samples, _ = find_samples(tap, at_us - SPAN_US + 1, at_us + 1)
+    span_us = max(LEAST_SPAN_US, round(LEAST_INTERVALS * interval_s * SECOND_US))
+    samples, _ = find_samples(tap, at_us - span_us + 1, at_us + 1)
     nothing = np.full(3, np.nan) if is_on_sphere else float("nan")
     if not len(samples):
         return StartState(state=nothing, at_us=None, is_trusted=False, why_not=("no reading in the last minute",))

@@ -293,6 +293,11 @@ def aside_rows(station: Station, *, before_id: int | None = None, limit: int = 1
     return list(rows.order_by("-pk")[:limit])
 
 
+def silences_now(taps: Sequence[Tap], now_us: int) -> dict[int, Silence]:
+    """Silence of each tap that was ever heard (``tap.heard`` loaded); a fixed number of queries."""
+    return dict(_known(taps, now_us).silences)
+
+
 def _standings(taps: Sequence[Tap], now_us: int) -> dict[int, _Standing]:
     known = _known(taps, now_us)
     found = {}

@@ -95,7 +95,7 @@ def checked_question(start_us: int, length_s: float, allowed_s: float, asked_us:
     if not SHORTEST_S <= length_s <= LONGEST_S:
         raise WriteError("length_s", f"A run of {length_s:g} s cannot be asked about.", "Choose from a minute to 30 days.")
     if not 0.0 <= allowed_s < length_s:
-        raise WriteError("allowed_s", f"{allowed_s:g} s beyond the limit cannot be allowed.", "Choose from 0 to the run's length.")
+        raise WriteError("allowed_s", f"{allowed_s:g} s beyond the limit cannot be.", "Choose from 0 to the run's length.")
     if start_us > asked_us + FURTHEST_AHEAD_US:
         raise WriteError("start", "The start is too far ahead.", "Choose one within the next 60 days.")
     return Question(start_us=start_us, length_s=length_s, allowed_s=allowed_s, asked_us=asked_us)

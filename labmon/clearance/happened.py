@@ -49,8 +49,9 @@ def _realigned(tap: Tap, since: datetime, until: datetime) -> tuple[int, ...]:
 
 def _alarm_labels(tap: Tap, since: datetime, until: datetime) -> list[LabelledSpan]:
     """Alarms of the tap whose cause is known."""
-    rows = Alarm.objects.filter(Q(returned_at=None) | Q(returned_at__gte=since), tap=tap, raised_at__lte=until, is_withdrawn=False)
-    rows = rows.exclude(cause="").order_by("-raised_at").values_list("raised_at", "returned_at", "cause")[:MOST_LABELS]
+    rows = Alarm.objects.filter(tap=tap, raised_at__lte=until, is_withdrawn=False)
+    rows = rows.filter(Q(returned_at=None) | Q(returned_at__gte=since)).exclude(cause="").order_by("-raised_at")
+    rows = rows.values_list("raised_at", "returned_at", "cause")[:MOST_LABELS]
     return [LabelledSpan(start_us=us_of(raised_at - ENTRY_REACH), end_us=us_of(returned_at or until), label=_short(cause))
             for raised_at, returned_at, cause in rows]
 

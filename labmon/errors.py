@@ -1,6 +1,7 @@
 """What a write or a question can be refused for; doors turn these into form errors or problem+json."""
 
 from django.core.exceptions import PermissionDenied
+from django.db.models import Model
 
 
 class WriteError(ValueError):
@@ -17,3 +18,11 @@ class NotAllowed(PermissionDenied):
     def __init__(self, detail: str):
         super().__init__(detail)
         self.detail = detail
+
+
+class SecondPersonNeeded(WriteError):
+    """During a declared run a limit may only be tightened by one person; ``parts`` are those that would be looser."""
+
+    def __init__(self, field: str, why: str, parts: tuple[str, ...], limit: Model):
+        super().__init__(field, why, "Ask a second person to consent, or wait until the run is over.")
+        self.parts, self.limit = parts, limit

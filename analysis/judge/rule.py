@@ -27,7 +27,10 @@ class Quantity(StrEnum):
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class LimitRule:
-    """A limit's values at one moment; levels and deadband in the quantity's unit, delays in s."""
+    """A limit's values at one moment; levels and deadband in the quantity's unit, delays in s.
+
+    ``window_s``: over which a derived quantity is taken, s; None for the others.
+    """
 
     quantity: Quantity
     alarm: float
@@ -35,3 +38,4 @@ class LimitRule:
     on_delay_s: float = 60.0
     off_delay_s: float = 60.0
     deadband: float = 1.0
+    window_s: float | None = None

@@ -13,7 +13,7 @@ from django.views.decorators.csrf import csrf_exempt
 
 from labmon.api.problem import Problem, not_found, problem_answer, wrong_field
 from labmon.api.signin import person_of
-from labmon.errors import WriteError
+from labmon.errors import SecondPersonNeeded, WriteError
 
 Handler = Callable[..., HttpResponseBase]
 
@@ -52,6 +52,9 @@ def answering_problems(view: Handler) -> Handler:
             return problem_answer(problem)
         except Http404:
             return problem_answer(not_found())
+        except SecondPersonNeeded as error:
+            return problem_answer(Problem(HTTPStatus.CONFLICT, error.why,
+                                          f"{error.do} POST to …/limits/requests asks.", field=error.field))
         except WriteError as error:
             return problem_answer(wrong_field(error.field, error.why, error.do))
         except PermissionDenied as error:

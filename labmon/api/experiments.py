@@ -67,7 +67,7 @@ def get_limits(request: HttpRequest, person: Person, experiment_id: int) -> Http
     known_only(request.GET)
     experiment = experiment_named(person, experiment_id)
     versions = version_facts(LimitVersion.objects.filter(limit__experiment=experiment)
-                             .select_related("limit__tap__station", "set_by").order_by("limit", "number"))
+                             .select_related("limit__tap__station", "set_by", "consented_by").order_by("limit", "number"))
     now = rfc3339(timezone.now())
     in_force = [one for one in versions if not one["is_retired"] and one["valid_from"] <= now
                 and (one["valid_until"] is None or one["valid_until"] > now)]
@@ -86,10 +86,11 @@ def version_facts(versions: Iterable[LimitVersion]) -> list[dict[str, Any]]:
 
 def _version_facts(row: LimitVersion, valid_until: datetime | None) -> dict[str, Any]:
     limit = row.limit
-    plain = ("alarm", "warning", "on_delay_s", "off_delay_s", "deadband", "in_runs_only", "is_retired", "reason")
+    plain = ("alarm", "warning", "on_delay_s", "off_delay_s", "deadband", "window_s", "in_runs_only", "is_retired", "reason")
     return ({"id": limit.pk, "experiment": limit.experiment_id, "tap": tap_path(limit.tap), "quantity": limit.quantity,
              "version": row.number, "valid_from": rfc3339(row.valid_from), "valid_until": rfc3339(valid_until),
-             "set_by": row.set_by.username if row.set_by else None}
+             "set_by": row.set_by.username if row.set_by else None,
+             "consented_by": row.consented_by.username if row.consented_by else None}
             | {name: getattr(row, name) for name in plain} | _on_both_scales(limit.quantity, row.alarm))
 
 
@@ -107,12 +108,13 @@ class NewLimit(Body):
     """The body of POST …/limits."""
 
     tap: Text
-    quantity: Literal["er_db", "angle_deg", "dop", "power_w"]
+    quantity: Literal["er_db", "angle_deg", "dop", "power_w", "trusted_share", "time_to_limit_s"]
     alarm: float
     warning: float | None = None
     on_delay_s: float = 60.0
     off_delay_s: float = 60.0
     deadband: float | None = None
+    window_s: float | None = None
     in_runs_only: bool = False
     reason: Text = ""
 
@@ -125,7 +127,8 @@ def post_limit(request: HttpRequest, person: Person, experiment_id: int) -> Http
     wish = body_of(request, NewLimit)
     tap = tap_in_body(person, wish.tap, field="tap")
     version = set_limit(experiment, tap, wish.quantity, alarm=wish.alarm, warning=wish.warning, on_delay_s=wish.on_delay_s,
-                        off_delay_s=wish.off_delay_s, deadband=wish.deadband, in_runs_only=wish.in_runs_only,
+                        off_delay_s=wish.off_delay_s, deadband=wish.deadband, window_s=wish.window_s,
+                        in_runs_only=wish.in_runs_only,
                         reason=wish.reason, by=person)
-    kept = LimitVersion.objects.select_related("limit__tap__station", "set_by").filter(pk=version.pk)
+    kept = LimitVersion.objects.select_related("limit__tap__station", "set_by", "consented_by").filter(pk=version.pk)
     return json_answer(version_facts(kept)[0], status=201)

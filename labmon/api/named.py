@@ -4,11 +4,11 @@ from typing import Any
 
 from django.db.models import QuerySet
 
-from ingest.models import Tap
+from ingest.models import Station, Tap
 from labmon.api.problem import not_found, wrong_field
 from labmon.experiments.models import Experiment
 from labmon.people.models import Person
-from labmon.people.rights import experiments_visible_to, taps_visible_to
+from labmon.people.rights import experiments_visible_to, stations_visible_to, taps_visible_to
 
 
 def tap_path(tap: Tap) -> str:
@@ -20,6 +20,12 @@ def tap_named(person: Person, station: str, tap: str) -> Tap:
     """The tap of an address; 404 where it is not there or not for this person."""
     return _one(taps_visible_to(person).select_related("station"), "There is no such tap for you.",
                 "GET /api/v1/stations lists the taps that you may see.", station__name=station, name=tap)
+
+
+def station_named(person: Person, station: str) -> Station:
+    """The station of an address; 404 where it is not there or not for this person."""
+    return _one(stations_visible_to(person), "There is no such station for you.",
+                "GET /api/v1/stations lists those that you may see.", name=station)
 
 
 def tap_in_body(person: Person, path: str, *, field: str) -> Tap:

@@ -45,7 +45,8 @@ def answer(text: str, name: str) -> Schema:
 FAULT_TEXTS = {400: "Something sent cannot be used; field names it.", 401: "No usable key or session.",
                403: "The role does not allow it, or the CSRF token is missing.",
                404: "Not there, or not for this person.",
-               409: "Readings of the span cannot be read (see unreadable), or allow no figures.", 413: "Too large.",
+               409: "Readings of the span cannot be read (see unreadable), or allow no figures; a write: a second person is needed.",
+               413: "Too large.",
                415: "Not announced as JSON.", 429: "Too fast; see Retry-After.",
                503: "Database away; see Retry-After."}
 
@@ -108,11 +109,30 @@ PATHS: dict[str, dict[str, Operation]] = {
         "get": call("Limits in force and their history.", {200: answer("The limits.", "Limits")},
                     parameters=(in_path("id", ID),)),
         "post": call("A new limit, or a new version of it.", {201: answer("The version.", "Limit")},
-                     parameters=(in_path("id", ID),), body="NewLimit", faults=WRITE)},
+                     parameters=(in_path("id", ID),), body="NewLimit", faults=(*WRITE, 409))},
     f"{BASE}/experiments/{{id}}/limits/rehearse": {"post": call(
         "Try a proposed limit on the stored past, with the fold that judges live; writes nothing.",
         {200: answer("What it would have raised.", "Rehearsal")}, parameters=(in_path("id", ID),), body="Proposal",
         faults=WRITE)},
+    f"{BASE}/experiments/{{id}}/limits/requests": {
+        "get": call("Requests for looser limits during runs, newest first.", {200: answer("The requests.", "LimitRequests")},
+                    parameters=(in_path("id", ID),)),
+        "post": call("Ask a second person for a looser limit while a run is under way (or to retire it).",
+                     {201: answer("The request.", "LimitRequest")}, parameters=(in_path("id", ID),), body="LooserLimit",
+                     faults=WRITE)},
+    **{f"{BASE}/limit-requests/{{id}}/{word}": {"post": call(
+        text, {200: answer("The request.", "LimitRequest")}, parameters=(in_path("id", ID),), body="Decision" if has_body else "",
+        is_body_required=False, faults=WRITE)}
+       for word, text, has_body in (
+           ("grant", "Consent to a looser limit; not by the one who asked. It is in force at once.", True),
+           ("refuse", "Refuse a looser limit; not by the one who asked.", True),
+           ("withdraw", "Take back what you asked for.", False))},
+    f"{BASE}/floors": {"get": call("The lab's floors: the least that limits must ask for.",
+                                   {200: answer("The floors.", "Floors")}, faults=(400, 401))},
+    f"{BASE}/stations/{{station}}/floors": {"post": call(
+        "Set, lower or lift (value null) a floor for a bench or one of its taps; managers only.",
+        {201: answer("The floor, and the limits that ask for less.", "NewlySetFloor")}, parameters=(in_path("station", NAME),),
+        body="NewFloor", faults=WRITE)},
     f"{BASE}/alarms": {"get": call(
         "Alarms, newest first.", {200: answer("The alarms.", "Alarms")},
         parameters=(in_query("state", {"type": "string", "enum": list(ALARM_STATES)}, "Only in this state."),

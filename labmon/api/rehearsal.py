@@ -23,12 +23,13 @@ class Proposal(Body):
     """The body of POST …/limits/rehearse."""
 
     tap: Text
-    quantity: Literal["er_db", "angle_deg", "dop", "power_w"]
+    quantity: Literal["er_db", "angle_deg", "dop", "power_w", "trusted_share", "time_to_limit_s"]
     alarm: float
     warning: float | None = None
     on_delay_s: float = 60.0
     off_delay_s: float = 60.0
     deadband: float | None = None
+    window_s: float | None = None
     hard: float | None = None
     days: float = 30.0
 
@@ -40,7 +41,7 @@ def post_rehearse(request: HttpRequest, person: Person, experiment_id: int) -> H
     wish = body_of(request, Proposal)
     tap = tap_in_body(person, wish.tap, field="tap")
     limit = LimitWish(alarm=wish.alarm, warning=wish.warning, on_delay_s=wish.on_delay_s, off_delay_s=wish.off_delay_s,
-                      deadband=wish.deadband)
+                      deadband=wish.deadband, window_s=wish.window_s)
     clock_us = now_us()
     if not 0 < wish.days <= LONGEST_US / DAY_US:
         raise wrong_field("days", f"{wish.days:g} days cannot be replayed.", "Choose more than 0 and at most 31.")

@@ -18,7 +18,8 @@ TEXT: Schema = {"type": "string"}
 YES_NO: Schema = {"type": "boolean"}
 TEXTS: Schema = {"type": "array", "items": TEXT}
 MEASURED = ("er_db", "angle_deg", "dop", "power_w", "temperature_c", "humidity_pct", "pressure_hpa")
-LIMITED = ("er_db", "angle_deg", "dop", "power_w")
+SAMPLED = ("er_db", "angle_deg", "dop", "power_w")
+LIMITED = (*SAMPLED, "trusted_share", "time_to_limit_s")
 TRUST: Schema = {"type": "string", "enum": ["trusted", "doubtful", "untrusted", "none"]}
 ALARM_STATES = ("normal", "unacknowledged", "acknowledged", "returned-unacknowledged", "shelved", "suppressed",
                 "out-of-service")
@@ -77,8 +78,8 @@ NOW = shape({
     "sop": or_null({"type": "array", "items": NUMBER, "minItems": 3, "maxItems": 3}), "power_w": or_null(NUMBER),
     "temperature_c": or_null(NUMBER), "humidity_pct": or_null(NUMBER), "pressure_hpa": or_null(NUMBER),
     "trust": TRUST, "trust_reasons": TEXTS,
-    **{f"{name}_trust": TRUST for name in LIMITED}, **{f"{name}_reasons": TEXTS for name in LIMITED},
-    **{f"{name}_codes": TEXTS for name in LIMITED}, "last_trusted": shape({name: or_null(LAST_TRUSTED) for name in LIMITED}),
+    **{f"{name}_trust": TRUST for name in SAMPLED}, **{f"{name}_reasons": TEXTS for name in SAMPLED},
+    **{f"{name}_codes": TEXTS for name in SAMPLED}, "last_trusted": shape({name: or_null(LAST_TRUSTED) for name in SAMPLED}),
 }, text="The newest sample by data time. An untrusted or undefined quantity is null with its reasons; last_trusted has "
         "its last trusted value. trust and trust_reasons are those of er_db; reasons are phrases, codes their fixed names. "
         "Where is_lower_bound is true, er_db is a 95 % bound: the ratio is at least this.")
@@ -96,12 +97,13 @@ EXPERIMENT = shape({
 
 _LIMIT_VALUES: dict[str, Schema] = {
     "alarm": NUMBER, "warning": or_null(NUMBER), "on_delay_s": NUMBER, "off_delay_s": NUMBER, "deadband": NUMBER,
-    "in_runs_only": YES_NO, "reason": TEXT,
+    "window_s": or_null(NUMBER), "in_runs_only": YES_NO, "reason": TEXT,
 }
 LIMIT = shape({
     "id": ID, "experiment": ID, "tap": TAP_PATH, "quantity": {"type": "string", "enum": list(LIMITED)},
     "version": ID, "valid_from": TIME, "valid_until": or_null(TIME), **_LIMIT_VALUES,
     "alarm_db": or_null(NUMBER), "alarm_deg": or_null(NUMBER), "is_retired": YES_NO, "set_by": or_null(TEXT),
+    "consented_by": or_null(TEXT),
 }, text="One version of a limit. alarm_db and alarm_deg are the same alarm level on the other scale, tan²(γ/2).")
 
 LIMITS = shape({"experiment": ID, "limits": many(ref("Limit")), "history": many(ref("Limit"))},
@@ -138,7 +140,7 @@ PROPOSAL = shape(
     {"tap": TAP_PATH, "quantity": {"type": "string", "enum": list(LIMITED)}}
     | {name: schema for name, schema in _LIMIT_VALUES.items() if name not in {"in_runs_only", "reason"}}
     | {"hard": or_null(NUMBER), "days": {"type": "number", "exclusiveMinimum": 0, "maximum": 31, "default": 30}},
-    optional=("warning", "on_delay_s", "off_delay_s", "deadband", "hard", "days"),
+    optional=("warning", "on_delay_s", "off_delay_s", "deadband", "window_s", "hard", "days"),
     text="hard: the level that lead times are measured to.")
 REHEARSAL = shape({
     "from": TIME, "until": TIME, "count": COUNT, "at_night": COUNT, "longest_s": or_null(NUMBER), "open_s": NUMBER,
@@ -160,6 +162,24 @@ HOLD = shape({"id": ID, "kind": HOLD_KIND, "tap": TAP_PATH, "alarms": HELD, "lim
              text="Alarms of a tap (all, of one limit, or of one kind) kept quiet. Readings are judged all the same.")
 NEW_HOLD = shape({"kind": HOLD_KIND, "reason": TEXT, "alarms": HELD, "limit": or_null(ID), "for_s": or_null(FOR_S)},
                  optional=("alarms", "limit", "for_s"))
+
+FLOOR_FACTS: dict[str, Schema] = {
+    "station": NAME, "tap": or_null(NAME), "quantity": {"type": "string", "enum": list(LIMITED)}, "value": or_null(NUMBER),
+    "set_at": TIME, "reason": TEXT,
+}
+FLOOR = shape(FLOOR_FACTS, text="tap null: all taps of the bench. value: of the angle the most, else the least; null: lifted.")
+NEWLY_SET_FLOOR = shape(FLOOR_FACTS | {"limits_beyond": many(shape({"experiment": ID, "tap": TAP_PATH, "alarm": NUMBER}))},
+                        text="limits_beyond: in force and asking for less; they stay until they are set anew.")
+NEW_FLOOR = shape({name: FLOOR_FACTS[name] for name in ("quantity", "value", "reason", "tap")}, optional=("tap",))
+LIMIT_REQUEST = shape({
+    "id": ID, "experiment": ID, "tap": TAP_PATH, "quantity": {"type": "string", "enum": list(LIMITED)},
+    "wish": {"type": ["object", "null"]}, "loosens": TEXTS, "asked_by": TEXT, "asked_at": TIME, "reason": TEXT,
+    "expires_at": TIME, "state": {"type": "string", "enum": ["waiting", "granted", "refused", "withdrawn", "expired"]},
+    "decided_by": or_null(TEXT), "decided_at": or_null(TIME), "note": TEXT,
+}, text="A looser limit asked for during a run; wish null: to retire it. loosens: the parts that would be looser.")
+LOOSER_LIMIT = shape({"tap": TAP_PATH, "quantity": {"type": "string", "enum": list(LIMITED)}, "retire": YES_NO} | _LIMIT_VALUES
+                     | {"alarm": or_null(NUMBER)}, optional=("retire", *(name for name in _LIMIT_VALUES if name != "reason")))
+DECISION = shape({"note": TEXT}, optional=("note",))
 
 COLUMNS = ("By tap name, columns of equal length. Any tap: sequence, at (RFC 3339 or microseconds since 1970), uptime_ms, "
            "temperature_c, humidity_pct, drive_ma. Two-port: port1, port2, each with _min, _max, _sd, and averaged, clipped. "
@@ -191,6 +211,9 @@ NAMED: dict[str, Schema] = {
     "NewLimit": NEW_LIMIT, "NewCalibration": NEW_CALIBRATION, "Acknowledgement": ACKNOWLEDGEMENT,
     "Proposal": PROPOSAL, "Rehearsal": REHEARSAL, "Shelving": SHELVING,
     "Hold": HOLD, "NewHold": NEW_HOLD, "Holds": shape({"holds": many(ref("Hold"))}),
+    "Floor": FLOOR, "NewFloor": NEW_FLOOR, "NewlySetFloor": NEWLY_SET_FLOOR, "Floors": shape({"floors": many(ref("Floor"))}),
+    "LimitRequest": LIMIT_REQUEST, "LooserLimit": LOOSER_LIMIT, "Decision": DECISION,
+    "LimitRequests": shape({"experiment": ID, "requests": many(ref("LimitRequest"))}),
     "Batch": BATCH,
     "Accepted": ACCEPTED,
     "Stations": shape({"stations": many(ref("Station"))}),

@@ -17,7 +17,7 @@ from labmon.api.body import Body, Text, body_of
 from labmon.api.named import tap_named, tap_path
 from labmon.api.problem import wrong_field
 from labmon.api.query import known_only, one_of, span_of, whole_number
-from labmon.api.schemas import LIMITED, MEASURED
+from labmon.api.schemas import MEASURED, SAMPLED
 from labmon.api.span import Span
 from labmon.api.times import parse_time, rfc3339, rfc3339_many
 from labmon.benches.calibration import set_calibration
@@ -48,10 +48,10 @@ def now_facts(tap: Tap) -> dict[str, Any]:
             | {name: getattr(sample, name, None) for name in NO_SAMPLE}
             | {name: bool(getattr(sample, name, False)) for name in bounds}
             | {"trust": sample.trust if sample else "none", "trust_reasons": list(sample.trust_reasons) if sample else []}
-            | {f"{name}_trust": verdicts.get(name, {}).get("trust", "none") for name in LIMITED}
-            | {f"{name}_reasons": verdicts.get(name, {}).get("reasons", []) for name in LIMITED}
-            | {f"{name}_codes": verdicts.get(name, {}).get("codes", []) for name in LIMITED}
-            | {"last_trusted": {name: trusted.get(name) for name in LIMITED}})
+            | {f"{name}_trust": verdicts.get(name, {}).get("trust", "none") for name in SAMPLED}
+            | {f"{name}_reasons": verdicts.get(name, {}).get("reasons", []) for name in SAMPLED}
+            | {f"{name}_codes": verdicts.get(name, {}).get("codes", []) for name in SAMPLED}
+            | {"last_trusted": {name: trusted.get(name) for name in SAMPLED}})
 
 
 def get_history(request: HttpRequest, person: Person, station: str, tap: str) -> HttpResponse:

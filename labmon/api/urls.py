@@ -6,7 +6,9 @@ from ingest.models import NAME_PATTERN
 from labmon.api.alarms import get_alarms, post_acknowledge, post_shelve, post_unshelve
 from labmon.api.call import by_method, open_to_all, unknown_address
 from labmon.api.experiments import get_experiments, get_limits, post_experiment, post_limit
+from labmon.api.floors import get_floors, post_floor
 from labmon.api.holds import get_holds, post_end_hold, post_hold
+from labmon.api.limit_requests import get_requests, post_grant, post_refuse, post_request, post_withdraw
 from labmon.api.log import get_log, patch_entry, post_change, post_log, post_strike
 from labmon.api.openapi import get_openapi
 from labmon.api.readings import get_readings
@@ -55,6 +57,13 @@ urlpatterns = [
     path("experiments", by_method(GET=get_experiments, POST=post_experiment), name="experiments"),
     path("experiments/<row:experiment_id>/limits", by_method(GET=get_limits, POST=post_limit), name="limits"),
     path("experiments/<row:experiment_id>/limits/rehearse", by_method(POST=post_rehearse), name="rehearse"),
+    path("experiments/<row:experiment_id>/limits/requests", by_method(GET=get_requests, POST=post_request),
+         name="limit-requests"),
+    path("limit-requests/<row:request_id>/grant", by_method(POST=post_grant), name="grant-limit-request"),
+    path("limit-requests/<row:request_id>/refuse", by_method(POST=post_refuse), name="refuse-limit-request"),
+    path("limit-requests/<row:request_id>/withdraw", by_method(POST=post_withdraw), name="withdraw-limit-request"),
+    path("floors", by_method(GET=get_floors), name="floors"),
+    path("stations/<short:station>/floors", by_method(POST=post_floor), name="set-floor"),
     path("alarms", by_method(GET=get_alarms), name="alarms"),
     path("alarms/<row:alarm_id>/acknowledge", by_method(POST=post_acknowledge), name="acknowledge"),
     path("alarms/<row:alarm_id>/shelve", by_method(POST=post_shelve), name="shelve"),

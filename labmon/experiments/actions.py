@@ -1,23 +1,28 @@
 """The only writer of experiments, limits and their versions. Each write leaves its audit row."""
 
 import math
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from datetime import datetime, timedelta
 from typing import Any
 
 from django.db import IntegrityError, transaction
 from django.utils import timezone
 
+from analysis.judge.loosened import loosened_parts
+from analysis.judge.rule import LimitRule
 from ingest.models import Tap, TapHeard, Touch
 from ingest.times import us_of
 from labmon.audit.actions import note
 from labmon.claims import JUDGING, lock_tap
-from labmon.errors import WriteError
+from labmon.errors import SecondPersonNeeded, WriteError
+from labmon.experiments.floors import check_floor, floors_of
 from labmon.experiments.models import Experiment, Limit, LimitVersion
-from labmon.experiments.rules import LimitWish, checked_quantity, checked_wish
+from labmon.experiments.rules import LimitWish, checked_quantity, checked_wish, rule_of
 from labmon.live.publish import publish
-from labmon.people.models import Person
+from labmon.people.models import Person, Role
+from labmon.people.rights import role_of
 from labmon.runs.limits import check_not_into_a_run, note_in_runs
+from labmon.runs.queries import runs_between
 
 #: A tap's first limit also looks at the day before it was set: an excursion that is under way is then seen as what it is.
 FIRST_LIMIT_LOOKS_BACK = timedelta(days=1)
@@ -79,7 +84,6 @@ def change_experiment(
     return locked
 
 
-@transaction.atomic
 def set_limit(
     experiment: Experiment,
     tap: Tap,
@@ -90,6 +94,7 @@ def set_limit(
     on_delay_s: float = 60.0,
     off_delay_s: float = 60.0,
     deadband: float | None = None,
+    window_s: float | None = None,
     in_runs_only: bool = False,
     reason: str = "",
     valid_from: datetime | None = None,
@@ -100,7 +105,8 @@ def set_limit(
     Left out, ``valid_from`` is now; for the first version a day earlier. The fold starts anew at that moment; an open
     alarm stays until the light is clear under the new limit.
     Raises:
-        WriteError: A field cannot be meant.
+        WriteError: A field cannot be meant, or asks for less than the lab's floor.
+        SecondPersonNeeded: It loosens a limit while a run is under way; the attempt stands in the audit.
     """
     if not experiment.taps.filter(pk=tap.pk).exists():
         raise WriteError(
@@ -108,46 +114,95 @@ def set_limit(
         )
     named = checked_quantity(quantity, tap)
     wish = LimitWish(
-        alarm=alarm, warning=warning, on_delay_s=on_delay_s, off_delay_s=off_delay_s, deadband=deadband, in_runs_only=in_runs_only
-    )
-    rule = checked_wish(named, wish)
-    lock_tap(JUDGING, tap.pk)
-    limit, _ = Limit.objects.get_or_create(experiment=experiment, tap=tap, quantity=named.value)
-    version = _next_version(
-        limit,
-        valid_from,
-        by=by,
-        reason=reason,
-        alarm=rule.alarm,
-        warning=rule.warning,
-        on_delay_s=rule.on_delay_s,
-        off_delay_s=rule.off_delay_s,
-        deadband=rule.deadband,
+        alarm=alarm, warning=warning, on_delay_s=on_delay_s, off_delay_s=off_delay_s, deadband=deadband, window_s=window_s,
         in_runs_only=in_runs_only,
     )
-    return version
+    rule = checked_wish(named, wish)
+    check_floor(tap, rule)
+    values = {name: getattr(rule, name) for name in VALUES if name != "in_runs_only"} | {"in_runs_only": in_runs_only}
+
+    def write() -> LimitVersion:
+        lock_tap(JUDGING, tap.pk)
+        limit, _ = Limit.objects.get_or_create(experiment=experiment, tap=tap, quantity=named.value)
+        last = limit.versions.order_by("-number").first()
+        if last is not None and not last.is_retired:
+            _check_alone(limit, loosened(last, rule, in_runs_only=in_runs_only), valid_from, by)
+        return add_version(limit, valid_from, by=by, reason=reason, **values)
+
+    return _noting_refusals(write, by, values, reason)
 
 
-@transaction.atomic
 def retire_limit(limit: Limit, *, by: Person | None, reason: str = "") -> LimitVersion:
-    """End a limit now; its history stays, an open alarm returns."""
-    lock_tap(JUDGING, limit.tap_id)
-    last = limit.versions.order_by("-number").first()
-    if last is None or last.is_retired:
-        raise WriteError("limit", "This limit is not in force.", "Set it anew if it is wanted.")
-    return _next_version(
-        limit,
-        None,
-        by=by,
-        reason=reason,
-        is_retired=True,
-        **{
-            field: getattr(last, field) for field in ("alarm", "warning", "on_delay_s", "off_delay_s", "deadband", "in_runs_only")
-        },
-    )
+    """End a limit now; its history stays, an open alarm returns.
+
+    Raises:
+        WriteError: It is not in force, or the lab's floor asks for it and ``by`` is no manager.
+        SecondPersonNeeded: A run is under way; the attempt stands in the audit.
+    """
+
+    def write() -> LimitVersion:
+        lock_tap(JUDGING, limit.tap_id)
+        last = limit.versions.order_by("-number").first()
+        if last is None or last.is_retired:
+            raise WriteError("limit", "This limit is not in force.", "Set it anew if it is wanted.")
+        is_bound = (limit.tap_id, limit.quantity) in floors_of([limit.tap])
+        if is_bound and by is not None and role_of(by) is not Role.MANAGER:
+            raise WriteError("limit", "The lab's floor asks for this limit.", "Only a lab manager may retire it.")
+        _check_alone(limit, ("is_retired",), None, by)
+        return add_version(limit, None, by=by, reason=reason, is_retired=True, **{name: getattr(last, name) for name in VALUES})
+
+    return _noting_refusals(write, by, {"is_retired": True}, reason)
 
 
-def _next_version(limit: Limit, valid_from: datetime | None, *, by: Person | None, reason: str, **values: Any) -> LimitVersion:
+def loosened(last: LimitVersion, rule: LimitRule, *, in_runs_only: bool) -> tuple[str, ...]:
+    """What a new rule would loosen of the version in force."""
+    parts = loosened_parts(rule_of(last, rule.quantity), rule)
+    return (*parts, "in_runs_only") if in_runs_only and not last.in_runs_only else parts
+
+
+def _check_alone(limit: Limit, parts: tuple[str, ...], valid_from: datetime | None, by: Person | None) -> None:
+    """Raises SecondPersonNeeded where one person may not do this alone: it loosens, and a run is (or was then) under way.
+
+    Commands at the machine itself (``by`` None) ask nobody.
+    """
+    now = timezone.now()
+    asks = bool(parts) and by is not None
+    runs = runs_between(valid_from or now, now + timedelta(microseconds=1), [limit.experiment_id]) if asks else []
+    if runs:
+        words = ", ".join(PART_WORDS[part] for part in parts)
+        raise SecondPersonNeeded(parts[0] if parts[0] in VALUES else "limit",
+                                 f"The run “{runs[-1].name}” is under way: a limit may only be tightened ({words}).",
+                                 parts, limit)
+
+
+def _noting_refusals(write: Callable[[], LimitVersion], by: Person | None, after: dict[str, Any], reason: str) -> LimitVersion:
+    """The write in its transaction; where a second person is needed the attempt is kept, and nothing else."""
+    try:
+        with transaction.atomic():
+            return write()
+    except SecondPersonNeeded as refusal:
+        with transaction.atomic():
+            note(by, "limit not loosened: second person needed", refusal.limit, after=after | {"looser": list(refusal.parts)},
+                 reason=reason)
+        raise
+
+
+#: The parts of a version that say what is judged, and how they are called where they would be looser.
+VALUES = ("alarm", "warning", "on_delay_s", "off_delay_s", "deadband", "window_s", "in_runs_only")
+PART_WORDS = {
+    "alarm": "the alarm level would be looser",
+    "warning": "the warning would be looser or gone",
+    "on_delay_s": "the on-delay would be longer",
+    "off_delay_s": "the off-delay would be shorter",
+    "deadband": "the deadband would be smaller",
+    "window_s": "the window would be another",
+    "in_runs_only": "it would call in runs only",
+    "is_retired": "it would be gone",
+}
+
+
+def add_version(limit: Limit, valid_from: datetime | None, *, by: Person | None, reason: str, **values: Any) -> LimitVersion:
+    """The next version of a limit whose tap's judging is locked; what it may say was checked before."""
     now = timezone.now()
     last = limit.versions.order_by("-number").first()
     begins = valid_from or (now if last else now - FIRST_LIMIT_LOOKS_BACK)
@@ -232,5 +287,5 @@ def _facts(experiment: Experiment) -> dict[str, Any]:
 
 def version_facts(version: LimitVersion) -> dict[str, Any]:
     """A version as the audit keeps it."""
-    fields = ("number", "valid_from", "alarm", "warning", "on_delay_s", "off_delay_s", "deadband", "in_runs_only", "is_retired")
+    fields = ("number", "valid_from", *VALUES, "is_retired")
     return {field: getattr(version, field) for field in fields}

@@ -28,9 +28,11 @@ class VersionRow:
     on_delay_s: float
     off_delay_s: float
     deadband: float
+    window_s: float | None
     in_runs_only: bool
     is_retired: bool
     set_by: str | None
+    consented_by: str | None
     reason: str
 
 
@@ -54,6 +56,7 @@ class LimitFacts:
     on_delay_s: float
     off_delay_s: float
     deadband: float
+    window_s: float | None
     in_runs_only: bool
     is_retired: bool
     note: str
@@ -135,7 +138,7 @@ def experiment_facts(experiment: Experiment) -> ExperimentFacts:
 
 def limits_of(which: Q, *, are_retired_shown: bool = False) -> list[LimitFacts]:
     """Limits that match, by tap and quantity; three queries however many."""
-    versions = Prefetch("versions", LimitVersion.objects.select_related("set_by").order_by("-number"))
+    versions = Prefetch("versions", LimitVersion.objects.select_related("set_by", "consented_by").order_by("-number"))
     limits = (
         Limit.objects.filter(which)
         .select_related("experiment", "tap__station")
@@ -186,6 +189,7 @@ def _facts(limit: Limit, without_state: set[int]) -> LimitFacts:
         on_delay_s=newest.on_delay_s,
         off_delay_s=newest.off_delay_s,
         deadband=newest.deadband,
+        window_s=newest.window_s,
         in_runs_only=newest.in_runs_only,
         is_retired=newest.is_retired,
         note="Not judged: the tap has no wanted state yet." if needs_state else "",
@@ -202,8 +206,10 @@ def _version_row(version: LimitVersion) -> VersionRow:
         version.on_delay_s,
         version.off_delay_s,
         version.deadband,
+        version.window_s,
         version.in_runs_only,
         version.is_retired,
         version.set_by.username if version.set_by else None,
+        version.consented_by.username if version.consented_by else None,
         version.reason,
     )

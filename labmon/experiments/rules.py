@@ -30,6 +30,7 @@ class LimitWish:
     on_delay_s: float = 60.0
     off_delay_s: float = 60.0
     deadband: float | None = None
+    window_s: float | None = None
     in_runs_only: bool = False
 
 
@@ -42,6 +43,7 @@ def rule_of(version: LimitVersion, quantity: str) -> LimitRule:
         on_delay_s=version.on_delay_s,
         off_delay_s=version.off_delay_s,
         deadband=version.deadband,
+        window_s=version.window_s,
     )
 
 
@@ -74,8 +76,8 @@ def checked_wish(quantity: Quantity, wish: LimitWish) -> LimitRule:
     Raises:
         WriteError: A number cannot be meant: names the field.
     """
-    alarm = _level("alarm", quantity, wish.alarm)
-    warning = None if wish.warning is None else _level("warning", quantity, wish.warning)
+    alarm = checked_level("alarm", quantity, wish.alarm)
+    warning = None if wish.warning is None else checked_level("warning", quantity, wish.warning)
     if warning is not None and (warning >= alarm if quantity.is_bad_above else warning <= alarm):
         side = "below" if quantity.is_bad_above else "above"
         raise WriteError(
@@ -106,7 +108,12 @@ def _number(field: str, value: float) -> float:
     return float(value)
 
 
-def _level(field: str, quantity: Quantity, value: float) -> float:
+def checked_level(field: str, quantity: Quantity, value: float) -> float:
+    """A level that can be meant for the quantity.
+
+    Raises:
+        WriteError: It is no number, or out of range.
+    """
     number = _number(field, value)
     low, high = _RANGES[quantity]
     is_inside = low < number < high if quantity is Quantity.ANGLE_DEG else low <= number <= high

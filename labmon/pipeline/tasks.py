@@ -9,6 +9,7 @@ from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
 from labmon.alarms.holding import end_due_holds
 from labmon.benches.keeping import forget_old_days
+from labmon.experiments.consent import expire_requests
 from labmon.pipeline.doubting import cast_doubts
 from labmon.pipeline.nightly import make_day_statistics
 from labmon.pipeline.process import process_touched
@@ -69,6 +70,12 @@ def start_runs_task() -> None:
 def cast_doubts_task() -> None:
     """Ask people about new firmware and ports that exchanged their light."""
     cast_doubts()
+
+
+@_task("expire_requests", 60)
+def expire_requests_task() -> None:
+    """Close requests for looser limits that nobody decided in time."""
+    expire_requests()
 
 
 @_task("roll_up", 120)

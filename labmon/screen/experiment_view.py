@@ -3,9 +3,10 @@
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from labmon.experiments.queries import ExperimentRow, LimitFacts
+from labmon.experiments.floors import Floor
+from labmon.experiments.queries import ExperimentRow, LimitFacts, VersionRow
 from labmon.screen.alarm_view import AlarmView
-from labmon.screen.level_words import NAMES, both_units, level_words
+from labmon.screen.level_words import NAMES, both_units, changes_text, deadband_text, level_words
 from labmon.screen.present import age_text, count_text, number_text, time_text
 from labmon.screen.quantity import angle_of_er
 
@@ -16,10 +17,10 @@ class VersionView:
 
     number: int
     since: str
-    levels: str
+    says: str
     set_by: str
+    consented_by: str
     reason: str
-    is_retired: bool
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -35,11 +36,18 @@ class LimitView:
     warning: str
     delays: str
     is_retired: bool
+    in_runs_only: bool
+    floor: str
+    is_beyond_floor: bool
+    note: str
     versions: list[VersionView]
 
 
-def limit_view(limit: LimitFacts) -> LimitView:
-    """A limit in words; its versions newest first."""
+def limit_view(limit: LimitFacts, floor: Floor | None = None) -> LimitView:
+    """A limit in words; its versions newest first; ``floor``: the lab's for its tap and quantity."""
+    delays = f"on {age_text(limit.on_delay_s)}, off {age_text(limit.off_delay_s)}, deadband "
+    delays += deadband_text(limit.quantity, limit.deadband) + (f", over {age_text(limit.window_s)}" if limit.window_s else "")
+    is_retired = bool(limit.versions and limit.versions[0].is_retired)
     return LimitView(
         id=limit.limit_id,
         tap=limit.tap_name,
@@ -48,24 +56,42 @@ def limit_view(limit: LimitFacts) -> LimitView:
         words=level_words(limit),
         alarm=both_units(limit.quantity, limit.alarm),
         warning="none" if limit.warning is None else both_units(limit.quantity, limit.warning),
-        delays=f"on {age_text(limit.on_delay_s)}, off {age_text(limit.off_delay_s)}, deadband {number_text(limit.deadband, 2)}",
-        is_retired=bool(limit.versions and limit.versions[0].is_retired),
-        versions=[_version_view(limit.quantity, version) for version in limit.versions],
+        delays=delays,
+        is_retired=is_retired,
+        in_runs_only=limit.in_runs_only,
+        floor="" if floor is None else both_units(limit.quantity, floor.value),
+        is_beyond_floor=floor is not None and not is_retired and not floor.allows(limit.alarm),
+        note=limit.note,
+        versions=[
+            _version_view(limit.quantity, version, before)
+            for version, before in zip(limit.versions, [*limit.versions[1:], None], strict=True)
+        ],
     )
 
 
-def _version_view(quantity: str, version) -> VersionView:
-    levels = both_units(quantity, version.alarm)
-    if version.warning is not None:
-        levels += f", warning {both_units(quantity, version.warning)}"
+def _version_view(quantity: str, version: VersionRow, before: VersionRow | None) -> VersionView:
     return VersionView(
         number=version.number,
         since=time_text(version.valid_from),
-        levels=levels,
+        says=_said_of(quantity, version, before),
         reason=version.reason,
         set_by=_name(version.set_by),
-        is_retired=version.is_retired,
+        consented_by=version.consented_by or "",
     )
+
+
+def _said_of(quantity: str, version: VersionRow, before: VersionRow | None) -> str:
+    """What the version did: the change from old to new, or all that it says where there is no old."""
+    levels = both_units(quantity, version.alarm)
+    if version.warning is not None:
+        levels += f", warning {both_units(quantity, version.warning)}"
+    if version.is_retired:
+        return f"{levels} → retired"
+    if before is None:
+        return f"first set: {levels}"
+    if before.is_retired:
+        return f"set anew: {levels}"
+    return changes_text(quantity, before, version) or "the same again"
 
 
 def _name(person: object) -> str:

@@ -12,19 +12,23 @@ from django.views.decorators.http import require_http_methods, require_POST, req
 from ingest.models import Tap
 from ingest.times import SECOND_US, now_us
 from labmon.alarms.queries import alarm_rows
-from labmon.errors import NotAllowed, WriteError
+from labmon.errors import NotAllowed, SecondPersonNeeded, WriteError
 from labmon.experiments.actions import create_experiment, retire_limit, set_limit
+from labmon.experiments.floors import floors_of
 from labmon.experiments.models import Experiment
+from labmon.experiments.proposals import proposal_facts
 from labmon.experiments.queries import experiment_facts, experiment_rows
 from labmon.experiments.rehearsal import rehearse_limit
 from labmon.experiments.rules import LimitWish
 from labmon.people.models import Person, Role
 from labmon.people.rights import Action, may, require, role_of, taps_visible_to
+from labmon.runs.queries import run_now
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people, put_refusal, say_refusal
 from labmon.screen.experiment_view import experiment_sentence, experiments_sentence, ladder, limit_view
 from labmon.screen.forms import ExperimentForm, LimitForm
 from labmon.screen.holds import holds_shown
+from labmon.screen.limit_requests import requests_shown
 from labmon.screen.named import visible_experiment
 from labmon.screen.present import age_text
 from labmon.screen.rehearsal_view import RehearsalView, rehearsal_view
@@ -77,7 +81,7 @@ def new_experiment_page(request: HttpRequest) -> HttpResponse:
 def experiment_page(request: HttpRequest, experiment_id: int) -> HttpResponse:
     """One experiment: how it stands, its limits with their history, its alarms."""
     found = visible_experiment(request.user, experiment_id)
-    return _show(request, found, _limit_form(found) if may(request.user, Action.SET_LIMIT, found) else None)
+    return _show(request, found, limit_form(found) if may(request.user, Action.SET_LIMIT, found) else None)
 
 
 @require_POST
@@ -86,12 +90,15 @@ def set_limit_page(request: HttpRequest, experiment_id: int) -> HttpResponse:
     """A new version of a limit, or the first."""
     found = visible_experiment(request.user, experiment_id)
     require(request.user, Action.SET_LIMIT, found)
-    form = _limit_form(found, request.POST)
+    form = limit_form(found, request.POST)
     if form.is_valid():
         typed = dict(form.cleaned_data)
-        tap = _taps_of(found)[typed.pop("tap")]
+        tap = taps_of(found)[typed.pop("tap")]
         try:
             set_limit(found, tap, typed.pop("quantity"), **typed, by=request.user)
+        except SecondPersonNeeded as error:
+            put_refusal(form, error)
+            return _show(request, found, form, status=422, may_ask=True)
         except WriteError as error:
             put_refusal(form, error)
         else:
@@ -100,13 +107,20 @@ def set_limit_page(request: HttpRequest, experiment_id: int) -> HttpResponse:
     return _show(request, found, form, status=422)
 
 
+def show_refused(request: HttpRequest, experiment: Experiment, form: LimitForm, error: WriteError | None) -> HttpResponse:
+    """The page again with what was typed and why it was refused."""
+    if error is not None:
+        put_refusal(form, error)
+    return _show(request, experiment, form, status=422)
+
+
 @require_POST
 @for_people
 def rehearse_limit_page(request: HttpRequest, experiment_id: int) -> HttpResponse:
     """What the limit in the form would have done in the last 30 days; writes nothing."""
     found = visible_experiment(request.user, experiment_id)
     require(request.user, Action.SET_LIMIT, found)
-    form = _limit_form(found, request.POST)
+    form = limit_form(found, request.POST)
     form.fields["reason"].required = False
     rehearsal = None
     if form.is_valid():
@@ -120,7 +134,7 @@ def rehearse_limit_page(request: HttpRequest, experiment_id: int) -> HttpRespons
 
 
 def _rehearsed(experiment: Experiment, typed: dict[str, Any]) -> RehearsalView:
-    tap = _taps_of(experiment)[typed["tap"]]
+    tap = taps_of(experiment)[typed["tap"]]
     own = {name: typed[name] for name in ("alarm", "warning", "on_delay_s", "off_delay_s", "deadband")}
     standing = [
         limit.alarm
@@ -151,17 +165,22 @@ def retire_limit_page(request: HttpRequest, experiment_id: int, limit_id: int) -
 
 
 def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, status: int = 200,
-          rehearsal: RehearsalView | None = None) -> HttpResponse:
+          rehearsal: RehearsalView | None = None, *, may_ask: bool = False) -> HttpResponse:
     facts = experiment_facts(experiment)
     now = timezone.now()
     alarms = [alarm_view(row, now) for row in alarm_rows(request.user, experiment=experiment.pk, limit=RECENT_ALARMS)]
-    taps = list(_taps_of(experiment).values())
+    taps = list(taps_of(experiment).values())
+    floors = floors_of(taps)
     return render(
         request,
         "screen/experiment.html",
         {
             "experiment": experiment,
-            "limits": [limit_view(limit) for limit in facts.limits],
+            "limits": [limit_view(limit, floors.get((limit.tap_id, limit.quantity))) for limit in facts.limits],
+            "run": run_now(experiment),
+            "may_ask": may_ask,
+            "proposals": proposal_facts(),
+            **requests_shown(request, experiment, may_set=form is not None),
             "taps": taps,
             "form": form,
             "sentence": experiment_sentence(experiment.name, facts.limits, alarms),
@@ -183,15 +202,17 @@ def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, 
 def _holds_of(request: HttpRequest, experiment: Experiment, now: datetime) -> dict[str, Any]:
     """The banner, for the taps that the experiment watches."""
     shown = holds_shown(request, now)
-    names = set(_taps_of(experiment))
+    names = set(taps_of(experiment))
     return shown | {"holds": [hold for hold in shown["holds"] if hold.tap in names]}
 
 
-def _limit_form(experiment: Experiment, typed=None) -> LimitForm:
-    return LimitForm(typed, taps=[name for name, tap in _taps_of(experiment).items() if tap.kind != "climate"])
+def limit_form(experiment: Experiment, typed=None) -> LimitForm:
+    """The form for a limit of the experiment."""
+    return LimitForm(typed, taps=[name for name, tap in taps_of(experiment).items() if tap.kind != "climate"])
 
 
-def _taps_of(experiment: Experiment) -> dict[str, Tap]:
+def taps_of(experiment: Experiment) -> dict[str, Tap]:
+    """Taps that the experiment watches, by ``station/tap``."""
     return {
         f"{tap.station.name}/{tap.name}": tap
         for tap in experiment.taps.select_related("station").order_by("station__name", "name")

@@ -5,6 +5,7 @@ from typing import Any
 from django import forms
 
 from analysis.judge.rule import Quantity
+from labmon.experiments.proposals import PROPOSALS
 from labmon.people.models import Role
 
 
@@ -32,8 +33,8 @@ class LimitForm(forms.Form):
     )
     alarm = Number(label="Alarm level")
     warning = Number(label="Warning level", required=False, help_text="Empty: no warning.")
-    on_delay_s = Number(label="On-delay, s", initial=60, help_text="Beyond the level so long before anyone is called.")
-    off_delay_s = Number(label="Off-delay, s", initial=60, help_text="Clear so long before it counts as returned.")
+    on_delay_s = Number(label="On-delay, s", help_text="Beyond the level so long before anyone is called.")
+    off_delay_s = Number(label="Off-delay, s", help_text="Clear so long before it counts as returned.")
     deadband = Number(label="Deadband", required=False, help_text="In the quantity's unit. Empty: the usual one.")
     in_runs_only = forms.BooleanField(label="Call only in declared runs", required=False)
     reason = forms.CharField(label="Reason", max_length=500, help_text="Whoever asks next month will read it.")
@@ -41,6 +42,28 @@ class LimitForm(forms.Form):
     def __init__(self, *args: Any, taps: list[str], **kwargs: Any) -> None:
         super().__init__(*args, **kwargs)
         self.fields["tap"].choices = [(tap, tap) for tap in taps]
+        proposed = PROPOSALS[Quantity.ER_DB]
+        for name in ("on_delay_s", "off_delay_s", "deadband"):
+            self.fields[name].initial = f"{getattr(proposed, name):g}"
+
+    @property
+    def why_proposed(self) -> str:
+        """Why the delays and the deadband stand as they do, for the quantity that is chosen."""
+        chosen = self.data.get("quantity") if self.is_bound else Quantity.ER_DB.value
+        return PROPOSALS[Quantity(chosen if chosen in list(PROPOSALS) else Quantity.ER_DB)].why
+
+
+class FloorForm(forms.Form):
+    """A lab floor of a bench or one of its taps; an empty value lifts it."""
+
+    tap = forms.ChoiceField(label="Tap", required=False)
+    quantity = forms.ChoiceField(label="Quantity", choices=LimitForm.base_fields["quantity"].choices)
+    value = Number(label="Floor", required=False, help_text="In the quantity's unit. Empty: lift the floor.")
+    reason = forms.CharField(label="Reason", max_length=500)
+
+    def __init__(self, *args: Any, taps: list[str], **kwargs: Any) -> None:
+        super().__init__(*args, **kwargs)
+        self.fields["tap"].choices = [("", "all taps of the bench"), *((tap, tap) for tap in taps)]
 
 
 class ExperimentForm(forms.Form):

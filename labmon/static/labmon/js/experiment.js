@@ -24,6 +24,28 @@ function follow(form) {
   show();
 }
 
+/** Fills in the delays and the deadband that suit the chosen quantity, with the reason; what a person typed stays. */
+function propose(form) {
+  const kept = document.getElementById('proposals');
+  if (!kept) return;
+  const proposals = JSON.parse(kept.textContent);
+  const why = form.querySelector('[data-why-proposed]');
+  const filled = {};
+  for (const name of FILLED) filled[name] = form.elements[name]?.value;
+  form.elements.quantity.addEventListener('change', () => {
+    const proposal = proposals[form.elements.quantity.value];
+    if (!proposal) return;
+    for (const name of FILLED) {
+      const field = form.elements[name];
+      if (!field || field.value !== filled[name]) continue;
+      field.value = proposal[name] ?? '';
+      filled[name] = field.value;
+    }
+    if (why) why.textContent = proposal.why;
+  });
+}
+
+const FILLED = ['on_delay_s', 'off_delay_s', 'deadband', 'window_s'];
 const QUIET_MS = 400;
 
 /** Asks anew what the limit would have done, when nothing was typed for a moment; an older answer never covers a newer one. */
@@ -53,6 +75,7 @@ function rehearse(form) {
 }
 
 for (const form of document.querySelectorAll('form[data-limits]')) {
+  propose(form);
   follow(form);
   rehearse(form);
 }

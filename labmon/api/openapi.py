@@ -45,7 +45,7 @@ def answer(text: str, name: str) -> Schema:
 FAULT_TEXTS = {400: "Something sent cannot be used; field names it.", 401: "No usable key or session.",
                403: "The role does not allow it, or the CSRF token is missing.",
                404: "Not there, or not for this person.",
-               409: "Readings of the span cannot be read (see unreadable), or allow no figures; a write: a second person is needed.",
+               409: "Readings of the span cannot be read (see unreadable), or allow no figures; or a second person must consent.",
                413: "Too large.",
                415: "Not announced as JSON.", 429: "Too fast; see Retry-After.",
                503: "Database away; see Retry-After."}

@@ -9,7 +9,7 @@ from typing import Any
 
 from django.conf import settings
 from django.db import transaction
-from django.db.models import QuerySet
+from django.db.models import Q, QuerySet
 from django.utils import timezone
 
 from ingest.models import Tap
@@ -23,7 +23,7 @@ from labmon.experiments.rules import LimitWish, checked_quantity, checked_wish
 from labmon.live.publish import publish
 from labmon.people.models import Person, Role
 from labmon.runs.queries import run_now
-from labmon.tell.outbox import queue_mail
+from labmon.tell.outbox import Telling, queue
 
 
 @transaction.atomic
@@ -163,14 +163,13 @@ def _close(request: LimitRequest, state: RequestState, by: Person | None, note: 
 
 
 def _tell(request: LimitRequest) -> None:
-    """One mail to those who may consent: the experiment's owner and the managers, the one who asks left out."""
-    able = Person.objects.filter(role=Role.MANAGER, is_active=True) | Person.objects.filter(
-        pk=request.experiment.owner_id, is_active=True)
-    addresses = list(able.exclude(pk=request.asked_by_id).exclude(email="").distinct().values_list("email", flat=True))
-    if addresses:
-        page = f"{settings.PUBLIC_URL}/experiments/{request.experiment_id}/"
-        body = (f"{request.asked_by.username} asks to loosen a limit of {request.experiment.name} while a run is under way: "
-                f"“{request.reason}”.\n\nA second person must consent: {page}\n"
-                f"Without a decision it expires at {request.expires_at:%Y-%m-%d %H:%M} UTC.\n")
-        queue_mail(f"limit-request-{request.pk}", addresses, f"Consent asked for: a limit of {request.experiment.name}", body)
+    """Those who may consent are told: the experiment's owner and the managers, the one who asks left out."""
+    may_consent = Q(role=Role.MANAGER) | Q(is_superuser=True) | Q(pk=request.experiment.owner_id)
+    path = f"/experiments/{request.experiment_id}/"
+    body = (f"{request.asked_by.username} asks to loosen a limit of {request.experiment.name} while a run is under way: "
+            f"“{request.reason}”.\n\nA second person must consent: {settings.PUBLIC_URL}{path}\n"
+            f"Without a decision it expires at {request.expires_at:%Y-%m-%d %H:%M} UTC.\n")
+    queue([Telling(key=f"limit-request-{request.pk}-{person.pk}", person=person, body=body, path=path,
+                   subject=f"Consent asked for: a limit of {request.experiment.name}")
+           for person in Person.objects.filter(may_consent, is_active=True).exclude(pk=request.asked_by_id).order_by("pk")])
     publish({"kind": "limits", "ids": [request.version.limit_id], "experiments": [request.experiment_id]})

@@ -1,5 +1,6 @@
 """Experiments: the list, a new one, and one with its limits."""
 
+import json
 from datetime import datetime
 from typing import Any, Final
 
@@ -179,7 +180,7 @@ def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, 
             "limits": [limit_view(limit, floors.get((limit.tap_id, limit.quantity))) for limit in facts.limits],
             "run": run_now(experiment),
             "may_ask": may_ask,
-            "proposals": proposal_facts(),
+            "proposals": json.dumps(proposal_facts()),
             **requests_shown(request, experiment, may_set=form is not None),
             "taps": taps,
             "form": form,

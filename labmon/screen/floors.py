@@ -60,7 +60,9 @@ def floors_page(request: HttpRequest, station: str) -> HttpResponse:
 
 def floor_view(row: LimitFloor) -> FloorView:
     """A floor in words."""
-    beyond = [(one.limit.experiment_id, one.limit.experiment.name, both_units(row.quantity, one.alarm)) for one in limits_beyond(row)]
+    beyond = [
+        (one.limit.experiment_id, one.limit.experiment.name, both_units(row.quantity, one.alarm)) for one in limits_beyond(row)
+    ]
     return FloorView(
         tap=row.tap.name if row.tap else "all taps",
         words=f"{NAMES[row.quantity]} {both_units(row.quantity, row.value)}",

@@ -43,7 +43,8 @@ def test_rules_of_two_quantities_are_not_compared():
 
 @given(
     st.lists(st.floats(15.0, 30.0), min_size=1, max_size=80),
-    st.floats(16.0, 24.0), st.floats(0.0, 3.0), st.integers(0, 5), st.integers(0, 5), st.floats(0.0, 2.0), st.floats(0.0, 2.0),
+    st.floats(16.0, 24.0), st.floats(0.0, 3.0), st.integers(0, 5), st.integers(0, 5), st.floats(0.0, 2.0),
+    st.floats(0.0, 2.0),
 )  # fmt: skip
 def test_what_only_tightens_is_never_quiet_where_the_old_limit_was_open(er_db, alarm, tighter, delay_s, shorter_s, deadband, more):
     """While the old limit has an episode open, the tightened one has one too: nothing is called later or ends sooner."""

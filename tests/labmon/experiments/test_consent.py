@@ -13,7 +13,7 @@ from labmon.experiments.floors import set_floor
 from labmon.experiments.models import LimitRequest, LimitVersion
 from labmon.experiments.rules import LimitWish
 from labmon.people.models import Role
-from labmon.tell.models import OutboxMail
+from labmon.tell.models import Message
 from tests.factories import NOON, make_experiment, make_person, make_run, make_tap
 
 pytestmark = pytest.mark.django_db
@@ -67,7 +67,7 @@ def test_a_second_person_consents_and_both_are_on_record(night):
     _, _, limit, owner, manager = night
     request = ask(night)
     assert last(limit).alarm == 20.0 and request.loosens == ["alarm", "warning"]
-    assert OutboxMail.objects.get().recipients == ["m@example.org"]
+    assert Message.objects.get().recipients == ["m@example.org"]
     with pytest.raises(NotAllowed):
         decide_request(request.pk, by=owner, is_granted=True)
     decide_request(request.pk, by=manager, is_granted=True, note="seen")

@@ -26,9 +26,7 @@ function follow(form) {
 
 /** Fills in the delays and the deadband that suit the chosen quantity, with the reason; what a person typed stays. */
 function propose(form) {
-  const kept = document.getElementById('proposals');
-  if (!kept) return;
-  const proposals = JSON.parse(kept.textContent);
+  const proposals = JSON.parse(form.dataset.proposals || '{}');
   const why = form.querySelector('[data-why-proposed]');
   const filled = {};
   for (const name of FILLED) filled[name] = form.elements[name]?.value;

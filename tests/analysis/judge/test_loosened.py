@@ -46,7 +46,7 @@ def test_rules_of_two_quantities_are_not_compared():
     st.floats(16.0, 24.0), st.floats(0.0, 3.0), st.integers(0, 5), st.integers(0, 5), st.floats(0.0, 2.0),
     st.floats(0.0, 2.0),
 )  # fmt: skip
-def test_what_only_tightens_is_never_quiet_where_the_old_limit_was_open(er_db, alarm, tighter, delay_s, shorter_s, deadband, more):
+def test_what_only_tightens_is_never_quiet_where_the_old_was_open(er_db, alarm, tighter, delay_s, shorter_s, deadband, more):
     """While the old limit has an episode open, the tightened one has one too: nothing is called later or ends sooner."""
     before = LimitRule(quantity=Quantity.ER_DB, alarm=alarm, on_delay_s=delay_s, off_delay_s=delay_s, deadband=deadband)
     after = replace(before, alarm=alarm + tighter, on_delay_s=max(delay_s - shorter_s, 0), off_delay_s=delay_s + shorter_s,

@@ -75,7 +75,7 @@ def test_the_list_of_marks_is_reached_by_keyboard_and_follows_the_span(signed_in
     for _ in range(8):
         page.click("[data-way=earlier]")
     page.wait_for_function("before => document.querySelector('[data-history]').dataset.drawn !== before", arg=before)
-    page.wait_for_function("document.querySelector('[data-marks]').hidden")
+    page.wait_for_function("() => document.querySelector('[data-marks]').hidden")
 
 
 def test_a_picture_is_sent_and_shown(signed_in, lab, bench, tmp_path):
@@ -91,7 +91,7 @@ def test_a_picture_is_sent_and_shown(signed_in, lab, bench, tmp_path):
     page.wait_for_selector(".message")
     entry = LogEntry.objects.order_by("-pk").first()
     page.goto(lab.url(f"/stations/n2/log/{entry.pk}/"))
-    page.wait_for_function("document.querySelector('.log-picture').naturalWidth === 640")
+    page.wait_for_function("() => document.querySelector('.log-picture').naturalWidth === 640")
     shot(page, "picture")
 
 

@@ -126,7 +126,8 @@ _NUMBERS = """
         (SELECT count(DISTINCT page_us) FROM analysis_rolluppage WHERE level_s = 10)
             + (SELECT count(DISTINCT bucket_us / %s) FROM analysis_rolluprow WHERE level_s = 86400),
         (SELECT count(*) FROM ingest_touch), (SELECT min(arrival_us) FROM ingest_touch),
-        (SELECT count(*) FROM analysis_rollupdue), (SELECT count(*) FROM labmon_outboxmail WHERE sent_at IS NULL),
+        (SELECT count(*) FROM analysis_rollupdue),
+        (SELECT count(*) FROM labmon_delivery WHERE sent_at IS NULL AND gave_up_at IS NULL),
         (SELECT count(*) FROM ingest_leftfile)"""
 _DAYS = """
     (SELECT 'fault', name, fault, NULL::bigint FROM ingest_dayfile WHERE fault <> '' ORDER BY name LIMIT 100)

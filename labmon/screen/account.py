@@ -15,7 +15,9 @@ from labmon.people.keys import make_person_key, revoke_person_key
 from labmon.people.rights import Action, require
 from labmon.screen.door import for_people, put_refusal
 
-sign_in = LoginView.as_view(template_name="screen/login.html", redirect_authenticated_user=True)
+sign_in = require_http_methods(["GET", "HEAD", "POST"])(
+    LoginView.as_view(template_name="screen/login.html", redirect_authenticated_user=True)
+)
 sign_out = LogoutView.as_view()
 
 

@@ -10,7 +10,7 @@ from django.utils import timezone
 from django.views.decorators.http import require_http_methods, require_POST, require_safe
 
 from ingest.models import Station
-from labmon.errors import WriteError
+from labmon.errors import NotAllowed, WriteError
 from labmon.logbook.actions import edit_entry, may_edit, say_change, strike_entry, write_entry
 from labmon.logbook.authors import author_of, may_answer
 from labmon.logbook.models import ChangeKind, LogEntry, LogTag
@@ -101,6 +101,8 @@ def log_entry_page(request: HttpRequest, station: str, entry_id: int) -> HttpRes
     """One entry with how it read before; the question whether it was a change; the form that edits it."""
     entry = _entry(request.user, station, entry_id)
     is_editable = may_edit(request.user, entry)
+    if request.method == "POST" and not is_editable:
+        raise NotAllowed("Only who wrote it, the bench's owner or a manager changes an entry. Write one of your own.")
     form = LogEditForm(request.POST or None, initial={name: getattr(entry, name) for name in ("text", "tag", "at", "until_at")})
     if request.method == "POST" and form.is_valid():
         try:
@@ -110,8 +112,6 @@ def log_entry_page(request: HttpRequest, station: str, entry_id: int) -> HttpRes
         else:
             messages.success(request, "The entry is changed; how it read before stays below it.")
             return redirect("log-entry", station, entry_id)
-    elif request.method == "POST":
-        require(request.user, Action.LOG, entry.station)
     befores = [(when_text(one.at, one.until_at), TAG_WORDS[LogTag(one.tag)], one.text, time_text(one.edited_at))
                for one in entry.befores.order_by("-number")]
     view = entry_views(request.user, [entry])[0]

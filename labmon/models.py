@@ -9,13 +9,13 @@ from labmon.events.models import CallRules, Event, OnCall
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitFloor, LimitRequest, LimitVersion
 from labmon.logbook.models import ConfigurationChange, LogEntry, LogEntryBefore
 from labmon.people.models import Person, PersonKey
-from labmon.runs.models import Run, RunLimit, RunTap
+from labmon.runs.models import Run, RunLedger, RunLimit, RunTap
 from labmon.tell.models import Delivery, DeliveryTry, Message, PushDevice, QuietHours, SigningKey, Webhook
 
 __all__ = [
     "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "CallRules",
     "ConfigurationChange", "Delivery", "DeliveryTry", "DoorRefusal", "Drill", "Event", "Experiment",
     "FoldCheckpoint", "KeyUse", "Limit", "LimitFloor", "LimitOutlook", "LimitRequest", "LimitVersion", "LogEntry",
-    "LogEntryBefore", "Message", "OnCall", "Person", "PersonKey", "PushDevice", "QuietHours", "Run", "RunLimit",
+    "LogEntryBefore", "Message", "OnCall", "Person", "PersonKey", "PushDevice", "QuietHours", "Run", "RunLedger", "RunLimit",
     "RunTap", "SigningKey", "Webhook",
 ]

@@ -16,6 +16,8 @@ from labmon.pipeline.process import process_touched
 from labmon.pipeline.prune import prune_checkpoints
 from labmon.pipeline.rolling import compact_closed_days, roll_up_coarse_due, roll_up_due
 from labmon.pipeline.silence import judge_silence
+from labmon.runs.ledgers import ask_due_ledgers
+from labmon.runs.making import make_waiting_ledgers
 from labmon.runs.starting import start_due_runs
 from labmon.tell.sending import send_waiting
 
@@ -26,6 +28,8 @@ SEAL_DAYS_FOR_S = 20.0
 #: So long day files are read again every hour.
 CHECK_DAYS_FOR_S = 20.0
 
+#: No ledger is begun after so long; one of a long fast run may take minutes.
+MAKE_LEDGERS_FOR_S = 20.0
 #: So long statistics of closed days are made at a time; one tap-day takes a second or two.
 DAY_STATISTICS_FOR_S = 20.0
 
@@ -76,6 +80,13 @@ def cast_doubts_task() -> None:
 def expire_requests_task() -> None:
     """Close requests for looser limits that nobody decided in time."""
     expire_requests()
+
+
+@_task("make_ledgers", 1800)
+def make_ledgers_task() -> None:
+    """Ask for the ledgers of runs that have ended, and make what is asked for."""
+    ask_due_ledgers()
+    make_waiting_ledgers(for_s=MAKE_LEDGERS_FOR_S)
 
 
 @_task("roll_up", 120)

@@ -49,8 +49,8 @@ def plan_run(
         owner=wishes.checked_person("owner", owner or by),
         deputy=wishes.checked_person("deputy", deputy),
         planned_by=by,
-        starts_at=starts_at,
-        ends_at=ends_at,
+        starts_at=wishes.in_utc("starts_at", starts_at),
+        ends_at=wishes.in_utc("ends_at", ends_at),
         allowed_below_s=wishes.checked_allowed(allowed_below_s),
         wanted_trusted_share=wishes.checked_share(wanted_trusted_share),
     )
@@ -86,6 +86,8 @@ def change_run(
     """
     locked = _locked(run)
     before = run_facts(locked)
+    starts_at = starts_at if starts_at is _UNCHANGED else wishes.in_utc("starts_at", starts_at)
+    ends_at = ends_at if ends_at is _UNCHANGED else wishes.in_utc("ends_at", ends_at)
     taps = taps if taps is _UNCHANGED else list(taps)
     given = {
         "starts_at": (starts_at, locked.starts_at),

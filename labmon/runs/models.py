@@ -77,3 +77,54 @@ class RunLimit(models.Model):
 
     class Meta:
         constraints = [models.UniqueConstraint(fields=["run", "limit_version"], name="run_limit_once")]
+
+
+class RunLedger(models.Model):
+    """One version of a run's ledger; never changed once it is made. ``body`` holds its intervals (labmon/runs/ledger_body.py).
+
+    It is asked for (``asked_at``), taken up by a worker (``beat_at`` moves while it works), and made (``made_at``).
+    """
+
+    run = models.ForeignKey(Run, models.CASCADE, related_name="ledgers")
+    number = models.PositiveIntegerField()
+    asked_at = models.DateTimeField(auto_now_add=True)
+    asked_by = models.ForeignKey(settings.AUTH_USER_MODEL, models.SET_NULL, null=True, related_name="+")
+    reason = models.CharField(max_length=500, blank=True)
+    edits = models.JSONField(default=dict, help_text="Spans declared unusable; levels used instead of those in force.")
+    beat_at = models.DateTimeField(null=True)
+    done_share = models.FloatField(default=0.0)
+    fault = models.CharField(max_length=500, blank=True)
+    made_at = models.DateTimeField(null=True)
+    from_at = models.DateTimeField()
+    until_at = models.DateTimeField()
+    good_s = models.PositiveIntegerField(null=True)
+    below_s = models.PositiveIntegerField(null=True)
+    untrusted_s = models.PositiveIntegerField(null=True)
+    no_reading_s = models.PositiveIntegerField(null=True)
+    doubtful_s = models.PositiveIntegerField(null=True, help_text="Of the good ones.")
+    longest_good_s = models.PositiveIntegerField(null=True)
+    longest_good_from_s = models.PositiveIntegerField(null=True)
+    facts = models.JSONField(default=dict, help_text="Figures, limits, calibrations and software as they were.")
+    body = models.BinaryField(default=b"")
+
+    class Meta:
+        constraints = [
+            models.UniqueConstraint(fields=["run", "number"], name="ledger_version_once"),
+            models.CheckConstraint(
+                condition=Q(made_at=None)
+                | Q(
+                    good_s__isnull=False,
+                    below_s__isnull=False,
+                    untrusted_s__isnull=False,
+                    no_reading_s__isnull=False,
+                    doubtful_s__lte=F("good_s"),
+                ),
+                name="ledger_made_has_its_totals",
+            ),
+        ]
+        indexes = [models.Index(fields=["asked_at"], condition=Q(made_at=None, fault=""), name="ledger_waiting")]
+
+    @property
+    def length_s(self) -> int:
+        """Whole seconds of the run that it accounts for."""
+        return round((self.until_at - self.from_at).total_seconds())

@@ -2,7 +2,7 @@
 
 import math
 from collections.abc import Iterable, Set
-from datetime import datetime, timedelta
+from datetime import UTC, datetime, timedelta
 from typing import Final
 
 from django.utils import timezone
@@ -92,11 +92,20 @@ def checked_taps(experiment: Experiment, taps: Iterable[Tap] | None) -> list[Tap
     return light
 
 
+def in_utc(field: str, at: datetime) -> datetime:
+    """The moment in UTC: two times of one zone subtract as clocks show them, and a night of clock change would be an hour off.
+
+    Raises:
+        WriteError: It has no time zone.
+    """
+    if timezone.is_naive(at):
+        raise WriteError(field, "It has no time zone.", "Give one, for example 2031-03-04T20:00:00Z.")
+    return at.astimezone(UTC)
+
+
 def check_times(run: Run) -> None:
     """Raises WriteError where the run's times cannot be meant."""
     for field, at in (("starts_at", run.starts_at), ("ends_at", run.ends_at)):
-        if timezone.is_naive(at):
-            raise WriteError(field, "It has no time zone.", "Give one, for example 2031-03-04T20:00:00Z.")
         if at.microsecond:
             raise WriteError(field, "It lies between two seconds.", "Give a whole second: a ledger counts seconds.")
     length, now = run.ends_at - run.starts_at, timezone.now()

@@ -10,7 +10,6 @@ from analysis.judge.ledger import Account, intervals_of
 from analysis.judge.ledger_tap import LedgerClass
 from labmon.runs.ledger_body import packed, unpacked
 
-
 seconds_kept = st.tuples(st.sampled_from(list(LedgerClass)), st.booleans(), st.integers(0, 2**32 - 1), st.integers(0, 2**64 - 1))
 
 

@@ -3,7 +3,7 @@
 from labmon.ahead.models import AheadDue, AheadScore, LimitOutlook
 from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold
 from labmon.audit.models import AuditEntry
-from labmon.benches.models import Bench, DoorRefusal, KeyUse
+from labmon.benches.models import Bench, ClientState, DoorHour, DoorRefusal, KeyUse
 from labmon.drills.models import Drill
 from labmon.events.models import CallRules, Event, OnCall
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitFloor, LimitRequest, LimitVersion
@@ -13,8 +13,8 @@ from labmon.runs.models import Run, RunLedger, RunLimit, RunTap
 from labmon.tell.models import Delivery, DeliveryTry, Message, PushDevice, QuietHours, SigningKey, Webhook
 
 __all__ = [
-    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "CallRules",
-    "ConfigurationChange", "Delivery", "DeliveryTry", "DoorRefusal", "Drill", "Event", "Experiment",
+    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "CallRules", "ClientState",
+    "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour", "DoorRefusal", "Drill", "Event", "Experiment",
     "FoldCheckpoint", "KeyUse", "Limit", "LimitFloor", "LimitOutlook", "LimitRequest", "LimitVersion", "LogEntry",
     "LogEntryBefore", "Message", "OnCall", "Person", "PersonKey", "PushDevice", "QuietHours", "Run", "RunLedger", "RunLimit",
     "RunTap", "SigningKey", "Webhook",

@@ -12,10 +12,11 @@ import psycopg
 
 from ingest.door.answers import answer_json
 from ingest.door.body import KnownStation
+from ingest.door.client import client_health
 from ingest.door.committer import Committer, RefusedMessage, RefusedNumbers, Result, Waiting
 from ingest.door.decode import LARGEST_BODY, Form, decode, form_of, is_gzipped
 from ingest.door.keys import KeyRing
-from ingest.door.notices import note_refused, note_used
+from ingest.door.notices import note_refused, note_repeats, note_told, note_used
 from ingest.door.payload import UnknownTap, check_body, lowest_sequences
 from ingest.door.refusal import Refusal, come_again, no_entry, too_large
 from ingest.times import now_us
@@ -105,6 +106,9 @@ class Door:
         result = await self._commit(checked)
         if isinstance(result, Refusal):
             raise result
+        note_repeats(station.id, result.known, result.disordered)
+        if health := client_health(found):
+            note_told(station.id, health)
         return answer_json(result, now_us())
 
     async def keep_message(self, message: bytes, key: str, refusal: Refusal) -> None:

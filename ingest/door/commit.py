@@ -15,6 +15,7 @@ import psycopg
 from ingest.aside import Aside
 from ingest.clocks import ClockState, Placed, observe, place
 from ingest.door.body import Body, Part
+from ingest.door.client import PREFIX
 from ingest.door.identity import AFTER_NOW, Fault, Lot, judge_by_time, judge_numbered
 from ingest.door.rows import Harvest, Ranges, lock_boots, lock_clocks, lock_taps, touches_of, write_harvest
 from ingest.store.boots import StationBootKey, TapBootKey, multirange_text, ranges_of, station_boot_ids, tap_boot_ids
@@ -52,6 +53,8 @@ class Answer:
     boot: str
     stored: int = 0
     known: int = 0
+    disordered: int = 0
+    """New readings that came behind one with a higher number of their boot."""
     aside: list[Aside] = field(default_factory=list)
     ranges: dict[str, Ranges] = field(default_factory=dict)
     """By tap: numbers of this body that are acknowledged."""
@@ -64,6 +67,8 @@ class _BootState:
     """A tap's boot within this transaction."""
 
     held: Ranges
+    above: int = 0
+    """The number behind the highest held."""
     gained: Ranges = field(default_factory=list)
     pending: list[Callable[[], Readings]] = field(default_factory=list)
     first_at_us: int = _NO_FIRST_US
@@ -123,8 +128,9 @@ class Transaction:
     def _lock(self) -> None:
         """Lock and read what this transaction decides by."""
         self.clocks = lock_clocks(self.db, set(self.station_boots))
-        self.harvest.unknown = {(part.tap.id, name) for body in self.bodies for part in body.parts
-                                for name in part.unknown_names if len(part)} - self.known_ids.unknown
+        unknown = {(part.tap.id, name) for body in self.bodies for part in body.parts for name in part.unknown_names
+                   if len(part) and not name.startswith(PREFIX)}
+        self.harvest.unknown = unknown - self.known_ids.unknown
         self.found_ids.unknown = self.harvest.unknown
         by_time = {part.tap.id for body in self.bodies for part in body.parts if _has_unnumbered(body, part)}
         if taps := sorted(by_time | {tap for tap, _ in self.harvest.unknown}):
@@ -133,7 +139,7 @@ class Transaction:
         for body, boot in zip(self.bodies, self.station_boots, strict=True):
             for part in body.parts:
                 offered.setdefault(self.tap_boots[part.tap.id, boot], []).extend(_offered(body, part))
-        self.boots = {row: _BootState(held) for row, (_, held) in lock_boots(self.db, offered).items()}
+        self.boots = {row: _BootState(held, above) for row, (held, above) in lock_boots(self.db, offered).items()}
         if len(self.clocks) < len(set(self.station_boots)) or len(self.boots) < len(offered):
             raise StaleIds
 
@@ -165,6 +171,8 @@ class Transaction:
         packed = pack_even_batch(part.own_at_us, part.names, part.values, first, sent_us)
         self._add_inbox(body, part.tap.id, boot_id, (first, last), part.own_at_us, packed)
         state.gain([(first, last)])
+        answer.disordered += max(0, min(last + 1, state.above) - first)
+        state.above = max(state.above, last + 1)
         if len(self.bodies) > 1:
             lot = Lot(part, np.arange(len(part)), part.own_at_us, False, True)
             state.pending.append(lambda: lot.as_readings(lot.places, boot_id))
@@ -203,6 +211,9 @@ class Transaction:
         self._add_inbox(body, tap, boot_id, span, stored.at_us, packed)
         if lot.is_numbered:
             state.gain(ranges_of(stored.sequence))
+            highest = np.maximum.accumulate(np.concatenate([[state.above - 1], stored.sequence]))
+            answer.disordered += int((stored.sequence < highest[:-1]).sum())
+            state.above = int(highest[-1]) + 1
 
     def _add_inbox(self, body: Body, tap: int, boot_id: int, numbers: tuple[int | None, int | None], at_us: IntArray,
                    packed: bytes) -> None:

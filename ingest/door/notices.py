@@ -1,4 +1,4 @@
-"""What the door saw of keys, for whoever looks after stations: which key was used, what was refused and from where.
+"""What the door saw, for whoever looks after stations: keys used and refused, readings that came again, how clients do.
 
 Kept in memory, bounded, and handed on by a thread of its own at most every ``PAUSE_S``: a request never waits for it. Lost
 with the process; the readings are the record, these are hints for a person at a bench.
@@ -9,6 +9,7 @@ import threading
 from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 
+from ingest.door.client import ClientHealth
 from ingest.door.refusal import Refusal
 from ingest.stations import digest_of
 from ingest.times import SECOND_US, now_us
@@ -51,12 +52,30 @@ class KeyRefused:
     count: int = 1
 
 
+@dataclass(frozen=True, slots=True)
+class Repeats:
+    """Readings of a station that came again, and that came behind later ones."""
+
+    known: int = 0
+    disordered: int = 0
+
+
+@dataclass(frozen=True, slots=True)
+class ClientTold:
+    """What a bench's program told of itself, and when."""
+
+    health: ClientHealth
+    at_us: int
+
+
 @dataclass(slots=True)
 class Notices:
-    """What has come together since the last hand-over."""
+    """What has come together since the last hand-over; ``repeats`` and ``told`` by station id."""
 
     used: dict[bytes, KeyUsed] = field(default_factory=dict)
     refused: dict[tuple[bytes, str, str, str], KeyRefused] = field(default_factory=dict)
+    repeats: dict[int, Repeats] = field(default_factory=dict)
+    told: dict[int, ClientTold] = field(default_factory=dict)
     left_out: int = 0
 
 
@@ -117,6 +136,27 @@ def note_refused(key: str, remote_address: str, refusal: Refusal) -> None:
                 first_us=moment_us, last_us=moment_us)
         else:
             _waiting.left_out += 1
+    _tell_soon()
+
+
+def note_repeats(station_id: int, known: int, disordered: int) -> None:
+    """Readings came again, or out of order; returns at once."""
+    if not _listeners or not (known or disordered):
+        return
+    with _lock:
+        before = _waiting.repeats.get(station_id, Repeats())
+        if station_id in _waiting.repeats or len(_waiting.repeats) < MOST:
+            _waiting.repeats[station_id] = Repeats(before.known + known, before.disordered + disordered)
+    _tell_soon()
+
+
+def note_told(station_id: int, health: ClientHealth) -> None:
+    """A bench's program told of itself; returns at once."""
+    if not _listeners:
+        return
+    with _lock:
+        if station_id in _waiting.told or len(_waiting.told) < MOST:
+            _waiting.told[station_id] = ClientTold(health, now_us())
     _tell_soon()
 
 

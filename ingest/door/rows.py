@@ -47,11 +47,11 @@ def lock_taps(db: psycopg.Connection[Any], taps: list[int]) -> tuple[dict[int, i
     return dict(fetch(db, _LAST_TIMES, taps)), bootless
 
 
-def lock_boots(db: psycopg.Connection[Any], offered: dict[int, Ranges]) -> dict[int, tuple[int, Ranges]]:
-    """By TapBoot id, locked: its tap, and which of the offered numbers it holds already."""
+def lock_boots(db: psycopg.Connection[Any], offered: dict[int, Ranges]) -> dict[int, tuple[Ranges, int]]:
+    """By TapBoot id, locked: which of the offered numbers it holds already, and the number behind its highest (0: none)."""
     ids = sorted(offered)
     rows = fetch(db, _LOCK_BOOTS, BigInts(ids), [multirange_text(offered[each]) for each in ids])
-    return {row: (tap, ranges_in(text)) for row, tap, text in rows}
+    return {row: (ranges_in(text), above or 0) for row, text, above in rows}
 
 
 def write_harvest(db: psycopg.Connection[Any], harvest: Harvest) -> dict[int, int | None]:
@@ -113,7 +113,7 @@ _LOCK_CLOCKS: LiteralString = """
     SELECT id, is_server_timed, clock_fault, clock_offset_us, uptime_zero_us, uptime_last_ms, last_arrival_us
     FROM ingest_stationboot WHERE id = ANY(%b::bigint[]) ORDER BY id FOR NO KEY UPDATE"""
 _LOCK_BOOTS: LiteralString = """
-    SELECT id, kept.tap_id, (held * ranges::int8multirange)::text
+    SELECT id, (held * ranges::int8multirange)::text, upper(held)
     FROM ingest_tapboot AS kept JOIN unnest(%b::bigint[], %b::text[]) AS asked(boot, ranges) ON id = boot
     ORDER BY id FOR NO KEY UPDATE OF kept"""
 _LAST_TIMES: LiteralString = "SELECT tap_id, last_at_us FROM ingest_tapheard WHERE tap_id = ANY(%b::bigint[])"

@@ -1,6 +1,7 @@
 """Whose bench a station stands on."""
 
 from django.conf import settings
+from django.contrib.postgres.fields import ArrayField
 from django.db import models
 
 
@@ -41,3 +42,27 @@ class DoorRefusal(models.Model):
     count = models.PositiveIntegerField(default=0)
     first_at = models.DateTimeField()
     last_at = models.DateTimeField(db_index=True)
+
+
+class DoorHour(models.Model):
+    """Readings of a station in one hour that the door knew already, and that came behind later ones of their boot."""
+
+    station = models.ForeignKey("ingest.Station", models.CASCADE, related_name="door_hours")
+    hour_at = models.DateTimeField(db_index=True)
+    known = models.BigIntegerField(default=0)
+    disordered = models.BigIntegerField(default=0)
+
+    class Meta:
+        constraints = [models.UniqueConstraint(fields=["station", "hour_at"], name="door_hour_once")]
+
+
+class ClientState(models.Model):
+    """What a bench's program last told of itself."""
+
+    station = models.OneToOneField("ingest.Station", models.CASCADE, primary_key=True, related_name="client")
+    told_at = models.DateTimeField()
+    waiting = models.BigIntegerField(null=True)
+    dropped = models.BigIntegerField(null=True)
+    restarts = models.BigIntegerField(null=True)
+    clock = models.CharField(max_length=200, blank=True)
+    mute = ArrayField(models.CharField(max_length=63), default=list, help_text="Taps whose instrument does not answer.")

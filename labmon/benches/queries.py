@@ -15,6 +15,7 @@ from analysis.judge.rule import LimitRule
 from analysis.models import Calibration
 from analysis.record.calibrations import versions_of
 from analysis.record.tap_state import TapState
+from ingest.door.client import PREFIX as CLIENT_PREFIX
 from ingest.models import DoorUp, SetAside, Station, StationBoot, StationKey, Tap, TapKind
 from ingest.store.columns import Readings
 from ingest.store.read import newest_readings
@@ -23,6 +24,7 @@ from ingest.times import now_us as server_now_us
 from labmon.alarms.models import AlarmState
 from labmon.benches.ceilings import TapCeiling, ceiling_of
 from labmon.benches.course import Course, courses_of
+from labmon.benches.door_facts import DoorFacts, door_facts
 from labmon.benches.doubts import OpenDoubt, open_doubts
 from labmon.benches.show import (
     DEFAULT_SILENCE_S,
@@ -106,6 +108,10 @@ class TapFacts:
     unknown_columns: list[str]
     has_stokes: bool
     ceiling: TapCeiling | None = None
+    is_mute: bool = False
+    """It gives nothing while its station lives."""
+    names_itself_mute: bool = False
+    """The station's program says that its instrument does not answer."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -124,6 +130,7 @@ class StationFacts:
     set_aside: int
     troubles: Troubles = NO_TROUBLES
     doubts: list[OpenDoubt] = field(default_factory=list)
+    door: DoorFacts = DoorFacts()
 
 
 @dataclass(frozen=True, slots=True)
@@ -229,6 +236,7 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
     in_force = {tap_id: next((one for one in reversed(own) if one.valid_from <= now), None) for tap_id, own in versions.items()}
     newest = newest_readings([tap.pk for tap in taps], count=NEWEST_LOOKED_AT)
     boots = list(station.boots.order_by("-last_arrival_us")[:10])
+    door = door_facts(station, boots, clock_us)
     heard_us = max((tap.heard.last_arrival_us for tap in taps if hasattr(tap, "heard")), default=None)
     bench = getattr(station, "bench", None)
     return StationFacts(
@@ -237,22 +245,24 @@ def station_facts(station: Station, *, now_us: int | None = None) -> StationFact
         owner=bench.owner.username if bench and bench.owner else None,
         owner_id=bench.owner_id if bench else None,
         purpose=bench.purpose if bench else "",
-        taps=[_tap_facts(standings[tap.pk], limits.get(tap.pk, []), in_force.get(tap.pk), newest[tap.pk], clock_us)
+        taps=[_tap_facts(standings[tap.pk], limits.get(tap.pk, []), in_force.get(tap.pk), newest[tap.pk], clock_us, door)
               for tap in taps],
         keys=list(station.keys.select_related("use").order_by("-made_at")),
         boots=boots,
         troubles=troubles_of(station, newest, clock_us),
         doubts=open_doubts(station, in_force),
+        door=door,
         last_heard_at=at_of(heard_us) if heard_us is not None else None,
         set_aside=SetAside.objects.filter(station=station).count(),
     )
 
 
 def _tap_facts(
-    standing: _Standing, limits: list[LimitFacts], calibration: Calibration | None, newest: Readings, now_us: int
+    standing: _Standing, limits: list[LimitFacts], calibration: Calibration | None, newest: Readings, now_us: int, door: DoorFacts
 ) -> TapFacts:
     tap = standing.tap
     heard_us = tap.heard.last_arrival_us if hasattr(tap, "heard") else None
+    is_silent, is_named = bool(standing.silence and standing.silence.is_shown), door.names_mute(tap.name, now_us)
     return TapFacts(
         id=tap.pk,
         name=tap.name,
@@ -266,11 +276,13 @@ def _tap_facts(
         state=standing.state.value,
         last_heard_at=at_of(heard_us) if heard_us is not None else None,
         silent_s=None if heard_us is None else max((now_us - heard_us) / 1e6, 0.0),
-        is_silent=bool(standing.silence and standing.silence.is_shown),
+        is_silent=is_silent,
         calibration=calibration,
-        unknown_columns=list(tap.unknown_columns),
+        unknown_columns=[name for name in tap.unknown_columns if not name.startswith(CLIENT_PREFIX)],
         has_stokes=tap.kind == TapKind.STOKES,
         ceiling=ceiling_of(tap, calibration, newest),
+        is_mute=is_named or (is_silent and heard_us is not None and door.is_mute(heard_us, now_us)),
+        names_itself_mute=is_named,
     )
 
 

@@ -15,6 +15,7 @@ from labmon.benches.queries import StationFacts, station_facts
 from labmon.people.rights import Action, may
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people
+from labmon.screen.door_view import door_troubles, door_words
 from labmon.screen.drift_view import DriftView, drift_view
 from labmon.screen.holds import holds_shown, quiet_choices
 from labmon.screen.named import visible_station
@@ -47,7 +48,8 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
             "taps": [tap_view(tap, now) for tap in facts.taps],
             "drifts": _drifts(facts),
             "clock": clock_words(facts.boots),
-            "troubles": trouble_words(facts.troubles, facts.taps, facts.doubts),
+            "troubles": [*door_troubles(facts.door, facts.taps), *trouble_words(facts.troubles, facts.taps, facts.doubts)],
+            "door_words": door_words(facts.door, now),
             "questions": questions(facts.doubts),
             "clock_course": clock_course_words(facts.troubles.clock),
             "boots": [boot_words(boot) for boot in facts.boots],

@@ -72,7 +72,8 @@ def station_sentence(name: str, facts: StationFacts, unacknowledged: int) -> str
     tap = f"{name}/{worst.name}"
     said = {
         Standing.NEVER_HEARD: f"{tap} has not been heard yet",
-        Standing.NO_READING: f"{tap} has sent no reading for {age_text(worst.silent_s)}",
+        Standing.NO_READING: f"{tap} has sent no reading for {age_text(worst.silent_s)}"
+        + (", though its station lives" if worst.is_mute else ""),
         Standing.UNTRUSTED: f"{tap} cannot be trusted now{_because(worst)}",
         Standing.UNDECIDED: f"{tap} is at the detector's floor, cannot tell",
         Standing.BELOW: f"{tap} is {_margins(worst, below=True)} below its limit",

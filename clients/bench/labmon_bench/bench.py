@@ -36,7 +36,8 @@ class Bench:
         self.settings = settings
         self.store = Store(settings.spool, int(settings.spool_mb * 2**20))
         door = Door(settings.door, settings.ca_file, settings.timeout_s)
-        self.sender = Sender(self.store, door, lambda: station_key(settings), settings.send_every_s)
+        self.sender = Sender(self.store, door, lambda: station_key(settings), settings.send_every_s,
+                             told=lambda: self.health.told())
         sources: list[Source] = [source_of(tap, self.store) for tap in settings.taps]
         self.readers = [Reader(tap, source, self.keep, mains_hz=settings.mains_hz) for tap, source in zip(settings.taps, sources)]
         self.health = Health(self.store, self.sender.tally, [reader.state for reader in self.readers],
@@ -44,7 +45,7 @@ class Bench:
 
     def keep(self, readings: Sequence[Reading], place: Place | None) -> None:
         """Keep what a source gave."""
-        self.store.keep(self.health.beside(readings), place)
+        self.store.keep(readings, place)
 
     def run(self, stop: threading.Event) -> None:
         """Work until told to stop, or until every source is over and everything is acknowledged."""

@@ -1,4 +1,4 @@
-"""How the client itself does: told to the door once a minute beside a reading, and to people in a status file."""
+"""How the client itself does: told to the door now and then, and to people in a status file."""
 
 from __future__ import annotations
 
@@ -7,18 +7,16 @@ import json
 import os
 import time
 from collections.abc import Sequence
-from dataclasses import asdict, replace
+from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
 from labmon_bench.clock import clock_source, now_us, uptime_ms
-from labmon_bench.reading import Reading
 from labmon_bench.sender import Tally
 from labmon_bench.sources import SourceState
 from labmon_bench.store import Store
 from labmon_bench.version import VERSION
 
-TOLD_EVERY_S = 60.0
 _CLOCK_ASKED_EVERY_S = 600.0
 
 
@@ -28,22 +26,14 @@ class Health:
     def __init__(self, store: Store, tally: Tally, states: Sequence[SourceState], *, is_told: bool) -> None:
         self.store, self.tally, self.states, self.is_told = store, tally, states, is_told
         self.begun_us = now_us()
-        self._told_s = -TOLD_EVERY_S
         self._clock, self._clock_s = "unknown", -_CLOCK_ASKED_EVERY_S
 
-    def beside(self, readings: Sequence[Reading]) -> Sequence[Reading]:
-        """The readings, once a minute the last of them with columns ``client_…``, which the door keeps as they come.
-
-        They are part of the reading from now on: a reading must not change between two attempts to send it.
-        """
-        now_s = time.monotonic()
-        if not self.is_told or not readings or now_s - self._told_s < TOLD_EVERY_S:
-            return readings
-        self._told_s = now_s
-        mute = " ".join(state.tap for state in self.states if state.mute_since_us is not None)
-        more: dict[str, Any] = {"client_waiting": self.store.waiting, "client_dropped": self.store.dropped,
-                                "client_restarts": self.store.starts - 1, "client_clock": self.clock()}
-        return [*readings[:-1], replace(readings[-1], more={**more, "client_mute": mute} if mute else more)]
+    def told(self) -> dict[str, Any] | None:
+        """What the door is told of the client itself beside readings; None where the settings want it untold."""
+        if not self.is_told:
+            return None
+        return {"waiting": self.store.waiting, "dropped": self.store.dropped, "restarts": self.store.starts - 1,
+                "clock": self.clock(), "mute": [state.tap for state in self.states if state.mute_since_us is not None]}
 
     def clock(self) -> str:
         """What keeps the PC's clock right, asked every ten minutes."""

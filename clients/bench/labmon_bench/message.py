@@ -18,16 +18,19 @@ class AnswerFault(Exception):
     """The answer is not of the form that the door promises."""
 
 
-def message(boot: Boot, columns: Sequence[Columns]) -> dict[str, Any]:
+def message(boot: Boot, columns: Sequence[Columns], told: Mapping[str, Any] | None = None) -> dict[str, Any]:
     """One body; ``now`` is the moment of this call, so make it anew for each attempt.
 
     Readings from before the PC's last power-up keep their uptimes (their content must not change), but ``now.uptime_ms`` is
-    left out: the two do not count from the same moment.
+    left out: the two do not count from the same moment. ``told`` is how the client itself does.
     """
     now: dict[str, Any] = {"at": now_us()}
     if is_same_power_up(boot.power_up, power_up()):
         now["uptime_ms"] = uptime_ms()
-    return {"boot": boot.name, "now": now, "firmware": FIRMWARE, "taps": {part.tap: _columns_sent(part) for part in columns}}
+    said: dict[str, Any] = {"boot": boot.name, "now": now, "firmware": FIRMWARE}
+    if told is not None:
+        said["client"] = dict(told)
+    return {**said, "taps": {part.tap: _columns_sent(part) for part in columns}}
 
 
 def packed(body: Mapping[str, Any]) -> tuple[bytes, dict[str, str]]:

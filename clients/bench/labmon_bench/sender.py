@@ -8,6 +8,7 @@ import threading
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 from labmon_bench.door import Door, DoorAnswer, DoorAway
 from labmon_bench.message import AnswerFault, accepted_ranges, message, packed
@@ -43,11 +44,16 @@ class Sender:
     Args:
         key: Gives the station's key as it is now.
         send_every_s: Pause while nothing waits.
+        told: Gives what the door is told of the client itself: every half minute, and at once when a source falls mute.
     """
 
-    def __init__(self, store: Store, door: Door, key: Callable[[], str], send_every_s: float, seed: int | None = None) -> None:
+    def __init__(self, store: Store, door: Door, key: Callable[[], str], send_every_s: float, seed: int | None = None,
+                 told: Callable[[], dict[str, Any] | None] = lambda: None) -> None:
         self.store, self.door, self.key, self.send_every_s = store, door, key, send_every_s
         self.tally = Tally()
+        self.told = told
+        self._told_s = float("-inf")
+        self._told_mute: tuple[str, ...] = ()
         self.most = MOST_READINGS
         self._random = random.Random(seed)
         self._failures = 0
@@ -75,22 +81,32 @@ class Sender:
         now_s = time.monotonic()
         held = [form for form, (until_s, _) in self._held.items() if now_s < until_s]
         batch = self.store.next_batch(self.most, held)
-        if batch is None and now_s - self._heard_s < HEARTBEAT_S:
+        news = self._news(now_s)
+        if batch is None and news is None and now_s - self._heard_s < HEARTBEAT_S:
             return self.send_every_s
         boot, columns = (self.store.boot, []) if batch is None else (batch.boot, batch.columns)
         try:
             key = self.key()
             if key == self._refused_key and now_s < self._refused_until_s:
                 return self.send_every_s
-            content, headers = packed(message(boot, columns))
+            content, headers = packed(message(boot, columns, news))
             answer = self.door.post(content, headers, key)
         except SettingsFault as fault:
             return self._back_off(str(fault))
         except DoorAway as away:
             return self._back_off(str(away))
         if answer.status == 200:
+            if news is not None:
+                self._told_s, self._told_mute = now_s, tuple(news["mute"])
             return self._heed(answer, batch)
         return self._refused(answer, batch, key, now_s)
+
+    def _news(self, now_s: float) -> dict[str, Any] | None:
+        """What is to be told of the client now; None where the door knows it."""
+        news = self.told()
+        if news is None or (now_s - self._told_s < HEARTBEAT_S and tuple(news["mute"]) == self._told_mute):
+            return None
+        return news
 
     def _heed(self, answer: DoorAnswer, batch: Batch | None) -> float:
         """Forget what is acknowledged."""

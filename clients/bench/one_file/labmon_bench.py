@@ -633,16 +633,19 @@ class AnswerFault(Exception):
     """The answer is not of the form that the door promises."""
 
 
-def message(boot: Boot, columns: Sequence[Columns]) -> dict[str, Any]:
+def message(boot: Boot, columns: Sequence[Columns], told: Mapping[str, Any] | None = None) -> dict[str, Any]:
     """One body; ``now`` is the moment of this call, so make it anew for each attempt.
 
     Readings from before the PC's last power-up keep their uptimes (their content must not change), but ``now.uptime_ms`` is
-    left out: the two do not count from the same moment.
+    left out: the two do not count from the same moment. ``told`` is how the client itself does.
     """
     now: dict[str, Any] = {"at": now_us()}
     if is_same_power_up(boot.power_up, power_up()):
         now["uptime_ms"] = uptime_ms()
-    return {"boot": boot.name, "now": now, "firmware": FIRMWARE, "taps": {part.tap: _columns_sent(part) for part in columns}}
+    said: dict[str, Any] = {"boot": boot.name, "now": now, "firmware": FIRMWARE}
+    if told is not None:
+        said["client"] = dict(told)
+    return {**said, "taps": {part.tap: _columns_sent(part) for part in columns}}
 
 
 def packed(body: Mapping[str, Any]) -> tuple[bytes, dict[str, str]]:
@@ -1434,11 +1437,16 @@ class Sender:
     Args:
         key: Gives the station's key as it is now.
         send_every_s: Pause while nothing waits.
+        told: Gives what the door is told of the client itself: every half minute, and at once when a source falls mute.
     """
 
-    def __init__(self, store: Store, door: Door, key: Callable[[], str], send_every_s: float, seed: int | None = None) -> None:
+    def __init__(self, store: Store, door: Door, key: Callable[[], str], send_every_s: float, seed: int | None = None,
+                 told: Callable[[], dict[str, Any] | None] = lambda: None) -> None:
         self.store, self.door, self.key, self.send_every_s = store, door, key, send_every_s
         self.tally = Tally()
+        self.told = told
+        self._told_s = float("-inf")
+        self._told_mute: tuple[str, ...] = ()
         self.most = MOST_READINGS
         self._random = random.Random(seed)
         self._failures = 0
@@ -1466,22 +1474,32 @@ class Sender:
         now_s = time.monotonic()
         held = [form for form, (until_s, _) in self._held.items() if now_s < until_s]
         batch = self.store.next_batch(self.most, held)
-        if batch is None and now_s - self._heard_s < HEARTBEAT_S:
+        news = self._news(now_s)
+        if batch is None and news is None and now_s - self._heard_s < HEARTBEAT_S:
             return self.send_every_s
         boot, columns = (self.store.boot, []) if batch is None else (batch.boot, batch.columns)
         try:
             key = self.key()
             if key == self._refused_key and now_s < self._refused_until_s:
                 return self.send_every_s
-            content, headers = packed(message(boot, columns))
+            content, headers = packed(message(boot, columns, news))
             answer = self.door.post(content, headers, key)
         except SettingsFault as fault:
             return self._back_off(str(fault))
         except DoorAway as away:
             return self._back_off(str(away))
         if answer.status == 200:
+            if news is not None:
+                self._told_s, self._told_mute = now_s, tuple(news["mute"])
             return self._heed(answer, batch)
         return self._refused(answer, batch, key, now_s)
+
+    def _news(self, now_s: float) -> dict[str, Any] | None:
+        """What is to be told of the client now; None where the door knows it."""
+        news = self.told()
+        if news is None or (now_s - self._told_s < HEARTBEAT_S and tuple(news["mute"]) == self._told_mute):
+            return None
+        return news
 
     def _heed(self, answer: DoorAnswer, batch: Batch | None) -> float:
         """Forget what is acknowledged."""
@@ -2325,9 +2343,8 @@ class Reader:
 
 
 # ---- health ----------------------------------------------------------------------------------------------
-# How the client itself does: told to the door once a minute beside a reading, and to people in a status file.
+# How the client itself does: told to the door now and then, and to people in a status file.
 
-TOLD_EVERY_S = 60.0
 _CLOCK_ASKED_EVERY_S = 600.0
 
 
@@ -2337,22 +2354,14 @@ class Health:
     def __init__(self, store: Store, tally: Tally, states: Sequence[SourceState], *, is_told: bool) -> None:
         self.store, self.tally, self.states, self.is_told = store, tally, states, is_told
         self.begun_us = now_us()
-        self._told_s = -TOLD_EVERY_S
         self._clock, self._clock_s = "unknown", -_CLOCK_ASKED_EVERY_S
 
-    def beside(self, readings: Sequence[Reading]) -> Sequence[Reading]:
-        """The readings, once a minute the last of them with columns ``client_…``, which the door keeps as they come.
-
-        They are part of the reading from now on: a reading must not change between two attempts to send it.
-        """
-        now_s = time.monotonic()
-        if not self.is_told or not readings or now_s - self._told_s < TOLD_EVERY_S:
-            return readings
-        self._told_s = now_s
-        mute = " ".join(state.tap for state in self.states if state.mute_since_us is not None)
-        more: dict[str, Any] = {"client_waiting": self.store.waiting, "client_dropped": self.store.dropped,
-                                "client_restarts": self.store.starts - 1, "client_clock": self.clock()}
-        return [*readings[:-1], replace(readings[-1], more={**more, "client_mute": mute} if mute else more)]
+    def told(self) -> dict[str, Any] | None:
+        """What the door is told of the client itself beside readings; None where the settings want it untold."""
+        if not self.is_told:
+            return None
+        return {"waiting": self.store.waiting, "dropped": self.store.dropped, "restarts": self.store.starts - 1,
+                "clock": self.clock(), "mute": [state.tap for state in self.states if state.mute_since_us is not None]}
 
     def clock(self) -> str:
         """What keeps the PC's clock right, asked every ten minutes."""
@@ -2430,7 +2439,8 @@ class Bench:
         self.settings = settings
         self.store = Store(settings.spool, int(settings.spool_mb * 2**20))
         door = Door(settings.door, settings.ca_file, settings.timeout_s)
-        self.sender = Sender(self.store, door, lambda: station_key(settings), settings.send_every_s)
+        self.sender = Sender(self.store, door, lambda: station_key(settings), settings.send_every_s,
+                             told=lambda: self.health.told())
         sources: list[Source] = [source_of(tap, self.store) for tap in settings.taps]
         self.readers = [Reader(tap, source, self.keep, mains_hz=settings.mains_hz) for tap, source in zip(settings.taps, sources)]
         self.health = Health(self.store, self.sender.tally, [reader.state for reader in self.readers],
@@ -2438,7 +2448,7 @@ class Bench:
 
     def keep(self, readings: Sequence[Reading], place: Place | None) -> None:
         """Keep what a source gave."""
-        self.store.keep(self.health.beside(readings), place)
+        self.store.keep(readings, place)
 
     def run(self, stop: threading.Event) -> None:
         """Work until told to stop, or until every source is over and everything is acknowledged."""

@@ -8,7 +8,9 @@ from typing import Any
 from django.conf import settings
 from django.core.management.base import CommandError
 
+from ingest.door.notices import listen
 from ingest.mqtt.running import run_subscriber
+from labmon.benches.door_log import keep_notices_in_thread
 from labmon.management.base import LabCommand
 
 
@@ -23,5 +25,6 @@ class Command(LabCommand):
     def handle(self, *args: Any, **wish: Any) -> None:
         if settings.MQTT_BROKER is None:
             raise CommandError("No MQTT broker is named. Set LABMON_MQTT_URL (docs/operations.md, 'MQTT').")
+        listen(keep_notices_in_thread)
         client_id = f"labmon-{wish['name']}"
         asyncio.run(run_subscriber(settings.MQTT_BROKER, client_id, settings.MQTT_ACCESS_DIR, settings.MQTT_PID_FILE))

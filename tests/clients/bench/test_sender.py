@@ -87,11 +87,30 @@ def test_a_value_that_the_source_lacked_is_sent_as_such_and_set_aside(store, ben
     assert "null" in SetAside.objects.get().why
 
 
-def test_columns_of_the_clients_health_are_kept_with_the_reading(store, bench_sender, sender):
+def test_columns_of_an_older_clients_health_are_kept_with_the_reading(store, bench_sender, sender):
     store.keep([*readings(3), *readings(1, 3, more={"client_waiting": 3, "client_clock": "synchronized"})])
     send_all(bench_sender)
     assert sender.stored().sequence.tolist() == [0, 1, 2, 3]
-    assert sender.tap().unknown_columns == ["client_clock", "client_waiting"]
+    assert sender.tap().unknown_columns == []
+
+
+def test_the_clients_health_is_told_now_and_then_and_at_once_when_a_source_falls_mute(store, door, sender, monkeypatch):
+    told = {"waiting": 3, "dropped": 0, "restarts": 1, "clock": "synchronized", "mute": []}
+    noted = []
+    monkeypatch.setattr("ingest.door.asgi.note_told", lambda station_id, health: noted.append(health))
+    client = sender_module.Sender(store, door, lambda: sender.key, 0.5, told=lambda: told)
+    store.keep(readings(3))
+    door.faults = ["away"]
+    client.turn()
+    client.turn()
+    assert (noted[0].waiting, noted[0].restarts, noted[0].clock, noted[0].mute) == (3, 1, "synchronized", ())
+    store.keep(readings(3, 3))
+    client.turn()
+    client.turn()
+    assert len(noted) == 1 and len(door.posted) == 2
+    told["mute"] = ["eom-in"]
+    client.turn()
+    assert noted[1].mute == ("eom-in",) and len(door.posted) == 3
 
 
 def test_a_tap_that_the_station_lacks_does_not_hold_up_the_others(store, bench_sender, sender):

@@ -30,6 +30,16 @@ def lock_tap(kind: int, tap_id: int) -> None:
         cursor.execute("SELECT pg_advisory_xact_lock(%s, (%s %% 2147483647)::int)", [kind, tap_id])
 
 
+def lock_taps(kind: int, tap_ids: Iterable[int]) -> None:
+    """Wait for several taps, in the order of their ids, so that two who do so cannot lock each other out.
+
+    Workers try for taps and never wait for them; whoever waits holds ``lock_name("silence")`` first.
+    """
+    with connection.cursor() as cursor:
+        for tap_id in sorted(set(tap_ids)):
+            cursor.execute("SELECT pg_advisory_xact_lock(%s, (%s %% 2147483647)::int)", [kind, tap_id])
+
+
 def claim_name(name: str) -> bool:
     """True if this transaction got the named job: of two beats that send the same task one does it."""
     with connection.cursor() as cursor:

@@ -35,7 +35,7 @@ from labmon.people.models import Role
 from labmon.pipeline.hint import ask_for_judging
 from labmon.pipeline.schedule import BEAT_SCHEDULE
 from labmon.pipeline.silence import judge_silence
-from labmon.pipeline.tasks import send_mails_task
+from labmon.pipeline.tasks import tell_task
 from labmon.tell.models import Message
 from tests.factories import make_person
 from tests.running_lab import free_port, until_true
@@ -181,7 +181,7 @@ def test_from_the_door_to_the_open_page_and_the_mailbox(story, worker):
 
     # One mail waits; the outbox's task sends it once, however often it runs.
     for _ in range(2):
-        send_mails_task()
+        tell_task()
     (sent,) = mail.outbox
     assert sent.to == ["owner@lab.example"] and sent.subject == f"alarm: {alarm.message}"
 
@@ -202,7 +202,7 @@ def test_from_the_door_to_the_open_page_and_the_mailbox(story, worker):
     assert story.page_hears("alarm") == [alarm_id]
     alarm.refresh_from_db()
     assert (alarm.state, alarm.returned_at) == ("normal", at_of(story.start_us + 27 * S))
-    send_mails_task()
+    tell_task()
     assert len(mail.outbox) == 1
 
 
@@ -242,7 +242,7 @@ def test_silence_is_noticed_on_the_servers_clock(story):
     assert Alarm.objects.get().kind == "no-reading" and not Message.objects.exists()
     for after_s in (31, 32, 60):
         judge_silence(heard_us + after_s * S)
-    send_mails_task()
+    tell_task()
     (sent,) = mail.outbox
     assert sent.subject == "alarm: b08/eom-in: no reading for 31 s"
 

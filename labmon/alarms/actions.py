@@ -8,6 +8,7 @@ from django.utils import timezone
 from labmon.alarms.models import Alarm
 from labmon.alarms.states import state_of
 from labmon.audit.actions import note as audit_note
+from labmon.events.actions import note_taken
 from labmon.live.publish import publish
 from labmon.people.models import Person
 
@@ -30,4 +31,6 @@ def acknowledge_alarm(alarm_id: int, *, by: Person, note: str = "") -> Alarm:
         audit_note(by, "acknowledge alarm", alarm, {"state": before}, {"state": alarm.state}, note)
         log.info("alarm_acknowledged", extra={"alarm_id": alarm.pk, "person_id": by.pk})
         publish({"kind": "alarm", "ids": [alarm.pk]})
+        if alarm.event_id is not None:
+            note_taken(alarm.event_id, by=by, at=alarm.acknowledged_at, note=note)
     return alarm

@@ -5,6 +5,7 @@ A told alarm is never deleted: late data give it other bounds (the old ones are 
 
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
+from datetime import timedelta
 from typing import Final
 
 from analysis.judge.fold import Level
@@ -24,6 +25,7 @@ _CHANGED = (
     "version",
     "level",
     "state",
+    "began_at",
     "raised_at",
     "alarm_at",
     "returned_at",
@@ -266,8 +268,10 @@ def _fill(alarm: Alarm, finding: Finding, episode: Episode, name: str) -> None:
     """Bounds, level, worst value and words of the episode."""
     is_new = alarm.pk is None
     began_before = us_of(alarm.raised_at) if not is_new else None
+    phase = _phase_of(finding, episode)
     if is_new or not episode.is_continued:
         alarm.raised_at = at_of(episode.raised_us)
+        alarm.began_at = alarm.raised_at - timedelta(seconds=phase.rule.on_delay_s)
     if episode.returned_us is not None:
         alarm.returned_at = at_of(episode.returned_us)
     elif finding.is_newest or alarm.returned_at is None or us_of(alarm.returned_at) < finding.window_us[1]:
@@ -279,7 +283,6 @@ def _fill(alarm: Alarm, finding: Finding, episode: Episode, name: str) -> None:
     alarm.level = episode.level.value
     is_rejudged = not is_new and not episode.is_continued and began_before is not None and began_before >= finding.window_us[0]
     alarm.value = episode.value if is_new or is_rejudged else worse_of(alarm.quantity, alarm.value, episode.value)
-    phase = _phase_of(finding, episode)
     alarm.version_id = phase.version_id
     alarm.limit_value = (
         phase.rule.warning if episode.level is Level.WARNING and phase.rule.warning is not None else phase.rule.alarm

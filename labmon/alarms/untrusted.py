@@ -2,7 +2,7 @@
 
 from collections.abc import Iterable
 from dataclasses import dataclass
-from datetime import datetime
+from datetime import datetime, timedelta
 
 from ingest.times import at_of
 from labmon.alarms.calls import RAISED, call_people
@@ -22,6 +22,7 @@ class UntrustedFinding:
     is_open: bool
     is_current: bool
     reasons: list[str]
+    after_s: float = 0.0
 
 
 def settle_untrusted(findings: Iterable[UntrustedFinding], now_us: int) -> list[int]:
@@ -60,6 +61,7 @@ def _new_alarm(finding: UntrustedFinding, now: datetime) -> Alarm:
         experiment_id=finding.experiment_id,
         tap_id=finding.tap.pk,
         level=AlarmLevel.ALARM,
+        began_at=now - timedelta(seconds=finding.after_s),
         raised_at=now,
         cause="; ".join(finding.reasons)[:100],
         message=untrusted_sentence(finding.tap.full_name, finding.reasons),

@@ -167,6 +167,7 @@ class Silence:
     silent_s: float
     is_shown: bool
     is_called: bool
+    usual_s: float = 0.0
 
     @property
     def words(self) -> str:
@@ -185,8 +186,8 @@ def silences_of(
     called_s = np.array([call_after_s.get(tap.pk, DEFAULT_SILENCE_S) for tap, _, _ in taps])
     found = presences(last_us, now_us, door_up, usual_s, called_s)
     return {
-        tap.pk: Silence(max((now_us - last) / 1e6, 0.0), presence is not Presence.PRESENT, presence is Presence.SILENT)
-        for (tap, _, last), presence in zip(taps, found, strict=True)
+        tap.pk: Silence(max((now_us - last) / 1e6, 0.0), presence is not Presence.PRESENT, presence is Presence.SILENT, usual)
+        for (tap, _, last), presence, usual in zip(taps, found, usual_s.tolist(), strict=True)
     }
 
 

@@ -247,7 +247,8 @@ def _judge_trust(step: Progress, own: _TapSeconds, group: Group, number: int, ju
     judged.untrusted_states[step.tap.pk] = (state, max(from_us, step.complete_us))
     if state.is_open or work.state.untrusted.is_open:
         reasons = _reasons_now(group, number, work.limits)
-        judged.untrusted.append(UntrustedFinding(step.tap, work.experiment_id, state.is_open, step.is_current, reasons))
+        about = (step.tap, work.experiment_id, state.is_open, step.is_current, reasons, work.untrusted_after_s)
+        judged.untrusted.append(UntrustedFinding(*about))
 
 
 def _folded_trust(own: _TapSeconds, state: UntrustedState, from_us: int, until_us: int, after_s: float) -> UntrustedState:

@@ -6,7 +6,7 @@ no row.
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from datetime import datetime
+from datetime import datetime, timedelta
 
 from django.db import connection, transaction
 
@@ -69,7 +69,8 @@ def _asked_taps(with_alarm: list[int], now_us: int) -> list[Tap]:
             """
             SELECT DISTINCT heard.tap_id FROM ingest_tapheard heard
             WHERE heard.tap_id = ANY(%s)
-               OR (heard.last_arrival_us < %s
+               OR (NOT EXISTS (SELECT FROM ingest_tap tap JOIN labmon_bench bench ON bench.station_id = tap.station_id
+                               WHERE tap.id = heard.tap_id AND bench.is_drill) AND heard.last_arrival_us < %s
                    AND EXISTS (SELECT FROM labmon_experiment_taps link WHERE link.tap_id = heard.tap_id))""",
             [with_alarm, now_us - round(SHOWN_AFTER_S * SECOND_US)],
         )
@@ -119,6 +120,8 @@ def _changes(
                     experiment_id=experiments[tap.pk],
                     tap=tap,
                     level=AlarmLevel.WARNING,
+                    began_at=now - timedelta(seconds=silence.silent_s),
+                    began_until=now - timedelta(seconds=max(silence.silent_s - silence.usual_s, 0.0)),
                     raised_at=now,
                     message=no_reading_sentence(_name(tap), silence.silent_s),
                 )

@@ -1,7 +1,10 @@
 """Celery's doors: each calls one function. All may run twice and side by side; a broken broker only delays them."""
 
+import logging
+
 from celery import shared_task
 from django.db import OperationalError
+from kombu.exceptions import OperationalError as BrokerFault
 
 from ingest.store.days.check import check_days
 from ingest.store.days.left import sweep_left_files
@@ -9,6 +12,8 @@ from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
 from labmon.alarms.holding import end_due_holds
 from labmon.benches.keeping import forget_old_days
+from labmon.events.steps import take_steps
+from labmon.events.telling import tell_due
 from labmon.experiments.consent import expire_requests
 from labmon.pipeline.doubting import cast_doubts
 from labmon.pipeline.nightly import make_day_statistics
@@ -21,8 +26,12 @@ from labmon.runs.making import make_waiting_ledgers
 from labmon.runs.starting import start_due_runs
 from labmon.tell.sending import send_waiting
 
+log = logging.getLogger(__name__)
+HINT_EXPIRES_S = 5.0
 #: A run of judging ends after this and leaves the rest to the next, so that no task is long.
 PROCESS_FOR_S = 20.0
+#: So long messages are handed over at a time.
+TELL_FOR_S = 20.0
 #: So long days are sealed at a time: after months without it (or with a new demo lab) judging keeps its share of the machine.
 SEAL_DAYS_FOR_S = 20.0
 #: So long day files are read again every hour.
@@ -48,14 +57,16 @@ def _task(name: str, time_limit: int):  # type: ignore[no-untyped-def]
 
 @_task("process", 120)
 def process_task() -> None:
-    """Judge what is touched."""
-    process_touched(for_s=PROCESS_FOR_S, is_paced=True)
+    """Judge what is touched; where that changed alarms, ask for telling at once."""
+    if process_touched(for_s=PROCESS_FOR_S, is_paced=True).alarms:
+        ask_for_telling()
 
 
 @_task("silence", 60)
 def silence_task() -> None:
-    """Look for taps that have fallen silent."""
-    judge_silence()
+    """Look for taps that have fallen silent; where that changed alarms, ask for telling at once."""
+    if judge_silence():
+        ask_for_telling()
 
 
 @_task("end_holds", 60)
@@ -133,10 +144,12 @@ def day_statistics_task() -> None:
     make_day_statistics(for_s=DAY_STATISTICS_FOR_S)
 
 
-@_task("send_mails", 300)
-def send_mails_task() -> None:
-    """Send what waits in the outbox."""
-    send_waiting()
+@_task("tell", 120)
+def tell_task() -> None:
+    """Write calls that are due, pass on what nobody took, hand over what waits in the outbox."""
+    tell_due()
+    take_steps()
+    send_waiting(for_s=TELL_FOR_S)
 
 
 @_task("compact", 1800)
@@ -145,3 +158,11 @@ def compact_task() -> None:
     while compact_closed_days():
         pass
     prune_checkpoints()
+
+
+def ask_for_telling() -> None:
+    """A hint: beat asks anyhow."""
+    try:
+        tell_task.apply_async(expires=HINT_EXPIRES_S, retry=False)
+    except (BrokerFault, OSError) as fault:
+        log.warning("hint_failed", extra={"fault": str(fault)})

@@ -69,7 +69,7 @@ def test_comes_back_by_itself_once_and_calls(alarm, owner):
     assert end_due_holds(hold.until - timedelta(seconds=1)) == [] and state(alarm) == "shelved"
     assert end_due_holds(hold.until) == [hold.pk] and state(alarm) == "unacknowledged"
     assert end_due_holds(hold.until) == [] and end_due_holds(hold.until + timedelta(hours=1)) == []
-    assert Message.objects.get().key == f"alarm-{alarm.pk}-back-{hold.pk}"
+    assert f"-back-{hold.pk}-to-" in Message.objects.get().key and Message.objects.get().kind == "back"
     last = AuditEntry.objects.order_by("-pk").first()
     assert (last.person, last.person_name, last.action, last.reason) == (None, "labmon", "unshelve", "its time was over")
     assert AuditEntry.objects.count() == 2

@@ -47,6 +47,7 @@ def revoke_key(request: HttpRequest, station: str, key_id: int) -> HttpResponse:
 def answer_doubts(request: HttpRequest, station: str) -> HttpResponse:
     """A person's word on new firmware, or on ports that exchanged their light."""
     found = visible_station(request.user, station)
+    require(request.user, Action.CALIBRATE, found)
     asked = Doubt.objects.filter(tap__station=found, pk__in=[one for one in request.POST.getlist("doubt") if one.isdecimal()])
     try:
         for doubt in asked.order_by("pk"):

@@ -119,10 +119,11 @@ def main() -> None:
     trials = int(sys.argv[1]) if len(sys.argv) > 1 else 100
     with throw_away_lab() as folder:
         keys = make_lab()
-        celery = [sys.executable, "-m", "celery", "-A", "labmon", "--quiet"]
+        beat = [sys.executable, "-m", "celery", "-A", "labmon", "--quiet", "beat", "--schedule", str(Path(folder) / "beat"),
+                "--loglevel", "ERROR"]
+        workers = [[sys.executable, "-m", "labmon.worker", lane, "--log-level", "ERROR"] for lane in ("prompt", "long")]
         log = (folder / "celery.log").open("wb")
-        runs = [subprocess.Popen([*celery, *words, "--loglevel", "ERROR"], env=os.environ.copy(), stdout=log, stderr=log)
-                for words in (["worker", "--concurrency", "2"], ["beat", "--schedule", str(Path(folder) / "beat")])]
+        runs = [subprocess.Popen(words, env=os.environ.copy(), stdout=log, stderr=log) for words in (*workers, beat)]
         try:
             with web_process() as (port, _), sync_playwright() as playwright:
                 senders = Senders(port, keys)

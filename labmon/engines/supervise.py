@@ -174,10 +174,9 @@ class Supervisor:
         self._add("web", [sys.executable, "-m", "labmon.web", "--socket", str(number)], number)
 
     def _start_others(self) -> None:
-        celery = [sys.executable, "-m", "celery", "-A", "labmon"]
-        self._add("worker", [*celery, "worker", "--concurrency", "2", "--loglevel", "INFO", "--without-gossip",
-                             "--without-mingle"])
-        self._add("beat", [*celery, "beat", "--loglevel", "INFO", "--pidfile", ""])
+        for name, lane in (("worker", "prompt"), ("worker-long", "long")):
+            self._add(name, [sys.executable, "-m", "labmon.worker", lane])
+        self._add("beat", [sys.executable, "-m", "celery", "-A", "labmon", "beat", "--loglevel", "INFO", "--pidfile", ""])
         if self.wish.has_mqtt:
             self._add("mqtt", [sys.executable, str(PROJECT / "manage.py"), "run_mqtt"])
         if self.wish.has_demo:

@@ -20,8 +20,9 @@ from labmon.pipeline.work import TapWork, floor_s
 if TYPE_CHECKING:
     from labmon.pipeline.judge import Judged
 
-#: A tap's last second counts as complete when nothing came for an interval and this much.
-QUIET_SLACK_US: Final = SECOND_US
+#: A tap's last second counts as complete when nothing came for this long. The tap's interval does not count: a slow tap has
+#: one reading in a second, which would else stay open until about its next one.
+QUIET_US: Final = 2 * SECOND_US
 CURRENT_INTERVALS: Final = 3.0
 
 
@@ -115,7 +116,7 @@ class Progress:
         """When the last second will count as complete; None if it does."""
         if not self.stretch.is_newest or not len(self.readings) or self.complete_us > self.last_us:
             return None
-        return max(quiet_from_us(self.readings, self.work), now_us + 1)
+        return max(quiet_from_us(self.readings), now_us + 1)
 
     def kept_states(self, flat: list[Any]) -> list[tuple[int, int, TapState]]:
         """Checkpoints to keep: at the tap's very beginning, and at the cut where it is a whole ten minutes."""
@@ -168,15 +169,15 @@ def progress_of(stretch: Stretch, found: Found, now_us: int) -> Progress:
         complete_us = stretch.start_us
         if len(readings):
             open_us = floor_s(int(readings.at_us[-1]))
-            complete_us = open_us + SECOND_US if now_us >= quiet_from_us(readings, stretch.work) else open_us
+            complete_us = open_us + SECOND_US if now_us >= quiet_from_us(readings) else open_us
     complete_us = max(complete_us, stretch.start_us)
     holes = tuple((hole.from_us, hole.until_us) for hole in found.holes)
     return Progress(stretch, readings, complete_us, _cut(stretch.start_us, complete_us), now_us, holes)
 
 
-def quiet_from_us(readings: Readings, work: TapWork) -> int:
-    """When the server's clock is an interval (and a little) past the newest arrival."""
-    return int(readings.arrival_us.max()) + max(round(work.interval_s * SECOND_US), SECOND_US) + QUIET_SLACK_US
+def quiet_from_us(readings: Readings) -> int:
+    """When the server's clock is a little past the newest arrival."""
+    return int(readings.arrival_us.max()) + QUIET_US
 
 
 def _cut(start_us: int, complete_us: int) -> int:

@@ -11,6 +11,7 @@ from labmon.api.health import PATIENCE_S, REMEDIES, missing_services
 from labmon.benches.keeping import rule_text
 from labmon.disk.queries import Forecast, Kept, LabHealth, lab_health
 from labmon.people.rights import Action, require
+from labmon.pipeline.lanes import Lane, queue_of
 from labmon.screen.door import for_people
 from labmon.screen.present import MISSING, age_text, count_text, number_text
 
@@ -91,10 +92,10 @@ def size_text(size: float) -> str:
 
 
 def _queue_length() -> int | None:
-    """Tasks that no worker has taken; None where the broker does not answer."""
+    """Tasks of all lanes that no worker has taken; None where the broker does not answer."""
     address = settings.CHANNEL_LAYERS["default"]["CONFIG"]["hosts"][0]
     try:
         with redis.Redis.from_url(address, socket_connect_timeout=PATIENCE_S, socket_timeout=PATIENCE_S) as link:
-            return int(link.llen(settings.CELERY_TASK_DEFAULT_QUEUE))
+            return sum(int(link.llen(queue_of(lane))) for lane in Lane)
     except (redis.RedisError, OSError):
         return None

@@ -156,16 +156,17 @@ def test_the_set_comes_up_and_goes_down(containers):
     assert prepare.wait(120) == 0, containers.log("prepare")
     assert "Sign in as manager" in containers.log("prepare")
     assert "collecting" not in containers.log("prepare"), "the image brings its static files"
-    web, worker, beat = (containers.start(name) for name in ("web", "worker", "beat"))
+    web, worker, long_worker, beat = (containers.start(name) for name in ("web", "worker", "worker-long", "beat"))
     assert until_true(containers.health, 60.0), containers.log("web")
-    ping = [word for word in compose()["services"]["worker"]["healthcheck"]["test"] if word != "CMD"]
-    assert until_true(lambda: containers.run(ping).returncode == 0, 60.0), containers.log("worker")
+    for name in ("worker", "worker-long"):
+        ping = [word for word in compose()["services"][name]["healthcheck"]["test"] if word != "CMD"]
+        assert until_true(lambda words=ping: containers.run(words).returncode == 0, 60.0), containers.log(name)
     assert until_true(lambda: "beat_lock_taken" in containers.log("beat"), 30.0), containers.log("beat")
     services = containers.run(["python", "-c", "import urllib.request; print(urllib.request.urlopen("
                                f"'http://127.0.0.1:{containers.port}/health/services').status)"])
     assert services.stdout.strip() == "200", services.stderr
     began_s = time.monotonic()
-    for process in (web, worker, beat):
+    for process in (web, worker, long_worker, beat):
         assert child.stop(process, how=signal.SIGTERM, within_s=20.0), "stops by itself when asked"
     print(f"[containers] stopped in {time.monotonic() - began_s:.1f} s")
 

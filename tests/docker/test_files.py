@@ -26,7 +26,8 @@ def test_yaml_is_clean():
 
 
 def test_processes_are_all_there():
-    assert set(services()) == {"prepare", "web", "worker", "beat", "mqtt", "database", "broker", "mqtt-broker", "proxy"}
+    assert set(services()) == {"prepare", "web", "worker", "worker-long", "beat", "mqtt", "database", "broker", "mqtt-broker",
+                               "proxy"}
 
 
 @pytest.mark.parametrize("name", sorted(services()))
@@ -50,7 +51,7 @@ def test_only_the_proxy_is_reachable_from_outside_unless_the_mqtt_broker_is_aske
     assert [name for name, service in services().items() if "profiles" in service] == ["mqtt", "mqtt-broker"]
 
 
-@pytest.mark.parametrize("name", ["prepare", "web", "worker", "beat", "mqtt"])
+@pytest.mark.parametrize("name", ["prepare", "web", "worker", "worker-long", "beat", "mqtt"])
 def test_our_processes_have_few_rights(name):
     service = services()[name]
     assert service["read_only"] is True

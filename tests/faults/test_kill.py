@@ -30,8 +30,8 @@ from tests.running_lab import RunningLab, processes_of, until_true
 
 pytestmark = pytest.mark.slow
 
-WORDS = {"web": "labmon.web", "worker": "celery -A labmon worker", "beat": "celery -A labmon beat", "database": "bin/postgres",
-         "broker": "valkey-server"}
+WORDS = {"web": "labmon.web", "worker": "labmon.worker prompt", "long worker": "labmon.worker long",
+         "beat": "celery -A labmon beat", "database": "bin/postgres", "broker": "valkey-server"}
 BACK_WITHIN_S = 40.0
 #: No kill in the first and the last seconds of the course.
 MARGIN_S = 4.0
@@ -46,7 +46,7 @@ def test_undisturbed_run_has_the_episodes_worked_out_by_hand(undisturbed):
 
 @pytest.mark.parametrize(("victims", "seed"), [
     (("web", "web", "web"), 11),
-    (("worker", "worker", "beat", "broker"), 12),
+    (("worker", "worker", "long worker", "beat", "broker"), 12),
     (("database", "database"), 13),
     (("web", "worker", "beat", "database", "broker"), 15),
 ], ids=lambda value: "+".join(value) if isinstance(value, tuple) else str(value))

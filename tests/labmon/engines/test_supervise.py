@@ -93,8 +93,8 @@ def test_killed_supervisor_leaves_no_child_and_the_next_start_works(place):
 
 
 @pytest.mark.slow
-@pytest.mark.parametrize("words", ["labmon.web", "celery -A labmon worker", "celery -A labmon beat", "bin/postgres",
-                                   "valkey-server"])
+@pytest.mark.parametrize("words", ["labmon.web", "labmon.worker prompt", "labmon.worker long", "celery -A labmon beat",
+                                   "bin/postgres", "valkey-server"])
 def test_killed_part_comes_back(place, words):
     """kill -9 of any one part: it is started again, and the lab is whole again."""
     with RunningLab(place) as lab:

@@ -121,6 +121,20 @@ def test_fast_tap_in_shuffled_batches(seed):
     assert episodes(limit) == expected
 
 
+def test_slow_tap_is_judged_at_once_and_its_second_closed_two_seconds_later():
+    """Its next reading is two minutes away."""
+    limit = make_limit(make_tap(interval_s=120.0), on_delay_s=0.0)
+    feed = Feed(limit.tap, np.array([30.0, 30.0, 18.0]), 120 * S)
+    for index in range(3):
+        feed.send(index)
+    last_us, told = int(feed.at_us[-1]), [(240.0, 240.0, None, "alarm", 18.0)]
+    assert episodes(limit) == told and TapNow.objects.get(tap=limit.tap).open_until_us == last_us + 2 * S
+    process_touched(now_us=last_us + 2 * S - 1)
+    assert TapNow.objects.get(tap=limit.tap).open_until_us is not None
+    process_touched(now_us=last_us + 2 * S)
+    assert episodes(limit) == told and TapNow.objects.get(tap=limit.tap).open_until_us is None
+
+
 def test_live_second_by_second_is_the_same_as_at_once():
     day = excursion((30, 10), (22, 25), (18, 25), (30, 30))
     limits = [make_limit(make_tap(), warning=23.0, on_delay_s=10.0, off_delay_s=10.0) for _ in range(2)]

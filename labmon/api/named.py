@@ -18,13 +18,13 @@ def tap_path(tap: Tap) -> str:
 
 def tap_named(person: Person, station: str, tap: str) -> Tap:
     """The tap of an address; 404 where it is not there or not for this person."""
-    return _one(taps_visible_to(person).select_related("station"), "There is no such tap for you.",
+    return one_named(taps_visible_to(person).select_related("station"), "There is no such tap for you.",
                 "GET /api/v1/stations lists the taps that you may see.", station__name=station, name=tap)
 
 
 def station_named(person: Person, station: str) -> Station:
     """The station of an address; 404 where it is not there or not for this person."""
-    return _one(stations_visible_to(person), "There is no such station for you.",
+    return one_named(stations_visible_to(person), "There is no such station for you.",
                 "GET /api/v1/stations lists those that you may see.", name=station)
 
 
@@ -40,11 +40,12 @@ def tap_in_body(person: Person, path: str, *, field: str) -> Tap:
 
 def experiment_named(person: Person, number: int) -> Experiment:
     """The experiment of an address."""
-    return _one(experiments_visible_to(person), "There is no such experiment for you.",
+    return one_named(experiments_visible_to(person), "There is no such experiment for you.",
                 "GET /api/v1/experiments lists those that you may see.", pk=number)
 
 
-def _one(rows: QuerySet[Any], title: str, detail: str, **wanted: Any) -> Any:
+def one_named(rows: QuerySet[Any], title: str, detail: str, **wanted: Any) -> Any:
+    """The row that is wanted; 404 with these words where it is not there or not for this person."""
     row = rows.filter(**wanted).first()
     if row is None:
         raise not_found(title, detail)

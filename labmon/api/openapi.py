@@ -6,6 +6,7 @@ from typing import Any
 from django.http import HttpRequest, HttpResponse
 
 from labmon.api.answer import json_answer
+from labmon.api.clearance_shapes import CLEARANCE_SHAPES
 from labmon.api.log_shapes import LOG_SHAPES, TAG
 from labmon.api.schemas import ALARM_STATES, ID, MEASURED, NAME, NAMED, TIME, Schema, ref
 from labmon.api.statistics_shapes import STATISTICS
@@ -133,6 +134,18 @@ PATHS: dict[str, dict[str, Operation]] = {
         "Set, lower or lift (value null) a floor for a bench or one of its taps; managers only.",
         {201: answer("The floor, and the limits that ask for less.", "NewlySetFloor")}, parameters=(in_path("station", NAME),),
         body="NewFloor", faults=WRITE)},
+    f"{BASE}/experiments/{{id}}/clearance": {"get": call(
+        "Will it hold? Past windows of the run's length, replayed from today's state: k of N, the bound, what failed and why. "
+        "Writes nothing; of a start in the past it says what would have been said then.",
+        {200: answer("The answer, with all it rests on.", "Clearance")},
+        parameters=(in_path("id", ID), in_query("start", TIME, "When the run would start; now if left out."),
+                    in_query("length_s", {"type": "number", "minimum": 60, "maximum": 2_678_400, "default": 43_200},
+                             "How long it would last, s."),
+                    in_query("allowed_s", {"type": "number", "minimum": 0, "default": 0},
+                             "Seconds beyond the limit that it bears.")))},
+    f"{BASE}/runs/{{id}}/clearance": {"get": call(
+        "The clearance of a declared run; of one that has begun, what would have been said at its start.",
+        {200: answer("The answer, with all it rests on.", "RunClearance")}, parameters=(in_path("id", ID),))},
     f"{BASE}/alarms": {"get": call(
         "Alarms, newest first.", {200: answer("The alarms.", "Alarms")},
         parameters=(in_query("state", {"type": "string", "enum": list(ALARM_STATES)}, "Only in this state."),
@@ -205,7 +218,7 @@ def document() -> dict[str, Any]:
                  "Additions are free, changes are not: clients must accept members that they do not know."},
         "paths": PATHS,
         "components": {
-            "schemas": NAMED | {"Statistics": STATISTICS} | LOG_SHAPES,
+            "schemas": NAMED | {"Statistics": STATISTICS} | CLEARANCE_SHAPES | LOG_SHAPES,
             "securitySchemes": {
                 "personKey": {"type": "http", "scheme": "bearer", "description": "A person's key."},
                 "session": {"type": "apiKey", "in": "cookie", "name": "sessionid",

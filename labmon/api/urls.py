@@ -5,6 +5,7 @@ from django.urls import path, re_path, register_converter
 from ingest.models import NAME_PATTERN
 from labmon.api.alarms import get_alarms, post_acknowledge, post_shelve, post_unshelve
 from labmon.api.call import by_method, open_to_all, unknown_address
+from labmon.api.clearance import get_clearance, get_run_clearance
 from labmon.api.experiments import get_experiments, get_limits, post_experiment, post_limit
 from labmon.api.floors import get_floors, post_floor
 from labmon.api.holds import get_holds, post_end_hold, post_hold
@@ -64,6 +65,8 @@ urlpatterns = [
     path("limit-requests/<row:request_id>/withdraw", by_method(POST=post_withdraw), name="withdraw-limit-request"),
     path("floors", by_method(GET=get_floors), name="floors"),
     path("stations/<short:station>/floors", by_method(POST=post_floor), name="set-floor"),
+    path("experiments/<row:experiment_id>/clearance", by_method(GET=get_clearance), name="clearance"),
+    path("runs/<row:run_id>/clearance", by_method(GET=get_run_clearance), name="run-clearance"),
     path("alarms", by_method(GET=get_alarms), name="alarms"),
     path("alarms/<row:alarm_id>/acknowledge", by_method(POST=post_acknowledge), name="acknowledge"),
     path("alarms/<row:alarm_id>/shelve", by_method(POST=post_shelve), name="shelve"),

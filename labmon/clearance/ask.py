@@ -26,9 +26,9 @@ from labmon.clearance.limits import AskedLimit, limits_at
 from labmon.errors import WriteError
 from labmon.experiments.models import Experiment
 
-LONGEST_S: Final = 30 * 86_400.0
+LONGEST_S: Final = 31 * 86_400.0
 SHORTEST_S: Final = 60.0
-FURTHEST_AHEAD_US: Final = 60 * 86_400 * US_PER_S
+FURTHEST_AHEAD_US: Final = 400 * 86_400 * US_PER_S
 #: A newest reading older than this (or than three intervals of a slow tap) is no reading of now.
 STALE_US: Final = 600 * US_PER_S
 #: The room's temperature now says something about a run that starts within this.
@@ -93,11 +93,11 @@ def checked_question(start_us: int, length_s: float, allowed_s: float, asked_us:
         WriteError: Length, allowed seconds or start out of range.
     """
     if not SHORTEST_S <= length_s <= LONGEST_S:
-        raise WriteError("length_s", f"A run of {length_s:g} s cannot be asked about.", "Choose from a minute to 30 days.")
+        raise WriteError("length_s", f"A run of {length_s:g} s cannot be asked about.", "Choose from a minute to 31 days.")
     if not 0.0 <= allowed_s < length_s:
         raise WriteError("allowed_s", f"{allowed_s:g} s beyond the limit cannot be.", "Choose from 0 to the run's length.")
     if start_us > asked_us + FURTHEST_AHEAD_US:
-        raise WriteError("start", "The start is too far ahead.", "Choose one within the next 60 days.")
+        raise WriteError("start", "The start is too far ahead.", "Choose one within the next 400 days.")
     return Question(start_us=start_us, length_s=length_s, allowed_s=allowed_s, asked_us=asked_us)
 
 

@@ -92,17 +92,16 @@ def _spool(tap: Tap, now: datetime) -> Point:
 
 def _clock(station: Station, now: datetime) -> list[Point]:
     """The newest boot's clock, and readings that were counted and never came."""
-    boots = list(StationBoot.objects.filter(station=station).order_by("-last_arrival_us")[:2])
-    if not boots:
+    newest = StationBoot.objects.filter(station=station).order_by("-last_arrival_us").first()
+    if newest is None:
         return [Point("clock", station.name, Standing.UNKNOWN, "No boot is known: the readings came as a file.")]
-    newest = boots[0]
     clock = Point("clock", station.name, Standing.READY, "The station's stamps agree with the server.")
     if newest.clock_fault:
         clock = Point("clock", station.name, Standing.LOOK, f"{newest.clock_fault}.".replace("..", "."),
                       "Set the station's clock; until then the server times its readings.")
     elif newest.is_server_timed:
         clock = Point("clock", station.name, Standing.LOOK, "The server times its readings.", "Set the station's clock.")
-    missing = sum(one.count for one in troubles_of(station, boots, {}, us_of(now)).missing if one.boot == newest.boot)
+    missing = sum(one.count for one in troubles_of(station, {}, us_of(now)).missing if one.boot == newest.boot)
     if not missing:
         return [clock]
     return [clock, Point("spool empty", station.name, Standing.LOOK, f"{missing} readings were counted and have not come.",

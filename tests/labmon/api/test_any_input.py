@@ -34,7 +34,7 @@ def filled(path, one="bench-a", two="in", number="1"):
 @given(st.sampled_from(READS), queries)
 def test_any_query(read_lab, path, query):
     answer = read_lab.manager.get(filled(path, number=str(read_lab.experiment.pk)), **query)
-    assert answer.status_code in {200, 400}
+    assert answer.status_code in {200, 400} or ("/runs/" in path and answer.status_code == 404)     # the lab has no run
     if answer.streaming:
         b"".join(answer.streaming_content)
 

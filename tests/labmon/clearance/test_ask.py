@@ -190,8 +190,8 @@ def test_no_limit_and_no_reading():
 
 
 @pytest.mark.parametrize(("start_us", "length_s", "allowed_s", "field"), [
-    (0, 10.0, 0.0, "length_s"), (0, 31 * 86_400.0, 0.0, "length_s"), (0, 3600.0, -1.0, "allowed_s"),
-    (0, 3600.0, 3600.0, "allowed_s"), (61 * DAY_US, 3600.0, 0.0, "start"), (0, math.nan, 0.0, "length_s")])
+    (0, 10.0, 0.0, "length_s"), (0, 32 * 86_400.0, 0.0, "length_s"), (0, 3600.0, -1.0, "allowed_s"),
+    (0, 3600.0, 3600.0, "allowed_s"), (401 * DAY_US, 3600.0, 0.0, "start"), (0, math.nan, 0.0, "length_s")])
 def test_questions_are_bounded(start_us, length_s, allowed_s, field):
     with pytest.raises(WriteError) as refused:
         checked_question(start_us, length_s, allowed_s, 0)

@@ -4,6 +4,7 @@ from labmon.ahead.models import AheadDue, AheadScore, LimitOutlook
 from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold
 from labmon.audit.models import AuditEntry
 from labmon.benches.models import Bench, ClientState, DoorHour, DoorRefusal, KeyUse
+from labmon.clearance.models import BackTestDue, BackTestPass, LimitBackTest, RunClearance, RunWatch
 from labmon.drills.models import Drill
 from labmon.events.models import CallRules, Event, OnCall
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitFloor, LimitRequest, LimitVersion
@@ -13,9 +14,9 @@ from labmon.runs.models import Run, RunLedger, RunLimit, RunTap
 from labmon.tell.models import Delivery, DeliveryTry, Message, PushDevice, QuietHours, SigningKey, Webhook
 
 __all__ = [
-    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "Bench", "CallRules", "ClientState",
-    "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour", "DoorRefusal", "Drill", "Event", "Experiment",
-    "FoldCheckpoint", "KeyUse", "Limit", "LimitFloor", "LimitOutlook", "LimitRequest", "LimitVersion", "LogEntry",
-    "LogEntryBefore", "Message", "OnCall", "Person", "PersonKey", "PushDevice", "QuietHours", "Run", "RunLedger", "RunLimit",
-    "RunTap", "SigningKey", "Webhook",
+    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "BackTestDue", "BackTestPass", "Bench",
+    "CallRules", "ClientState", "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour", "DoorRefusal", "Drill",
+    "Event", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitBackTest", "LimitFloor", "LimitOutlook",
+    "LimitRequest", "LimitVersion", "LogEntry", "LogEntryBefore", "Message", "OnCall", "Person", "PersonKey", "PushDevice",
+    "QuietHours", "Run", "RunClearance", "RunLedger", "RunLimit", "RunTap", "RunWatch", "SigningKey", "Webhook",
 ]

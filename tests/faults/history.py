@@ -77,11 +77,11 @@ def episodes_by_fold(tap: Tap, interval_s: float) -> list[tuple[float, float | N
 
 
 def calls_of(lab: RunningLab, taps: Sequence[Tap]) -> list[tuple[str, str, bool]]:
-    """(tap, kind of alarm, whether it was found late) of every mail about the taps."""
+    """(tap, kind of alarm, whether it was found late) of every call about the taps."""
     with psycopg.connect(lab.services["database_url"]) as database:
         return database.execute(
-            "SELECT s.name || '/' || t.name, a.kind, a.is_late FROM labmon_outboxmail m JOIN labmon_alarm a "
-            "ON a.id = split_part(m.event, '-', 2)::bigint AND m.event LIKE 'alarm-%%' JOIN ingest_tap t ON t.id = a.tap_id "
+            "SELECT s.name || '/' || t.name, a.kind, a.is_late FROM labmon_message m JOIN labmon_alarm a "
+            "ON a.event_id = m.event_id AND m.kind = 'call' JOIN ingest_tap t ON t.id = a.tap_id "
             "JOIN ingest_station s ON s.id = t.station_id WHERE s.name = ANY(%s)", [[tap.station for tap in taps]]).fetchall()
 
 

@@ -8,6 +8,7 @@ from django.http import HttpRequest, HttpResponse
 from labmon.api.answer import json_answer
 from labmon.api.clearance_shapes import CLEARANCE_SHAPES
 from labmon.api.log_shapes import LOG_SHAPES, TAG
+from labmon.api.run_shapes import RUN_SHAPES, RUN_STATES
 from labmon.api.schemas import ALARM_STATES, ID, MEASURED, NAME, NAMED, TIME, Schema, ref
 from labmon.api.statistics_shapes import STATISTICS
 
@@ -190,6 +191,35 @@ PATHS: dict[str, dict[str, Operation]] = {
     f"{BASE}/log/{{id}}/strike": {"post": call(
         "Strike an entry out: it stays readable, and a configuration change of it counts no more.",
         {200: answer("The entry.", "LogEntry")}, parameters=(in_path("id", ID),), faults=WRITE)},
+    f"{BASE}/runs": {
+        "get": call("Runs of experiments that you may see, latest start first.", {200: answer("The runs.", "Runs")},
+                    parameters=(in_query("experiment", ID, "Only of this experiment."),
+                                in_query("state", {"type": "string", "enum": list(RUN_STATES)}, "Only those that stand so."),
+                                in_query("before", {"type": "string"}, "The next of the page before."),
+                                in_query("count", {"type": "integer", "minimum": 1, "maximum": 1000, "default": 100},
+                                         "At most so many."))),
+        "post": call("Plan a run. No two of one experiment overlap.", {201: answer("The run.", "Run")}, body="NewRun",
+                     faults=WRITE)},
+    f"{BASE}/runs/{{id}}": {
+        "get": call("One run.", {200: answer("The run.", "Run")}, parameters=(in_path("id", ID),)),
+        "patch": call("Change a run.", {200: answer("The run.", "Run")}, parameters=(in_path("id", ID),), body="RunChange",
+                      faults=WRITE)},
+    **{f"{BASE}/runs/{{id}}/{word}": {"post": call(
+        text, {200: answer("The run.", "Run")}, parameters=(in_path("id", ID),), body="RunReason", is_body_required=False,
+        faults=WRITE)}
+       for word, text in (("stop", "End a run that is under way, now."), ("cancel", "Take back a run that has not begun."))},
+    f"{BASE}/runs/{{id}}/ledger": {
+        "get": call("A run's ledger: every second good, below limit, untrusted or no reading.",
+                    {200: answer("The newest version that is made, or the one asked for.", "Ledger")},
+                    parameters=(in_path("id", ID), in_query("version", ID, "This version."),
+                                in_query("first", {"type": "integer", "minimum": 0}, "Intervals from this one on."))),
+        "post": call("Ask for the next version, with what is known now and with edits.",
+                     {202: answer("It is being made.", "Ledger")}, parameters=(in_path("id", ID),), body="NewLedger",
+                     faults=WRITE)},
+    f"{BASE}/runs/{{id}}/ledger/change": {"get": call(
+        "Two versions of a ledger compared, second by second.", {200: answer("What changed.", "LedgerChange")},
+        parameters=(in_path("id", ID), in_query("before", ID, "A version.", required=True),
+                    in_query("after", ID, "Another version.", required=True)))},
     f"{BASE}/readings": {"post": {
         "summary": "The station door: a batch of readings. Answered after the commit, never before.",
         "security": [{"stationKey": []}],
@@ -218,7 +248,7 @@ def document() -> dict[str, Any]:
                  "Additions are free, changes are not: clients must accept members that they do not know."},
         "paths": PATHS,
         "components": {
-            "schemas": NAMED | {"Statistics": STATISTICS} | CLEARANCE_SHAPES | LOG_SHAPES,
+            "schemas": NAMED | {"Statistics": STATISTICS} | CLEARANCE_SHAPES | LOG_SHAPES | RUN_SHAPES,
             "securitySchemes": {
                 "personKey": {"type": "http", "scheme": "bearer", "description": "A person's key."},
                 "session": {"type": "apiKey", "in": "cookie", "name": "sessionid",

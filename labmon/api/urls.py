@@ -14,6 +14,8 @@ from labmon.api.log import get_log, patch_entry, post_change, post_log, post_str
 from labmon.api.openapi import get_openapi
 from labmon.api.readings import get_readings
 from labmon.api.rehearsal import post_rehearse
+from labmon.api.run_ledgers import get_ledger, get_ledger_change, post_ledger
+from labmon.api.runs import get_run, get_runs, patch_run, post_cancel, post_run, post_stop
 from labmon.api.stations import get_stations
 from labmon.api.statistics import get_statistics
 from labmon.api.taps import get_history, get_now, patch_calibration
@@ -78,6 +80,12 @@ urlpatterns = [
     path("log/<row:entry_id>", by_method(PATCH=patch_entry), name="log-entry"),
     path("log/<row:entry_id>/change", by_method(POST=post_change), name="log-change"),
     path("log/<row:entry_id>/strike", by_method(POST=post_strike), name="log-strike"),
+    path("runs", by_method(GET=get_runs, POST=post_run), name="runs"),
+    path("runs/<row:run_id>", by_method(GET=get_run, PATCH=patch_run), name="run"),
+    path("runs/<row:run_id>/stop", by_method(POST=post_stop), name="stop-run"),
+    path("runs/<row:run_id>/cancel", by_method(POST=post_cancel), name="cancel-run"),
+    path("runs/<row:run_id>/ledger", by_method(GET=get_ledger, POST=post_ledger), name="ledger"),
+    path("runs/<row:run_id>/ledger/change", by_method(GET=get_ledger_change), name="ledger-change"),
     path("openapi.json", open_to_all(GET=get_openapi), name="openapi"),
     re_path(r"", unknown_address, name="unknown"),
 ]

@@ -16,7 +16,9 @@ from labmon.experiments.models import Limit
 from labmon.logbook.actions import write_entry
 from labmon.people.keys import make_person_key
 from labmon.people.models import Person, Role
-from tests.factories import NOON, make_experiment, make_person, make_station, make_tap, store_alarm
+from labmon.runs.ledgers import ask_ledger
+from labmon.runs.making import make_waiting_ledgers
+from tests.factories import NOON, make_experiment, make_person, make_run, make_station, make_tap, store_alarm
 from tests.labmon.permissions.rules import Who
 
 ROLES = {Who.GUEST: Role.GUEST, Who.RESEARCHER: Role.RESEARCHER, Who.NEIGHBOUR: Role.OWNER, Who.OWNER: Role.OWNER,
@@ -58,10 +60,13 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
     key = StationKey.objects.create(station=station, digest=letter.encode() * 32, hint=letter * 4)
     upload = FileImport.objects.create(tap=tap, file_name="x.csv", sha256=letter * 64)
     entry = write_entry(station, by=owner, at=NOON.replace(year=2026, month=1), text="spooled anew", picture=_picture())
+    run = make_run(experiment, timezone.now().replace(microsecond=0) - timedelta(hours=2), owner=owner)
+    ask_ledger(run, by=None)
+    make_waiting_ledgers()
     return {
         "_station": station, "bench": letter, "station": station.name, "tap": tap.name, "tap_id": tap.pk,
         "experiment_id": experiment.pk, "limit_id": limit.pk, "version_id": version.pk, "alarm_id": alarm.pk, "hold_id": hold.pk,
-        "entry_id": entry.pk, "import_id": upload.pk,
+        "entry_id": entry.pk, "import_id": upload.pk, "run_id": run.pk, "ledger_number": 1,
         "revoke-key.key_id": key.pk,                       # an argument that means something of its own to one address
         "person_id": people[Who.RESEARCHER].pk,
     }
@@ -74,7 +79,7 @@ def _picture() -> SimpleUploadedFile:
 
 
 #: What ``{id}`` of an API path is, by the word before it.
-IDS = {"experiments": "experiment_id", "alarms": "alarm_id", "holds": "hold_id", "log": "entry_id"}
+IDS = {"experiments": "experiment_id", "alarms": "alarm_id", "holds": "hold_id", "log": "entry_id", "runs": "run_id"}
 
 
 def own_row(name: str, person: Person) -> dict[str, int]:

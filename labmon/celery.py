@@ -12,6 +12,7 @@ app = Celery("labmon")
 app.config_from_object("django.conf:settings", namespace="CELERY")
 app.autodiscover_tasks(["labmon.pipeline", "labmon.tell"])
 app.autodiscover_tasks(["labmon.pipeline"], related_name="imports")
+app.autodiscover_tasks(["labmon.pipeline"], related_name="clearing")
 app.conf.beat_schedule = BEAT_SCHEDULE
 
 

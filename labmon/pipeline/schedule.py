@@ -33,6 +33,13 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
         "options": {"expires": 6 * 3600},
     },
     "statistics of closed days": _every("day_statistics", 300.0, expires=300.0),
+    "begin the night's back-test": {
+        "task": "labmon.pipeline.begin_back_test",
+        "schedule": crontab(hour="3", minute="30"),
+        "options": {"expires": 6 * 3600},
+    },
+    "walk back-tests that are due": _every("walk_back_tests", 30.0, expires=30.0),
+    "clear runs that start soon": _every("look_at_runs", 60.0, expires=60.0),
     "take up left imports": _every("take_up_left_imports", 300.0),
     "compact closed days": {
         "task": "labmon.pipeline.compact",

@@ -232,3 +232,29 @@ class FileImport(models.Model):
     known = models.IntegerField(default=0)
     set_aside = models.IntegerField(default=0)
     error = models.CharField(max_length=500, blank=True)
+
+
+class WatchedFile(models.Model):
+    """A file of the watched folder: how far it has been read, and what is wrong with it.
+
+    ``edges`` is a digest of its first and of its last read bytes: where it stands, what was read still stands, and only what
+    has been added is read. ``problem`` is empty where all is well.
+    """
+
+    tap = models.ForeignKey(Tap, models.CASCADE, related_name="watched_files")
+    name = models.CharField(max_length=255)
+    record = models.ForeignKey(FileImport, models.SET_NULL, null=True, related_name="+")
+    looked_size = models.BigIntegerField(default=0, help_text="Its bytes at the last look.")
+    changed_ns = models.BigIntegerField(default=0, help_text="When it had been changed last, at the last look.")
+    is_whole = models.BooleanField(default=False, help_text="It had been at rest: its last line counts without an end.")
+    mapping_mark = models.CharField(max_length=64, blank=True, help_text="Which state of the mapping it was looked at with.")
+    read_size = models.BigIntegerField(default=0, help_text="Bytes that have been read in.")
+    edges = models.CharField(max_length=64, blank=True)
+    lines = models.BigIntegerField(default=0, help_text="Line ends within them.")
+    is_in_order = models.BooleanField(default=True, help_text="No line was earlier than the one before it.")
+    last_at_us = models.BigIntegerField(null=True)
+    problem = models.CharField(max_length=500, blank=True)
+    changed_at = models.DateTimeField(auto_now=True, help_text="When this row changed.")
+
+    class Meta:
+        constraints = [models.UniqueConstraint(fields=["tap", "name"], name="watched_file_once")]

@@ -14,6 +14,7 @@ from ingest.announce import announce
 from ingest.files.aside import set_rows_aside
 from ingest.files.columns import COLUMNS
 from ingest.files.faults import FileFault, MappingError, MappingFault, RefusedRow
+from ingest.files.grown import Resume
 from ingest.files.mapping import Mapping, mapping_of
 from ingest.files.once import FileSoFar, Keys, judge_part, keys_of
 from ingest.files.origin import boot_of, next_sequence, rival_boots
@@ -32,6 +33,25 @@ _CONTRADICTED = ("another value is held for this instant, read in with another m
 OnProgress = Callable[[FileImport], None]
 
 
+class ReadWhole(RuntimeError):
+    """The rest of a grown file does not tell enough; read the whole file."""
+
+
+@dataclass(slots=True)
+class Order:
+    """Whether the rows came in the order of their times, and the last time."""
+
+    is_kept: bool = True
+    last_at_us: int | None = None
+
+    def follow(self, at_us: np.ndarray) -> None:
+        """The next rows."""
+        if len(at_us):
+            first_us = at_us[0] if self.last_at_us is None else self.last_at_us
+            self.is_kept = self.is_kept and bool(at_us[0] >= first_us and (np.diff(at_us) >= 0).all())
+            self.last_at_us = max(int(at_us.max()), int(first_us))
+
+
 class ImportBusy(RuntimeError):
     """Another file is being read in for this tap; try again when it is done."""
 
@@ -47,17 +67,22 @@ class ImportCounts:
     lines_left_out: int
 
 
-def import_file(record: FileImport, raw: BinaryIO, *, on_progress: OnProgress = lambda record: None) -> ImportCounts:
+def import_file(record: FileImport, raw: BinaryIO, *, on_progress: OnProgress = lambda record: None,
+                resume: Resume | None = None, order: Order | None = None) -> ImportCounts:
     """Read the whole file in with the mapping kept in ``record``; may be stopped and run again at any time.
 
+    Args:
+        resume: ``raw`` is the rest of a file that was read before (`ingest.files.grown`): counts go on from the record's.
+        order: Follows the rows' times.
     Raises:
+        ReadWhole: The rest may not be taken alone; nothing of its first part was stored.
         MappingError: The mapping does not fit the file; nothing was stored.
         FileFault: The file cannot be read on; what came before stays stored.
         ImportBusy: See there.
     """
     with _alone_on(record.tap_id):
         try:
-            return _Import(record, raw, on_progress).run()
+            return _Import(record, raw, on_progress, resume, order or Order()).run()
         except (MappingError, FileFault) as fault:
             record.error, record.finished_at = str(fault)[:500], timezone.now()
             record.save(update_fields=["error", "finished_at"])
@@ -69,20 +94,23 @@ def import_file(record: FileImport, raw: BinaryIO, *, on_progress: OnProgress = 
 class _Import:
     """One run over one file."""
 
-    def __init__(self, record: FileImport, raw: BinaryIO, on_progress: OnProgress) -> None:
+    def __init__(self, record: FileImport, raw: BinaryIO, on_progress: OnProgress, resume: Resume | None, order: Order) -> None:
         tap = record.tap
+        self._resume, self._order = resume, order
         self._record, self._tap, self._on_progress = record, tap, on_progress
         self._mapping: Mapping = mapping_of(record.rules or {}, kind=tap.kind, unit=tap.unit)
         self._boot = boot_of(self._mapping)
-        self._file = FileReader(raw, self._mapping, kind=tap.kind, unit=tap.unit)
+        self._file = FileReader(raw, self._mapping, kind=tap.kind, unit=tap.unit, shift=resume.shift if resume else 0)
         self._so_far = FileSoFar()
-        record.rows_done = record.stored = record.known = record.set_aside = 0
+        if resume is None:
+            record.rows_done = record.stored = record.known = record.set_aside = 0
         record.error, record.finished_at = "", None
 
     def run(self) -> ImportCounts:
         for number, part in enumerate(self._file.parts(ROWS_A_CHUNK)):
-            if number == 0:
+            if number == 0 and self._resume is None:
                 _check_fit(part)
+            self._check_reach(part, is_first=number == 0)
             self._take(part)
             self._on_progress(self._record)
             announce()
@@ -94,6 +122,15 @@ class _Import:
                                          "known": counts.known, "set_aside": counts.set_aside})
         return counts
 
+    def _check_reach(self, part: FileRows, *, is_first: bool) -> None:
+        """Of a rest: the lines read before reach back before the first new instant, and nothing new lies before them."""
+        self._order.follow(part.at_us)
+        if self._resume is None or not len(part):
+            return
+        is_new = part.line > self._resume.through_line
+        if not self._order.is_kept or (is_first and is_new.any() and part.at_us[is_new].min() <= part.at_us[0]):
+            raise ReadWhole
+
     @transaction.atomic
     def _take(self, part: FileRows) -> None:
         keys = keys_of(part.at_us, part.columns, COLUMNS[self._tap.kind])
@@ -104,10 +141,13 @@ class _Import:
         set_rows_aside(self._record, self._boot, refused)
         stored = self._store(part, ~verdict.is_known & ~verdict.is_contradicted)
         record = self._record
-        record.rows_done += len(part) + len(part.refused)
+        through = self._resume.through_line if self._resume else 0
+        is_counted = part.line > through
+        aside = sum(row.line > through for row in refused)
         record.stored += stored
-        record.known += int(verdict.is_known.sum())
-        record.set_aside += len(refused)
+        record.known += int((verdict.is_known & is_counted).sum())
+        record.set_aside += aside
+        record.rows_done = record.stored + record.known + record.set_aside
         record.save(update_fields=["rows_done", "stored", "known", "set_aside", "error", "finished_at"])
 
     def _held_at(self, keys: Keys) -> tuple[Keys, np.ndarray]:

@@ -83,9 +83,13 @@ def cells_of(text: str, delimiter: str) -> list[str]:
 
 
 class Table:
-    """The lines of one file under a layout: the header first, then the rows; counts what it leaves out."""
+    """The lines of one file under a layout: the header first, then the rows; counts what it leaves out.
 
-    def __init__(self, raw: BinaryIO, layout: FileLayout) -> None:
+    ``shift`` is added to the numbers of the rows, where lines between header and rows were left out.
+    """
+
+    def __init__(self, raw: BinaryIO, layout: FileLayout, *, shift: int = 0) -> None:
+        self._shift = shift
         self._lines = text_lines(raw, layout.encoding)
         self._layout = layout
         self.lines_read = 0
@@ -99,7 +103,7 @@ class Table:
     def rows(self) -> Iterator[Line]:
         """The lines that should be readings."""
         while (line := self._next()) is not None:
-            number, text = line
+            number, text = line[0] + self._shift, line[1]
             if self._is_nothing(text):
                 self.lines_left_out += 1
             elif len(text) > LINE_LIMIT:

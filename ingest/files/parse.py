@@ -47,10 +47,10 @@ class FileReader:
         FileFault: The file cannot be read on.
     """
 
-    def __init__(self, raw: BinaryIO, mapping: Mapping, *, kind: str, unit: str) -> None:
+    def __init__(self, raw: BinaryIO, mapping: Mapping, *, kind: str, unit: str, shift: int = 0) -> None:
         self._mapping = mapping
         self._kind = kind
-        self._table = Table(raw, mapping.layout)
+        self._table = Table(raw, mapping.layout, shift=shift)
         sources: list[tuple[str, ColumnName]] = [("time.column", source) for source in mapping.time.columns]
         sources += [(f"columns.{rule.name}", rule.source) for rule in mapping.columns]
         places = _places(sources, self._table.header)

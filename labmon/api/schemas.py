@@ -191,6 +191,9 @@ BATCH: Schema = {
         "boot": TEXT, "firmware": TEXT,
         "now": {"type": "object", "properties": {"at": {"type": ["string", "integer", "null"]},
                                                  "uptime_ms": {"type": ["integer", "null"]}}},
+        "client": {"type": "object", "description": "What the sending program tells of itself: a hint.", "properties": {
+            "waiting": {"type": "integer"}, "dropped": {"type": "integer"}, "restarts": {"type": "integer"}, "clock": TEXT,
+            "mute": many(TEXT)}},
         "taps": {"type": "object", "additionalProperties": {
             "type": "object", "description": COLUMNS,
             "additionalProperties": {"type": "array"}}},

@@ -24,6 +24,7 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "roll up": _every("roll_up", 10.0),
     "roll up hours and days": _every("roll_up_coarse", 120.0),
     "cast doubts": _every("cast_doubts", 15.0),
+    "read the watched folder": _every("watch_folder", 10.0),
     "seal": _every("seal", 60.0),
     "seal days": _every("seal_days", 120.0, expires=120.0),
     "read day files again": _every("check_days", 3600.0, expires=3600.0),

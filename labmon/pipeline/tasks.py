@@ -3,6 +3,7 @@
 import logging
 
 from celery import shared_task
+from django.conf import settings
 from django.db import OperationalError
 from kombu.exceptions import OperationalError as BrokerFault
 
@@ -21,6 +22,7 @@ from labmon.pipeline.process import process_touched
 from labmon.pipeline.prune import prune_checkpoints
 from labmon.pipeline.rolling import compact_closed_days, roll_up_coarse_due, roll_up_due
 from labmon.pipeline.silence import judge_silence
+from labmon.pipeline.watched import Watch
 from labmon.runs.ledgers import ask_due_ledgers
 from labmon.runs.making import make_waiting_ledgers
 from labmon.runs.starting import start_due_runs
@@ -98,6 +100,13 @@ def make_ledgers_task() -> None:
     """Ask for the ledgers of runs that have ended, and make what is asked for."""
     ask_due_ledgers()
     make_waiting_ledgers(for_s=MAKE_LEDGERS_FOR_S)
+
+
+@_task("watch_folder", 900)
+def watch_folder_task() -> None:
+    """Read in what other programs have written into the watched folder."""
+    if settings.WATCHED_FOLDER is not None and settings.WATCHED_FOLDER.is_dir():
+        Watch(settings.WATCHED_FOLDER).look()
 
 
 @_task("roll_up", 120)

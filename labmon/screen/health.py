@@ -1,18 +1,22 @@
 """The lab's own health, for managers: services, what waits, what is kept in how much room, when the disk is full."""
 
+from typing import Any
+
 import redis
 from django.conf import settings
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import render
 from django.views.decorators.http import require_safe
 
-from ingest.models import KeepRule
+from ingest.models import KeepRule, WatchedFile
 from labmon.api.health import PATIENCE_S, REMEDIES, missing_services
 from labmon.benches.keeping import rule_text
 from labmon.disk.queries import Forecast, Kept, LabHealth, lab_health
 from labmon.people.rights import Action, require
 from labmon.pipeline.lanes import Lane, queue_of
+from labmon.pipeline.watched import strange_folders
 from labmon.screen.door import for_people
+from labmon.screen.followed_view import followed_sentence
 from labmon.screen.present import MISSING, age_text, count_text, number_text
 
 #: Fewer days than this are worth a word.
@@ -37,8 +41,20 @@ def health_page(request: HttpRequest) -> HttpResponse:
         "sizes": [("The database in all", size_text(health.database)), ("Rollups in it", size_text(health.rollups))],
         "forecast": forecast_text(health.forecast),
         "faults": health.faults,
+        **_followed(),
         "rules": rules or ["raw readings are kept for ever: no rule is set"],
     })
+
+
+def _followed() -> dict[str, Any]:
+    """The watched folder: one sentence, and each file that cannot be read."""
+    folder = settings.WATCHED_FOLDER
+    is_there = folder is not None and folder.is_dir()
+    names = {f"{one.tap.station.name}/{one.tap.name}/{one.name}": one.problem
+             for one in WatchedFile.objects.exclude(problem="").select_related("tap__station").order_by("pk")[:50]}
+    sentence = followed_sentence(WatchedFile.objects.count(), list(names), strange_folders(folder) if is_there else [],
+                                 is_watched=folder is not None, is_there=is_there)
+    return {"followed": sentence, "not_read": list(names.items())}
 
 
 def health_sentence(health: LabHealth, missing: list[str]) -> str:

@@ -13,10 +13,11 @@ from ingest.files.guess import Proposal, propose
 from ingest.files.mapping import FileLayout, Mapping, layout_of, mapping_of
 from ingest.files.saved import record_import, saved_rules
 from ingest.files.written import toml_of
-from ingest.models import FileImport, Station
+from ingest.models import FileImport, Station, WatchedFile
 from labmon.people.rights import Action, require
 from labmon.pipeline.imports import begin_import, keep_upload, place_of
 from labmon.screen.door import for_people
+from labmon.screen.followed_view import followed_view
 from labmon.screen.import_forms import ColumnsForm, FileForm, LayoutForm
 from labmon.screen.import_preview import header_of, preview_of
 from labmon.screen.import_summary import summary_of
@@ -24,6 +25,7 @@ from labmon.screen.import_view import first_lines, import_view, rules_shown
 from labmon.screen.named import visible_station, visible_tap
 
 LATEST_SHOWN = 20
+FOLLOWED_SHOWN = 200
 
 
 @require_http_methods(["GET", "HEAD", "POST"])
@@ -39,7 +41,9 @@ def imports_page(request: HttpRequest, station: str) -> HttpResponse:
         keep_upload(record, form.cleaned_data["file"])
         return redirect("import-file", station=station, import_id=record.pk)
     latest = FileImport.objects.filter(tap__station=found).select_related("tap").order_by("-pk")[:LATEST_SHOWN]
-    shown = {"station": found, "form": form, "imports": [import_view(record) for record in latest]}
+    followed = WatchedFile.objects.filter(tap__station=found).select_related("tap", "record").order_by("tap__name", "name")
+    shown = {"station": found, "form": form, "imports": [import_view(record) for record in latest],
+             "followed": [followed_view(one) for one in followed[:FOLLOWED_SHOWN]]}
     return render(request, "screen/imports.html", shown, status=422 if request.method == "POST" else 200)
 
 

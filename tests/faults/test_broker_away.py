@@ -1,5 +1,9 @@
-"""The broker carries hints only: without it readings are acknowledged as before, and judged when it is back."""
+"""The broker carries hints only: without it readings are acknowledged as before, and judged when it is back.
 
+``LABMON_TEST_BROKER_AWAY_S`` says for how long it is away (12); 600 makes the ten minutes of the fault table.
+"""
+
+import os
 import shutil
 import signal
 import tempfile
@@ -21,14 +25,18 @@ from tests.faults.bench import (
     told_of,
     visitor_of,
 )
-from tests.faults.course import EPISODES
+from tests.faults.course import DURATION_S, EPISODES, SEGMENTS, stokes_course, two_port_course
 from tests.faults.figures import note_fault
 from tests.faults.history import balances, calls_of
 from tests.running_lab import RunningLab, clean_environ
 
 pytestmark = pytest.mark.slow
 
-CALM_S, AWAY_S = 10.0, 12.0
+CALM_S, SHORTEST_AWAY_S = 10.0, 12.0
+AWAY_S = max(float(os.environ.get("LABMON_TEST_BROKER_AWAY_S", SHORTEST_AWAY_S)), SHORTEST_AWAY_S)
+#: The light after the usual course is calm, as long as the broker is away for longer.
+CALM_AFTER_S = round(AWAY_S - SHORTEST_AWAY_S)
+COURSE = (*SEGMENTS, (30.0, CALM_AFTER_S)) if CALM_AFTER_S else SEGMENTS
 
 
 @pytest.fixture(scope="module")
@@ -74,7 +82,7 @@ def _hanging(broker):
 
 @pytest.mark.parametrize("go_away", [_stopped, _hanging], ids=["stopped", "hanging"])
 def test_reception_does_not_feel_it_and_judgement_catches_up(broker, lab_with, visitor_with, go_away, capsys):
-    taps = make_taps(visitor_with, go_away.__name__.strip("_"))
+    taps = make_taps(visitor_with, go_away.__name__.strip("_"), (two_port_course(1, COURSE), stokes_course(2, COURSE)))
     senders = start_senders(lab_with, taps, seed=21)
     time.sleep(CALM_S)
     away_from_s = time.monotonic()
@@ -83,14 +91,14 @@ def test_reception_does_not_feel_it_and_judgement_catches_up(broker, lab_with, v
     time.sleep(max(away_from_s + AWAY_S - time.monotonic(), 0.0))
     come_back()
     away_until_s = time.monotonic()
-    await_all_sent(senders, LONGEST_RUN_S)
+    await_all_sent(senders, LONGEST_RUN_S + CALM_AFTER_S)
     judged_s = await_judged(lab_with)
     calm_s, away_s = _answer_times(senders, 0.0, away_from_s), _answer_times(senders, away_from_s, away_until_s)
     with capsys.disabled():
         print(f"\n[broker {go_away.__name__.strip('_')}] answer took {_words(calm_s)} before, {_words(away_s)} while away; "
               f"a person's write took {write_s:.2f} s then; judged {judged_s:.1f} s after the last acknowledgement")
     total = balances(visitor_with, taps, senders)
-    note_fault(f"broker {go_away.__name__.strip('_')}", f"for {AWAY_S:.0f} s of 40 s of sending", total,
+    note_fault(f"broker {go_away.__name__.strip('_')}", f"for {AWAY_S:.0f} s of {DURATION_S + CALM_AFTER_S} s of sending", total,
                calls=len(calls_of(lab_with, taps)),
                recovered=f"reception did not feel it; judged {judged_s:.1f} s after the last acknowledgement",
                also=f"answer took {_words(calm_s)} before, {_words(away_s)} while away")

@@ -49,6 +49,8 @@ class AlarmRow:
     is_withdrawn: bool
     shelved_until: datetime | None
     earlier_bounds: list[tuple[datetime, datetime | None]]
+    event_id: int | None = None
+    is_drill: bool = False
 
     @property
     def is_open(self) -> bool:
@@ -98,6 +100,11 @@ def _behind(rows: QuerySet[Alarm], alarm_id: int) -> QuerySet[Alarm]:
     return rows.filter(Q(raised_at__lt=raised_at) | Q(raised_at=raised_at, pk__lt=alarm_id))
 
 
+def alarm_rows_of(rows: QuerySet[Alarm]) -> list[AlarmRow]:
+    """The rows of a query, newest first."""
+    return [_row(alarm) for alarm in _loaded(rows).order_by("-raised_at", "-pk")]
+
+
 def alarm_row(alarm_id: int, person: Person) -> AlarmRow | None:
     """One alarm, None if there is none that ``person`` may see."""
     alarm = _loaded(alarms_visible_to(person)).filter(pk=alarm_id).first()
@@ -105,7 +112,7 @@ def alarm_row(alarm_id: int, person: Person) -> AlarmRow | None:
 
 
 def _loaded(rows: QuerySet[Alarm]) -> QuerySet[Alarm]:
-    return rows.select_related("tap__station", "experiment", "acknowledged_by").prefetch_related(
+    return rows.select_related("tap__station", "experiment", "acknowledged_by", "event").prefetch_related(
         Prefetch("earlier_bounds", AlarmBounds.objects.order_by("replaced_at", "pk"))
     )
 
@@ -137,6 +144,8 @@ def _row(alarm: Alarm) -> AlarmRow:
         is_withdrawn=alarm.is_withdrawn,
         shelved_until=alarm.shelved_until if alarm.state == AlarmState.SHELVED else None,
         earlier_bounds=[(one.raised_at, one.returned_at) for one in alarm.earlier_bounds.all()],
+        event_id=alarm.event_id,
+        is_drill=alarm.event is not None and alarm.event.is_drill,
     )
 
 

@@ -38,7 +38,8 @@ def alarm_facts(row: AlarmRow) -> dict[str, Any]:
     return ({"id": row.id, "kind": row.kind, "experiment": row.experiment_id, "tap": row.tap,
              "quantity": row.quantity or None, "level": row.level, "state": row.state,
              "acknowledged_by": row.acknowledged_by or None, "note": row.note, "value": row.value, "limit": row.limit,
-             "cause": row.cause or None, "message": row.message, "is_late": row.is_late, "is_withdrawn": row.is_withdrawn,
+             "cause": row.cause or None, "event": row.event_id, "is_drill": row.is_drill,
+             "message": row.message, "is_late": row.is_late, "is_withdrawn": row.is_withdrawn,
              "shelved_until": rfc3339(row.shelved_until),
              "earlier_bounds": [{"raised_at": rfc3339(raised_at), "returned_at": rfc3339(returned_at)}
                                 for raised_at, returned_at in row.earlier_bounds]}

@@ -164,6 +164,19 @@ PATHS: dict[str, dict[str, Operation]] = {
     f"{BASE}/alarms/{{id}}/unshelve": {"post": call(
         "End every shelving that keeps an alarm quiet; where there is none nothing changes.",
         {200: answer("The alarm.", "Alarm")}, parameters=(in_path("id", ID),), faults=WRITE)},
+    f"{BASE}/stations/{{station}}": {"patch": call(
+        "Say what a bench shares with others: room, laser, logger, network.", {200: answer("What it shares now.", "Shared")},
+        parameters=(in_path("station", NAME),), body="StationChange", faults=WRITE)},
+    f"{BASE}/events": {"get": call(
+        "Events, newest first: alarms that start together and share something are one.", {200: answer("The events.", "Events")},
+        parameters=(in_query("before", ID, "Only older ones: ids below this."),
+                    in_query("count", {"type": "integer", "minimum": 1, "maximum": 200, "default": 50}, "At most so many.")),
+        faults=(400, 401))},
+    f"{BASE}/events/{{id}}": {"get": call("One event.", {200: answer("The event.", "Event")},
+                                         parameters=(in_path("id", ID),))},
+    f"{BASE}/events/{{id}}/acknowledge": {"post": call(
+        "Take an event: all its alarms are acknowledged; a second time changes nothing.", {200: answer("The event.", "Event")},
+        parameters=(in_path("id", ID),), body="Acknowledgement", is_body_required=False, faults=WRITE)},
     f"{BASE}/holds": {"get": call("What is kept quiet now, by whom, why and until when.", {200: answer("The holds.", "Holds")},
                                   faults=(400, 401))},
     f"{BASE}/holds/{{id}}/end": {"post": call(

@@ -61,7 +61,8 @@ TAP = shape({
 }, text="newest_at: data time of the newest reading; last_heard_at: arrival on the server's clock.")
 
 STATION = shape({
-    "name": NAME, "room": or_null(TEXT), "health": TEXT, "last_heard_at": or_null(TIME), "firmware": or_null(TEXT),
+    "name": NAME, "room": or_null(TEXT), "laser": or_null(TEXT), "logger": or_null(TEXT), "network": or_null(TEXT),
+    "health": TEXT, "last_heard_at": or_null(TIME), "firmware": or_null(TEXT),
     "clock_offset_s": or_null(NUMBER), "clock_fault": or_null(TEXT), "is_server_timed": YES_NO, "link_lost_at": or_null(TIME),
     "taps": many(TAP),
 }, text="clock_offset_s: arrival minus the station's clock, the smallest seen in this boot; link_lost_at: when an MQTT broker "
@@ -115,11 +116,22 @@ ALARM = shape({
     "level": {"type": "string", "enum": ["warning", "alarm"]}, "state": {"type": "string", "enum": list(ALARM_STATES)},
     "raised_at": TIME, "alarm_at": or_null(TIME), "returned_at": or_null(TIME), "acknowledged_at": or_null(TIME),
     "acknowledged_by": or_null(TEXT), "note": TEXT, "value": or_null(NUMBER), "limit": or_null(NUMBER),
-    "cause": or_null(TEXT), "message": TEXT, "is_late": YES_NO, "is_withdrawn": YES_NO,
+    "cause": or_null(TEXT), "event": or_null(ID), "is_drill": YES_NO, "message": TEXT, "is_late": YES_NO, "is_withdrawn": YES_NO,
     "shelved_until": or_null(TIME),
     "earlier_bounds": many(shape({"raised_at": TIME, "returned_at": or_null(TIME)})),
 }, text="value: the worst while open; limit: the level that it is held against. Times of limit alarms are data times. "
         "earlier_bounds: as it was told before late data moved it.")
+
+THING = shape({"kind": {"type": "string", "enum": ["bench", "room", "laser", "logger", "network"]}, "name": TEXT})
+EVENT = shape({
+    "id": ID, "kind": {"type": "string", "enum": ["light", "silence"]}, "level": {"type": "string", "enum": ["warning", "alarm"]},
+    "sentence": TEXT, "began_at": TIME, "shared": or_null(THING), "benches": many(NAME), "alarms": many(ID),
+    "taken_at": or_null(TIME), "taken_by": or_null(TEXT), "is_drill": YES_NO,
+}, text="shared: the one thing that explains it, where it is one. alarms: their ids.")
+SHARED = shape({"name": NAME, "room": or_null(TEXT), "laser": or_null(TEXT), "logger": or_null(TEXT), "network": or_null(TEXT)})
+STATION_CHANGE = shape({"room": or_null(TEXT), "laser": or_null(TEXT), "logger": or_null(TEXT), "network": or_null(TEXT),
+                        "reason": TEXT}, optional=("room", "laser", "logger", "network", "reason"),
+                       text="What is given is changed; an empty text takes it away.")
 
 CALIBRATION = shape({
     "tap": TAP_PATH, "valid_from": TIME, "entered_at": TIME, "entered_by": TEXT, "zero1": NUMBER, "zero2": NUMBER,
@@ -213,6 +225,8 @@ NAMED: dict[str, Schema] = {
     "Limit": LIMIT, "Limits": LIMITS, "Alarm": ALARM, "Calibration": CALIBRATION, "NewExperiment": NEW_EXPERIMENT,
     "NewLimit": NEW_LIMIT, "NewCalibration": NEW_CALIBRATION, "Acknowledgement": ACKNOWLEDGEMENT,
     "Proposal": PROPOSAL, "Rehearsal": REHEARSAL, "Shelving": SHELVING,
+    "Event": EVENT, "Events": shape({"events": many(ref("Event")), "before": or_null(ID)}),
+    "Shared": SHARED, "StationChange": STATION_CHANGE,
     "Hold": HOLD, "NewHold": NEW_HOLD, "Holds": shape({"holds": many(ref("Hold"))}),
     "Floor": FLOOR, "NewFloor": NEW_FLOOR, "NewlySetFloor": NEWLY_SET_FLOOR, "Floors": shape({"floors": many(ref("Floor"))}),
     "LimitRequest": LIMIT_REQUEST, "LooserLimit": LOOSER_LIMIT, "Decision": DECISION,

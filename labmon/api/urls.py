@@ -6,6 +6,7 @@ from ingest.models import NAME_PATTERN
 from labmon.api.alarms import get_alarms, post_acknowledge, post_shelve, post_unshelve
 from labmon.api.call import by_method, open_to_all, unknown_address
 from labmon.api.clearance import get_clearance, get_run_clearance
+from labmon.api.events import get_event, get_events, patch_station, post_take
 from labmon.api.experiments import get_experiments, get_limits, post_experiment, post_limit
 from labmon.api.floors import get_floors, post_floor
 from labmon.api.holds import get_holds, post_end_hold, post_hold
@@ -52,6 +53,10 @@ TAP = "taps/<short:station>/<short:tap>/"
 app_name = "api"
 urlpatterns = [
     path("stations", by_method(GET=get_stations), name="stations"),
+    path("stations/<short:station>", by_method(PATCH=patch_station), name="station"),
+    path("events", by_method(GET=get_events), name="events"),
+    path("events/<row:event_id>", by_method(GET=get_event), name="event"),
+    path("events/<row:event_id>/acknowledge", by_method(POST=post_take), name="take-event"),
     path(TAP + "now", by_method(GET=get_now), name="now"),
     path(TAP + "history", by_method(GET=get_history), name="history"),
     path(TAP + "statistics", by_method(GET=get_statistics), name="statistics"),

@@ -8,7 +8,7 @@ from django.db import transaction
 from django.db.models import Q
 from django.utils import timezone
 
-from ingest.models import Station, StationKey, Tap
+from ingest.models import Room, Station, StationKey, Tap
 from ingest.stations import NewTap, StationFault, add_station, make_key, revoke_key
 from ingest.stations import add_tap as add_plain_tap
 from labmon.audit.actions import note
@@ -122,3 +122,36 @@ def set_bench_owner(station: Station, owner: Person | None, *, by: Person | None
     note(by, "set bench owner", station, {"owner": before}, {"owner": owner.username if owner else None}, reason)
     publish({"kind": "stations", "ids": [station.pk]})
     return bench
+
+
+@transaction.atomic
+def set_shared(
+    station: Station, *, room: str, laser: str, logger: str, network: str, by: Person | None, reason: str = ""
+) -> Bench:
+    """What a bench shares with others; empty where it shares nothing that anybody knows of.
+
+    Raises:
+        WriteError: A name is longer than 100 characters.
+    """
+    names = {"room": room, "laser": laser, "logger": logger, "network": network}
+    names = {field: " ".join(name.replace("\0", "").split()) for field, name in names.items()}
+    for field, name in names.items():
+        if len(name) > 100:
+            raise WriteError(field, "The name is longer than 100 characters.", "Choose a shorter one.")
+    locked = Station.objects.select_for_update(of=("self",)).select_related("room").get(pk=station.pk)
+    bench, _ = Bench.objects.select_for_update(of=("self",)).get_or_create(station=locked)
+    before = shared_facts(locked, bench)
+    locked.room = Room.objects.get_or_create(name=names["room"])[0] if names["room"] else None
+    locked.save(update_fields=["room"])
+    bench.laser, bench.logger, bench.network = names["laser"], names["logger"], names["network"]
+    bench.save(update_fields=["laser", "logger", "network"])
+    if (after := shared_facts(locked, bench)) != before:
+        note(by, "set what a bench shares", station, before, after, reason)
+        publish({"kind": "stations", "ids": [station.pk]})
+    return bench
+
+
+def shared_facts(station: Station, bench: Bench | None) -> dict[str, str]:
+    """What a bench shares, by kind of thing."""
+    facts = {one: getattr(bench, one) if bench else "" for one in ("laser", "logger", "network")}
+    return {"room": station.room.name if station.room else ""} | facts

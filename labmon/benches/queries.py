@@ -16,7 +16,7 @@ from analysis.models import Calibration
 from analysis.record.calibrations import versions_of
 from analysis.record.tap_state import TapState
 from ingest.door.client import PREFIX as CLIENT_PREFIX
-from ingest.models import DoorUp, SetAside, Station, StationBoot, StationKey, Tap, TapKind
+from ingest.models import DoorUp, Room, SetAside, Station, StationBoot, StationKey, Tap, TapKind
 from ingest.store.columns import Readings
 from ingest.store.read import newest_readings
 from ingest.times import SECOND_US, at_of
@@ -26,6 +26,7 @@ from labmon.benches.ceilings import TapCeiling, ceiling_of
 from labmon.benches.course import Course, courses_of
 from labmon.benches.door_facts import DoorFacts, door_facts
 from labmon.benches.doubts import OpenDoubt, open_doubts
+from labmon.benches.models import Bench
 from labmon.benches.show import (
     DEFAULT_SILENCE_S,
     WORST_FIRST,
@@ -418,3 +419,13 @@ def _rank(standing: _Standing | None) -> tuple[int, float]:
         else None
     )
     return WORST_FIRST.index(standing.state), float("inf") if nearness is None else nearness
+
+
+def shared_names() -> dict[str, list[str]]:
+    """Names that benches already share, by kind of thing, to choose from; two queries."""
+    found: dict[str, set[str]] = {"room": set(Room.objects.values_list("name", flat=True))}
+    kinds = ("laser", "logger", "network")
+    for row in Bench.objects.values(*kinds):
+        for kind in kinds:
+            found.setdefault(kind, set()).add(row[kind])
+    return {kind: sorted(names - {""}) for kind, names in found.items()}

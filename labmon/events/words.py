@@ -109,7 +109,8 @@ def body_of(event: EventFacts, own: Sequence[AlarmFacts], duty: str, remind_afte
     lines += ["", f"You are told as {duty}."]
     if _level(own) == "alarm" and not event.is_drill:
         lines.append(f"Should nobody take it within {span_text(remind_after_s)}, you are reminded and the next is told.")
-    lines += [f"Take it: {event.url}/events/{event.id}/", *_bench_links(event.url, own), "", NO_CHANGE]
+    links = [] if event.is_drill else _bench_links(event.url, own)
+    lines += [f"Take it: {event.url}/events/{event.id}/", *links, "", NO_CHANGE]
     return "\n".join(lines)
 
 

@@ -37,13 +37,16 @@ class Action(StrEnum):
     SET_KEEPING = "say how long raw readings are kept"
     SEE_HEALTH = "see the lab's health"
     MANAGE_PEOPLE = "add people and set their roles"
+    SET_SHARED = "say what this bench shares with others"
+    SEE_CALLS = "see who is on call"
+    SET_CALLS = "set who is called, and how"
 
 
 _GUEST = frozenset({Action.READ, Action.MAKE_OWN_KEY})
-_RESEARCHER = _GUEST | {Action.ACKNOWLEDGE, Action.SHELVE, Action.LOG, Action.PLAN_RUN}
+_RESEARCHER = _GUEST | {Action.ACKNOWLEDGE, Action.SHELVE, Action.LOG, Action.PLAN_RUN, Action.SEE_CALLS}
 _OWNER_OF_IT = frozenset(
     {Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.TAKE_OUT, Action.CALIBRATE, Action.MAKE_STATION_KEY, Action.ADD_TAP,
-     Action.IMPORT_FILE, Action.READ_AUDIT, Action.PLAN_FOR_OTHERS}
+     Action.IMPORT_FILE, Action.READ_AUDIT, Action.SET_SHARED, Action.PLAN_FOR_OTHERS}
 )
 _OWN_RUN = frozenset({Action.CHANGE_RUN})
 
@@ -120,26 +123,28 @@ def _is_named_for(guest: Person, subject: Model) -> bool:
 
 
 def stations_visible_to(person: Person) -> QuerySet[Station]:
-    """All stations; for a guest only the named ones, until their date."""
+    """All stations but that of drills; for a guest only the named ones, until their date."""
     if not has_access(person):
         return Station.objects.none()
-    return person.guest_stations.all() if role_of(person) is Role.GUEST else Station.objects.all()
+    return person.guest_stations.all() if role_of(person) is Role.GUEST else Station.objects.exclude(bench__is_drill=True)
 
 
 def taps_visible_to(person: Person) -> QuerySet[Tap]:
     """Taps of visible stations."""
     if not has_access(person):
         return Tap.objects.none()
-    return Tap.objects.filter(station__guests=person) if role_of(person) is Role.GUEST else Tap.objects.all()
+    if role_of(person) is Role.GUEST:
+        return Tap.objects.filter(station__guests=person)
+    return Tap.objects.exclude(station__bench__is_drill=True)
 
 
 def experiments_visible_to(person: Person) -> QuerySet[Experiment]:
     """All experiments; for a guest those that watch named benches and nothing else."""
     if not has_access(person):
         return Experiment.objects.none()
-    if role_of(person) is not Role.GUEST:
-        return Experiment.objects.all()
     watched = Experiment.taps.through.objects.filter(experiment=OuterRef("pk"))
+    if role_of(person) is not Role.GUEST:
+        return Experiment.objects.filter(~Exists(watched.filter(tap__station__bench__is_drill=True)))
     hidden = watched.exclude(tap__station__in=person.guest_stations.values("pk"))
     return Experiment.objects.filter(Exists(watched), ~Exists(hidden))
 

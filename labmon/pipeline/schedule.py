@@ -21,6 +21,7 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "expire requests for looser limits": _every("expire_requests", 60.0),
     "make ledgers of runs": _every("make_ledgers", 5.0, expires=60.0),
     "tell": _every("tell", 2.0),
+    "follow drills": _every("follow_drills", 5.0),
     "roll up": _every("roll_up", 10.0),
     "roll up hours and days": _every("roll_up_coarse", 120.0),
     "cast doubts": _every("cast_doubts", 15.0),

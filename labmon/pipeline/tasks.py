@@ -13,6 +13,8 @@ from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
 from labmon.alarms.holding import end_due_holds
 from labmon.benches.keeping import forget_old_days
+from labmon.drills.actions import begin_weekly_drill
+from labmon.drills.follow import follow_drills
 from labmon.events.steps import take_steps
 from labmon.events.telling import tell_due
 from labmon.experiments.consent import expire_requests
@@ -159,6 +161,13 @@ def tell_task() -> None:
     tell_due()
     take_steps()
     send_waiting(for_s=TELL_FOR_S)
+
+
+@_task("follow_drills", 120)
+def follow_drills_task() -> None:
+    """Begin the weekly drill when its hour has come; send false drops, note their steps."""
+    begin_weekly_drill()
+    follow_drills()
 
 
 @_task("compact", 1800)

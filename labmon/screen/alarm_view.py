@@ -43,6 +43,8 @@ class AlarmView:
     is_late: bool
     is_withdrawn: bool
     earlier: list[str]
+    event_id: int | None = None
+    is_drill: bool = False
 
 
 def alarm_view(row: AlarmRow, now: datetime) -> AlarmView:
@@ -73,6 +75,8 @@ def alarm_view(row: AlarmRow, now: datetime) -> AlarmView:
         is_waiting=row.state in {"unacknowledged", "returned-unacknowledged"},
         is_late=row.is_late,
         is_withdrawn=row.is_withdrawn,
+        event_id=row.event_id,
+        is_drill=row.is_drill,
         earlier=[f"{time_text(raised)} to {time_text(returned)}" for raised, returned in row.earlier_bounds],
     )
 
@@ -85,6 +89,12 @@ def since_text(at: datetime, now: datetime) -> str:
 
 def alarm_title(row: AlarmRow) -> str:
     """What happened, in one line with numbers where there are any."""
+    if row.is_drill:
+        return f"Drill, nothing is wrong: {_title(row)}"
+    return _title(row)
+
+
+def _title(row: AlarmRow) -> str:
     if row.kind == "no-reading":
         return f"{row.tap}: no reading"
     if row.kind == "untrusted":

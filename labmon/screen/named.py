@@ -10,7 +10,7 @@ from labmon.people.rights import experiments_visible_to, stations_visible_to, ta
 
 def visible_station(person: Person, name: str) -> Station:
     """The station of this name."""
-    return get_object_or_404(stations_visible_to(person).select_related("room"), name=name)
+    return get_object_or_404(stations_visible_to(person).select_related("room", "bench"), name=name)
 
 
 def visible_tap(person: Person, station: str, tap: str) -> Tap:

@@ -79,6 +79,7 @@ def _rights(request: HttpRequest, station: Station) -> dict[str, bool]:
         "keys": Action.MAKE_STATION_KEY,
         "import": Action.IMPORT_FILE,
         "log": Action.LOG,
+        "shared": Action.SET_SHARED,
     }
     return {name: may(request.user, action, station) for name, action in wanted.items()}
 

@@ -2,6 +2,7 @@
 
 from datetime import datetime, timedelta
 
+from django.db import transaction
 from django.utils import timezone
 
 from labmon.alarms.calls import RAISED, call_people
@@ -47,7 +48,8 @@ def make_alarm(
 
 def call(*alarms: Alarm, why: str = RAISED) -> None:
     """As a worker that found them together."""
-    call_people([(alarm, why) for alarm in alarms])
+    with transaction.atomic():
+        call_people([(alarm, why) for alarm in alarms])
 
 
 def told(**which) -> list[tuple[str, str]]:

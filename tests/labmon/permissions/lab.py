@@ -11,6 +11,7 @@ from PIL import Image
 
 from ingest.models import FileImport, StationKey
 from labmon.alarms.models import AlarmHold, HoldKind
+from labmon.events.models import Event
 from labmon.experiments.actions import set_limit
 from labmon.experiments.models import Limit
 from labmon.logbook.actions import write_entry
@@ -18,6 +19,8 @@ from labmon.people.keys import make_person_key
 from labmon.people.models import Person, Role
 from labmon.runs.ledgers import ask_ledger
 from labmon.runs.making import make_waiting_ledgers
+from labmon.tell.keys import key_in_force
+from labmon.tell.models import KeyPurpose, PushDevice
 from tests.factories import NOON, make_experiment, make_person, make_run, make_station, make_tap, store_alarm
 from tests.labmon.permissions.rules import Who
 
@@ -54,7 +57,8 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
     version = set_limit(experiment, tap, "er_db", alarm=20.0, by=owner)
     limit = Limit.objects.get(experiment=experiment)
     about = {"kind": "limit", "experiment": experiment, "limit": limit, "tap": tap, "quantity": "er_db"}
-    alarm = store_alarm(**about, raised_at=NOON, message="low")
+    event = Event.objects.create(kind="light", began_at=NOON, began_until=NOON)
+    alarm = store_alarm(**about, raised_at=NOON, message="low", event=event)
     hold = AlarmHold.objects.create(kind=HoldKind.SHELVED, tap=tap, alarm_kind="untrusted", by=owner, reason="x",
                                     begun_at=timezone.now(), until=timezone.now() + timedelta(hours=1))
     key = StationKey.objects.create(station=station, digest=letter.encode() * 32, hint=letter * 4)
@@ -67,6 +71,8 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
         "_station": station, "bench": letter, "station": station.name, "tap": tap.name, "tap_id": tap.pk,
         "experiment_id": experiment.pk, "limit_id": limit.pk, "version_id": version.pk, "alarm_id": alarm.pk, "hold_id": hold.pk,
         "entry_id": entry.pk, "import_id": upload.pk, "run_id": run.pk, "ledger_number": 1,
+        "event_id": event.pk,
+        "entry_id": entry.pk, "import_id": upload.pk,
         "revoke-key.key_id": key.pk,                       # an argument that means something of its own to one address
         "person_id": people[Who.RESEARCHER].pk,
     }
@@ -79,12 +85,17 @@ def _picture() -> SimpleUploadedFile:
 
 
 #: What ``{id}`` of an API path is, by the word before it.
-IDS = {"experiments": "experiment_id", "alarms": "alarm_id", "holds": "hold_id", "log": "entry_id", "runs": "run_id"}
+IDS = {"experiments": "experiment_id", "alarms": "alarm_id", "holds": "hold_id", "log": "entry_id", "runs": "run_id",
+       "events": "event_id"}
 
 
 def own_row(name: str, person: Person) -> dict[str, int]:
     """The caller's own row for an address about own rows."""
     match name:
+        case "end-device":
+            key = key_in_force(KeyPurpose.PUSH)
+            device = PushDevice.objects.create(person=person, key=key, endpoint=f"https://push.example/{person.pk}", name="phone")
+            return {"device_id": device.pk}
         case "revoke-own-key":
             return {"key_id": make_person_key(person, by=None)[0].pk}
     raise KeyError(f"{name}: say in tests/labmon/permissions/lab.py own_row() which row of the caller's it is about")

@@ -72,7 +72,6 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
         "experiment_id": experiment.pk, "limit_id": limit.pk, "version_id": version.pk, "alarm_id": alarm.pk, "hold_id": hold.pk,
         "entry_id": entry.pk, "import_id": upload.pk, "run_id": run.pk, "ledger_number": 1,
         "event_id": event.pk,
-        "entry_id": entry.pk, "import_id": upload.pk,
         "revoke-key.key_id": key.pk,                       # an argument that means something of its own to one address
         "person_id": people[Who.RESEARCHER].pk,
     }

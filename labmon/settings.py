@@ -49,6 +49,7 @@ INSTALLED_APPS = [
 MIDDLEWARE = [
     "labmon.screen.headers.ContentSecurityPolicy",
     "django.middleware.security.SecurityMiddleware",
+    "django.middleware.clickjacking.XFrameOptionsMiddleware",
     "whitenoise.middleware.WhiteNoiseMiddleware",
     "django.contrib.sessions.middleware.SessionMiddleware",
     "django.middleware.common.CommonMiddleware",
@@ -91,6 +92,14 @@ AUTH_PASSWORD_VALIDATORS = [
 ]
 SESSION_COOKIE_AGE = 14 * 24 * 3600
 SESSION_COOKIE_SECURE = CSRF_COOKIE_SECURE = IS_BEHIND_TLS
+SESSION_COOKIE_HTTPONLY = True
+SESSION_COOKIE_SAMESITE = CSRF_COOKIE_SAMESITE = "Lax"  # Strict would sign out whoever comes by the link in a mail
+X_FRAME_OPTIONS = "DENY"
+SECURE_HSTS_SECONDS = 30 * 24 * 3600 if IS_BEHIND_TLS else 0
+SILENCED_SYSTEM_CHECKS = [
+    "security.W005", "security.W021",  # what the lab's other hosts do, and browsers' lists, is for the lab to decide
+    "security.W008",                   # the proxy before labmon redirects; the supervisor's own probes come without TLS
+]
 SECURE_PROXY_SSL_HEADER = ("HTTP_X_FORWARDED_PROTO", "https") if IS_BEHIND_TLS else None
 
 BROKER_PREFIX = env.get("BROKER_PREFIX", str, default="labmon")   # so that several labs may share one broker

@@ -6,8 +6,8 @@ from django.http import HttpRequest
 from django.middleware.csrf import CsrfViewMiddleware
 
 from labmon.api.problem import Problem
-from labmon.people.keys import person_of_key
-from labmon.people.models import Person
+from labmon.people.keys import live_key
+from labmon.people.models import KeyScope, Person
 from labmon.people.rights import has_access
 
 SAFE_METHODS = frozenset({"GET", "HEAD", "OPTIONS"})
@@ -26,22 +26,24 @@ def person_of(request: HttpRequest) -> Person:
     A key in ``Authorization`` counts alone, even where a session is open. A write by session needs the CSRF token.
 
     Raises:
-        Problem: 401 without a usable key or session, 403 for a write without CSRF token.
+        Problem: 401 without a usable key or session, 403 for a write with a key that only reads, or without CSRF token.
     """
     header = request.headers.get("Authorization", "")
-    person = _person_by_key(header) if header else _person_by_session(request)
+    person = _person_by_key(header, request.method) if header else _person_by_session(request)
     if not has_access(person):
         raise _unauthorized("Your access is over.", "Ask a manager to prolong it.")
     return person
 
 
-def _person_by_key(header: str) -> Person:
-    scheme, _, key = header.partition(" ")
-    person = person_of_key(key.strip()) if scheme.lower() == "bearer" else None
-    if person is None:
+def _person_by_key(header: str, method: str) -> Person:
+    scheme, _, text = header.partition(" ")
+    key = live_key(text.strip()) if scheme.lower() == "bearer" else None
+    if key is None:
         raise _unauthorized("The key is not known, or it was revoked or has expired.",
                             "Send Authorization: Bearer <person's key>; a manager makes a new one.")
-    return person
+    if method not in SAFE_METHODS and key.scope == KeyScope.READ:
+        raise Problem(HTTPStatus.FORBIDDEN, "This key only reads.", "Make a key that also writes at /you/, or use GET.")
+    return key.person
 
 
 def _person_by_session(request: HttpRequest) -> Person:

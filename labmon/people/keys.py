@@ -1,4 +1,4 @@
-"""People's keys for the read API: shown once, kept as a digest."""
+"""People's keys for the API: shown once, kept as a digest."""
 
 import secrets
 from datetime import datetime
@@ -9,7 +9,8 @@ from django.db.models import Q
 from django.utils import timezone
 
 from labmon.audit.actions import note
-from labmon.people.models import Person, PersonKey
+from labmon.errors import WriteError
+from labmon.people.models import KeyScope, Person, PersonKey
 from labmon.people.rights import has_access
 
 PREFIX = "person-"
@@ -21,11 +22,24 @@ def digest_of(key: str) -> bytes:
 
 
 @transaction.atomic
-def make_person_key(person: Person, *, by: Person | None, expires_at: datetime | None = None) -> tuple[PersonKey, str]:
-    """A new key and its row; the key is returned this once and cannot be shown again."""
+def make_person_key(
+    person: Person, *, by: Person | None, expires_at: datetime | None = None, scope: str = KeyScope.WRITE, purpose: str = ""
+) -> tuple[PersonKey, str]:
+    """A new key and its row; the key is returned this once and cannot be shown again.
+
+    Raises:
+        WriteError: The scope is not known, the key would be over before it begins, or the purpose is too long.
+    """
+    if scope not in KeyScope.values:
+        raise WriteError("scope", f"{scope!r} is no scope.", f"Use one of {', '.join(KeyScope.values)}.")
+    if len(purpose) > 100 or "\x00" in purpose:
+        raise WriteError("purpose", "The purpose is too long.", "Say it in 100 characters.")
     key = PREFIX + secrets.token_urlsafe(32)
-    row = PersonKey.objects.create(person=person, digest=digest_of(key), hint=key[-4:], expires_at=expires_at)
-    note(by, "make person key", person, after={"key": row.pk, "hint": row.hint, "expires_at": expires_at})
+    row = PersonKey.objects.create(
+        person=person, digest=digest_of(key), hint=key[-4:], expires_at=expires_at, scope=scope, purpose=purpose.strip()
+    )
+    note(by, "make person key", person,
+         after={"key": row.pk, "hint": row.hint, "expires_at": expires_at, "scope": str(scope), "purpose": row.purpose})
     return row, key
 
 
@@ -41,10 +55,16 @@ def revoke_person_key(key_id: int, *, by: Person | None) -> None:
 
 def person_of_key(key: str) -> Person | None:
     """Whose key this is; None if unknown, revoked, expired, or the person's access is over."""
+    row = live_key(key)
+    return row.person if row else None
+
+
+def live_key(key: str) -> PersonKey | None:
+    """The key's row with its person; None if unknown, revoked, expired, or the person's access is over."""
     now = timezone.now()
     row = (
         PersonKey.objects.select_related("person")
         .filter(Q(expires_at=None) | Q(expires_at__gt=now), digest=digest_of(key), revoked_at=None)
         .first()
     )
-    return row.person if row and has_access(row.person) else None
+    return row if row and has_access(row.person) else None

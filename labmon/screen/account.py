@@ -6,17 +6,20 @@ from django.contrib.auth.forms import PasswordChangeForm
 from django.contrib.auth.views import LoginView, LogoutView
 from django.http import Http404, HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
+from django.utils import timezone
 from django.views.decorators.cache import never_cache
 from django.views.decorators.http import require_http_methods, require_POST
 
 from labmon.errors import WriteError
 from labmon.people.actions import set_password
 from labmon.people.keys import make_person_key, revoke_person_key
+from labmon.people.models import KeyScope
 from labmon.people.rights import Action, require
-from labmon.screen.door import for_people, put_refusal
+from labmon.screen.account_forms import KeyForm, SignInForm
+from labmon.screen.door import for_people, put_refusal, say_refusal
 
 sign_in = require_http_methods(["GET", "HEAD", "POST"])(
-    LoginView.as_view(template_name="screen/login.html", redirect_authenticated_user=True)
+    LoginView.as_view(template_name="screen/login.html", authentication_form=SignInForm, redirect_authenticated_user=True)
 )
 sign_out = LogoutView.as_view()
 
@@ -39,7 +42,7 @@ def you_page(request: HttpRequest) -> HttpResponse:
     return render(
         request,
         "screen/you.html",
-        {"form": form, "keys": request.user.keys.order_by("-pk")},
+        {"form": form, "keys": request.user.keys.order_by("-pk"), "key_form": KeyForm(auto_id="key_%s"), "now": timezone.now()},
         status=422 if request.method == "POST" else 200,
     )
 
@@ -50,7 +53,17 @@ def you_page(request: HttpRequest) -> HttpResponse:
 def make_own_key(request: HttpRequest) -> HttpResponse:
     """A key for notebooks, shown on this answer and never again."""
     require(request.user, Action.MAKE_OWN_KEY)
-    _, key = make_person_key(request.user, by=request.user)
+    form = KeyForm(request.POST)
+    if not form.is_valid():
+        messages.error(request, "Not done. Choose what the key may do and when it ends from the lists.")
+        return redirect("you")
+    typed = form.cleaned_data
+    try:
+        _, key = make_person_key(request.user, by=request.user, expires_at=form.expires_at(),
+                                 scope=typed["scope"] or KeyScope.READ, purpose=typed["purpose"])
+    except WriteError as error:
+        say_refusal(request, error)
+        return redirect("you")
     return render(request, "screen/key_once.html", {"key": key, "name": request.user.username, "station": None})
 
 

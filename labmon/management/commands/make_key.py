@@ -12,7 +12,7 @@ from labmon.api.times import parse_time
 from labmon.benches.actions import make_bench_key
 from labmon.management.base import LabCommand
 from labmon.people.keys import make_person_key
-from labmon.people.models import Person
+from labmon.people.models import KeyScope, Person
 
 
 class Command(LabCommand):
@@ -25,11 +25,15 @@ class Command(LabCommand):
         whose.add_argument("--person", metavar="NAME")
         parser.add_argument("--expires", metavar="TIME", help="when it ends, such as 2031-03-04T00:00:00Z; else never")
 
+        parser.add_argument("--scope", choices=KeyScope.values, default=KeyScope.WRITE.value,
+                            help="what a person's key is good for: read only, or also write (the default)")
+
     def handle(self, *args: Any, **wish: Any) -> str:
         expires_at = _time(wish["expires"])
         try:
             if wish["person"]:
-                row, key = make_person_key(Person.objects.get(username=wish["person"]), by=None, expires_at=expires_at)
+                row, key = make_person_key(Person.objects.get(username=wish["person"]), by=None, expires_at=expires_at,
+                                           scope=wish["scope"])
                 return json.dumps({"person": wish["person"], "key": key, "key_id": row.pk})
             row, key = make_bench_key(Station.objects.get(name=wish["station"]), by=None, expires_at=expires_at)
             return json.dumps({"station": wish["station"], "key": key, "key_id": row.pk})

@@ -4,6 +4,7 @@ import pytest
 from django.utils import timezone
 
 from labmon.audit.models import AuditEntry
+from labmon.errors import WriteError
 from labmon.people.actions import end_access
 from labmon.people.keys import make_person_key, person_of_key, revoke_person_key
 from labmon.people.models import PersonKey, Role
@@ -57,3 +58,13 @@ def test_key_dies_with_access():
 def test_guest_key_dies_with_the_guest_date():
     guest = make_person(Role.GUEST, guest_until=timezone.now() - timedelta(seconds=1))
     assert person_of_key(make_person_key(guest, by=None)[1]) is None
+
+
+def test_a_key_is_good_for_what_it_says():
+    person = make_person()
+    row, _ = make_person_key(person, by=person, scope="read", purpose="night notebook")
+    assert (row.scope, AuditEntry.objects.get().after["purpose"]) == ("read", "night notebook")
+    assert make_person_key(person, by=person)[0].scope == "write"
+    for wrong in ({"scope": "everything"}, {"purpose": "x" * 101}):
+        with pytest.raises(WriteError):
+            make_person_key(person, by=person, **wrong)

@@ -265,6 +265,16 @@ def test_no_call_takes_a_write_by_session_without_its_token(lab, call):
     assert answer.status_code == 403 and "CSRF" in answer.json()["title"] and AuditEntry.objects.count() == before
 
 
+@pytest.mark.parametrize("call", sorted(call for call in CALLS if not call.startswith("GET")))
+def test_a_key_that_only_reads_writes_nothing(lab, call):
+    if call not in described_calls():
+        pytest.skip("another test tells of it")
+    key = make_person_key(lab.people[Who.MANAGER], by=None, scope="read")[1]
+    before = AuditEntry.objects.count()
+    answer = called(key, call, lab.rows["a"], CALLS[call].send)
+    assert answer.status_code == 403 and "only reads" in answer.json()["title"] and AuditEntry.objects.count() == before
+
+
 def test_the_matrix_would_notice(lab):
     """The check itself: a page that lets in too many, and one that lets in too few."""
     with pytest.raises(AssertionError, match="should be refused with 403"):

@@ -6,7 +6,7 @@ from django.db import migrations, models
 class Migration(migrations.Migration):
 
     dependencies = [
-        ('labmon', '0015_door_hours_and_clients'),
+        ('labmon', '0016_clearance_and_back_tests'),
     ]
 
     operations = [

@@ -105,6 +105,10 @@ PAGES: dict[str, dict[str, Rule]] = {
     "set-limit": {"POST": OWN_BENCH},
     "rehearse-limit": {"POST": OWN_BENCH},
     "retire-limit": {"POST": OWN_BENCH},
+    "ask-limit": {"POST": OWN_BENCH},
+    "ask-retire": {"POST": OWN_BENCH},
+    "decide-limit-request": {"POST": OWN_BENCH},
+    "floors": {"GET": READ, "POST": LAB},
     "audit": {"GET": ANY_OWNER},
     "health": {"GET": LAB},
     "people": {"GET": LAB, "POST": LAB},
@@ -127,6 +131,15 @@ CALLS: dict[str, Rule] = {
     "GET /api/v1/experiments/{id}/limits": READ,
     "POST /api/v1/experiments/{id}/limits": sending(OWN_BENCH, **_LIMIT),
     "POST /api/v1/experiments/{id}/limits/rehearse": sending(READ, **_LIMIT),   # writes nothing
+    "GET /api/v1/experiments/{id}/limits/requests": READ,
+    "POST /api/v1/experiments/{id}/limits/requests": sending(OWN_BENCH, **_LIMIT),
+    "POST /api/v1/limit-requests/{id}/grant": LAB,                  # the row of lab.py was asked for by its owner:
+    "POST /api/v1/limit-requests/{id}/refuse": LAB,                 # a second person decides,
+    "POST /api/v1/limit-requests/{id}/withdraw": all_of(Who.OWNER),  # and who asked may take it back
+    "GET /api/v1/experiments/{id}/clearance": READ,
+    "GET /api/v1/runs/{id}/clearance": READ,
+    "GET /api/v1/floors": READ,
+    "POST /api/v1/stations/{station}/floors": sending(LAB, quantity="er_db", value=15.0, reason="x"),
     "GET /api/v1/alarms": READ,
     "POST /api/v1/alarms/{id}/acknowledge": WORK,
     "POST /api/v1/alarms/{id}/shelve": sending(WORK, reason="x", for_s=60),

@@ -204,7 +204,7 @@ WANT_SPAN = ("/history", "/statistics", "/readings")
 
 def call_address(call: str, rows: dict[str, Any]) -> str:
     path = call.partition(" ")[2]
-    for word in re.findall(r"(\w+)/{id}", path):
+    for word in re.findall(r"([\w-]+)/{id}", path):
         assert word in IDS, f"{call}: say in {HERE}/lab.py, IDS, what the number behind {word!r} is, such as 'run_id'"
         assert IDS[word] in rows, f"{call}: make such a row in _bench() of {HERE}/lab.py and return its number as {IDS[word]!r}"
         path = path.replace(f"{word}/{{id}}", f"{word}/{rows[IDS[word]]}")

@@ -17,16 +17,11 @@ from labmon.experiments.models import Limit, LimitRequest
 from labmon.logbook.actions import write_entry
 from labmon.people.keys import make_person_key
 from labmon.people.models import Person, Role
-<<<<<<< HEAD
 from labmon.runs.ledgers import ask_ledger
 from labmon.runs.making import make_waiting_ledgers
 from labmon.tell.keys import key_in_force
 from labmon.tell.models import KeyPurpose, PushDevice
 from tests.factories import NOON, make_experiment, make_person, make_run, make_station, make_tap, store_alarm
-=======
-from labmon.runs.actions import plan_run
-from tests.factories import NOON, make_experiment, make_person, make_station, make_tap, store_alarm
->>>>>>> 8aac082 (people: Rules for floors, requests and clearances; checks are known to manage.py check.)
 from tests.labmon.permissions.rules import Who
 
 ROLES = {Who.GUEST: Role.GUEST, Who.RESEARCHER: Role.RESEARCHER, Who.NEIGHBOUR: Role.OWNER, Who.OWNER: Role.OWNER,
@@ -69,7 +64,6 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
     now = timezone.now()
     wish = LimitRequest.objects.create(experiment=experiment, tap=tap, quantity="er_db", loosens=["alarm"], version=version,
                                        asked_by=owner, asked_at=now, expires_at=now + timedelta(hours=1), reason="x")
-    run = plan_run(experiment, by=owner, name="night", starts_at=now + timedelta(hours=1), ends_at=now + timedelta(hours=9))
     key = StationKey.objects.create(station=station, digest=letter.encode() * 32, hint=letter * 4)
     upload = FileImport.objects.create(tap=tap, file_name="x.csv", sha256=letter * 64)
     entry = write_entry(station, by=owner, at=NOON.replace(year=2026, month=1), text="spooled anew", picture=_picture())
@@ -82,7 +76,7 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
         "entry_id": entry.pk, "import_id": upload.pk, "run_id": run.pk, "ledger_number": 1,
         "event_id": event.pk,
         "revoke-key.key_id": key.pk,                       # an argument that means something of its own to one address
-        "run_id": run.pk, "request_id": wish.pk, "word": "refuse",
+        "request_id": wish.pk, "word": "refuse",
         "person_id": people[Who.RESEARCHER].pk,
     }
 
@@ -94,13 +88,8 @@ def _picture() -> SimpleUploadedFile:
 
 
 #: What ``{id}`` of an API path is, by the word before it.
-<<<<<<< HEAD
 IDS = {"experiments": "experiment_id", "alarms": "alarm_id", "holds": "hold_id", "log": "entry_id", "runs": "run_id",
-       "events": "event_id"}
-=======
-IDS = {"experiments": "experiment_id", "alarms": "alarm_id", "holds": "hold_id", "log": "entry_id",
-       "limit-requests": "request_id", "runs": "run_id"}
->>>>>>> 8aac082 (people: Rules for floors, requests and clearances; checks are known to manage.py check.)
+       "events": "event_id", "limit-requests": "request_id"}
 
 
 def own_row(name: str, person: Person) -> dict[str, int]:

@@ -61,7 +61,7 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
     alarm = store_alarm(**about, raised_at=NOON, message="low", event=event)
     hold = AlarmHold.objects.create(kind=HoldKind.SHELVED, tap=tap, alarm_kind="untrusted", by=owner, reason="x",
                                     begun_at=timezone.now(), until=timezone.now() + timedelta(hours=1))
-    now = timezone.now()
+    now = timezone.now().replace(microsecond=0)
     wish = LimitRequest.objects.create(experiment=experiment, tap=tap, quantity="er_db", loosens=["alarm"], version=version,
                                        asked_by=owner, asked_at=now, expires_at=now + timedelta(hours=1), reason="x")
     key = StationKey.objects.create(station=station, digest=letter.encode() * 32, hint=letter * 4)

@@ -12,6 +12,7 @@ from django.utils import timezone
 from ingest.models import Station
 from labmon.audit.actions import note
 from labmon.errors import WriteError
+from labmon.people.holdings import holdings_of
 from labmon.people.models import Person, PersonKey, Role
 
 
@@ -81,8 +82,15 @@ def set_password(person: Person, password: str, *, by: Person | None) -> None:
 
 @transaction.atomic
 def end_access(person: Person, *, by: Person | None, reason: str = "") -> Person:
-    """Sessions and keys are dead at once; the account and its audit rows stay. The last manager cannot be ended."""
+    """Sessions and keys are dead at once; the account and its audit rows stay.
+
+    Raises:
+        WriteError: The last manager; or something would be nobody's (``leaving.leave`` passes it on first).
+    """
     locked = Person.objects.select_for_update().get(pk=person.pk)
+    if locked.is_active and (held := holdings_of(locked)):
+        names = ", ".join(f"{one.kind} {one.name}" for one in held[:8])
+        raise WriteError("to", f"Nobody would have: {names}.", "Choose for each who takes it over.")
     if locked.role == Role.MANAGER and locked.is_active:
         _keep_a_manager(locked)
     if locked.is_active:

@@ -113,7 +113,7 @@ PAGES: dict[str, dict[str, Rule]] = {
     "health": {"GET": LAB},
     "people": {"GET": LAB, "POST": LAB},
     "set-role": {"POST": LAB},
-    "end-access": {"POST": LAB},
+    "end-access": {"GET": LAB, "POST": LAB},
 }
 
 _LIMIT = {"tap": "bench-{bench}/in", "quantity": "er_db", "alarm": 20.0}

@@ -10,7 +10,7 @@ from labmon.pipeline.schedule import BEAT_SCHEDULE
 os.environ.setdefault("DJANGO_SETTINGS_MODULE", "labmon.settings")
 app = Celery("labmon")
 app.config_from_object("django.conf:settings", namespace="CELERY")
-app.autodiscover_tasks(["labmon.pipeline", "labmon.tell"])
+app.autodiscover_tasks(["labmon.pipeline", "labmon.tell", "labmon.evidence"])
 app.autodiscover_tasks(["labmon.pipeline"], related_name="imports")
 app.autodiscover_tasks(["labmon.pipeline"], related_name="clearing")
 app.conf.beat_schedule = BEAT_SCHEDULE

@@ -7,6 +7,7 @@ from labmon.benches.models import Bench, ClientState, DoorHour, DoorRefusal, Key
 from labmon.clearance.models import BackTestDue, BackTestPass, LimitBackTest, RunClearance, RunWatch
 from labmon.drills.models import Drill
 from labmon.events.models import CallRules, Event, OnCall
+from labmon.evidence.models import RunEvidence
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitFloor, LimitRequest, LimitVersion
 from labmon.logbook.models import ConfigurationChange, LogEntry, LogEntryBefore
 from labmon.people.models import Person, PersonKey, SignInTry
@@ -14,10 +15,10 @@ from labmon.runs.models import Run, RunLedger, RunLimit, RunTap
 from labmon.tell.models import Delivery, DeliveryTry, Message, PushDevice, QuietHours, SigningKey, Webhook
 
 __all__ = [
-    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "BackTestDue", "BackTestPass",
-    "Bench", "CallRules", "ClientState", "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour", "DoorRefusal",
-    "Drill", "Event", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitBackTest", "LimitFloor", "LimitOutlook",
+    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "BackTestDue", "BackTestPass", "Bench",
+    "CallRules", "ClientState", "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour", "DoorRefusal", "Drill",
+    "Event", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitBackTest", "LimitFloor", "LimitOutlook",
     "LimitRequest", "LimitVersion", "LogEntry", "LogEntryBefore", "Message", "OnCall", "Person", "PersonKey",
-    "PushDevice", "QuietHours", "Run", "RunClearance", "RunLedger", "RunLimit", "RunTap", "RunWatch", "SignInTry",
-    "SigningKey", "Webhook",
+    "PushDevice", "QuietHours", "Run", "RunClearance", "RunEvidence", "RunLedger", "RunLimit", "RunTap", "RunWatch",
+    "SignInTry", "SigningKey", "Webhook",
 ]

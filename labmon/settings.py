@@ -159,6 +159,7 @@ LOGGING = {
     "handlers": {"stderr": {"class": "logging.StreamHandler", "formatter": "line"}},
     "root": {"handlers": ["stderr"], "level": env.get("LOG_LEVEL", str, default="INFO")},
     "loggers": {"django.request": {"level": "ERROR"},
+                **{name: {"level": "ERROR"} for name in ("weasyprint", "weasyprint.progress", "fontTools")},
                 **{name: {"level": "WARNING"} for name in ("celery.app.trace", "celery.worker.strategy", "celery.beat")}},
 }
 env.finish()

@@ -22,8 +22,8 @@ def written(form: str, schema: pa.Schema, tables: Tables, about: dict[str, Any])
     noted = schema.with_metadata({"labmon": msgspec.json.encode(about)})
     match form:
         case "csv":
-            texts = _with_texts(schema.empty_table()).schema
-            return _drained(lambda sink: pa.csv.CSVWriter(sink, texts), map(_with_texts, tables))
+            texts = with_texts(schema.empty_table()).schema
+            return _drained(lambda sink: pa.csv.CSVWriter(sink, texts), map(with_texts, tables))
         case "json":
             return _as_json(tables, about)
         case "parquet":
@@ -62,7 +62,7 @@ def _drained(writer_to: Callable[[_Pipe], AbstractContextManager[Any]], tables: 
     yield pipe.fetch()
 
 
-def _with_texts(table: pa.Table) -> pa.Table:
+def with_texts(table: pa.Table) -> pa.Table:
     """Times as RFC 3339 text, as CSV and JSON have no times."""
     for place, field in enumerate(table.schema):
         if pa.types.is_timestamp(field.type):
@@ -77,7 +77,7 @@ def _as_json(tables: Tables, about: dict[str, Any]) -> Iterator[bytes]:
     yield head.removesuffix(b"]}")
     comma = b""
     for table in tables:
-        for rows in _with_texts(table).to_batches(max_chunksize=JSON_ROWS):
+        for rows in with_texts(table).to_batches(max_chunksize=JSON_ROWS):
             if rows.num_rows:
                 yield comma + msgspec.json.encode(rows.to_pylist())[1:-1]
                 comma = b","

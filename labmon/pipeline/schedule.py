@@ -20,6 +20,7 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "start runs whose time has come": _every("start_runs", 2.0),
     "expire requests for looser limits": _every("expire_requests", 60.0),
     "make ledgers of runs": _every("make_ledgers", 5.0, expires=60.0),
+    "make evidence of runs": {"task": "labmon.evidence.make", "schedule": 15.0, "options": {"expires": 60.0}},
     "tell": _every("tell", 2.0),
     "follow drills": _every("follow_drills", 5.0),
     "roll up": _every("roll_up", 10.0),

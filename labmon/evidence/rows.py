@@ -25,14 +25,16 @@ from labmon.runs.samples import LEAD_INTERVALS, LEAST_LEAD_S
 IDENTITY = ("at", "boot", "sequence", "own_at", "arrival_at", "is_server_timed")
 MADE = ("er_db", "is_lower_bound", "is_upper_bound", "angle_deg", "dop", "power_w", "er_db_trust", "er_db_reasons",
         "angle_deg_trust", "dop_trust", "power_w_trust")
-MINUTE_US = 60_000_000
-#: Behind the run so much is looked at for the reading that ends the hold of the last one.
-BEHIND_US = 10 * MINUTE_US
 
 
 def _lead_us(tap: Tap) -> int:
     """So far before the run the ledger looks for the reading that holds into it."""
     return math.ceil(max(LEAST_LEAD_S, LEAD_INTERVALS * interval_of(tap))) * 1_000_000
+
+
+def _tail_us(tap: Tap) -> int:
+    """So far behind the run it looks for the reading that ends the hold of the last one (as labmon/runs/samples.py does)."""
+    return math.ceil(max(10.0, 4.0 * interval_of(tap))) * 1_000_000
 
 
 @dataclass(slots=True)
@@ -65,7 +67,7 @@ class TapRows:
 
     def pieces(self) -> Iterator[tuple[Readings, Reduced]]:
         """The readings and what they mean, in order; once."""
-        for from_us, until_us in chunks_of(self.tap.pk, self._lead_us, self.until_us + BEHIND_US):
+        for from_us, until_us in chunks_of(self.tap.pk, self._lead_us, self.until_us + _tail_us(self.tap)):
             readings = self._found(from_us, until_us)
             behind = int(np.searchsorted(readings.at_us, self.until_us))
             readings = readings.pick(slice(0, behind + 1))

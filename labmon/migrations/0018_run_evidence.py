@@ -8,7 +8,7 @@ from django.db import migrations, models
 class Migration(migrations.Migration):
 
     dependencies = [
-        ('labmon', '0016_clearance_and_back_tests'),
+        ('labmon', '0017_keys_and_sign_in'),
     ]
 
     operations = [

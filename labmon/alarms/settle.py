@@ -78,6 +78,7 @@ class Finding:
         age_us: Age of the stretch's last reading by the station's clock, ``last_us`` its data time.
         holes: Spans of the stretch whose raw readings are gone or unreadable: nothing told of them is taken back.
         existing: Alarms of the limit that overlap the stretch (live: the open one), oldest first.
+        aside: What a new alarm says besides; it stays as it was said.
     """
 
     limit: LimitHere
@@ -91,6 +92,7 @@ class Finding:
     current_within_us: int
     existing: Sequence[Alarm]
     holes: Sequence[tuple[int, int]] = ()
+    aside: str = ""
 
     @property
     def is_current(self) -> bool:
@@ -280,14 +282,15 @@ def _fill(alarm: Alarm, finding: Finding, episode: Episode, name: str) -> None:
         alarm.alarm_at = at_of(episode.alarm_us)
     elif not episode.is_continued:
         alarm.alarm_at = None
-    alarm.level = episode.level.value
+    was_level, alarm.level = alarm.level, episode.level.value
     is_rejudged = not is_new and not episode.is_continued and began_before is not None and began_before >= finding.window_us[0]
     alarm.value = episode.value if is_new or is_rejudged else worse_of(alarm.quantity, alarm.value, episode.value)
     alarm.version_id = phase.version_id
     alarm.limit_value = (
         phase.rule.warning if episode.level is Level.WARNING and phase.rule.warning is not None else phase.rule.alarm
     )
-    alarm.message = limit_sentence(name, alarm.quantity, alarm.level, alarm.value, alarm.limit_value)
+    if is_new or not finding.aside or was_level != alarm.level:
+        alarm.message = (limit_sentence(name, alarm.quantity, alarm.level, alarm.value, alarm.limit_value) + finding.aside)[:300]
 
 
 def _phase_of(finding: Finding, episode: Episode) -> Phase:

@@ -10,6 +10,8 @@ _SAID = {
     Quantity.ANGLE_DEG: "angle from the wanted state",
     Quantity.DOP: "degree of polarization",
     Quantity.POWER_W: "power",
+    Quantity.TRUSTED_SHARE: "trusted share",
+    Quantity.TIME_TO_LIMIT_S: "time to the limit",
 }
 _WATTS = ((1.0, "W"), (1e-3, "mW"), (1e-6, "µW"), (1e-9, "nW"), (1e-12, "pW"))
 
@@ -27,6 +29,10 @@ def value_text(quantity: str, value: float | None) -> str:
             return f"{value:.3f}"
         case Quantity.POWER_W:
             return _power_text(value)
+        case Quantity.TRUSTED_SHARE:
+            return f"{100.0 * value:.1f} %"
+        case Quantity.TIME_TO_LIMIT_S:
+            return span_text(value)
 
 
 def _power_text(power_w: float) -> str:
@@ -41,6 +47,9 @@ def limit_sentence(tap_name: str, quantity: str, level: str, value: float | None
     ``b08/eom-in: extinction ratio 18.9 dB is below its alarm limit 20.0 dB by 1.1 dB (1.6°)``.
     """
     named = Quantity(quantity)
+    if named is Quantity.TIME_TO_LIMIT_S:
+        time = value_text(quantity, value)
+        return f"{tap_name}: recent drift reaches the limit in about {time} ({level} below {span_text(limit)})"
     side = "above" if named.is_bad_above else "below"
     beyond = beyond_text(named, value, limit)
     said = f"{_SAID[named]} {value_text(quantity, value)} is {side} its {level} limit {value_text(quantity, limit)}"

@@ -11,7 +11,7 @@ from django.db import connection
 from django.db.models import Q
 from django.utils import timezone
 
-from analysis.judge.rule import LimitRule
+from analysis.judge.rule import LimitRule, Quantity
 from analysis.models import Calibration
 from analysis.record.calibrations import versions_of
 from analysis.record.tap_state import TapState
@@ -342,7 +342,7 @@ def _now_rows(tap_ids: Sequence[int]) -> dict[int, tuple[int, dict[str, Any], Ta
 
 
 def rules_now(tap_ids: Sequence[int]) -> dict[int, list[tuple[int, LimitRule]]]:
-    """Per tap the limits in force now: (limit id, rule)."""
+    """Per tap the limits in force now on what a sample has: (limit id, rule)."""
     versions = (
         LimitVersion.objects.filter(limit__tap_id__in=list(tap_ids), valid_from__lte=timezone.now())
         .select_related("limit")
@@ -351,7 +351,7 @@ def rules_now(tap_ids: Sequence[int]) -> dict[int, list[tuple[int, LimitRule]]]:
     )
     found: dict[int, list[tuple[int, LimitRule]]] = {}
     for version in versions:
-        if not version.is_retired:
+        if not version.is_retired and not Quantity(version.limit.quantity).is_derived:
             found.setdefault(version.limit.tap_id, []).append((version.limit_id, rule_of(version, version.limit.quantity)))
     return found
 

@@ -9,7 +9,7 @@ from django.db import IntegrityError, transaction
 from django.utils import timezone
 
 from analysis.judge.loosened import loosened_parts
-from analysis.judge.rule import LimitRule
+from analysis.judge.rule import LimitRule, Quantity
 from ingest.models import Tap, TapHeard, Touch
 from ingest.times import us_of
 from labmon.audit.actions import note
@@ -26,6 +26,7 @@ from labmon.runs.queries import runs_between
 
 #: A tap's first limit also looks at the day before it was set: an excursion that is under way is then seen as what it is.
 FIRST_LIMIT_LOOKS_BACK = timedelta(days=1)
+RUN_TOWARDS = (Quantity.ER_DB, Quantity.ANGLE_DEG)
 _UNCHANGED: Any = object()
 
 
@@ -119,6 +120,9 @@ def set_limit(
     )
     rule = checked_wish(named, wish)
     check_floor(tap, rule)
+    if named is Quantity.TIME_TO_LIMIT_S and not experiment.limits.filter(tap=tap, quantity__in=RUN_TOWARDS).exists():
+        raise WriteError("quantity", "The tap has no limit on er_db or angle_deg here that the light could run towards.",
+                         "Set that limit first.")
     values = {name: getattr(rule, name) for name in VALUES if name != "in_runs_only"} | {"in_runs_only": in_runs_only}
 
     def write() -> LimitVersion:

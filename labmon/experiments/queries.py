@@ -149,7 +149,9 @@ def limits_of(which: Q, *, are_retired_shown: bool = False) -> list[LimitFacts]:
     if not are_retired_shown:
         rows = [limit for limit in rows if not limit.versions.all()[0].is_retired]
     without_state = _taps_without_wanted_state(limit.tap for limit in rows)
-    return [_facts(limit, without_state) for limit in rows]
+    hosts = {(limit.experiment_id, limit.tap_id) for limit in rows
+             if limit.quantity in (Quantity.ER_DB, Quantity.ANGLE_DEG) and not limit.versions.all()[0].is_retired}
+    return [_facts(limit, without_state, hosts) for limit in rows]
 
 
 def limits_of_tap(tap: Tap) -> list[LimitFacts]:
@@ -166,12 +168,15 @@ def _taps_without_wanted_state(taps: Iterable[Tap]) -> set[int]:
     return polarimeters - known
 
 
-def _facts(limit: Limit, without_state: set[int]) -> LimitFacts:
+def _facts(limit: Limit, without_state: set[int], hosts: set[tuple[int, int]]) -> LimitFacts:
     rows = [_version_row(version) for version in limit.versions.all()]
     newest, quantity = rows[0], Quantity(limit.quantity)
     alarm_db, alarm_deg = limit_side_by_side(quantity, newest.alarm)
     warning_db, warning_deg = (None, None) if newest.warning is None else limit_side_by_side(quantity, newest.warning)
     needs_state = limit.tap_id in without_state and quantity in (Quantity.ER_DB, Quantity.ANGLE_DEG)
+    note = "Not judged: the tap has no wanted state yet." if needs_state else ""
+    if quantity is Quantity.TIME_TO_LIMIT_S and (limit.experiment_id, limit.tap_id) not in hosts:
+        note = "Not judged: there is no limit on the extinction ratio or the angle to run towards."
     return LimitFacts(
         limit_id=limit.pk,
         experiment_id=limit.experiment_id,
@@ -192,7 +197,7 @@ def _facts(limit: Limit, without_state: set[int]) -> LimitFacts:
         window_s=newest.window_s,
         in_runs_only=newest.in_runs_only,
         is_retired=newest.is_retired,
-        note="Not judged: the tap has no wanted state yet." if needs_state else "",
+        note=note,
         versions=rows,
     )
 

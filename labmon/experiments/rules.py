@@ -3,22 +3,28 @@
 import math
 from dataclasses import dataclass
 
+from analysis.judge.derived import DRIFT_WINDOW_S, LONGEST_WINDOW_S, SHARE_WINDOW_S
 from analysis.judge.rule import LimitRule, Quantity
 from ingest.models import Tap, TapKind, Unit
 from labmon.errors import WriteError
 from labmon.experiments.models import LimitVersion
 
 #: What limits may be set on.
-LIMITED = tuple(one for one in Quantity if not one.is_derived)
+LIMITED = tuple(Quantity)
 LONGEST_DELAY_S = 7 * 86_400.0
 _UNITS_WITHOUT_WATTS = frozenset({Unit.VOLT, Unit.COUNT})
-_DEADBAND = {Quantity.ER_DB: 1.0, Quantity.ANGLE_DEG: 1.0, Quantity.DOP: 0.01}
+_DEADBAND = {Quantity.ER_DB: 1.0, Quantity.ANGLE_DEG: 1.0, Quantity.DOP: 0.01, Quantity.TRUSTED_SHARE: 0.02,
+             Quantity.TIME_TO_LIMIT_S: 1800.0}
 _RANGES = {
     Quantity.ER_DB: (-100.0, 100.0),
     Quantity.ANGLE_DEG: (0.0, 180.0),
     Quantity.DOP: (0.0, 1.0),
     Quantity.POWER_W: (0.0, 1e6),
+    Quantity.TRUSTED_SHARE: (0.0, 1.0),
+    Quantity.TIME_TO_LIMIT_S: (60.0, LONGEST_WINDOW_S),
 }
+_WINDOW_STEP_S = {Quantity.TRUSTED_SHARE: 60.0, Quantity.TIME_TO_LIMIT_S: DRIFT_WINDOW_S}
+_USUAL_WINDOW_S = {Quantity.TRUSTED_SHARE: SHARE_WINDOW_S, Quantity.TIME_TO_LIMIT_S: DRIFT_WINDOW_S}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -86,7 +92,13 @@ def checked_wish(quantity: Quantity, wish: LimitWish) -> LimitRule:
             f"Choose a warning {side} {alarm:g}, or leave it empty.",
         )
     deadband = default_deadband(quantity, alarm) if wish.deadband is None else _not_negative("deadband", wish.deadband)
-    _check_can_clear(quantity, alarm if warning is None else warning, deadband)
+    outer = alarm if warning is None else warning
+    _check_can_clear(quantity, outer, deadband)
+    window_s = _window(quantity, wish.window_s)
+    if quantity is Quantity.TIME_TO_LIMIT_S and outer > (window_s or 0.0):
+        raise WriteError("alarm" if warning is None else "warning",
+                         f"Drift over {window_s:g} s says nothing of {outer:g} s ahead.",
+                         "Choose a longer window, or a level of at most the window.")
     return LimitRule(
         quantity=quantity,
         alarm=alarm,
@@ -94,7 +106,22 @@ def checked_wish(quantity: Quantity, wish: LimitWish) -> LimitRule:
         on_delay_s=_delay("on_delay_s", wish.on_delay_s),
         off_delay_s=_delay("off_delay_s", wish.off_delay_s),
         deadband=deadband,
+        window_s=window_s,
     )
+
+
+def _window(quantity: Quantity, window_s: float | None) -> float | None:
+    """The time over which a derived quantity is taken, s; others have none."""
+    if not quantity.is_derived:
+        if window_s is not None:
+            raise WriteError("window_s", f"{quantity.value} is of one sample and has no window.", "Leave it out.")
+        return None
+    number = _USUAL_WINDOW_S[quantity] if window_s is None else _number("window_s", window_s)
+    step_s = _WINDOW_STEP_S[quantity]
+    if not step_s <= number <= LONGEST_WINDOW_S or number % step_s:
+        raise WriteError("window_s", f"{number:g} s is no window for {quantity.value}.",
+                         f"Choose a multiple of {step_s:g} s up to {LONGEST_WINDOW_S:g} s.")
+    return number
 
 
 def default_deadband(quantity: Quantity, alarm: float) -> float:
@@ -117,7 +144,7 @@ def checked_level(field: str, quantity: Quantity, value: float) -> float:
     number = _number(field, value)
     low, high = _RANGES[quantity]
     is_inside = low < number < high if quantity is Quantity.ANGLE_DEG else low <= number <= high
-    if quantity is Quantity.POWER_W:
+    if quantity in (Quantity.POWER_W, Quantity.TRUSTED_SHARE):
         is_inside = 0.0 < number <= high
     if not is_inside:
         raise WriteError(
@@ -141,8 +168,9 @@ def _delay(field: str, value: float) -> float:
 
 
 def _check_can_clear(quantity: Quantity, level: float, deadband: float) -> None:
-    if quantity is Quantity.DOP and level + deadband > 1.0:
-        raise WriteError("deadband", f"Clear would need a DOP of {level + deadband:g}.", f"Choose at most {1.0 - level:g}.")
+    if quantity in (Quantity.DOP, Quantity.TRUSTED_SHARE) and level + deadband > 1.0:
+        what = "DOP" if quantity is Quantity.DOP else "share"
+        raise WriteError("deadband", f"Clear would need a {what} of {level + deadband:g}.", f"Choose at most {1.0 - level:g}.")
     if quantity is Quantity.ANGLE_DEG and level - deadband <= 0.0:
         raise WriteError(
             "deadband", f"Clear would need an angle of {level - deadband:g} degrees.", f"Choose less than {level:g}."

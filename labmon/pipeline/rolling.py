@@ -12,6 +12,7 @@ from ingest.models import Tap
 from ingest.times import SECOND_US
 from ingest.times import now_us as server_now_us
 from labmon.claims import ROLLING, claim_taps
+from labmon.pipeline.derived import mark_derived_due
 from labmon.pipeline.nightly import mark_days
 
 CHUNK_TAPS: Final = 256
@@ -70,6 +71,7 @@ def _fine_chunk(now_us: int) -> int:
         for span in pieces.values()
         if not is_closed(span.first_us // DAY_US * DAY_US, now_us)
     ]
+    mark_derived_due([(span.tap_id, span.first_us, span.last_us) for span in pieces.values()])
     mark_days([(due.tap, pieces[due.tap.pk].first_us // DAY_US * DAY_US) for due in chosen], now_us)
     _replace([one for due in chosen for one in due.ids], rests + hours)
     return len(chosen)

@@ -18,6 +18,7 @@ from labmon.drills.follow import follow_drills
 from labmon.events.steps import take_steps
 from labmon.events.telling import tell_due
 from labmon.experiments.consent import expire_requests
+from labmon.pipeline.derived import judge_derived
 from labmon.pipeline.doubting import cast_doubts
 from labmon.pipeline.nightly import make_day_statistics
 from labmon.pipeline.process import process_touched
@@ -115,6 +116,12 @@ def watch_folder_task() -> None:
 def roll_up_task() -> None:
     """Make due rollups of 10 s and 1 min anew."""
     roll_up_due(for_s=PROCESS_FOR_S)
+
+
+@_task("judge_derived", 120)
+def judge_derived_task() -> None:
+    """Judge trusted shares and times to the limit from new one-minute cells."""
+    judge_derived(for_s=PROCESS_FOR_S)
 
 
 @_task("roll_up_coarse", 120)

@@ -84,12 +84,13 @@ class TapWork:
 def load_work(tap_ids: Sequence[int]) -> list[TapWork]:
     """The work of claimed taps, in the order of their ids."""
     ids = list(tap_ids)
-    states, limits, watched = _states(ids), _limits(ids), _watched(ids)
+    states, limits, watched = _states(ids), limits_of_taps(ids), _watched(ids)
     works = []
     for tap, touched in _touched(ids):
         state, now_us, last_trusted = states.get(tap.pk) or (TapState(), None, {})
         experiment_id, after_s = watched.get(tap.pk, (None, None))
-        works.append(TapWork(tap, touched, state, now_us, last_trusted, limits.get(tap.pk, []), after_s, experiment_id))
+        own = [one for one in limits.get(tap.pk, []) if not Quantity(one.limit.quantity).is_derived]
+        works.append(TapWork(tap, touched, state, now_us, last_trusted, own, after_s, experiment_id))
     return works
 
 
@@ -127,14 +128,14 @@ def state_from_text(text: str) -> TapState:
     return TapState.from_json(msgspec.json.decode(text))
 
 
-def _limits(tap_ids: list[int]) -> dict[int, list[LimitWork]]:
-    """Limits of the taps with all their versions and their newest checkpoints."""
+def limits_of_taps(tap_ids: list[int]) -> dict[int, list[LimitWork]]:
+    """Limits of the taps, derived ones too, with all their versions and their newest checkpoints."""
     with connection.cursor() as cursor:
         cursor.execute(
             """
             SELECT lim.tap_id, lim.id, lim.experiment_id, lim.quantity, version.id, version.valid_from, version.is_retired,
                    version.in_runs_only, version.alarm, version.warning, version.on_delay_s, version.off_delay_s,
-                       version.deadband,
+                       version.deadband, version.window_s,
                    point.at_us, point.state::text
             FROM labmon_limit lim JOIN labmon_limitversion version ON version.limit_id = lim.id
             LEFT JOIN labmon_foldcheckpoint point ON point.version_id = version.id AND point.is_newest
@@ -149,7 +150,7 @@ def _limits(tap_ids: list[int]) -> dict[int, list[LimitWork]]:
     for own in by_limit.values():
         tap_id, limit_id, experiment_id, quantity = own[0][:4]
         phases = phases_of([(row[4], _rule(quantity, row), us_of(row[5]), row[6], row[7]) for row in own])
-        points = [standing_from_text(row[4], row[13], row[14]) for row in own if row[13] is not None]
+        points = [standing_from_text(row[4], row[14], row[15]) for row in own if row[14] is not None]
         standing = max(points, key=lambda one: one.at_us, default=None)
         works.setdefault(tap_id, []).append(LimitWork(LimitHere(limit_id, experiment_id, quantity), phases, standing))
     return works
@@ -157,7 +158,8 @@ def _limits(tap_ids: list[int]) -> dict[int, list[LimitWork]]:
 
 def _rule(quantity: str, row: tuple[Any, ...]) -> LimitRule:
     return LimitRule(
-        quantity=Quantity(quantity), alarm=row[8], warning=row[9], on_delay_s=row[10], off_delay_s=row[11], deadband=row[12]
+        quantity=Quantity(quantity), alarm=row[8], warning=row[9], on_delay_s=row[10], off_delay_s=row[11], deadband=row[12],
+        window_s=row[13],
     )
 
 

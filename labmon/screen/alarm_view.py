@@ -101,6 +101,9 @@ def _title(row: AlarmRow) -> str:
         return f"{row.tap}: readings untrusted" + (f", {row.cause}" if row.cause else "")
     crossed = "above" if row.quantity == "angle_deg" else "below"
     level = "limit" if row.level == "alarm" else "warning level"
+    if row.quantity == "time_to_limit_s":
+        return (f"{row.tap}: warned that recent drift reaches the limit in {both_units(row.quantity, row.value)} "
+                f"(sooner than {both_units(row.quantity, row.limit)})")
     return f"{row.tap}: worst {both_units(row.quantity, row.value)}, {crossed} its {level} {both_units(row.quantity, row.limit)}"
 
 

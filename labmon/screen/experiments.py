@@ -136,7 +136,7 @@ def rehearse_limit_page(request: HttpRequest, experiment_id: int) -> HttpRespons
 
 def _rehearsed(experiment: Experiment, typed: dict[str, Any]) -> RehearsalView:
     tap = taps_of(experiment)[typed["tap"]]
-    own = {name: typed[name] for name in ("alarm", "warning", "on_delay_s", "off_delay_s", "deadband")}
+    own = {name: typed[name] for name in ("alarm", "warning", "on_delay_s", "off_delay_s", "deadband", "window_s")}
     standing = [
         limit.alarm
         for limit in experiment_facts(experiment).limits

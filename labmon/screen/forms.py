@@ -29,6 +29,8 @@ class LimitForm(forms.Form):
             (Quantity.ANGLE_DEG.value, "Angle from the wanted state, °, at most"),
             (Quantity.DOP.value, "Degree of polarization, at least"),
             (Quantity.POWER_W.value, "Power, W, at least"),
+            (Quantity.TRUSTED_SHARE.value, "Trusted share over a window, 0 to 1, at least"),
+            (Quantity.TIME_TO_LIMIT_S.value, "Warning ahead: time to the limit, s, at least"),
         ],
     )
     alarm = Number(label="Alarm level")
@@ -36,6 +38,8 @@ class LimitForm(forms.Form):
     on_delay_s = Number(label="On-delay, s", help_text="Beyond the level so long before anyone is called.")
     off_delay_s = Number(label="Off-delay, s", help_text="Clear so long before it counts as returned.")
     deadband = Number(label="Deadband", required=False, help_text="In the quantity's unit. Empty: the usual one.")
+    window_s = Number(label="Window, s", required=False,
+                      help_text="Only for a trusted share (over so long) and a time to the limit (drift of so long).")
     in_runs_only = forms.BooleanField(label="Call only in declared runs", required=False)
     reason = forms.CharField(label="Reason", max_length=500, help_text="Whoever asks next month will read it.")
 

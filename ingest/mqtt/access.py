@@ -15,6 +15,7 @@ from django.utils import timezone
 from ingest.broker_hash import broker_hash_of, is_hash_of
 from ingest.models import StationKey
 from ingest.mqtt.address import BrokerAddress
+from ingest.mqtt.broker_log import NOTICES
 from ingest.mqtt.topics import ANSWER, GONE, READINGS, topic_of
 
 log = logging.getLogger(__name__)
@@ -41,7 +42,7 @@ def write_access(folder: Path, own: BrokerAddress, broker_pid_file: Path | None)
 
 def rules_for(own_user: str) -> str:
     """The rules file; %u stands for the user, which is the station."""
-    return (f"user {own_user}\ntopic read {READINGS}\ntopic read {GONE}\ntopic write {ANSWER}\n\n"
+    return (f"user {own_user}\ntopic read {READINGS}\ntopic read {GONE}\ntopic read {NOTICES}\ntopic write {ANSWER}\n\n"
             f"pattern write {topic_of(READINGS, '%u')}\npattern write {topic_of(GONE, '%u')}\n"
             f"pattern read {topic_of(ANSWER, '%u')}\n")
 

@@ -19,8 +19,10 @@ from paho.mqtt.properties import Properties
 
 from ingest.door.asgi import Door
 from ingest.door.keys import NameRing
+from ingest.door.notices import note_refused
 from ingest.door.refusal import Refusal
 from ingest.mqtt.address import BrokerAddress
+from ingest.mqtt.broker_log import NOTICES, TURNED_AWAY, BrokerLog
 from ingest.mqtt.links import note_link_lost
 from ingest.mqtt.topics import ANSWER, GONE, READINGS, SHARED, station_of, topic_of
 
@@ -63,6 +65,7 @@ class Subscriber:
         self._bytes, self._room = 0, threading.Condition()
         self._life, self._is_stopping = 0, False
         self._came = asyncio.Event()
+        self._broker_log, self._notices_mid = BrokerLog(), None
         self._client = Client(CallbackAPIVersion.VERSION2, client_id, protocol=MQTTv5, manual_ack=True)
         self._client.username_pw_set(address.user, address.password)
         if address.is_tls:
@@ -102,8 +105,11 @@ class Subscriber:
         self._life += 1
         log.info("broker_connected", extra={"host": self.address.host, "is_session_kept": flags.session_present})
         client.subscribe([(SHARED + READINGS, 1), (SHARED + GONE, 0)])
+        _, self._notices_mid = client.subscribe(NOTICES, 0)
 
     def _on_subscribe(self, client: Client, _: Any, mid: int, reasons: list[Any], properties: Any) -> None:
+        if mid == self._notices_mid:  # the broker's log is a hint: it may keep it to itself
+            return
         if any(reason.is_failure for reason in reasons):
             log.error("broker_refuses_subscription", extra={"reasons": ", ".join(map(str, reasons))})
         else:
@@ -114,12 +120,22 @@ class Subscriber:
 
     def _on_message(self, client: Client, _: Any, message: MQTTMessage) -> None:
         """In the client's thread, which waits here while too much is unanswered."""
+        if message.topic == NOTICES:
+            self._note_turned_away(message)
+            return
         with self._room:
             self._room.wait_for(lambda: self._bytes <= MOST_UNANSWERED_BYTES or self._is_stopping)
             if self._is_stopping:
                 return
             self._bytes += len(message.payload)
         self._loop.call_soon_threadsafe(self._take, message, self._life)
+
+    def _note_turned_away(self, message: MQTTMessage) -> None:
+        """A wrong key or name at the broker, for the joining slip."""
+        address = self._broker_log.turned_away(message.payload.decode("utf-8", "replace"))
+        if address is not None and not message.retain:
+            note_refused("", address, TURNED_AWAY)
+        self._client.ack(message.mid, message.qos)
 
     def _take(self, message: MQTTMessage, life: int) -> None:
         self._unanswered.append(_Taken(message, life, asyncio.create_task(self._answer(message))))

@@ -8,6 +8,7 @@ from typing import Final
 
 from analysis.reduce.plausible import Oddity
 from ingest.models import StationBoot
+from ingest.mqtt.broker_log import TURNED_AWAY
 from labmon.benches.joining import Joining, TapJoining
 from labmon.benches.models import DoorRefusal
 from labmon.screen.clock_view import clock_state
@@ -103,6 +104,9 @@ def _stranger_words(row: DoorRefusal, joining: Joining) -> str:
         return f"A person's key was tried as a station's, {where}. The bench needs its own key."
     if row.title == "a station key is needed":
         return f"Someone came without a key, {where}. The header Authorization: Bearer … is missing."
+    if row.title == TURNED_AWAY.title:
+        return (f"The MQTT broker turned someone away {where}: a wrong key, or a user that is not the station's name. Which of "
+                "them, the broker does not say. If that is this bench, compare both with the slip.")
     return (f"A key that labmon does not know{_hint(row)} was tried {where}. If that is this bench, compare it with the slip: "
             "letters lost at the end, a blank or a line break are usual.")
 

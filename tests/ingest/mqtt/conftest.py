@@ -44,7 +44,7 @@ class Broker:
         self.address = BrokerAddress("127.0.0.1", self.port, "labmon.door", PASSWORD, False)
         self.pid_file = folder / "pid"
         lines = [f"listener {self.port} 127.0.0.1", "allow_anonymous false", f"password_file {folder / 'passwords'}",
-                 f"acl_file {folder / 'rules'}", f"pid_file {self.pid_file}", "log_dest stderr", "log_type all"]
+                 f"acl_file {folder / 'rules'}", f"pid_file {self.pid_file}", "log_dest stderr", "log_dest topic", "log_type all"]
         if os.geteuid() == 0:
             lines.append("user root")  # else it gives up the right to read our files
         (folder / "mosquitto.conf").write_text("\n".join(lines) + "\n")

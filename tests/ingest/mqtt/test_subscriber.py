@@ -213,3 +213,15 @@ def test_killed_at_any_moment_every_message_is_stored_once(sender, bench, broker
     assert balance.is_exact and stored.sequence.tolist() == list(range(10 * sent))
     tap = TapBoot.objects.get().tap_id
     assert len(read_readings(tap, *EVER)) == 10 * sent
+
+
+def test_who_the_broker_turned_away_stands_on_the_joining_slip(sender, broker, subscriber):
+    """A wrong key, then a name that is no station: the broker tells neither, only whence they came."""
+    from labmon.benches.models import DoorRefusal
+
+    for station, key in ((sender.station.name, "a wrong key"), ("nobody", sender.key)):
+        bench = Bench(broker, station, key)
+        assert bench.connected.get(timeout=10).is_failure
+        bench.close()
+    row = until(lambda: DoorRefusal.objects.filter(count__gte=2).first())
+    assert (row.title, row.remote_address, row.station, row.hint) == ("the broker turned it away", "127.0.0.1", None, "")

@@ -76,6 +76,7 @@ def test_a_wrong_key_is_told_with_its_address_and_age():
     [
         (refusal("the key is not known", hint="pers"), "A person's key was tried"),
         (refusal("a station key is needed", hint="", count=1), "came without a key, once from 192.0.2.9"),
+        (refusal("the broker turned it away", hint=""), "The MQTT broker turned someone away 12 times from 192.0.2.9"),
     ],
 )
 def test_other_wrong_keys_are_named_for_what_they_are(row, said):

@@ -25,6 +25,7 @@ from labmon.people.models import Person, Role
 from labmon.people.rights import Action, may, require, role_of, taps_visible_to
 from labmon.runs.queries import run_now
 from labmon.screen.alarm_view import alarm_view
+from labmon.screen.clearance import clearance_context
 from labmon.screen.door import for_people, put_refusal, say_refusal
 from labmon.screen.experiment_view import experiment_sentence, experiments_sentence, ladder, limit_view
 from labmon.screen.forms import ExperimentForm, LimitForm
@@ -192,6 +193,7 @@ def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, 
             "alarms": [view for view in alarms if not view.is_waiting],
             "ladder": ladder(),
             "rehearsal": rehearsal,
+            **({} if "X-Labmon-Part" in request.headers else clearance_context(experiment)),
             **_holds_of(request, experiment, now),
             "silence": age_text(experiment.no_reading_after_s or USUAL_SILENCE_S),
             "untrusted": age_text(experiment.untrusted_after_s),

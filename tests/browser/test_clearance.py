@@ -22,25 +22,26 @@ def is_fit(page, width):
 def experiment(lab):
     """A bench with 26 days behind it, of which four nights would have failed."""
     made, tap, now_us = beside(bench_with, nights_of(26, {3: 9.0, 8: 10.0, 11: 9.5, 24: 9.0}))
-    LogEntry.objects.create(station=tap.station, at=at_of(MONDAY_US + 8 * DAY_US + 2 * HOUR_US), text="door left open", tag="note")
+    at = at_of(MONDAY_US + 8 * DAY_US + 2 * HOUR_US)
+    LogEntry.objects.create(station=tap.station, at=at, text="door left open", tag="note")
     now = at_of(now_us + HOUR_US)
     beside(begin_nightly, now)
     beside(walk_due, now)
     return made
 
 
-@pytest.mark.parametrize(("scheme", "width"), [("light", 1280), ("dark", 360), ("light", 320)])
-def test_the_pages_fit(signed_in, lab, experiment, scheme, width, tmp_path):
+def test_the_pages_fit(signed_in, lab, experiment, tmp_path):
     page = signed_in(make_person(Role.RESEARCHER))
-    page.emulate_media(color_scheme=scheme)
-    page.set_viewport_size({"width": width, "height": 900})
     start = at_of(MONDAY_US + 25 * DAY_US).strftime("%Y-%m-%d+%H:%M")
-    for number, address in enumerate((
-        f"/experiments/{experiment.pk}/clearance/?length_h=12&start={start}", f"/experiments/{experiment.pk}/", "/clearance/backtest/",
-        f"/experiments/{experiment.pk}/clearance/backtest/")):
-        page.goto(lab.url(address))
-        is_fit(page, width)
-        page.screenshot(path=str(tmp_path / f"{number}.png"), full_page=True)
+    addresses = (f"/experiments/{experiment.pk}/clearance/?length_h=12&start={start}", f"/experiments/{experiment.pk}/",
+                 "/clearance/backtest/", f"/experiments/{experiment.pk}/clearance/backtest/")
+    for scheme, width in (("light", 1280), ("dark", 360), ("light", 320)):
+        page.emulate_media(color_scheme=scheme)
+        page.set_viewport_size({"width": width, "height": 900})
+        for number, address in enumerate(addresses):
+            page.goto(lab.url(address))
+            is_fit(page, width)
+            page.screenshot(path=str(tmp_path / f"{width}-{number}.png"), full_page=True)
 
 
 def test_asked_by_keyboard(signed_in, lab, experiment):

@@ -32,7 +32,10 @@ SAME = Identity()
 
 def launched(command: Sequence[str | Path], *, identity: Identity = SAME,
              death_signal: signal.Signals = signal.SIGTERM) -> list[str]:
-    """The command line that runs ``command`` through the launcher; the caller is the parent it dies with."""
+    """The command line that runs ``command`` through the launcher; the caller is the parent it dies with.
+
+    On Linux the parent is the *thread* that starts it (prctl(2), PR_SET_PDEATHSIG): start it from one that lives on.
+    """
     return [sys.executable, "-I", "-S", str(LAUNCHER), "--parent", str(os.getpid()),
             "--death-signal", str(int(death_signal)), "--user", identity.user, "--", *map(str, command)]
 

@@ -3,15 +3,18 @@ doubled."""
 
 import json
 import random
+import shutil
 import signal
+import subprocess
 import threading
 import time
 from datetime import UTC, datetime
+from pathlib import Path
 
 import pytest
 
 from ingest.models import SetAside, StationBoot
-from tests.clients.bench.conftest import client, free_port, server, status_of, write_settings
+from tests.clients.bench.conftest import ONE_FILE, client, free_port, server, status_of, write_settings
 from tests.faults.figures import balance_of, note_fault
 from tests.running_lab import until_true
 
@@ -131,6 +134,28 @@ def test_a_pipe_that_ends_is_sent_to_its_end(sender, tmp_path):
     assert process.returncode == 0, said
     assert sender.stored().column("port1").tolist() == list(range(500))
     assert sender.tap().unknown_columns == []
+
+
+@pytest.mark.parametrize("version", ["3.9", "3.13"])
+def test_it_runs_on_the_oldest_and_a_new_python(sender, tmp_path, version):
+    """The whole way on another interpreter, without anything installed for it."""
+    interpreter = python_of(version)
+    if interpreter is None:
+        pytest.skip(f"no Python {version} on this machine; vermin judges the source in test_one_file.py")
+    port = free_port()
+    settings = write_settings(tmp_path, port, sender.key, ["[tap eom-in]", "source = stdin", "columns = port1 port2"])
+    with server(port):
+        process = subprocess.Popen([interpreter, "-I", "-S", ONE_FILE, "run", settings], stdin=subprocess.PIPE, text=True,
+                                   stdout=subprocess.PIPE, stderr=subprocess.PIPE)
+        _, said = process.communicate("".join(f"{number} 0.5\n" for number in range(100)), timeout=30)
+    assert process.returncode == 0, said
+    assert sender.stored().column("port1").tolist() == list(range(100))
+
+
+def python_of(version: str) -> str | None:
+    """An interpreter of that version: on the path, or kept by pyenv."""
+    kept = sorted((Path.home() / ".pyenv" / "versions").glob(f"{version}.*/bin/python"))
+    return shutil.which(f"python{version}") or (str(kept[-1]) if kept else None)
 
 
 def test_status_says_what_is_wrong(sender, tmp_path):

@@ -153,9 +153,9 @@ def test_it_runs_on_the_oldest_and_a_new_python(sender, tmp_path, version):
 
 
 def python_of(version: str) -> str | None:
-    """An interpreter of that version: on the path, or kept by pyenv."""
+    """An interpreter of that version: kept by pyenv (whose own names on the path may lead nowhere), or on the path."""
     kept = sorted((Path.home() / ".pyenv" / "versions").glob(f"{version}.*/bin/python"))
-    return shutil.which(f"python{version}") or (str(kept[-1]) if kept else None)
+    return str(kept[-1]) if kept else shutil.which(f"python{version}")
 
 
 def test_status_says_what_is_wrong(sender, tmp_path):

@@ -2,7 +2,7 @@
 
 from labmon.ahead.models import AheadDue, AheadScore, LimitOutlook
 from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold
-from labmon.audit.models import AuditEntry
+from labmon.audit.models import AuditEntry, AuditPlace
 from labmon.benches.models import Bench, ClientState, DoorHour, DoorRefusal, KeyUse
 from labmon.clearance.models import BackTestDue, BackTestPass, LimitBackTest, RunClearance, RunWatch
 from labmon.drills.models import Drill
@@ -15,10 +15,10 @@ from labmon.runs.models import Run, RunLedger, RunLimit, RunTap
 from labmon.tell.models import Delivery, DeliveryTry, Message, PushDevice, QuietHours, SigningKey, Webhook
 
 __all__ = [
-    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "BackTestDue", "BackTestPass", "Bench",
-    "CallRules", "ClientState", "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour", "DoorRefusal", "Drill",
-    "Event", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitBackTest", "LimitFloor", "LimitOutlook",
-    "LimitRequest", "LimitVersion", "LogEntry", "LogEntryBefore", "Message", "OnCall", "Person", "PersonKey",
-    "PushDevice", "QuietHours", "Run", "RunClearance", "RunEvidence", "RunLedger", "RunLimit", "RunTap", "RunWatch",
-    "SignInTry", "SigningKey", "Webhook",
+    "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "AuditPlace", "BackTestDue",
+    "BackTestPass", "Bench", "CallRules", "ClientState", "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour",
+    "DoorRefusal", "Drill", "Event", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitBackTest", "LimitFloor",
+    "LimitOutlook", "LimitRequest", "LimitVersion", "LogEntry", "LogEntryBefore", "Message", "OnCall", "Person",
+    "PersonKey", "PushDevice", "QuietHours", "Run", "RunClearance", "RunEvidence", "RunLedger", "RunLimit", "RunTap",
+    "RunWatch", "SignInTry", "SigningKey", "Webhook",
 ]

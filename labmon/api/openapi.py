@@ -6,12 +6,14 @@ from typing import Any
 from django.http import HttpRequest, HttpResponse
 
 from labmon.api.answer import json_answer
+from labmon.api.audit_shapes import AUDIT_SHAPES
 from labmon.api.clearance_shapes import CLEARANCE_SHAPES
 from labmon.api.log_shapes import LOG_SHAPES, TAG
 from labmon.api.run_shapes import RUN_SHAPES, RUN_STATES
 from labmon.api.schemas import ALARM_STATES, ID, MEASURED, NAME, NAMED, TIME, Schema, ref
 from labmon.api.statistics_shapes import STATISTICS
 
+AUDIT_TYPES = {"csv": "text/csv; charset=utf-8", "jsonl": "application/jsonl"}
 Operation = dict[str, Any]
 
 BASE = "/api/v1"
@@ -71,6 +73,10 @@ def in_query(name: str, schema: Schema, text: str, *, required: bool = False) ->
 TAP = (in_path("station", NAME), in_path("tap", NAME))
 SPAN = in_query("span", {"type": "string"}, "ISO 8601 interval start/end or start/duration, absolute times with zone, "
                                             "such as 2031-03-04T00:00:00Z/P1D.", required=True)
+AUDIT = (in_query("bench", NAME, "Only about this bench."), in_query("subject", {"type": "string"}, "Only about this, as named."),
+         in_query("person", {"type": "string"}, "Only by this person."),
+         in_query("action", {"type": "string"}, "Only this act, such as set calibration."),
+         in_query("span", {"type": "string"}, "Only within this ISO 8601 interval."))
 WRITE = (400, 401, 403, 404, 413, 415)
 
 PATHS: dict[str, dict[str, Operation]] = {
@@ -233,6 +239,20 @@ PATHS: dict[str, dict[str, Operation]] = {
         "Two versions of a ledger compared, second by second.", {200: answer("What changed.", "LedgerChange")},
         parameters=(in_path("id", ID), in_query("before", ID, "A version.", required=True),
                     in_query("after", ID, "Another version.", required=True)))},
+    f"{BASE}/audit": {"get": call(
+        "Who changed what, newest first: managers all of it, owners what is about their benches and experiments.",
+        {200: answer("The entries.", "AuditEntries")},
+        parameters=(*AUDIT, in_query("before", ID, "Only older ones: ids below this."),
+                    in_query("count", {"type": "integer", "minimum": 1, "maximum": 1000, "default": 200}, "At most so many.")),
+        faults=(400, 401, 403))},
+    f"{BASE}/audit/export": {"get": call(
+        "The same as a file, streamed; that it was taken is itself an entry.",
+        {200: {"description": "The entries, newest first.",
+               "content": {kind: {"schema": {"type": "string"}} for kind in AUDIT_TYPES.values()}}},
+        parameters=(*AUDIT, in_query("format", {"type": "string", "enum": list(AUDIT_TYPES), "default": "csv"}, "The form."),
+                    in_query("chain", {"type": "string", "enum": ["yes", "no"], "default": "no"},
+                             "yes: each line with a digest of all before it, so that a changed or missing line is noticed.")),
+        faults=(400, 401, 403))},
     f"{BASE}/readings": {"post": {
         "summary": "The station door: a batch of readings. Answered after the commit, never before.",
         "security": [{"stationKey": []}],
@@ -261,7 +281,7 @@ def document() -> dict[str, Any]:
                  "Additions are free, changes are not: clients must accept members that they do not know."},
         "paths": PATHS,
         "components": {
-            "schemas": NAMED | {"Statistics": STATISTICS} | CLEARANCE_SHAPES | LOG_SHAPES | RUN_SHAPES,
+            "schemas": NAMED | {"Statistics": STATISTICS} | CLEARANCE_SHAPES | LOG_SHAPES | AUDIT_SHAPES | RUN_SHAPES,
             "securitySchemes": {
                 "personKey": {"type": "http", "scheme": "bearer", "description": "A person's key."},
                 "session": {"type": "apiKey", "in": "cookie", "name": "sessionid",

@@ -28,6 +28,7 @@ from labmon.api.query import known_only, one_of, span_of, time_or_none
 from labmon.api.span import Span
 from labmon.api.table import table_of
 from labmon.api.times import rfc3339
+from labmon.audit.actions import note_export
 from labmon.people.models import Person
 
 
@@ -44,6 +45,7 @@ def get_readings(request: HttpRequest, person: Person, station: str, tap: str) -
     first = next(tables)    # faults come before the answer has begun
     about = {"tap": tap_path(row), "kind": row.kind, "unit": row.unit or None, "span": str(span), "as_of": rfc3339(as_of),
              "not_kept": [[rfc3339_of(hole.from_us), rfc3339_of(hole.until_us + 1)] for hole in holes]}
+    note_export("export readings", row, {"span": str(span), "format": form, "as_of": rfc3339(as_of)}, by=person)
     parts = written(form, first.schema, itertools.chain([first], tables), about)
     answer = StreamingHttpResponse(_for_server(request, parts), content_type=TYPES[form])
     answer.headers["Content-Disposition"] = f'attachment; filename="{station}-{tap}.{form}"'

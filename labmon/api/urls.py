@@ -4,6 +4,7 @@ from django.urls import path, re_path, register_converter
 
 from ingest.models import NAME_PATTERN
 from labmon.api.alarms import get_alarms, post_acknowledge, post_shelve, post_unshelve
+from labmon.api.audit import get_audit, get_audit_export
 from labmon.api.call import by_method, open_to_all, unknown_address
 from labmon.api.clearance import get_clearance, get_run_clearance
 from labmon.api.events import get_event, get_events, patch_station, post_take
@@ -91,6 +92,8 @@ urlpatterns = [
     path("runs/<row:run_id>/cancel", by_method(POST=post_cancel), name="cancel-run"),
     path("runs/<row:run_id>/ledger", by_method(GET=get_ledger, POST=post_ledger), name="ledger"),
     path("runs/<row:run_id>/ledger/change", by_method(GET=get_ledger_change), name="ledger-change"),
+    path("audit", by_method(GET=get_audit), name="audit"),
+    path("audit/export", by_method(GET=get_audit_export), name="audit-export"),
     path("openapi.json", open_to_all(GET=get_openapi), name="openapi"),
     re_path(r"", unknown_address, name="unknown"),
 ]

@@ -6,7 +6,8 @@ from typing import Any
 from django.db import transaction
 from django.db.models import Model
 
-from labmon.audit.models import AuditEntry
+from labmon.audit.models import AuditEntry, AuditPlace
+from labmon.audit.places import places_of
 from labmon.people.models import Person
 
 
@@ -21,7 +22,7 @@ def note(
     """
     if not transaction.get_connection().in_atomic_block:
         raise RuntimeError("note() must run in the transaction of the write it tells of")
-    return AuditEntry.objects.create(
+    entry = AuditEntry.objects.create(
         person=person,
         person_name=person.username if person else as_name[:150],
         action=action,
@@ -30,6 +31,15 @@ def note(
         after=plain(after),
         reason=reason,
     )
+    if places := places_of(subject):
+        AuditPlace.objects.bulk_create([AuditPlace(entry=entry, place=place) for place in places])
+    return entry
+
+
+@transaction.atomic
+def note_export(action: str, subject: Model | str, facts: dict[str, Any], *, by: Person | None) -> AuditEntry:
+    """That somebody takes data out; written before the first byte leaves."""
+    return note(by, action, subject, after=facts)
 
 
 def name_of(subject: Model) -> str:

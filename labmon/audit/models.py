@@ -17,4 +17,19 @@ class AuditEntry(models.Model):
     reason = models.CharField(max_length=500, blank=True)
 
     class Meta:
-        indexes = [models.Index(fields=["subject", "-at"], name="audit_by_subject")]
+        indexes = [
+            models.Index(fields=["subject", "-at"], name="audit_by_subject"),
+            models.Index(fields=["action", "-id"], name="audit_by_action"),
+            models.Index(fields=["person_name", "-id"], name="audit_by_person"),
+            models.Index(fields=["at"], name="audit_by_time"),
+        ]
+
+
+class AuditPlace(models.Model):
+    """That an entry is about a bench (``station/b08``) or an experiment (``experiment/3``); append-only as well."""
+
+    entry = models.ForeignKey(AuditEntry, models.CASCADE, related_name="places", db_index=False)
+    place = models.CharField(max_length=90)
+
+    class Meta:
+        constraints = [models.UniqueConstraint(fields=["place", "entry"], name="audit_place_once")]

@@ -99,6 +99,7 @@ urlpatterns = [
     path("experiments/<int:experiment_id>/limits/rehearse/", experiments.rehearse_limit_page, name="rehearse-limit"),
     path("experiments/<int:experiment_id>/limits/<int:limit_id>/retire/", experiments.retire_limit_page, name="retire-limit"),
     path("audit/", audit.audit_page, name="audit"),
+    path("audit/export/", audit.audit_export_page, name="audit-export"),
     path("health/", health.health_page, name="health"),
     path("keeping/", keeping.keeping_page, name="keeping"),
     path("people/", people.people_page, name="people"),

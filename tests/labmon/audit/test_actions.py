@@ -36,3 +36,11 @@ def test_managers_read_all_owners_their_own_others_nothing():
     assert [row.subject for row in audit_rows(chief, subject="tap/foreign/t")] == ["tap/foreign/t"]
     newest = audit_rows(chief, limit=1)[0]
     assert len(audit_rows(chief, before_id=newest.pk)) == 2
+
+
+@pytest.mark.django_db
+@pytest.mark.parametrize("statement", ["UPDATE labmon_auditplace SET place = 'x'", "DELETE FROM labmon_auditplace"])
+def test_database_refuses_to_change_what_an_entry_is_about(statement):
+    note(None, "set calibration", make_tap())
+    with pytest.raises(DatabaseError, match="append-only"), transaction.atomic(), connection.cursor() as cursor:
+        cursor.execute(statement)

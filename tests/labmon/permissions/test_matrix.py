@@ -104,7 +104,7 @@ def asked(person: Person | None, method: str, address: str, send: dict[str, Any]
     if person is not None:
         client.force_login(person)
     if method == "GET":
-        return client.get(address)
+        return client.get(address, send)
     if method == "POST":
         return client.post(address, send)
     return client.generic(method, address)

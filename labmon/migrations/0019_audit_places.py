@@ -35,7 +35,7 @@ DROP TRIGGER audit_place_append_only ON labmon_auditplace;
 class Migration(migrations.Migration):
 
     dependencies = [
-        ('labmon', '0017_keys_and_sign_in'),
+        ('labmon', '0018_run_evidence'),
     ]
 
     operations = [

@@ -25,6 +25,7 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "follow drills": _every("follow_drills", 5.0),
     "roll up": _every("roll_up", 10.0),
     "judge what rests on minutes": _every("judge_derived", 60.0),
+    "back-test warnings ahead": _every("score_limits", 300.0, expires=300.0),
     "roll up hours and days": _every("roll_up_coarse", 120.0),
     "cast doubts": _every("cast_doubts", 15.0),
     "read the watched folder": _every("watch_folder", 10.0),

@@ -11,6 +11,7 @@ from ingest.store.days.check import check_days
 from ingest.store.days.left import sweep_left_files
 from ingest.store.days.seal import seal_days
 from ingest.store.seal import seal_inbox
+from labmon.ahead.backtest import score_limits
 from labmon.alarms.holding import end_due_holds
 from labmon.benches.keeping import forget_old_days
 from labmon.drills.actions import begin_weekly_drill
@@ -122,6 +123,12 @@ def roll_up_task() -> None:
 def judge_derived_task() -> None:
     """Judge trusted shares and times to the limit from new one-minute cells."""
     judge_derived(for_s=PROCESS_FOR_S)
+
+
+@_task("score_limits", 300)
+def score_limits_task() -> None:
+    """Back-test warnings ahead on the stored past, some limits at a time."""
+    score_limits()
 
 
 @_task("roll_up_coarse", 120)

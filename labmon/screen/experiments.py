@@ -12,18 +12,20 @@ from django.views.decorators.http import require_http_methods, require_POST, req
 
 from ingest.models import Tap
 from ingest.times import SECOND_US, now_us
+from labmon.ahead.queries import ahead_of
 from labmon.alarms.queries import alarm_rows
 from labmon.errors import NotAllowed, SecondPersonNeeded, WriteError
 from labmon.experiments.actions import create_experiment, retire_limit, set_limit
 from labmon.experiments.floors import floors_of
 from labmon.experiments.models import Experiment
 from labmon.experiments.proposals import proposal_facts
-from labmon.experiments.queries import experiment_facts, experiment_rows
+from labmon.experiments.queries import LimitFacts, experiment_facts, experiment_rows
 from labmon.experiments.rehearsal import rehearse_limit
 from labmon.experiments.rules import LimitWish
 from labmon.people.models import Person, Role
 from labmon.people.rights import Action, may, require, role_of, taps_visible_to
 from labmon.runs.queries import run_now
+from labmon.screen.ahead_view import ahead_words
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.clearance import clearance_context
 from labmon.screen.door import for_people, put_refusal, say_refusal
@@ -180,6 +182,7 @@ def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, 
             "experiment": experiment,
             "limits": [limit_view(limit, floors.get((limit.tap_id, limit.quantity))) for limit in facts.limits],
             "run": run_now(experiment),
+            "ahead": _ahead(facts.limits, now),
             "may_ask": may_ask,
             "proposals": json.dumps(proposal_facts()),
             **requests_shown(request, experiment, may_set=form is not None),
@@ -207,6 +210,12 @@ def _holds_of(request: HttpRequest, experiment: Experiment, now: datetime) -> di
     shown = holds_shown(request, now)
     names = set(taps_of(experiment))
     return shown | {"holds": [hold for hold in shown["holds"] if hold.tap in names]}
+
+
+def _ahead(limits: list[LimitFacts], now: datetime) -> list[tuple[str, str, str]]:
+    """Per limit on ER or angle: its tap, the time to it in words, the back-test."""
+    found = ahead_of(limit.limit_id for limit in limits)
+    return [(limit.tap_name, said, tested) for limit in limits for said, tested in ahead_words([limit], found, now)]
 
 
 def limit_form(experiment: Experiment, typed=None) -> LimitForm:

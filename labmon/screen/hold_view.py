@@ -6,7 +6,8 @@ from datetime import datetime
 from labmon.alarms.models import AlarmHold, HoldKind
 from labmon.screen.present import age_text, time_text
 
-_LIMITED = {"er_db": "extinction ratio", "angle_deg": "angle", "dop": "degree of polarization", "power_w": "power"}
+_LIMITED = {"er_db": "extinction ratio", "angle_deg": "angle", "dop": "degree of polarization", "power_w": "power",
+            "trusted_share": "trusted share", "time_to_limit_s": "time to the limit"}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -9,9 +9,11 @@ from django.urls import reverse
 from django.utils import timezone
 from django.views.decorators.http import require_safe
 
+from labmon.ahead.queries import warnings_ahead
 from labmon.alarms.queries import alarm_rows
 from labmon.benches.queries import bench_rows
 from labmon.people.rights import Action, may
+from labmon.screen.ahead_view import shown_since, warning_views
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.door import for_people
 from labmon.screen.holds import holds_shown
@@ -51,6 +53,7 @@ def _waiting(request: HttpRequest) -> dict[str, Any]:
     views = [alarm_view(row, now) for row in rows]
     return {
         **holds_shown(request, now),
+        "ahead": warning_views(warnings_ahead(request.user, since=shown_since(now)), now),
         "waiting": views[:MOST_WAITING],
         "more_waiting": max(0, len(views) - MOST_WAITING),
         "may_acknowledge": may(request.user, Action.ACKNOWLEDGE),

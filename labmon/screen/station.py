@@ -10,6 +10,7 @@ from django.views.decorators.http import require_safe
 from analysis.record.statistics import newest_days
 from ingest.models import Station
 from ingest.times import at_of
+from labmon.ahead.queries import ahead_of
 from labmon.alarms.queries import alarm_rows
 from labmon.benches.queries import StationFacts, station_facts
 from labmon.people.rights import Action, may
@@ -38,6 +39,7 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
     now = timezone.now()
     alarms = [alarm_view(row, now) for row in alarm_rows(request.user, station=found.name, limit=RECENT_ALARMS)]
     waiting = [view for view in alarms if view.is_waiting]
+    ahead = ahead_of(limit.limit_id for tap in facts.taps for limit in tap.limits)
     return render(
         request,
         "screen/station.html",
@@ -45,7 +47,7 @@ def station_page(request: HttpRequest, station: str) -> HttpResponse:
             "station": found,
             "facts": facts,
             "sentence": station_sentence(found.name, facts, len(waiting)),
-            "taps": [tap_view(tap, now) for tap in facts.taps],
+            "taps": [tap_view(tap, now, ahead) for tap in facts.taps],
             "drifts": _drifts(facts),
             "clock": clock_words(facts.boots),
             "troubles": [*door_troubles(facts.door, facts.taps), *trouble_words(facts.troubles, facts.taps, facts.doubts)],

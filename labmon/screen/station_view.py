@@ -1,6 +1,6 @@
 """A station as its page shows it: one sentence, then taps with their values in words. Pure."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import datetime
 
@@ -9,7 +9,9 @@ from django.utils.safestring import SafeString, mark_safe
 from analysis.models import Calibration
 from ingest.models import StationBoot
 from ingest.times import at_of
+from labmon.ahead.queries import Ahead
 from labmon.benches.queries import NowSample, StationFacts, TapFacts
+from labmon.screen.ahead_view import ahead_words
 from labmon.screen.clock_view import clock_state
 from labmon.screen.level_words import level_words
 from labmon.screen.present import (
@@ -52,6 +54,7 @@ class TapView:
     values: list[Fact]
     doubt: str
     limits: list[str]
+    ahead: list[tuple[str, str]]
     calibration: list[Fact]
     unknown_columns: list[str]
     heard_ms: int | None
@@ -87,8 +90,8 @@ def station_sentence(name: str, facts: StationFacts, unacknowledged: int) -> str
     return f"{said}.{waits}"
 
 
-def tap_view(tap: TapFacts, now: datetime) -> TapView:
-    """One tap in words."""
+def tap_view(tap: TapFacts, now: datetime, ahead: Mapping[int, Ahead] | None = None) -> TapView:
+    """One tap in words; ``ahead``: what is said of the time to its limits, by limit."""
     heard_at = tap.last_heard_at
     return TapView(
         id=tap.id,
@@ -99,6 +102,7 @@ def tap_view(tap: TapFacts, now: datetime) -> TapView:
         values=_values(tap),
         doubt=doubt_words(tap.now),
         limits=[level_words(limit) for limit in tap.limits],
+        ahead=ahead_words(tap.limits, ahead or {}, now),
         calibration=calibration_words(tap),
         unknown_columns=list(tap.unknown_columns),
         heard_ms=None if heard_at is None else int(heard_at.timestamp() * 1000),

@@ -13,6 +13,7 @@ import numpy as np
 from analysis.quantities import BoolArray, FloatArray, IntArray
 
 _LOOKED_AT: Final = 1024
+_PIECE: Final = 8192
 _LOST_DIGITS: Final = 1e-4  # share of a difference of sums below which it is summed term by term instead
 
 
@@ -153,35 +154,35 @@ def _one_component(row: FloatArray, factors: IntArray, counts: IntArray) -> Floa
     """With W the sums over m places: sum (b - a)^2 = 2 sum a^2 + 2 sum b^2 - sum (a + b)^2, and a + b is the next W.
 
     So an octave costs one addition and one product per place. Where the result is small beside the sums (drift, random
-    walk at small m), digits would be lost, and the differences are summed themselves.
+    walk at small m), digits would be lost, and the differences are summed themselves. Octaves pass to and fro between two
+    arrays: an addition in place would copy what overlaps.
     """
-    found = np.zeros(len(factors))
-    window, width, square = row if _are_octaves(factors) else row.copy(), 1, float(row @ row)  # octaves need no second look
+    found, spare = np.zeros(len(factors)), np.empty(len(row))
+    window, width, square = row if _are_octaves(factors) else row.copy(), 1, _square(row)  # octaves need no second look
     for place, (m, count) in enumerate(zip(factors.tolist(), counts.tolist(), strict=True)):
         if not count:
             continue
         if width != m:
             window, width = _window_sums(row, m), m
-            square = float(window @ window)
-        head, tail = window[:m], window[count : count + m]
-        ends = float(head @ head + tail @ tail)
-        direct = None if _keeps_digits(window, m, count, square) else _squares_of_steps(window, m, count)
-        doubled = _double(window, m, count)
+            square = _square(window)
+        head, tail, steps = window[:count], window[m : m + count], spare[:count]
+        direct = None if _keeps_digits(window, m, count, square) else _square(np.subtract(tail, head, out=steps))
+        ends = _square(window[:m]) + _square(window[count : count + m])
+        doubled = _square(np.add(head, tail, out=steps))
         found[place] = (4.0 * square - 2.0 * ends - doubled if direct is None else direct) / (m * m)
-        window, width, square = window[:count], 2 * m, doubled
+        window, spare, width, square = steps, window, 2 * m, doubled
     return found
 
 
-def _double(window: FloatArray, m: int, count: int) -> float:
-    """Sums over m places become sums over 2 m, in place; returns the sum of their squares."""
-    doubled = window[:count]
-    doubled += window[m : m + count]
-    return float(doubled @ doubled)
+def _square(values: FloatArray) -> float:
+    """Sum of squares, in pieces so short that BLAS stays on this thread: its threads wait for each other on a busy machine."""
+    whole = len(values) // _PIECE
+    pieces, rest = values[: whole * _PIECE].reshape(whole, _PIECE), values[whole * _PIECE :]
+    return float(np.vecdot(pieces, pieces).sum() + np.dot(rest, rest))
 
 
 def _squares_of_steps(window: FloatArray, m: int, count: int) -> float:
-    step = window[m : m + count] - window[:count]
-    return float(step @ step)
+    return _square(window[m : m + count] - window[:count])
 
 
 def _keeps_digits(window: FloatArray, m: int, count: int, square: float) -> bool:

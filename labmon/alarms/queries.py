@@ -12,6 +12,8 @@ from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold, AlarmState
 from labmon.people.models import Person
 from labmon.people.rights import alarms_visible_to, experiments_visible_to, taps_visible_to
 
+#: Nobody has acknowledged these; those still open first.
+WAITING_STATES = (AlarmState.UNACKNOWLEDGED, AlarmState.RETURNED_UNACKNOWLEDGED)
 OPEN_STATES = (
     AlarmState.UNACKNOWLEDGED,
     AlarmState.ACKNOWLEDGED,
@@ -90,6 +92,11 @@ def alarm_rows(
     if before_id is not None:
         rows = _behind(rows, before_id)
     return [_row(alarm) for alarm in _loaded(rows).order_by("-raised_at", "-pk")[:limit]]
+
+
+def waiting_count(person: Person) -> int:
+    """How many alarms that ``person`` may see wait for someone."""
+    return alarms_visible_to(person).filter(state__in=WAITING_STATES).count()
 
 
 def _behind(rows: QuerySet[Alarm], alarm_id: int) -> QuerySet[Alarm]:

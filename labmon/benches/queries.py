@@ -11,6 +11,7 @@ from django.db import connection
 from django.db.models import Q
 from django.utils import timezone
 
+from analysis.judge.interval import IntervalState
 from analysis.judge.rule import LimitRule, Quantity
 from analysis.models import Calibration
 from analysis.record.calibrations import versions_of
@@ -331,14 +332,23 @@ def _known(taps: Sequence[Tap], now_us: int) -> _Known:
 
 
 def _now_rows(tap_ids: Sequence[int]) -> dict[int, tuple[int, dict[str, Any], TapState]]:
+    """Per tap the newest sample's time and facts, and of its state what tells how often it is heard (the rest is long)."""
     with connection.cursor() as cursor:
         cursor.execute(
-            "SELECT tap_id, at_us, sample::text, trust_state::text FROM analysis_tapnow WHERE tap_id = ANY(%s)", [list(tap_ids)]
+            """
+            SELECT tap_id, at_us, sample::text, (trust_state->'interval')::text, (trust_state->'arrivals_us')::text
+            FROM analysis_tapnow WHERE tap_id = ANY(%s)""",
+            [list(tap_ids)],
         )
         return {
-            tap_id: (at_us, msgspec.json.decode(sample), TapState.from_json(msgspec.json.decode(state)))
-            for tap_id, at_us, sample, state in cursor.fetchall()
+            tap_id: (at_us, msgspec.json.decode(sample), _heard_state(interval, arrivals_us))
+            for tap_id, at_us, sample, interval, arrivals_us in cursor.fetchall()
         }
+
+
+def _heard_state(interval: str | None, arrivals_us: str | None) -> TapState:
+    spacings = IntervalState.from_json(interval and msgspec.json.decode(interval))
+    return TapState(interval=spacings, arrivals_us=tuple(msgspec.json.decode(arrivals_us or "[]")))
 
 
 def rules_now(tap_ids: Sequence[int]) -> dict[int, list[tuple[int, LimitRule]]]:

@@ -10,7 +10,7 @@ from django.utils import timezone
 from django.views.decorators.http import require_safe
 
 from labmon.ahead.queries import warnings_ahead
-from labmon.alarms.queries import alarm_rows
+from labmon.alarms.queries import WAITING_STATES, alarm_rows, waiting_count
 from labmon.benches.queries import bench_rows
 from labmon.people.rights import Action, may
 from labmon.screen.ahead_view import shown_since, warning_views
@@ -47,14 +47,12 @@ def lab_json(request: HttpRequest) -> HttpResponse:
 def _waiting(request: HttpRequest) -> dict[str, Any]:
     """Alarms that nobody has acknowledged, newest first: the first few with their button."""
     now = timezone.now()
-    rows = [
-        row for state in ("unacknowledged", "returned-unacknowledged") for row in alarm_rows(request.user, state=state, limit=200)
-    ]
-    views = [alarm_view(row, now) for row in rows]
+    rows = [row for state in WAITING_STATES for row in alarm_rows(request.user, state=state, limit=MOST_WAITING)]
+    shown = [alarm_view(row, now) for row in rows[:MOST_WAITING]]
     return {
         **holds_shown(request, now),
         "ahead": warning_views(warnings_ahead(request.user, since=shown_since(now)), now),
-        "waiting": views[:MOST_WAITING],
-        "more_waiting": max(0, len(views) - MOST_WAITING),
+        "waiting": shown,
+        "more_waiting": waiting_count(request.user) - len(shown),
         "may_acknowledge": may(request.user, Action.ACKNOWLEDGE),
     }

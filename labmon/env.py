@@ -3,6 +3,7 @@
 import json
 from collections.abc import Callable, Mapping
 from typing import Any
+from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
 
 
 class EnvironmentFault(Exception):
@@ -30,6 +31,14 @@ def parse_positive(text: str) -> float:
     if not 0.0 < number < float("inf"):
         raise ValueError("write a number above 0")
     return number
+
+
+def parse_zone(text: str) -> ZoneInfo:
+    """A time zone of the IANA database."""
+    try:
+        return ZoneInfo(text)
+    except (ZoneInfoNotFoundError, ValueError, OSError) as error:
+        raise ValueError("write a time zone such as Europe/Berlin or UTC") from error
 
 
 def parse_options(text: str) -> dict[str, Any]:

@@ -11,7 +11,7 @@ from labmon.evidence.models import RunEvidence
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitFloor, LimitRequest, LimitVersion
 from labmon.logbook.models import ConfigurationChange, LogEntry, LogEntryBefore
 from labmon.people.models import Person, PersonKey, SignInTry
-from labmon.runs.models import Run, RunLedger, RunLimit, RunTap
+from labmon.runs.models import Run, RunLedger, RunLimit, RunSoFar, RunTap
 from labmon.tell.models import Delivery, DeliveryTry, Message, PushDevice, QuietHours, SigningKey, Webhook
 
 __all__ = [
@@ -19,6 +19,7 @@ __all__ = [
     "BackTestPass", "Bench", "CallRules", "ClientState", "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour",
     "DoorRefusal", "Drill", "Event", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitBackTest", "LimitFloor",
     "LimitOutlook", "LimitRequest", "LimitVersion", "LogEntry", "LogEntryBefore", "Message", "OnCall", "Person",
-    "PersonKey", "PushDevice", "QuietHours", "Run", "RunClearance", "RunEvidence", "RunLedger", "RunLimit", "RunTap",
+    "PersonKey", "PushDevice", "QuietHours", "Run", "RunClearance", "RunEvidence", "RunLedger", "RunLimit",
+    "RunSoFar", "RunTap",
     "RunWatch", "SignInTry", "SigningKey", "Webhook",
 ]

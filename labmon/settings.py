@@ -2,9 +2,10 @@
 
 import os
 from pathlib import Path
+from zoneinfo import ZoneInfo
 
 from ingest.mqtt.address import broker_address
-from labmon.env import Env, parse_bool, parse_options, parse_positive, parse_words
+from labmon.env import Env, parse_bool, parse_options, parse_positive, parse_words, parse_zone
 from labmon.services import django_database, find_services
 
 BASE_DIR = Path(__file__).resolve().parent.parent
@@ -125,6 +126,7 @@ CELERY_WORKER_HIJACK_ROOT_LOGGER = False
 
 USE_TZ = True
 TIME_ZONE = "UTC"
+LAB_ZONE = env.get("ZONE", parse_zone, default=ZoneInfo("UTC"))
 LANGUAGE_CODE = "en-gb"
 STATIC_URL = "static/"
 STATIC_ROOT = env.get("STATIC", Path, default=DATA_DIR / "static")

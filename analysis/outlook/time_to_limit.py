@@ -8,6 +8,7 @@ within its own hourly spread of 0 is a poor picture of the sphere, and replay (`
 from dataclasses import dataclass
 from enum import StrEnum
 from itertools import product
+from typing import Final
 
 import numpy as np
 from scipy.special import ndtri
@@ -23,6 +24,8 @@ from analysis.quantities import FloatArray, angle_rad_from_er_db
 MEDIAN, TENTH = 0.5, 0.1
 FAR_SD = 6.0
 """So many standard deviations below its mean a level comes back by the same way each time."""
+#: A barrier so many spreads above the mean is reached after e^200 relaxation times: never, and numbers overflow on the way.
+NEVER_SD: Final = 20.0
 
 
 class Outlook(StrEnum):
@@ -147,6 +150,8 @@ def _by_reverting(fit: RevertingFit, last_deg: float, limit_deg: float, horizon_
 def _reverting_times(last_deg: float, barrier_deg: float, mean: float, rate: float, sd: float,
                      horizon_s: float) -> tuple[FloatArray, float]:
     """Median and tenth, s, and the chance within the horizon."""
+    if barrier_deg - mean > NEVER_SD * sd and barrier_deg - last_deg > FAR_SD * sd:
+        return np.full(2, np.inf), 0.0
     if is_steady_pull(last_deg, barrier_deg, mean, sd) and mean > barrier_deg:
         way_deg = barrier_deg - last_deg
         drift = rate * way_deg / float(np.log((mean - last_deg) / (mean - barrier_deg)))

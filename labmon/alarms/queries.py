@@ -8,9 +8,10 @@ from django.db.models import F, Prefetch, Q, QuerySet
 
 from ingest.times import at_of, us_of
 from labmon.alarms.holds import standing_holds
-from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold, AlarmState
+from labmon.alarms.models import Alarm, AlarmBounds, AlarmHold, AlarmKind, AlarmState
 from labmon.people.models import Person
 from labmon.people.rights import alarms_visible_to, experiments_visible_to, taps_visible_to
+from labmon.runs.models import Run
 
 #: Nobody has acknowledged these; those still open first.
 WAITING_STATES = (AlarmState.UNACKNOWLEDGED, AlarmState.RETURNED_UNACKNOWLEDGED)
@@ -73,6 +74,7 @@ def alarm_rows(
     station: str | None = None,
     tap_id: int | None = None,
     is_open: bool | None = None,
+    in_run: Run | None = None,
     limit: int = 200,
     before_id: int | None = None,
 ) -> list[AlarmRow]:
@@ -89,6 +91,8 @@ def alarm_rows(
     if is_open is not None:
         open_ones = Q(returned_at=None, is_withdrawn=False)
         rows = rows.filter(open_ones if is_open else ~open_ones)
+    if in_run is not None:
+        rows = _open_in(rows, in_run)
     if before_id is not None:
         rows = _behind(rows, before_id)
     return [_row(alarm) for alarm in _loaded(rows).order_by("-raised_at", "-pk")[:limit]]
@@ -97,6 +101,13 @@ def alarm_rows(
 def waiting_count(person: Person) -> int:
     """How many alarms that ``person`` may see wait for someone."""
     return alarms_visible_to(person).filter(state__in=WAITING_STATES).count()
+
+
+def _open_in(rows: QuerySet[Alarm], run: Run) -> QuerySet[Alarm]:
+    """Alarms of the run's taps that were open in it: of its experiment's limits, and of the readings themselves."""
+    of_it = rows.filter(Q(experiment=run.experiment_id) | ~Q(kind=AlarmKind.LIMIT), tap__in=run.run_taps.values("tap"))
+    lasted = Q(returned_at=None) | Q(returned_at__gt=run.starts_at)
+    return of_it.filter(lasted, raised_at__lt=run.over_at, is_withdrawn=False)
 
 
 def _behind(rows: QuerySet[Alarm], alarm_id: int) -> QuerySet[Alarm]:

@@ -19,6 +19,7 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "end holds whose time is over": _every("end_holds", 5.0),
     "start runs whose time has come": _every("start_runs", 2.0),
     "expire requests for looser limits": _every("expire_requests", 60.0),
+    "account for runs under way": _every("account_for_runs", 20.0),
     "make ledgers of runs": _every("make_ledgers", 5.0, expires=60.0),
     "make evidence of runs": {"task": "labmon.evidence.make", "schedule": 15.0, "options": {"expires": 60.0}},
     "tell": _every("tell", 2.0),

@@ -29,6 +29,7 @@ from labmon.pipeline.silence import judge_silence
 from labmon.pipeline.watched import Watch
 from labmon.runs.ledgers import ask_due_ledgers
 from labmon.runs.making import make_waiting_ledgers
+from labmon.runs.so_far import account_for_runs
 from labmon.runs.starting import start_due_runs
 from labmon.tell.sending import send_waiting
 
@@ -97,6 +98,12 @@ def cast_doubts_task() -> None:
 def expire_requests_task() -> None:
     """Close requests for looser limits that nobody decided in time."""
     expire_requests()
+
+
+@_task("account_for_runs", 300)
+def account_for_runs_task() -> None:
+    """Bring runs that are under way up to date."""
+    account_for_runs()
 
 
 @_task("make_ledgers", 1800)

@@ -111,6 +111,12 @@ def newest_ledger(run: Run) -> RunLedger | None:
     return run.ledgers.exclude(made_at=None).select_related("asked_by").order_by("-number").first()
 
 
+def newest_ledgers(run_ids: Iterable[int]) -> dict[int, RunLedger]:
+    """The newest made version of each of several runs, without bodies; one query."""
+    made = RunLedger.objects.filter(run__in=list(run_ids)).exclude(made_at=None).defer("body", "facts")
+    return {one.run_id: one for one in made.order_by("run_id", "-number").distinct("run_id")}
+
+
 def ledger_of(run: Run, number: int) -> RunLedger | None:
     """One version, made or not."""
     return run.ledgers.filter(number=number).select_related("asked_by").first()

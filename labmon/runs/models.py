@@ -128,3 +128,16 @@ class RunLedger(models.Model):
     def length_s(self) -> int:
         """Whole seconds of the run that it accounts for."""
         return round((self.until_at - self.from_at).total_seconds())
+
+
+class RunSoFar(models.Model):
+    """What a run that lasts has come to up to ``through_at``; thrown away when its first ledger is made."""
+
+    run = models.OneToOneField(Run, models.CASCADE, primary_key=True, related_name="so_far")
+    through_at = models.DateTimeField()
+    good_s = models.PositiveIntegerField(default=0)
+    below_s = models.PositiveIntegerField(default=0)
+    untrusted_s = models.PositiveIntegerField(default=0)
+    no_reading_s = models.PositiveIntegerField(default=0)
+    doubtful_s = models.PositiveIntegerField(default=0)
+    body = models.BinaryField(default=b"")

@@ -6,6 +6,8 @@ from ingest.models import Station, Tap
 from labmon.experiments.models import Experiment
 from labmon.people.models import Person
 from labmon.people.rights import experiments_visible_to, stations_visible_to, taps_visible_to
+from labmon.runs.models import Run
+from labmon.runs.queries import runs_visible_to
 
 
 def visible_station(person: Person, name: str) -> Station:
@@ -16,6 +18,13 @@ def visible_station(person: Person, name: str) -> Station:
 def visible_tap(person: Person, station: str, tap: str) -> Tap:
     """The tap ``station/tap``."""
     return get_object_or_404(taps_visible_to(person).select_related("station", "station__room"), station__name=station, name=tap)
+
+
+def visible_run(person: Person, run_id: int) -> Run:
+    """The run of this number."""
+    people = ("owner", "deputy", "planned_by", "ended_by", "cancelled_by")
+    rows = runs_visible_to(person).select_related("experiment__owner", *people)
+    return get_object_or_404(rows, pk=run_id)
 
 
 def visible_experiment(person: Person, experiment_id: int) -> Experiment:

@@ -101,3 +101,11 @@ def test_senseless_questions_are_refused(wrong):
     at_s, angle_deg = rising()
     with pytest.raises(ValueError, match="horizon_s"):
         time_to_limit(at_s, angle_deg, **({"limit_deg": 10.0, "horizon_s": DAY_S} | wrong))
+
+
+def test_a_calm_bench_far_inside_its_limit_overflows_nothing():
+    """White noise of 0.3 dB at 28 dB: 27 dB is near, 20 dB about 50 spreads of the angle away: not within any horizon."""
+    at_s = np.arange(60) * 60.0
+    er_db = 28.0 + np.random.default_rng(3).normal(0.0, 0.05, 60)
+    found = time_to_er_limit(at_s, er_db, 20.0, horizon_s=3600.0, sampling_s=60.0)
+    assert found.outlook is Outlook.NOT_WITHIN and found.reached == 0.0 and np.isinf(found.tenth.low_s)

@@ -109,6 +109,13 @@ PAGES: dict[str, dict[str, Rule]] = {
     "ask-retire": {"POST": OWN_BENCH},
     "decide-limit-request": {"POST": OWN_BENCH},
     "floors": {"GET": READ, "POST": LAB},
+    "runs": {"GET": READ},
+    "run": {"GET": READ},
+    "new-run": {"GET": WORK, "POST": WORK},
+    "change-run": {"GET": OWN_BENCH, "POST": OWN_BENCH},           # own runs: the row of lab.py is its owner's
+    "end-run": {"POST": OWN_BENCH},
+    "new-ledger": {"POST": OWN_BENCH},
+    "ledger-csv": {"GET": READ},
     "audit": {"GET": ANY_OWNER},
     "audit-export": {"GET": sending(ANY_OWNER, format="csv")},
     "health": {"GET": LAB},

@@ -38,6 +38,7 @@ from labmon.runs.queries import RunState, state_of_run
 from labmon.runs.so_far import intervals_so_far, totals_so_far
 from labmon.runs.watch import limits_ahead
 from labmon.screen.alarm_view import alarm_view
+from labmon.screen.clearance import run_clearance_context
 from labmon.screen.door import for_people, put_refusal, say_refusal
 from labmon.screen.named import visible_run
 from labmon.screen.present import number_text, time_text
@@ -139,6 +140,7 @@ def _show(request: HttpRequest, run: Run, form: LedgerForm, status: int) -> Http
         "tap_ids": " ".join(str(pk) for pk in run.run_taps.values_list("tap_id", flat=True)),
         "waiting": [view for view in alarms if view.is_waiting], "alarms": [view for view in alarms if not view.is_waiting],
         "form": form if may_change and state is RunState.OVER else None,
+        **(run_clearance_context(run) if state is RunState.PLANNED else {}),
         **_ledger_shown(request, run, ledger, intervals),
     }, status=status)
 

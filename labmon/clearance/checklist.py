@@ -19,6 +19,8 @@ from labmon.drills.models import Drill
 
 #: Readings that arrive later than this after they were taken come out of a station's spool.
 LATE_US: Final = 120 * SECOND_US
+#: Unheard for so long is no sign of life, even where no door was up to hear it.
+LONG_UNHEARD_S: Final = 3600.0
 #: A proof of the call chain older than this is old (common practice, no source).
 PROOF_HOLDS: Final = timedelta(days=30)
 
@@ -58,7 +60,7 @@ def _alive(tap: Tap, silence: Silence | None) -> Point:
     name = _name(tap)
     if silence is None:
         return Point("station alive", name, Standing.LOOK, "It was never heard.", "Start the station.")
-    if silence.is_shown:
+    if silence.is_shown or silence.silent_s > max(LONG_UNHEARD_S, 3.0 * interval_of(tap)):
         return Point("station alive", name, Standing.LOOK, f"No reading for {span_text(silence.silent_s)}.",
                      "See whether the station has power and network.")
     return Point("station alive", name, Standing.READY, f"Heard {span_text(silence.silent_s)} ago.")

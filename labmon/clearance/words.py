@@ -160,7 +160,7 @@ def set_aside_words(found: tuple[tuple[int, SetAside], ...]) -> list[str]:
     counted: dict[SetAside, int] = {}
     for _, why in found:
         counted[why] = counted.get(why, 0) + 1
-    return [f"{count} {why.value}" for why, count in sorted(counted.items(), key=lambda pair: -pair[1])]
+    return [f"{count} ({why.value})" for why, count in sorted(counted.items(), key=lambda pair: -pair[1])]
 
 
 def times_words(answer: Answer) -> str:

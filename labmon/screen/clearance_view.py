@@ -107,7 +107,7 @@ def _limit_view(limit: LimitAnswer, answer: Answer) -> LimitView:
     return LimitView(
         key=f"{limit.asked.limit_id}",
         title=f"{limit.asked.tap_name}, {both_units(limit.asked.quantity.value, limit.asked.alarm)}",
-        said=f"{said.verdict.value[:1].upper()}{said.verdict.value[1:]}: {counted}.", notes=_notes(limit, word),
+        said="" if len(answer.limits) == 1 else f"{said.verdict.value.capitalize()}: {counted}.", notes=_notes(limit, word),
         picture=replay_picture(limit, answer.question.length_s, spoken_picture(limit, counted)),
         drawn=f"{drawn} of {count_text(said.count, word)} drawn, the newest." if drawn < said.count else "",
         failed=[_failed_view(one, limit) for one in said.failed[-MOST_FAILED:][::-1]],

@@ -5,8 +5,7 @@ Its readings never touch those of a real tap; who looks at benches, experiments 
 """
 
 import json
-import time
-from datetime import timedelta
+from datetime import datetime, timedelta
 from typing import Final
 
 from django.conf import settings
@@ -52,13 +51,13 @@ def drill_tap(person: Person) -> Tap:
     return tap
 
 
-def send_readings(tap: Tap, boot: str, levels_db: list[float], first_sequence: int = 0) -> Answer:
-    """Post marked readings through the real door, one a second up to now, with a key that lasts some minutes.
+def send_readings(tap: Tap, boot: str, levels_db: list[float], now: datetime, first_sequence: int = 0) -> Answer:
+    """Post marked readings through the real door, one a second up to ``now``, with a key that lasts some minutes.
 
     Raises:
         SendFault: The door did not answer, or refused.
     """
-    now_us = time.time_ns() // 1000
+    now_us = int(now.timestamp() * 1e6)
     count = len(levels_db)
     body = {
         "boot": boot,

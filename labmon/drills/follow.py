@@ -30,6 +30,8 @@ STEPS: Final = (
     ("channel", "handed_at", timedelta(minutes=5)),
     ("person", "taken_at", timedelta(minutes=30)),
 )
+#: So long the false drop stands at least: the good readings behind it have their own seconds.
+LIGHT_LASTS: Final = timedelta(seconds=10)
 log = logging.getLogger(__name__)
 
 
@@ -41,7 +43,7 @@ def follow_drills(now: datetime | None = None) -> list[int]:
             _send(drill_id)
         if _look(drill_id, now or timezone.now()):
             ended.append(drill_id)
-            _end_light(drill_id)
+            _end_light(drill_id, now or timezone.now())
     return ended
 
 
@@ -54,7 +56,7 @@ def _claim_sending(drill_id: int) -> bool:
 def _send(drill_id: int) -> None:
     drill = Drill.objects.select_related("person").get(pk=drill_id)
     try:
-        send_readings(drill_tap(drill.person), f"drill-{drill_id}", false_drop())
+        send_readings(drill_tap(drill.person), f"drill-{drill_id}", false_drop(), timezone.now())
     except SendFault as fault:
         Drill.objects.filter(pk=drill_id).update(fault=str(fault)[:300])
         log.warning("drill_not_sent", extra={"drill_id": drill_id, "fault": str(fault)})
@@ -71,6 +73,9 @@ def _look(drill_id: int, now: datetime) -> bool:
     _note_steps(drill, now)
     missing = next(((step, patience) for step, field, patience in STEPS if getattr(drill, field) is None), None)
     if missing is None:
+        if now - drill.answered_at < LIGHT_LASTS:
+            drill.save()  # the good readings that end it must come after the false ones
+            return False
         drill.ended_at = now
     elif now - drill.begun_at > missing[1]:
         drill.ended_at, drill.failed_step = now, missing[0]
@@ -116,14 +121,15 @@ def _why(drill: Drill, step: str) -> str:
     }.get(step, "")
 
 
-def _end_light(drill_id: int) -> None:
+def _end_light(drill_id: int, now: datetime) -> None:
     """Good readings end the false drop, and its alarm waits for nobody any more."""
     drill = Drill.objects.select_related("person").get(pk=drill_id)
     if drill.alarm_id is not None:
         _close_alarm(drill.alarm_id)
     if drill.answered_at is not None and drill.person is not None:
         try:
-            send_readings(drill_tap(drill.person), f"drill-{drill_id}", all_good(), first_sequence=len(false_drop()))
+            boot, first = f"drill-{drill_id}", len(false_drop())
+            send_readings(drill_tap(drill.person), boot, all_good(), now, first_sequence=first)
         except SendFault as fault:
             log.warning("drill_light_not_ended", extra={"drill_id": drill_id, "fault": str(fault)})
 

@@ -52,7 +52,8 @@ CALLS = Counter({
     (7, "b30"): 2, (0, "b00 b01 b02 b03"): 1, (1, "b04 b05 b06 b07"): 1, (2, "b08 b09 b10 b11"): 1,
     (6, "b24 b25 b26 b27"): 1, (7, "b28"): 1, (7, "b29"): 1, (3, "b13"): 1, (4, "b16"): 1,
 })
-EVENTS = 7
+#: Alarms of each event, smallest first.
+EVENTS = [1, 1, 1, 1, 1, 5, 12]
 MAKE = """
 import json, django
 django.setup()
@@ -176,8 +177,18 @@ def calls_in(mails) -> Counter:
         benches = sorted({line.split("/out:")[0] for line in lines if "/out:" in line})
         for address in to:
             who = int(address.removeprefix("owner").split("@")[0]) if address.startswith("owner") else address
-            found[who, " ".join(benches)] += 1
+            found[_wanted(who, set(benches))] += 1
     return found
+
+
+def _wanted(who: int | str, benches: set[str]) -> tuple[int | str, str]:
+    """The wanted call that a mail is: of this owner, about some of these benches and no others.
+
+    A bench whose alarm comes when the call is out (a killed worker takes longer than the 10 s that a call waits) joins its
+    event without another call: the page has it, the mail has not.
+    """
+    known = (call for call in CALLS if call[0] == who and benches and benches <= set(call[1].split()))
+    return next(known, (who, " ".join(sorted(benches))))
 
 
 def test_a_fortnight_of_forty_benches(mailing_lab, mailbox, capsys):
@@ -194,10 +205,10 @@ def test_a_fortnight_of_forty_benches(mailing_lab, mailbox, capsys):
     missed, extra = CALLS - found, found - CALLS
     with capsys.disabled():
         print(f"\n[fortnight] {BENCHES} benches, {DAYS} days of {DAY_S} s; killed {', '.join(killed)}; "
-              f"{sum(len(sender.course) for sender in senders):,} readings; {len(events)} events of {EVENTS}, "
+              f"{sum(len(sender.course) for sender in senders):,} readings; {len(events)} events of {len(EVENTS)}, "
               f"{sum(found.values())} calls of {sum(CALLS.values())}; missed {sum(missed.values())}, "
               f"not wanted {sum(extra.values())}, handed over again by a crash {sum(ids.values()) - len(ids)}")
     assert missed == Counter() and extra == Counter(), (missed, extra, events)
-    assert len(events) == EVENTS, events
+    assert sorted(count for _, _, count in events) == EVENTS, events
     subjects = [mail["Subject"] for _, mail in mailbox.mails]
     assert sum("net-a" in subject for subject in subjects) == 3, subjects

@@ -7,9 +7,10 @@ from typing import Any
 
 import msgspec
 import pyarrow as pa
-import pyarrow.compute as pc
 import pyarrow.csv
 import pyarrow.parquet
+
+from labmon.api.time_texts import time_texts
 
 Tables = Iterator[pa.Table]
 JSON_ROWS = 2000    # a row as a dictionary takes about 20 times its bytes in a table
@@ -66,8 +67,7 @@ def with_texts(table: pa.Table) -> pa.Table:
     """Times as RFC 3339 text, as CSV and JSON have no times."""
     for place, field in enumerate(table.schema):
         if pa.types.is_timestamp(field.type):
-            text = pc.strftime(table.column(place), format="%Y-%m-%dT%H:%M:%SZ")
-            table = table.set_column(place, field.name, text)
+            table = table.set_column(place, field.name, time_texts(table.column(place)))
     return table
 
 

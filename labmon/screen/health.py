@@ -30,10 +30,10 @@ def health_page(request: HttpRequest) -> HttpResponse:
     """One sentence first, then the tables it comes from."""
     require(request.user, Action.SEE_HEALTH)
     missing = missing_services()
-    health = lab_health()
+    health, followed = lab_health(), _followed()
     rules = [rule_text(rule) for rule in KeepRule.objects.select_related("tap__station").order_by("pk")]
     return render(request, "screen/health.html", {
-        "sentence": health_sentence(health, missing),
+        "sentence": health_sentence(health, missing, len(followed["not_read"])),
         "services": [(name, "missing: " + REMEDIES[name] if name in missing else "up") for name in REMEDIES],
         "waiting": waiting_rows(health, _queue_length()),
         "kept": [kept_row("Inbox, in the database", health.inbox), kept_row("Blocks, in the database", health.blocks),
@@ -41,7 +41,7 @@ def health_page(request: HttpRequest) -> HttpResponse:
         "sizes": [("The database in all", size_text(health.database)), ("Rollups in it", size_text(health.rollups))],
         "forecast": forecast_text(health.forecast),
         "faults": health.faults,
-        **_followed(),
+        **followed,
         "rules": rules or ["raw readings are kept for ever: no rule is set"],
     })
 
@@ -57,12 +57,14 @@ def _followed() -> dict[str, Any]:
     return {"followed": sentence, "not_read": list(names.items())}
 
 
-def health_sentence(health: LabHealth, missing: list[str]) -> str:
-    """The worst first."""
+def health_sentence(health: LabHealth, missing: list[str], not_read: int = 0) -> str:
+    """The worst first; ``not_read`` files of the watched folder cannot be read."""
     if missing:
         return f"Missing: {', '.join(missing)}."
     if health.faults:
         return f"{count_text(len(health.faults), 'day file')} cannot be read."
+    if not_read:
+        return f"{count_text(not_read, 'file')} of the watched folder cannot be read."
     left = health.forecast.days_left
     if left is not None and left < FEW_DAYS:
         return f"The disk is full in {number_text(left, 0)} days."

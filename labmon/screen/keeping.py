@@ -26,16 +26,16 @@ DAYS, FOR_EVER, AS_THE_LAB = "days", "for-ever", "as-the-lab"
 class KeepForm(forms.Form):
     """A new rule."""
 
-    whose = forms.ChoiceField(label="Of")
+    whose = forms.ChoiceField(label="Of", help_text="The lab: every tap without a rule of its own.")
     how = forms.ChoiceField(label="Keep raw readings", choices=[
-        (DAYS, "at least for the days named"), (FOR_EVER, "for ever"), (AS_THE_LAB, "as the lab does (ends a tap's own rule)")])
-    raw_days = forms.IntegerField(label="Days", required=False, min_value=1,
+        (DAYS, "for days"), (FOR_EVER, "for ever"), (AS_THE_LAB, "as the lab")], help_text="As the lab: ends a tap's own rule.")
+    raw_days = forms.IntegerField(label="Days, at least", required=False, min_value=1,
                                   widget=forms.TextInput(attrs={"inputmode": "numeric"}))
     reason = forms.CharField(label="Reason", max_length=500, help_text="Goes into the audit.")
 
     def __init__(self, *args: Any, taps: Sequence[TapKept], **kwargs: Any) -> None:
         super().__init__(*args, **kwargs)
-        lab = (LAB, "the lab: every tap without a rule of its own")
+        lab = (LAB, "the lab")
         self.fields["whose"].choices = [lab, *((one.name, one.name) for one in taps)]
 
     def clean(self) -> dict[str, Any]:

@@ -38,6 +38,7 @@ class Question:
     words: str
     answers: list[tuple[str, str]]
     zeros_of: list[str]
+    calibration_of: str = ""
 
 
 def questions(doubts: Sequence[OpenDoubt]) -> list[Question]:
@@ -67,7 +68,7 @@ def _swap_question(doubt: OpenDoubt) -> Question:
                     "turned by 90°? From here both look the same, and readings since then are doubtful: look at the bench. "
                     "Where the inputs are to stay as they are, enter the other port as the wanted one.",
                     [("right", "The light was turned: the readings are right"),
-                     ("mended", "The inputs were swapped and are right again")], [])
+                     ("mended", "The inputs were swapped and are right again")], [], doubt.tap)
 
 
 def clock_course_words(course: ClockCourse | None) -> str:

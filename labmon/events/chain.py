@@ -1,4 +1,4 @@
-"""Who is told of an alarm, one after the other (docs/decisions/0060-who-is-told.md).
+"""Who is told of an alarm, one after the other (docs/decisions/0061-who-is-told.md).
 
 In a declared run: its owner, its deputy, who is on call, the experiment's owner, the managers. Else: the experiment's owner, who
 is on call, the managers. Whoever has no way to be reached, or whose account has ended, is left out. Quiet hours count for

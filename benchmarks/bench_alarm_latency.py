@@ -122,7 +122,7 @@ class Mails:
         self.taken_at: dict[str, float] = {}
         self.count = 0
 
-    async def handle_DATA(self, server, session, envelope) -> str:  # noqa: N802 (aiosmtpd's name)
+    async def handle_DATA(self, server, session, envelope) -> str:
         text = message_from_bytes(envelope.content).get_payload(decode=True).decode()
         for line in text.splitlines():
             if line.startswith("Experiment: "):

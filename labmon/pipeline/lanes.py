@@ -6,7 +6,7 @@ from typing import Final
 from django.conf import settings
 
 #: They are short (or end by themselves after some seconds) and somebody waits for what they do.
-PROMPT_TASKS: Final = ("process", "silence", "end_holds", "start_runs", "send_mails")
+PROMPT_TASKS: Final = ("process", "silence", "end_holds", "start_runs", "tell", "follow_drills")
 
 
 class Lane(StrEnum):

@@ -2,8 +2,8 @@ from labmon.celery import app
 from labmon.pipeline.lanes import PROMPT_TASKS, Lane, queue_of
 from labmon.pipeline.schedule import BEAT_SCHEDULE
 
-#: What runs so often may not wait behind what takes a minute.
-OFTEN_S = 5.0
+#: What runs so often is awaited so soon.
+OFTEN_S = 2.0
 
 
 def queue_for(name):

@@ -40,6 +40,9 @@ class Message(models.Model):
     facts = models.JSONField(null=True, help_text="For programs: what a webhook posts.")
     made_at = models.DateTimeField(auto_now_add=True)
 
+    class Meta:
+        indexes = [models.Index(fields=["made_at"], name="message_by_time")]
+
     @property
     def recipients(self) -> list[str]:
         """Mail addresses it goes to."""

@@ -6,7 +6,7 @@ from django.db import migrations, models
 class Migration(migrations.Migration):
 
     dependencies = [
-        ('labmon', '0019_audit_places'),
+        ('labmon', '0020_run_so_far'),
     ]
 
     operations = [

@@ -21,6 +21,7 @@ from labmon.demo.ledger import LEDGER
 from labmon.demo.live import CLIMATE_CADENCE_S, CLIMATE_TAP
 from labmon.demo.moments import DAY_S, day_one_us
 from labmon.demo.people import PEOPLE
+from labmon.demo.runs import declare_runs
 from labmon.demo.station import Say
 from labmon.demo.world import SEED, World, wanted_state
 from labmon.experiments.actions import create_experiment, set_limit
@@ -73,6 +74,7 @@ def _fill(notes: DemoNotes, progress: Say) -> None:
     before_s = time.monotonic()
     catch_up()
     progress(f"rolled up by 10 s, minute, hour and day in {time.monotonic() - before_s:.0f} s")
+    declare_runs(at_of(notes.built_until_us), progress)
     notes.is_built = True
     write_notes(notes)
 

@@ -180,3 +180,15 @@ def test_the_page_asks_and_takes_the_answer(client):
     assert (row.answer, row.answered_by) == ("right", person.username)
     assert timezone.now() - row.answered_at < timedelta(minutes=1)
     assert client.post("/stations/n1/doubts/", typed).status_code == 404
+
+
+def test_the_page_asks_as_many_queries_for_one_doubt_as_for_many(client):
+    from tests.labmon.screen.test_pages import queries_of
+
+    client.force_login(make_person(Role.MANAGER))
+    taps, _ = boots_of("board 1.4", "board 1.5", names=[f"tap-{number}" for number in range(12)])
+    queries_of(client, "/stations/n2/")
+    without = queries_of(client, "/stations/n2/")
+    cast_doubts()
+    assert Doubt.objects.count() == 12 and len(taps) == 12
+    assert queries_of(client, "/stations/n2/") == without

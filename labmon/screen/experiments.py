@@ -22,6 +22,7 @@ from labmon.experiments.proposals import proposal_facts
 from labmon.experiments.queries import LimitFacts, experiment_facts, experiment_rows
 from labmon.experiments.rehearsal import rehearse_limit
 from labmon.experiments.rules import LimitWish
+from labmon.logbook.queries import log_entries
 from labmon.people.models import Person, Role
 from labmon.people.rights import Action, may, require, role_of, taps_visible_to
 from labmon.runs.queries import run_now
@@ -33,11 +34,14 @@ from labmon.screen.experiment_view import experiment_sentence, experiments_sente
 from labmon.screen.forms import ExperimentForm, LimitForm
 from labmon.screen.holds import holds_shown
 from labmon.screen.limit_requests import requests_shown
+from labmon.screen.log import entry_views
+from labmon.screen.log_view import EntryView
 from labmon.screen.named import visible_experiment
 from labmon.screen.present import age_text
 from labmon.screen.rehearsal_view import RehearsalView, rehearsal_view
 
 RECENT_ALARMS = 30
+RECENT_ENTRIES = 8
 USUAL_SILENCE_S = 60.0
 REHEARSED_US: Final = 30 * 86_400 * SECOND_US
 
@@ -193,6 +197,7 @@ def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, 
             "may_acknowledge": may(request.user, Action.ACKNOWLEDGE, experiment),
             "tap_ids": " ".join(str(tap.pk) for tap in taps),
             "waiting": [view for view in alarms if view.is_waiting],
+            "log": _log_of(request, taps),
             "alarms": [view for view in alarms if not view.is_waiting],
             "ladder": ladder(),
             "rehearsal": rehearsal,
@@ -203,6 +208,12 @@ def _show(request: HttpRequest, experiment: Experiment, form: LimitForm | None, 
         },
         status=status,
     )
+
+
+def _log_of(request: HttpRequest, taps: list[Tap]) -> list[EntryView]:
+    """What was written of late about the benches that the experiment watches."""
+    names = {tap.station.name for tap in taps}
+    return entry_views(request.user, log_entries(request.user, stations=names, limit=RECENT_ENTRIES)) if names else []
 
 
 def _holds_of(request: HttpRequest, experiment: Experiment, now: datetime) -> dict[str, Any]:

@@ -15,7 +15,7 @@ from PIL import Image
 from labmon.logbook.actions import edit_entry, write_entry
 from labmon.logbook.models import ConfigurationChange, LogEntry, LogTag
 from labmon.people.models import Role
-from tests.factories import make_person, make_station, make_tap
+from tests.factories import make_experiment, make_person, make_station, make_tap
 
 pytestmark = pytest.mark.django_db
 
@@ -168,3 +168,17 @@ def test_the_log_page_costs_the_same_for_more(client, ann, bench):
     for number in range(40):
         edit_entry(write(bench, ann), by=ann, at=timezone.now(), until_at=None, text=f"edited {number}", tag=LogTag.NOTE)
     assert queries(client, "/stations/n2/log/") == few
+
+
+def test_an_experiments_page_has_what_was_written_about_its_benches(client, ann, bench):
+    experiment = make_experiment(bench.taps.get(), name="EOM input")
+    write(bench, ann)
+    write(make_station("far"), ann, text="elsewhere")
+    client.force_login(ann)
+    address = f"/experiments/{experiment.pk}/"
+    said = words(client.get(address))
+    assert "In the logbooks of its benches" in said and "spooled anew" in said and "elsewhere" not in said
+    few = queries(client, address)
+    for _ in range(20):
+        write(bench, ann)
+    assert queries(client, address) == few

@@ -2,6 +2,7 @@
 
 import shutil
 import tempfile
+from email.header import decode_header, make_header
 from pathlib import Path
 
 import psycopg
@@ -26,7 +27,7 @@ def test_from_the_false_reading_to_the_person():
                 database.execute("INSERT INTO labmon_drill (person_id, person_name, begun_at, failed_step, fault) "
                                  "SELECT id, username, now(), '', '' FROM labmon_person WHERE username = 'maren'")
             assert until_true(lambda: box.mails, 60.0), "no mail within a minute"
-            assert box.mails[0][1]["Subject"].startswith("Drill, nothing is wrong.")
+            assert str(make_header(decode_header(box.mails[0][1]["Subject"]))).startswith("Drill, nothing is wrong.")
             (event,) = visitor.call("GET", "events")["events"]
             assert event["is_drill"]
             visitor.call("POST", f"events/{event['id']}/acknowledge")

@@ -1,19 +1,24 @@
 """A proposed limit tried on the stored past before it is saved. Writes nothing."""
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from typing import Final
 
 import numpy as np
 
+from analysis.judge.phases import Phase, phases_of
 from analysis.judge.rehearsal import Call, rehearse
+from analysis.judge.rule import Quantity
 from analysis.judge.seconds import Seconds, seconds_of
 from analysis.record.reduce_span import find_samples
 from analysis.record.rollups import history
 from ingest.models import Tap
-from ingest.times import SECOND_US, at_of
+from ingest.times import SECOND_US, at_of, us_of
 from labmon.benches.pace import interval_of
 from labmon.errors import WriteError
-from labmon.experiments.rules import LimitWish, checked_quantity, checked_wish
+from labmon.experiments.derived_rehearsal import derived_calls
+from labmon.experiments.models import Experiment, Limit
+from labmon.experiments.rules import LimitWish, checked_quantity, checked_wish, rule_of
 
 LONGEST_US: Final = 31 * 86_400 * SECOND_US
 CELL_US: Final = 60 * SECOND_US
@@ -42,10 +47,13 @@ class Rehearsed:
 
 
 def rehearse_limit(
-    tap: Tap, quantity: str, wish: LimitWish, from_us: int, until_us: int, now_us: int, *, hard: float | None = None
+    tap: Tap, quantity: str, wish: LimitWish, from_us: int, until_us: int, now_us: int, *, hard: float | None = None,
+    hosts: Sequence[Sequence[Phase]] = (),
 ) -> Rehearsed:
     """Replay a wish over a half-open span with the fold that judges live.
 
+    Args:
+        hosts: What a time to the limit runs towards; see `hosts_of`.
     Raises:
         WriteError: A field cannot be meant, or the span is empty or longer than 31 days.
     """
@@ -54,6 +62,8 @@ def rehearse_limit(
     begin_us, end_us = from_us // CELL_US * CELL_US, min(until_us, now_us) // SECOND_US * SECOND_US
     if not 0 < end_us - begin_us <= LONGEST_US:
         raise WriteError("span", "It holds no past, or more than 31 days of it.", "Choose up to 31 days that have begun.")
+    if named.is_derived:
+        return _summed(derived_calls(tap, rule, begin_us, end_us, hosts, hard), begin_us, end_us, 0.0)
     curves = history(tap.pk, named.value, begin_us, end_us, -(-(end_us - begin_us) // CELL_US))
     worst = (curves.max if named.is_bad_above else curves.min).copy()
     cell_us = round(curves.bucket_s * SECOND_US)
@@ -64,16 +74,36 @@ def rehearse_limit(
         return seconds_of(samples, named)
 
     found = rehearse(rule, curves.at_us, worst, cell_us, end_us, seconds_of_span, interval_s=interval_of(tap), hard=hard)
-    lasted = [((call.returned_us or end_us) - call.raised_us) / SECOND_US for call in found.calls]
-    returned = [one for one, call in zip(lasted, found.calls, strict=True) if call.returned_us is not None]
+    return _summed(found.calls, begin_us, end_us, found.read_us / (end_us - begin_us))
+
+
+def hosts_of(experiment: Experiment, tap: Tap) -> list[list[Phase]]:
+    """Phases of the limits on ER or angle of a tap: what a time to the limit runs towards; one query and one more."""
+    limits = Limit.objects.filter(experiment=experiment, tap=tap, quantity__in=[Quantity.ER_DB, Quantity.ANGLE_DEG])
+    return [
+        phases_of([(one.pk, rule_of(one, limit.quantity), us_of(one.valid_from), one.is_retired, one.in_runs_only)
+                   for one in sorted(limit.versions.all(), key=lambda version: version.number)])
+        for limit in limits.prefetch_related("versions")
+    ]
+
+
+def present_hosts(experiment: Experiment, tap: Tap) -> list[list[Phase]]:
+    """The same, today's levels held over all of the past."""
+    newest = [phases[-1] for phases in hosts_of(experiment, tap) if phases and not phases[-1].is_retired]
+    return [[replace(phase, from_us=0)] for phase in newest]
+
+
+def _summed(calls: list[Call], begin_us: int, end_us: int, read_share: float) -> Rehearsed:
+    lasted = [((call.returned_us or end_us) - call.raised_us) / SECOND_US for call in calls]
+    returned = [one for one, call in zip(lasted, calls, strict=True) if call.returned_us is not None]
     return Rehearsed(
         begin_us,
         end_us,
-        found.calls,
-        sum(_is_at_night(call.raised_us) for call in found.calls),
+        calls,
+        sum(_is_at_night(call.raised_us) for call in calls),
         max(returned, default=None),
         sum(lasted),
-        found.read_us / (end_us - begin_us),
+        read_share,
     )
 
 

@@ -20,7 +20,7 @@ from labmon.experiments.floors import floors_of
 from labmon.experiments.models import Experiment
 from labmon.experiments.proposals import proposal_facts
 from labmon.experiments.queries import LimitFacts, experiment_facts, experiment_rows
-from labmon.experiments.rehearsal import rehearse_limit
+from labmon.experiments.rehearsal import present_hosts, rehearse_limit
 from labmon.experiments.rules import LimitWish
 from labmon.logbook.queries import log_entries
 from labmon.people.models import Person, Role
@@ -151,7 +151,8 @@ def _rehearsed(experiment: Experiment, typed: dict[str, Any]) -> RehearsalView:
     ]
     clock_us = now_us()
     found = rehearse_limit(
-        tap, typed["quantity"], LimitWish(**own), clock_us - REHEARSED_US, clock_us, clock_us, hard=next(iter(standing), None)
+        tap, typed["quantity"], LimitWish(**own), clock_us - REHEARSED_US, clock_us, clock_us, hard=next(iter(standing), None),
+        hosts=present_hosts(experiment, tap),
     )
     return rehearsal_view(found)
 

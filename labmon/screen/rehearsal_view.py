@@ -1,5 +1,6 @@
 """A rehearsal in words. Pure."""
 
+import json
 from dataclasses import dataclass
 
 from analysis.judge.rehearsal import Call
@@ -8,6 +9,8 @@ from labmon.experiments.rehearsal import Rehearsed
 from labmon.screen.present import age_text, count_text, time_text
 
 MOST_ROWS = 50
+#: So many spans are drawn at most, the newest.
+MOST_SPANS = 1000
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -17,6 +20,7 @@ class RehearsalView:
     sentence: str
     rows: list[tuple[str, str, str, str]]
     left_out: int
+    spans: str
 
 
 def rehearsal_view(found: Rehearsed) -> RehearsalView:
@@ -35,7 +39,14 @@ def rehearsal_view(found: Rehearsed) -> RehearsalView:
             said += f"; half of {count_text(len(leads), 'call')} at least {_lead(leads[len(leads) // 2])} the limit in force"
         said += "."
     rows = [_row(call) for call in reversed(found.calls[-MOST_ROWS:])]
-    return RehearsalView(sentence=said, rows=rows, left_out=max(len(found.calls) - MOST_ROWS, 0))
+    return RehearsalView(sentence=said, rows=rows, left_out=max(len(found.calls) - MOST_ROWS, 0),
+                         spans=json.dumps([_span(call, found.until_us) for call in found.calls[-MOST_SPANS:]]))
+
+
+def _span(call: Call, until_us: int) -> list[float | str]:
+    """From, until (ms since 1970) and level: what the plot draws."""
+    returned_us = until_us if call.returned_us is None else call.returned_us
+    return [call.raised_us / 1e3, returned_us / 1e3, "warning" if call.alarm_us is None else "alarm"]
 
 
 def _row(call: Call) -> tuple[str, str, str, str]:

@@ -60,7 +60,10 @@ function rehearse(form) {
       const answer = await fetch(button.formAction, {
         method: 'POST', body: new FormData(form), headers: { 'X-Labmon-Part': '1' }, signal: asked.signal,
       });
-      if (answer.ok || answer.status === 422) shown.innerHTML = await answer.text();
+      if (answer.ok || answer.status === 422) {
+        shown.innerHTML = await answer.text();
+        form.dispatchEvent(new CustomEvent('rehearsed'));
+      }
     } catch {
       // Typed on, or the server is away: the button still asks.
     }

@@ -12,7 +12,7 @@ const STEPS = { er_db: 0.1, angle_deg: 0.1, dop: 0.001, power_w: 0.05 };
 const UNITS = { er_db: 'dB', angle_deg: '°', dop: '', power_w: 'dBm' };
 const NAMES = { er_db: 'extinction ratio (dB)', angle_deg: 'angle (°)', dop: 'degree of polarization', power_w: 'power (dBm)' };
 const TOP = 10;
-const BOTTOM = 34;
+const BOTTOM = 46;
 
 function colours() {
   const style = getComputedStyle(document.documentElement);

@@ -17,9 +17,9 @@ from labmon.demo.benches import BENCHES, bench_named
 from labmon.demo.build import build_demo_lab
 from labmon.demo.folder import read_notes
 from labmon.demo.moments import moment
+from labmon.events.models import Event
 from labmon.people.models import Person
 from labmon.people.rights import has_access
-from labmon.tell.models import Message
 
 pytestmark = [pytest.mark.slow, pytest.mark.django_db(transaction=True)]
 
@@ -134,7 +134,7 @@ def _check_alarms(notes):
     assert creeping[-1][1] is None
     assert [alarm.is_late for alarm in Alarm.objects.filter(returned_at=None)] == [False]
     assert not Alarm.objects.exclude(returned_at=None).filter(is_late=False).exists()
-    assert Message.objects.count() == 1, "history calls nobody, save for what is still open: S2"
+    assert Event.objects.count() == 1, "history calls nobody, save for what is still open: S2"
 
 
 def _check_rollups(notes):

@@ -56,8 +56,8 @@ def looked_at(page, name, width):
 
 
 def shot(page, name):
-    """Kept where LABMON_SHOTS says, to be looked at by a person."""
-    if folder := os.environ.get("LABMON_SHOTS"):
+    """Kept where SHOTS says, to be looked at by a person."""
+    if folder := os.environ.get("SHOTS"):
         page.screenshot(path=Path(folder) / f"runs-{name}.png", full_page=True)
 
 

@@ -8,7 +8,7 @@ from typing import Final
 
 import numpy as np
 
-from analysis.drift.allan import bin_means
+from analysis.drift.bins import bin_means
 from analysis.quantities import US_PER_S, FloatArray, IntArray
 
 _MOST_PLACES: Final = 50_000_000

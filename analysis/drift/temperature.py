@@ -6,7 +6,7 @@ from enum import StrEnum
 import numpy as np
 from scipy import stats
 
-from analysis.drift.allan import bin_means
+from analysis.drift.bins import bin_means
 from analysis.drift.effective import autocorrelation, correlation_effective_size
 from analysis.drift.hac import regress
 from analysis.quantities import US_PER_S, FloatArray, IntArray

@@ -4,13 +4,14 @@ A page is one tap's cells of one level between whole multiples of the page's len
 the database hands out only those that are asked for.
 """
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from typing import Any, Final
 
 import numpy as np
 from django.db import connection
 from psycopg import sql
 
+from analysis.quantities import BoolArray, IntArray
 from analysis.rollup.body import FRAMES, LAYOUT, Packed, cells_of_packed, columns_of, packed
 from analysis.rollup.cells import LEVELS_S, Cells, concatenate
 from ingest.times import SECOND_US
@@ -53,18 +54,19 @@ def page_cells(tap_id: int, level_s: int, at_us: int) -> Cells | None:
 
 def put_in_page(tap_id: int, cells: Cells, from_us: int, until_us: int) -> None:
     """Let ``cells`` stand for all that the page holds in the half-open span, which lies within one page."""
-    old = page_cells(tap_id, cells.level_s, from_us)
-    if old is not None:
-        cells = concatenate([old.take((old.bucket_us < from_us) | (old.bucket_us >= until_us)), cells])
-    _write(tap_id, cells, from_us)
+    _replace(tap_id, cells, from_us, lambda bucket_us: (bucket_us >= from_us) & (bucket_us < until_us))
 
 
 def add_to_page(tap_id: int, cells: Cells) -> None:
     """Put cells into their page; they stand for those of the same buckets."""
-    at_us = int(cells.bucket_us[0])
+    _replace(tap_id, cells, int(cells.bucket_us[0]), lambda bucket_us: np.isin(bucket_us, cells.bucket_us))
+
+
+def _replace(tap_id: int, cells: Cells, at_us: int, is_replaced: Callable[[IntArray], BoolArray]) -> None:
+    """The page that holds a moment, without what is replaced and with ``cells``."""
     old = page_cells(tap_id, cells.level_s, at_us)
     if old is not None:
-        cells = concatenate([old.take(~np.isin(old.bucket_us, cells.bucket_us)), cells])
+        cells = concatenate([old.take(~is_replaced(old.bucket_us)), cells])
     _write(tap_id, cells, at_us)
 
 

@@ -104,8 +104,8 @@ def _on_both_scales(quantity: str, alarm: float) -> dict[str, float | None]:
     return {"alarm_db": er_db, "alarm_deg": angle_deg}
 
 
-class NewLimit(Body):
-    """The body of POST …/limits."""
+class LimitBody(Body):
+    """A limit as a body gives it, set or only tried."""
 
     tap: Text
     quantity: Literal["er_db", "angle_deg", "dop", "power_w", "trusted_share", "time_to_limit_s"]
@@ -115,6 +115,11 @@ class NewLimit(Body):
     off_delay_s: float = 60.0
     deadband: float | None = None
     window_s: float | None = None
+
+
+class NewLimit(LimitBody):
+    """The body of POST …/limits."""
+
     in_runs_only: bool = False
     reason: Text = ""
 

@@ -1,12 +1,11 @@
 """A proposed limit tried on the stored past."""
 
-from typing import Literal
-
 from django.http import HttpRequest, HttpResponse
 
 from ingest.times import SECOND_US, at_of, now_us
 from labmon.api.answer import json_answer
-from labmon.api.body import Body, Text, body_of
+from labmon.api.body import body_of
+from labmon.api.experiments import LimitBody
 from labmon.api.named import experiment_named, tap_in_body
 from labmon.api.problem import wrong_field
 from labmon.api.query import known_only
@@ -19,17 +18,9 @@ from labmon.people.rights import Action, require
 DAY_US = 86_400 * SECOND_US
 
 
-class Proposal(Body):
+class Proposal(LimitBody):
     """The body of POST …/limits/rehearse."""
 
-    tap: Text
-    quantity: Literal["er_db", "angle_deg", "dop", "power_w", "trusted_share", "time_to_limit_s"]
-    alarm: float
-    warning: float | None = None
-    on_delay_s: float = 60.0
-    off_delay_s: float = 60.0
-    deadband: float | None = None
-    window_s: float | None = None
     hard: float | None = None
     days: float = 30.0
 

@@ -40,12 +40,11 @@ def test_what_was_known_already_is_no_news(sender, listening):
 
 
 def test_the_teller_never_waits_for_a_listener_that_hangs(listening):
-    released, calls = threading.Event(), []
-    listening(lambda: (calls.append(1), released.wait(10)))
-    began = time.perf_counter()
+    released, calls, ended = threading.Event(), [], []
+    listening(lambda: (calls.append(1), released.wait(60), ended.append(1)))
     for _ in range(1000):
         announce.announce()
-    assert time.perf_counter() - began < 1.0 and len(calls) <= 1
+    assert not ended and len(calls) <= 1    # all was told while the listener hung
     released.set()
 
 

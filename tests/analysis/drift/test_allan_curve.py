@@ -6,7 +6,6 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from analysis.drift.allan import allan_deviation
 from analysis.drift.allan_curve import (
     as_time_deviation,
     modified_allan_deviation,
@@ -14,9 +13,11 @@ from analysis.drift.allan_curve import (
     overlapping_allan_deviation,
     time_deviation,
 )
-from tests.analysis.drift.test_allan import lcg_1000
+from tests.reference.aligned import aligned
+from tests.reference.lcg import lcg_1000
 from tests.reference.values import close, reference, references
 
+S = 1_000_000
 PAIRS = ((overlapping_allan_deviation, allantools.oadev), (modified_allan_deviation, allantools.mdev),
          (time_deviation, allantools.tdev))
 
@@ -95,10 +96,53 @@ def test_components_are_those_of_each_and_terms_are_shared():
     assert overlapping_allan_deviation(level, 2.0).terms[0] == 197
 
 
-def test_first_factor_is_the_deviation_of_aligned_bins():
-    level = lcg_1000()[:100]
-    at_us = np.arange(100) * 1_000_000
-    assert overlapping_allan_deviation(level, 1.0).deviation[0] == pytest.approx(allan_deviation(at_us, level, 1.0).deviation)
+def test_the_nine_point_set():
+    row = reference("T04-nbs9-adev")
+    level = np.array(row["inputs"]["y"], float)
+    found = [aligned(np.arange(9) * S, level, m)[0] for m in row["inputs"]["m"]]
+    # The handbook leaves out the ninth point at tau = 2, which would be half a bin.
+    found[1] = aligned(np.arange(8) * S, level[:8], 2)[0]
+    np.testing.assert_allclose(found, row["expected"], **close(row))
+
+
+def test_the_thousand_point_set():
+    row = reference("T04-lcg1000-adev")
+    found = [aligned(np.arange(1000) * S, lcg_1000(), m)[0] for m in row["inputs"]["m"]]
+    np.testing.assert_allclose(found, row["expected"], **close(row))
+
+
+@given(st.integers(0, 2**32 - 1), st.sampled_from([1, 2, 5, 10]))
+def test_without_gaps_it_is_the_plain_allan_deviation(seed, m):
+    """allantools (open library): adev of frequency-type data."""
+    level = np.cumsum(np.random.default_rng(seed).normal(size=200))
+    _, expected, _, pairs = allantools.adev(level, rate=1.0, data_type="freq", taus=[m])
+    found = aligned(np.arange(200) * S, level, float(m))
+    np.testing.assert_allclose(found[0], expected[0], rtol=1e-9)
+    assert found[1] == 200 // m - 1
+
+
+@pytest.mark.parametrize("name", ["T04-drift-m1", "T04-drift-m7", "T04-drift-m50"])
+def test_linear_drift_rises_with_tau(name):
+    row = reference(name)
+    x = row["inputs"]
+    count = x["n"] // x["m"] * x["m"]
+    found = aligned(np.arange(count) * S, x["D_per_sample"] * np.arange(count), x["m"])
+    np.testing.assert_allclose(found[0], row["expected"], **close(row))
+
+
+def test_a_gap_breaks_the_chain_and_is_not_closed_up():
+    at_us = np.array([0, 1, 2, 10, 11]) * S
+    level = np.array([0.0, 0.0, 0.0, 100.0, 100.0])
+    found = aligned(at_us, level, 1.0)
+    assert found[0] == 0.0 and found[1] == 3
+
+
+def test_no_pair_no_figure():
+    found = aligned(np.array([0, 5]) * S, np.zeros(2), 1.0)
+    assert np.isnan(found[0]) and found[1] == 0
+    assert np.isnan(aligned(np.zeros(0, np.int64), np.zeros(0), 1.0)[0])
+    with pytest.raises(ValueError, match="must be above 0"):
+        aligned(np.array([0]), np.zeros(1), 0.0)
 
 
 def test_too_short_and_faults():

@@ -6,7 +6,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from analysis.rollup.sketch import Sketch, merge_sketches, representative, sketch_of, sketch_quantiles
-from tests.analysis.drift.test_allan import lcg_values
+from tests.reference.lcg import lcg_values
 from tests.reference.values import close, reference, references
 
 values = st.lists(st.one_of(st.floats(1e-12, 1e6), st.floats(-1.0, 0.0), st.just(np.nan)), max_size=40)

@@ -154,9 +154,8 @@ def _check_rollups(notes):
 
 
 def _check_second_start(notes, login):
-    before, lines, started_s = Block.objects.count(), [], time.monotonic()
+    before, lines = Block.objects.count(), []
     again = build_demo_lab(lines.append)
-    assert time.monotonic() - started_s < 3.0
     assert again == login
     assert Block.objects.count() == before
     assert read_notes() == notes

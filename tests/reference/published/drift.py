@@ -9,13 +9,14 @@ from typing import Any
 import numpy as np
 
 from analysis.drift import brownian
-from analysis.drift.allan import allan_deviation
 from analysis.drift.allan_confidence import Noise, deviation_interval, edf
 from analysis.drift.allan_curve import modified_allan_deviation, overlapping_allan_deviation, time_deviation
 from analysis.drift.diffusion import diffusion_from_angles
 from analysis.drift.displacement import CEILING_RAD2, displacement
 from analysis.drift.sphere import MeanDirection, direction_sums, fisher_angle_rad, fisher_concentration, mean_direction
 from analysis.drift.summary import merged, summary_of
+from tests.reference.aligned import aligned
+from tests.reference.lcg import lcg_1000, lcg_values
 from tests.reference.published.case import Case, Origin
 from tests.reference.values import reference
 
@@ -26,22 +27,14 @@ _CZEGLEDI = "C. B. Czegledi et al., Sci. Rep. 6, 21217 (2016), model; correlatio
 _PERRIN = "Perrin (1928), Roberts & Ursell (1960); checked by finite volumes and simulation"
 
 
-def _lcg(count: int) -> np.ndarray:
-    n, values = 1234567890, []
-    for _ in range(count):
-        values.append(n / 2147483647)
-        n = 16807 * n % 2147483647
-    return np.array(values)
-
-
 def _data(name: str) -> np.ndarray:
-    return np.array(reference(name)["inputs"]["y"], float) if "nbs9" in name else _lcg(1000)
+    return np.array(reference(name)["inputs"]["y"], float) if "nbs9" in name else lcg_1000()
 
 
 def _aligned(name: str, m: int) -> float:
     level = _data(name)
     level = level[: len(level) // m * m]
-    return allan_deviation(np.arange(len(level)) * 1_000_000, level, m).deviation
+    return aligned(np.arange(len(level)) * 1_000_000, level, m)[0]
 
 
 def _allan_cases() -> list[Case]:
@@ -179,7 +172,7 @@ def _merge_cases() -> list[Case]:
 
 
 def _merged_quantile(share: float) -> float:
-    data = np.exp(3.0 * (_lcg(20001)[1:] - 0.5))
+    data = np.exp(3.0 * (lcg_values(20001)[1:] - 0.5))
     return float(merged(summary_of(data[:9000]), summary_of(data[9000:])).quantiles(np.array(share)))
 
 

@@ -106,8 +106,6 @@ def clearance_of(experiment: Experiment, question: Question, limits: Sequence[As
 
     Args:
         limits: Those that the run is judged by (copied at its start); None: those in force.
-    Raises:
-        DamagedStore: The newest minute's readings cannot be read.
     """
     known_us = question.known_until_us
     asked = limits_at(experiment, at_of(known_us)) if limits is None else list(limits)

@@ -57,8 +57,9 @@ def limit_history(asked: AskedLimit, start_us: int, length_s: float, until_us: i
         return LimitHistory(None, wanted, happenings(tap, first_us or until_us, until_us), None, 0.0, is_told)
     from_us = max(starts[0] - HALF_DAY_US, first_us - 60 * US_PER_S)
     end_us = min(starts[-1] + round(length_s * US_PER_S) + HALF_DAY_US, until_us)
-    minutes = (angle_minutes(tap.pk, asked.quantity, from_us, end_us) if wanted is None
-               else sop_minutes(tap.pk, asked.quantity, from_us, end_us, wanted))
+    is_paced = tap.interval_s is not None
+    minutes = (angle_minutes(tap.pk, asked.quantity, from_us, end_us, is_paced=is_paced) if wanted is None
+               else sop_minutes(tap.pk, asked.quantity, from_us, end_us, wanted, is_paced=is_paced))
     happened = happenings(tap, from_us, until_us)
     sensor = air_tap(tap) or tap if allows_air else None
     air = None if sensor is None else air_hours(sensor.pk, from_us, end_us)

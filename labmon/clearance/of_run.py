@@ -10,11 +10,7 @@ from labmon.runs.models import Run
 
 
 def run_clearance(run: Run, now: datetime) -> Answer:
-    """What is said of a run now, or (once it has begun) what would have been said at its start, by the limits that ruled then.
-
-    Raises:
-        DamagedStore: The newest minute's readings cannot be read.
-    """
+    """What is said of a run now, or (once it has begun) what would have been said at its start, by the limits that ruled then."""
     length_s = (run.ends_at - run.starts_at).total_seconds()
     allowed_s = min(run.allowed_below_s, max(length_s - 1.0, 0.0))
     question = checked_question(us_of(run.starts_at), length_s, allowed_s, us_of(now))

@@ -106,3 +106,16 @@ def test_hours_of_air():
     air = air_hours(tap.pk, NOON_US, NOON_US + 7200 * SECOND_US)
     np.testing.assert_allclose(air.low_k, [293.15, 294.15])
     np.testing.assert_allclose(air.high_k, [293.15, 294.15])
+
+
+def test_a_slower_past_of_a_tap_that_declares_no_interval_is_no_gap():
+    """One in six seconds for two hours, then one a second: today's pace makes half of each old minute a gap, its own does not."""
+    tap = make_tap(interval_s=None)
+    seconds = [*range(0, 7200, 6), *range(7200, 10_800)]
+    seconds = [one for one in seconds if not 3600 <= one < 3660]
+    stored(tap, seconds, NOON_US + DAY_US // 4, port1=1e-3, port2=1e-5)
+    found = angle_minutes(tap.pk, Quantity.ER_DB, NOON_US, NOON_US + 10_800 * SECOND_US, is_paced=False)
+    assert len(found) == 179 and (NOON_US + 3600 * SECOND_US) not in found.at_us        # a minute without readings stays a gap
+    np.testing.assert_allclose(found.judged_s, 60.0, atol=12.0)
+    half = angle_minutes(tap.pk, Quantity.ER_DB, NOON_US + 1200 * SECOND_US, NOON_US + 2400 * SECOND_US)
+    assert (half.judged_s <= 30.0).all()

@@ -85,3 +85,4 @@ class _Teller:
         if time.monotonic() >= self._next_s:
             self._next_s = time.monotonic() + TELL_EVERY_S
             RunEvidence.objects.filter(pk=self._evidence.pk, made_at=None).update(rows_done=self._done, beat_at=timezone.now())
+            _publish(self._evidence)

@@ -25,6 +25,7 @@ class Action(StrEnum):
     PLAN_RUN = "plan runs"
     PLAN_FOR_OTHERS = "plan runs for others"
     CHANGE_RUN = "change this run"
+    EXPORT = "take evidence of a run out of the lab"
     MAKE_EXPERIMENT = "make or change an experiment"
     SET_LIMIT = "set limits"
     CALIBRATE = "set zeros and calibrations"
@@ -43,7 +44,7 @@ class Action(StrEnum):
 
 
 _GUEST = frozenset({Action.READ, Action.MAKE_OWN_KEY})
-_RESEARCHER = _GUEST | {Action.ACKNOWLEDGE, Action.SHELVE, Action.LOG, Action.PLAN_RUN, Action.SEE_CALLS}
+_RESEARCHER = _GUEST | {Action.ACKNOWLEDGE, Action.SHELVE, Action.LOG, Action.PLAN_RUN, Action.EXPORT, Action.SEE_CALLS}
 _OWNER_OF_IT = frozenset(
     {Action.MAKE_EXPERIMENT, Action.SET_LIMIT, Action.TAKE_OUT, Action.CALIBRATE, Action.MAKE_STATION_KEY, Action.ADD_TAP,
      Action.IMPORT_FILE, Action.READ_AUDIT, Action.SET_SHARED, Action.PLAN_FOR_OTHERS}

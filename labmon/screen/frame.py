@@ -40,7 +40,7 @@ def _ways(request: HttpRequest) -> list[Way]:
     person = getattr(request, "user", None)
     if person is None or not has_access(person):
         return []
-    names = [("Lab", "lab"), ("Alarms", "alarms"), ("Experiments", "experiments"), ("Runs", "runs")]
+    names = [("Lab", "lab"), ("Alarms", "alarms"), ("Experiments", "experiments"), ("Runs", "runs"), ("Overnight", "overnight")]
     role = role_of(person)
     names += [("Audit", "audit")] if role in {Role.OWNER, Role.MANAGER} else []
     names += [("Health", "health")] if role is Role.MANAGER else []

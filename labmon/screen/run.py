@@ -119,6 +119,7 @@ def _show(request: HttpRequest, run: Run, form: LedgerForm, status: int) -> Http
     so_far = RunSoFar.objects.filter(run=run).first() if state is RunState.RUNNING else None
     totals, intervals = _account(ledger, so_far)
     may_change = may(request.user, Action.CHANGE_RUN, run)
+    may_export = may(request.user, Action.EXPORT, run.experiment)
     alarms = [] if state is RunState.PLANNED else [alarm_view(row, now) for row in alarm_rows(request.user, in_run=run, limit=50)]
     return render(request, "screen/run.html", {
         "run": run, "state": state.value, "sentence": run_sentence(run, now, totals), "zone": zone.key,
@@ -128,7 +129,8 @@ def _show(request: HttpRequest, run: Run, form: LedgerForm, status: int) -> Http
         "was_declared_late": run.planned_at > run.starts_at, "planned_utc": time_text(run.planned_at),
         "wanted_share": number_text(100 * run.wanted_trusted_share, 1, "%"), "allowed": duration_text(run.allowed_below_s),
         "limits": [_limit_words(one, run) for one in rulings],
-        "may_change": may_change, "may_acknowledge": may(request.user, Action.ACKNOWLEDGE, run.experiment),
+        "may_change": may_change, "may_export": may_export,
+        "may_acknowledge": may(request.user, Action.ACKNOWLEDGE, run.experiment),
         "taps": _taps(run, now) if state is RunState.RUNNING else [],
         "ahead": _ahead(rulings, now) if state is RunState.RUNNING else [],
         "on_call": _on_call(request, run, max(now, run.starts_at)) if state in (RunState.RUNNING, RunState.PLANNED) else [],

@@ -73,7 +73,7 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
     return {
         "_station": station, "bench": letter, "station": station.name, "tap": tap.name, "tap_id": tap.pk,
         "experiment_id": experiment.pk, "limit_id": limit.pk, "version_id": version.pk, "alarm_id": alarm.pk, "hold_id": hold.pk,
-        "entry_id": entry.pk, "import_id": upload.pk, "run_id": run.pk, "ledger_number": 1,
+        "entry_id": entry.pk, "import_id": upload.pk, "run_id": run.pk, "ledger_number": 1, "number": 1, "day": "2031-03-04",
         "event_id": event.pk,
         "revoke-key.key_id": key.pk,                       # an argument that means something of its own to one address
         "request_id": wish.pk, "word": "refuse",

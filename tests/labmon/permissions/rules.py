@@ -122,6 +122,12 @@ PAGES: dict[str, dict[str, Rule]] = {
     "ask-for-back-test": {"POST": WORK},
     "keeping": {"GET": LAB, "POST": LAB},
     "call-review": {"GET": WORK},
+    "overnight": {"GET": READ},
+    "overnight-of": {"GET": READ},
+    "evidence": {"GET": WORK, "POST": WORK},                       # taken out of the lab: the audit keeps by whom
+    "evidence-zip": {"GET": WORK},
+    "evidence-report": {"GET": WORK},
+    "evidence-pdf": {"GET": WORK},
     "audit": {"GET": ANY_OWNER},
     "audit-export": {"GET": sending(ANY_OWNER, format="csv")},
     "health": {"GET": LAB},

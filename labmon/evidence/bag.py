@@ -69,6 +69,10 @@ class Bag:
             while part := source.read(PART):
                 entry.write(part)
 
+    def abandon(self) -> None:
+        """Let go of a bag that will not be ended; what was written is no package."""
+        self._zip.close()
+
     def close(self, about: Mapping[str, str]) -> None:
         """Write the bag's own files and end the ZIP; ``about`` goes into bag-info.txt."""
         self.write("manifest-sha256.txt", _manifest(self._payload))

@@ -83,18 +83,25 @@ def write_evidence(file: BinaryIO, order: Order, on_rows: Callable[[int], None] 
     """
     ledger = order.ledger
     bag = Bag(file, order.package, order.made_at)
-    writing = _Writing(order, bag, on_rows, Account.of(ledger.length_s))
-    for tap in run_taps(ledger):
-        _write_tap(writing, tap)
-    _check_account(writing)
-    _write_settings(writing)
-    _write_words(writing)
+    try:
+        _write_payload(_Writing(order, bag, on_rows, Account.of(ledger.length_s)))
+    except BaseException:
+        bag.abandon()
+        raise
     bag.write("README.txt", _readme(order))
     bag.write("recompute.py", (HERE / "recompute.py").read_bytes())
     bag.close({"Bag-Software-Agent": f"labmon {VERSION}", "Bagging-Date": f"{order.made_at:%Y-%m-%d}",
                "External-Identifier": order.package,
                "External-Description": f"Evidence of the run {ledger.run.name} of {ledger.run.experiment.name}, "
                                        f"{rfc3339(ledger.from_at)} to {rfc3339(ledger.until_at)}"})
+
+
+def _write_payload(writing: _Writing) -> None:
+    for tap in run_taps(writing.order.ledger):
+        _write_tap(writing, tap)
+    _check_account(writing)
+    _write_settings(writing)
+    _write_words(writing)
 
 
 def run_taps(ledger: RunLedger) -> list[Tap]:

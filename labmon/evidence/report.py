@@ -50,5 +50,6 @@ def _tap(tap: dict[str, Any], figures: dict[str, Any]) -> dict[str, Any]:
             "least": ("≥ " if figures.get("is_bound") else "") + least,
             "limits": [{"text": limit_text(one), "from": one["from"][:19] + "Z", "until": one["until"][:19] + "Z",
                         "reason": one["reason"]} for one in tap["limits"]],
-            "calibrations": [one | {"from": one["valid_from"][:19] + "Z", "zero": (one["zero_taken_at"] or "")[:19]}
+            "calibrations": [one | {name: f"{one[name]:g}" for name in ("zero1", "zero2", "gain_ratio", "floor1", "floor2")}
+                             | {"from": one["valid_from"][:19] + "Z", "zero": (one["zero_taken_at"] or "")[:19]}
                              for one in tap["calibrations"]]}

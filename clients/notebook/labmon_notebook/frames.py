@@ -100,6 +100,20 @@ def alarms_frame(rows: Iterable[Mapping[str, Any]]) -> pd.DataFrame:
                                                "state", "raised_at", "alarm_at", "returned_at", "acknowledged_at"))
 
 
+def runs_frame(rows: Iterable[Mapping[str, Any]]) -> pd.DataFrame:
+    """A row a run, latest start first."""
+    return frame_of(rows, index="id", texts=("taps",), columns=(
+        "id", "experiment", "name", "state", "owner", "deputy", "taps", "starts_at", "ends_at", "ended_at", "length_s"))
+
+
+def ledger_frame(pages: Sequence[Mapping[str, Any]]) -> pd.DataFrame:
+    """A row a stretch, by its start; ``attrs`` has the totals in seconds and the rest of the answer."""
+    rows = [row for page in pages for row in page["intervals"]]
+    frame = frame_of(rows, texts=("reasons", "taps"), columns=("from", "until", "length_s", "class", "is_doubtful", "reasons", "taps"))
+    frame.attrs.update({name: value for name, value in pages[0].items() if name not in {"intervals", "next"}})
+    return frame.set_index("from")
+
+
 def holds_frame(said: Mapping[str, Any]) -> pd.DataFrame:
     """A row for each thing kept quiet now."""
     return frame_of(said["holds"], index="id", columns=("id", "kind", "tap", "alarms", "limit", "by", "reason", "begun_at",

@@ -95,6 +95,26 @@ class Lab:
 
         return frames.alarms_frame(all_pages(page, "alarms", most))
 
+    def runs(self, *, experiment: int | None = None, state: str | None = None, most: int | None = None) -> pd.DataFrame:
+        """Runs by id, latest start first: ``planned``, ``running``, ``over`` or ``cancelled``."""
+        def page(query: dict[str, Any]) -> dict[str, Any]:
+            return self._door.json(calls.RUNS.address(), {"experiment": experiment, "state": state, **query})
+
+        return frames.runs_frame(all_pages(page, "runs", most, following="next"))
+
+    def ledger(self, run: int, *, version: int | None = None) -> pd.DataFrame:
+        """A run's stretches, each in one class: ``good``, ``below limit``, ``untrusted``, ``no reading``.
+
+        ``attrs`` has the totals (``good_s``, ``below_s``, …), version and figures. Without ``version``: the newest that is made.
+        """
+        pages: list[dict[str, Any]] = []
+        first: int | None = 0
+        while first is not None:
+            said = self._door.json(calls.LEDGER.address(id=run), {"version": version, "first": first})
+            pages.append(said)
+            version, first = said["version"], said["next"]
+        return frames.ledger_frame(pages)
+
     def holds(self) -> pd.DataFrame:
         """What is kept quiet now, by id."""
         return frames.holds_frame(self._door.json(calls.HOLDS.address()))

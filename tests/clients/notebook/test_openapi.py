@@ -7,7 +7,7 @@ import pytest
 from django.test import Client
 from labmon_notebook import calls
 from labmon_notebook.calls import BASE, Call
-from labmon_notebook.faults import WrongQuestion
+from labmon_notebook.faults import NotThere, WrongQuestion
 
 from tests.clients.notebook.conftest import asked
 
@@ -35,7 +35,9 @@ def everything(near, experiment):
     """A call of every function that asks."""
     near.stations(), near.taps(), near.now("bench-a/in"), near.experiments(), near.limits(experiment), near.holds()
     near.history("bench-a/in", SPAN), near.statistics("bench-a/in", SPAN), near.alarms(state="shelved", experiment=experiment)
-    near.readings("bench-a/in", SPAN, as_of="2041-01-01T00:00:00Z")
+    near.readings("bench-a/in", SPAN, as_of="2041-01-01T00:00:00Z"), near.runs(experiment=experiment, state="over")
+    with pytest.raises(NotThere, match="run"):
+        near.ledger(999)
 
 
 def test_every_function_sends_what_the_table_says_and_every_call_has_a_function(near, read_lab):

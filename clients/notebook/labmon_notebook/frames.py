@@ -109,7 +109,8 @@ def runs_frame(rows: Iterable[Mapping[str, Any]]) -> pd.DataFrame:
 def ledger_frame(pages: Sequence[Mapping[str, Any]]) -> pd.DataFrame:
     """A row a stretch, by its start; ``attrs`` has the totals in seconds and the rest of the answer."""
     rows = [row for page in pages for row in page["intervals"]]
-    frame = frame_of(rows, texts=("reasons", "taps"), columns=("from", "until", "length_s", "class", "is_doubtful", "reasons", "taps"))
+    frame = frame_of(rows, texts=("reasons", "taps"), columns=(
+        "from", "until", "length_s", "class", "is_doubtful", "reasons", "taps"))
     frame.attrs.update({name: value for name, value in pages[0].items() if name not in {"intervals", "next"}})
     return frame.set_index("from")
 

@@ -4,7 +4,7 @@ from datetime import date, timedelta
 
 from django.conf import settings
 from django.http import Http404, HttpRequest, HttpResponse
-from django.shortcuts import redirect, render
+from django.shortcuts import render
 from django.utils import timezone
 from django.utils.safestring import mark_safe
 from django.views.decorators.http import require_safe
@@ -20,10 +20,9 @@ HOURS = Hours()
 
 @require_safe
 @for_people
-def overnight_page(request: HttpRequest, day: str = "") -> HttpResponse:
-    """The last night, or the one that began on ``day``; ``date`` of a form leads there."""
-    if "date" in request.GET:
-        return redirect("overnight-of", day=str(_date(request.GET["date"])))
+def overnight_page(request: HttpRequest) -> HttpResponse:
+    """The last night, or that of the evening of ``date``."""
+    day = request.GET.get("date", "")
     zone, now = settings.LAB_ZONE, timezone.now()
     newest = last_night(now, zone, HOURS)
     night = night_of(_date(day), zone, HOURS) if day else newest

@@ -109,7 +109,6 @@ urlpatterns = [
     path("health/", health.health_page, name="health"),
     path("keeping/", keeping.keeping_page, name="keeping"),
     path("overnight/", overnight.overnight_page, name="overnight"),
-    path("overnight/<str:day>/", overnight.overnight_page, name="overnight-of"),
     path("runs/", runs.runs_page, name="runs"),
     path("runs/<int:run_id>/", run.run_page, name="run"),
     path("runs/<int:run_id>/change/", runs.change_run_page, name="change-run"),

@@ -1,6 +1,7 @@
 """Two benches alike: bench-a is its owner's and named for the guest, bench-b its neighbour's. An address finds its rows here."""
 
 import io
+import zipfile
 from dataclasses import dataclass
 from datetime import timedelta
 from typing import Any
@@ -12,6 +13,8 @@ from PIL import Image
 from ingest.models import FileImport, StationKey
 from labmon.alarms.models import AlarmHold, HoldKind
 from labmon.events.models import Event
+from labmon.evidence.files import name_of, new_file, place_of
+from labmon.evidence.models import RunEvidence
 from labmon.experiments.actions import set_limit
 from labmon.experiments.models import Limit, LimitRequest
 from labmon.logbook.actions import write_entry
@@ -19,6 +22,7 @@ from labmon.people.keys import make_person_key
 from labmon.people.models import Person, Role
 from labmon.runs.ledgers import ask_ledger
 from labmon.runs.making import make_waiting_ledgers
+from labmon.runs.models import Run
 from labmon.tell.keys import key_in_force
 from labmon.tell.models import KeyPurpose, PushDevice
 from tests.factories import NOON, make_experiment, make_person, make_run, make_station, make_tap, store_alarm
@@ -70,15 +74,25 @@ def _bench(letter: str, owner: Person, people: dict[Who, Person]) -> dict[str, A
     run = make_run(experiment, timezone.now().replace(microsecond=0) - timedelta(hours=2), owner=owner)
     ask_ledger(run, by=None)
     make_waiting_ledgers()
+    _package(run)
     return {
         "_station": station, "bench": letter, "station": station.name, "tap": tap.name, "tap_id": tap.pk,
         "experiment_id": experiment.pk, "limit_id": limit.pk, "version_id": version.pk, "alarm_id": alarm.pk, "hold_id": hold.pk,
-        "entry_id": entry.pk, "import_id": upload.pk, "run_id": run.pk, "ledger_number": 1, "number": 1, "day": "2031-03-04",
+        "entry_id": entry.pk, "import_id": upload.pk, "run_id": run.pk, "ledger_number": 1, "number": 1,
         "event_id": event.pk,
         "revoke-key.key_id": key.pk,                       # an argument that means something of its own to one address
         "request_id": wish.pk, "word": "refuse",
         "person_id": people[Who.RESEARCHER].pk,
     }
+
+
+def _package(run: Run) -> None:
+    """A package of the run as its addresses look for it."""
+    evidence = RunEvidence.objects.create(run=run, ledger=run.ledgers.get(), number=1, made_at=timezone.now(), size=1,
+                                          sha256="0" * 64)
+    with new_file(place_of(evidence)) as file, zipfile.ZipFile(file, "w") as package:
+        for ending in ("html", "pdf"):
+            package.writestr(f"{name_of(evidence)}/data/report.{ending}", "x")
 
 
 def _picture() -> SimpleUploadedFile:

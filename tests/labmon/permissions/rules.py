@@ -123,7 +123,6 @@ PAGES: dict[str, dict[str, Rule]] = {
     "keeping": {"GET": LAB, "POST": LAB},
     "call-review": {"GET": WORK},
     "overnight": {"GET": READ},
-    "overnight-of": {"GET": READ},
     "evidence": {"GET": WORK, "POST": WORK},                       # taken out of the lab: the audit keeps by whom
     "evidence-zip": {"GET": WORK},
     "evidence-report": {"GET": WORK},

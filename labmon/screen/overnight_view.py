@@ -64,8 +64,8 @@ def bench_view(row: BenchNight, night: Night, zone: ZoneInfo) -> BenchView:
     whole_s = (night.until_us - night.from_us) / 1e6
     return BenchView(
         f"{row.station}/{row.tap}", row.station, row.experiment, row.experiment_id,
-        "no judged reading" if worst is None else f"{margin_db_text(worst)}{at}",
-        "no reading" if worst is None else "below limit" if is_below else "", is_below, usual,
+        "" if worst is None else f"{margin_db_text(worst)}{at}",
+        "no judged reading" if worst is None else "below limit" if is_below else "", is_below, usual,
         [_call(one, zone) for one in row.alarms], _share(max(covered_s - trusted_s, 0.0), whole_s, "untrusted"),
         _share(max(whole_s - covered_s, 0.0), whole_s, "missing"), profile_svg(row, night, zone))
 

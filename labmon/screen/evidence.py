@@ -3,10 +3,12 @@
 import base64
 import hashlib
 import re
+from collections.abc import Iterator
+from pathlib import Path
 from typing import Any
 
 from django.contrib import messages
-from django.http import FileResponse, Http404, HttpRequest, HttpResponse, HttpResponseBase
+from django.http import Http404, HttpRequest, HttpResponse, HttpResponseBase, StreamingHttpResponse
 from django.shortcuts import redirect, render
 from django.views.decorators.http import require_http_methods, require_safe
 
@@ -54,8 +56,12 @@ def evidence_page(request: HttpRequest, run_id: int) -> HttpResponse:
 def evidence_zip(request: HttpRequest, run_id: int, number: int) -> HttpResponseBase:
     """The package."""
     evidence = _made(request, run_id, number)
+    path = place_of(evidence)
+    if not path.is_file():
+        raise Http404("The package's file is gone from the data folder. Make a new one.")
     note_if_taken(request, evidence, "package")
-    return FileResponse(_open(evidence), as_attachment=True, filename=place_of(evidence).name, content_type="application/zip")
+    return StreamingHttpResponse(_parts(path), content_type="application/zip", headers={
+        "Content-Disposition": f'attachment; filename="{path.name}"', "Content-Length": str(path.stat().st_size)})
 
 
 @require_safe
@@ -102,11 +108,11 @@ def _made(request: HttpRequest, run_id: int, number: int) -> RunEvidence:
     return found
 
 
-def _open(evidence: RunEvidence) -> Any:
-    try:
-        return place_of(evidence).open("rb")
-    except FileNotFoundError:
-        raise Http404("The package's file is gone from the data folder. Make a new one.") from None
+def _parts(path: Path) -> Iterator[bytes]:
+    """The file piece by piece, opened when the first is asked for."""
+    with path.open("rb") as file:
+        while part := file.read(1 << 20):
+            yield part
 
 
 def _within(evidence: RunEvidence, name: str) -> bytes:

@@ -45,7 +45,7 @@ def export_answer(request: HttpRequest, person: Person, wish: AuditWish, form: E
     subject = f"station/{wish.bench}" if wish.bench else "audit"
     note_export("export audit", subject, asked | {"format": form.value, "chain": has_chain, "until_entry": until_id}, by=person)
     parts = exported(audit_export(person, wish, until_id), form, has_chain=has_chain)
-    answer = StreamingHttpResponse(_for_server(request, parts), content_type=TYPES[form])
+    answer = StreamingHttpResponse(for_server(request, parts), content_type=TYPES[form])
     answer.headers["Content-Disposition"] = f'attachment; filename="labmon-audit.{form.value}"'
     answer.headers["Cache-Control"] = "no-store"
     return answer
@@ -64,7 +64,7 @@ def require_reader(person: Person) -> None:
         raise NotAllowed("You may not read the audit. Ask a bench's owner or a lab manager.")
 
 
-def _for_server(request: HttpRequest, parts: Iterator[bytes]) -> Iterator[bytes] | AsyncIterator[bytes]:
+def for_server(request: HttpRequest, parts: Iterator[bytes]) -> Iterator[bytes] | AsyncIterator[bytes]:
     """Under ASGI the pieces are made in a thread, a few hundred lines at a time, so that the loop stays free."""
     gathered = _gathered(parts)
     return _stepwise(gathered) if isinstance(request, ASGIRequest) else gathered

@@ -47,7 +47,7 @@ def get_readings(request: HttpRequest, person: Person, station: str, tap: str) -
              "not_kept": [[rfc3339_of(hole.from_us), rfc3339_of(hole.until_us + 1)] for hole in holes]}
     note_export("export readings", row, {"span": str(span), "format": form, "as_of": rfc3339(as_of)}, by=person)
     parts = written(form, first.schema, itertools.chain([first], tables), about)
-    answer = StreamingHttpResponse(_for_server(request, parts), content_type=TYPES[form])
+    answer = StreamingHttpResponse(for_server(request, parts), content_type=TYPES[form])
     answer.headers["Content-Disposition"] = f'attachment; filename="{station}-{tap}.{form}"'
     answer.headers["Cache-Control"] = "no-store"
     if holes:
@@ -98,7 +98,7 @@ def _table(tap: Tap, readings: Readings, reduced: Reduced, names: dict[int, str]
     return table_of(tap, readings, reduced, names)
 
 
-def _for_server(request: HttpRequest, parts: Iterator[bytes]) -> Any:
+def for_server(request: HttpRequest, parts: Iterator[bytes]) -> Any:
     """Under ASGI each part is made in the request's own thread, when the client has taken the one before."""
     return _in_thread(parts) if isinstance(request, ASGIRequest) else parts
 

@@ -12,6 +12,7 @@ from django.http import Http404, HttpRequest, HttpResponse, HttpResponseBase, St
 from django.shortcuts import redirect, render
 from django.views.decorators.http import require_http_methods, require_safe
 
+from labmon.api.readings import for_server
 from labmon.errors import WriteError
 from labmon.evidence.actions import ask_evidence, note_export
 from labmon.evidence.files import place_of
@@ -60,7 +61,7 @@ def evidence_zip(request: HttpRequest, run_id: int, number: int) -> HttpResponse
     if not path.is_file():
         raise Http404("The package's file is gone from the data folder. Make a new one.")
     note_if_taken(request, evidence, "package")
-    return StreamingHttpResponse(_parts(path), content_type="application/zip", headers={
+    return StreamingHttpResponse(for_server(request, _parts(path)), content_type="application/zip", headers={
         "Content-Disposition": f'attachment; filename="{path.name}"', "Content-Length": str(path.stat().st_size)})
 
 

@@ -4,16 +4,17 @@ import logging
 import secrets
 import time
 from dataclasses import dataclass
+from datetime import datetime, timedelta
 
 from django.db import transaction
 
 from ingest.models import Station, Tap, TapKind
 from ingest.stations import make_key
 from ingest.times import at_of, now_us
-from labmon.benches.actions import TapWish, add_bench
+from labmon.benches.actions import TapWish, add_bench, set_shared
 from labmon.benches.calibration import set_calibration
 from labmon.demo.air import ROOMS, RoomPlan
-from labmon.demo.benches import BENCHES, MANAGER, TECHNICIAN, BenchPlan, Polarimeter, bench_named
+from labmon.demo.benches import BENCHES, MANAGER, RESEARCHER, STUDENT, TECHNICIAN, BenchPlan, Polarimeter, bench_named
 from labmon.demo.faults import HandednessFlipped
 from labmon.demo.folder import DemoNotes, read_notes, write_notes
 from labmon.demo.history import TimeAxis, write_history
@@ -24,6 +25,7 @@ from labmon.demo.people import PEOPLE
 from labmon.demo.runs import declare_runs
 from labmon.demo.station import Say
 from labmon.demo.world import SEED, World, wanted_state
+from labmon.events.actions import put_on_call
 from labmon.experiments.actions import create_experiment, set_limit
 from labmon.people.actions import add_person, set_guest, set_password
 from labmon.people.models import Person
@@ -96,6 +98,7 @@ def _make_lab(notes: DemoNotes, progress: Say) -> None:
         for bench in BENCHES:
             _make_bench(bench, notes, people)
         _name_guests(people, notes)
+        _put_on_call(people, at_of(notes.built_until_us))
     write_notes(notes)
     progress(f"{len(PEOPLE)} people, {len(BENCHES)} benches in {len(ROOMS)} rooms made; day 1 is {_clock(notes.day_one_us)[:10]}")
 
@@ -120,6 +123,16 @@ def _name_guests(people: dict[str, Person], notes: DemoNotes) -> None:
             set_guest(people[plan.login], list(stations), until, by=people[MANAGER])
 
 
+def _put_on_call(people: dict[str, Person], now: datetime) -> None:
+    """This week and the next three, in turn, from Monday 08:00 UTC."""
+    since_monday = timedelta(days=now.weekday(), hours=now.hour, minutes=now.minute, seconds=now.second)
+    monday = now - since_monday + timedelta(hours=8)
+    monday -= timedelta(weeks=1) if monday > now else timedelta(0)
+    for week, name in enumerate((TECHNICIAN, RESEARCHER, STUDENT, TECHNICIAN)):
+        start = monday + timedelta(weeks=week)
+        put_on_call(people[name], start, start + timedelta(weeks=1), by=people[MANAGER])
+
+
 def _make_room(room: RoomPlan, notes: DemoNotes, people: dict[str, Person]) -> None:
     wish = TapWish(CLIMATE_TAP, TapKind.CLIMATE, interval_s=CLIMATE_CADENCE_S)
     _, notes.station_keys[room.station] = add_bench(room.station, taps=[wish], room=room.name, owner=people[TECHNICIAN],
@@ -131,6 +144,7 @@ def _make_bench(bench: BenchPlan, notes: DemoNotes, people: dict[str, Person]) -
     station, notes.station_keys[bench.station] = add_bench(
         bench.station, taps=[TapWish(bench.tap, kind, bench.head.unit)], room=bench.room, owner=people[bench.owner],
         purpose=bench.experiment, by=people[MANAGER])
+    set_shared(station, room=bench.room, laser=bench.laser, logger="", network="", by=people[MANAGER], reason="as it is built")
     tap = station.taps.get()
     day_one = at_of(notes.day_one_us)
     _calibrate(bench, tap, notes, people)

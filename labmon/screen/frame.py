@@ -42,6 +42,7 @@ def _ways(request: HttpRequest) -> list[Way]:
         return []
     names = [("Lab", "lab"), ("Alarms", "alarms"), ("Experiments", "experiments"), ("Runs", "runs"), ("Overnight", "overnight")]
     role = role_of(person)
+    names += [("Calls", "calls")] if role is not Role.GUEST else []
     names += [("Audit", "audit")] if role in {Role.OWNER, Role.MANAGER} else []
     names += [("Health", "health")] if role is Role.MANAGER else []
     names += [("People", "people")] if role is Role.MANAGER else [("You", "you")]

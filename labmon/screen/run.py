@@ -223,14 +223,19 @@ def _margins(run: Run, rulings: list[RulingLimit]) -> Any:
     quantity = Quantity(rulings[0].limit.quantity)
     begin_us, end_us = us_of(run.starts_at), us_of(run.over_at)
     curve = history(rulings[0].limit.tap_id, quantity.value, begin_us, end_us, STEPS // 2)
+    if not len(curve.at_us):
+        return np.full(STEPS // 2, np.nan)
     worst = curve.max if quantity.is_bad_above else curve.min
     level = np.full(len(worst), np.nan)
     for one in rulings:
         ends_us = curve.at_us + curve.bucket_s * US_PER_S
         level[(ends_us > us_of(one.from_at)) & (curve.at_us < us_of(one.until_at))] = one.version.alarm
-    steps = np.full(STEPS // 2, np.nan)
-    place = ((curve.at_us - begin_us) * len(steps) // (end_us - begin_us)).clip(0, len(steps) - 1)
     margin = margin_of(quantity, worst, level).margin_db
+    middle_us = begin_us + (2 * np.arange(STEPS // 2) + 1) * (end_us - begin_us) // STEPS
+    bucket = ((middle_us - curve.at_us[0]) // round(curve.bucket_s * US_PER_S)).astype(np.int64)
+    inside = (bucket >= 0) & (bucket < len(margin))
+    steps = np.where(inside, margin[bucket.clip(0, len(margin) - 1)], np.nan)  # a bucket may be longer than a step, or shorter:
+    place = ((curve.at_us - begin_us) * len(steps) // (end_us - begin_us)).clip(0, len(steps) - 1)
     known = np.isfinite(margin)
     np.fmin.at(steps, place[known], margin[known])
     return steps

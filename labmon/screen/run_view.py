@@ -125,8 +125,8 @@ def class_rows(totals: Totals) -> list[ClassRow]:
     """The four classes, which sum to the run, and the doubtful part of the good one."""
     rows = [("good", totals.good_s, "good"), ("below limit", totals.below_s, "below"),
             ("untrusted", totals.untrusted_s, "untrusted"), ("no reading", totals.no_reading_s, "no-reading")]
-    return [ClassRow(word=word, time=duration_text(seconds), share=share_text(seconds, totals.length_s), mark=mark)
-            for word, seconds, mark in rows]
+    return [ClassRow(word=word, time=duration_text(seconds), share=share_text(seconds, totals.length_s),
+                     mark=mark if seconds else "") for word, seconds, mark in rows]
 
 
 def totals_of_ledger(ledger: RunLedger) -> Totals:
@@ -171,7 +171,8 @@ class IntervalRow:
 def interval_row(row: LedgerInterval) -> IntervalRow:
     """One line of the table."""
     marks = {"good": "good", "below limit": "below", "untrusted": "untrusted", "no reading": "no-reading"}
-    because = "; ".join(row.reasons) + (f" ({', '.join(row.taps)})" if row.taps else "")
+    taps = ", ".join(row.taps)
+    because = "; ".join(row.reasons) + (f" ({taps})" if taps and row.reasons else taps)
     return IntervalRow(
         from_at=time_text(row.from_at), until_at=time_text(row.until_at), length=duration_text(row.length_s),
         word=row.klass.words + (" (doubtful)" if row.is_doubtful else ""), why=because, mark=marks[row.klass.words],

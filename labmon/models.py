@@ -10,14 +10,15 @@ from labmon.events.models import CallRules, Event, OnCall
 from labmon.evidence.models import RunEvidence
 from labmon.experiments.models import Experiment, FoldCheckpoint, Limit, LimitFloor, LimitRequest, LimitVersion
 from labmon.logbook.models import ConfigurationChange, LogEntry, LogEntryBefore
+from labmon.overnight.models import DigestWish
 from labmon.people.models import Person, PersonKey, SignInTry
 from labmon.runs.models import Run, RunLedger, RunLimit, RunSoFar, RunTap
 from labmon.tell.models import Delivery, DeliveryTry, Message, PushDevice, QuietHours, SigningKey, Webhook
 
 __all__ = [
     "AheadDue", "AheadScore", "Alarm", "AlarmBounds", "AlarmHold", "AuditEntry", "AuditPlace", "BackTestDue",
-    "BackTestPass", "Bench", "CallRules", "ClientState", "ConfigurationChange", "Delivery", "DeliveryTry", "DoorHour",
-    "DoorRefusal", "Drill", "Event", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitBackTest", "LimitFloor",
+    "BackTestPass", "Bench", "CallRules", "ClientState", "ConfigurationChange", "Delivery", "DeliveryTry", "DigestWish",
+    "DoorHour", "DoorRefusal", "Drill", "Event", "Experiment", "FoldCheckpoint", "KeyUse", "Limit", "LimitBackTest", "LimitFloor",
     "LimitOutlook", "LimitRequest", "LimitVersion", "LogEntry", "LogEntryBefore", "Message", "OnCall", "Person",
     "PersonKey", "PushDevice", "QuietHours", "Run", "RunClearance", "RunEvidence", "RunLedger", "RunLimit",
     "RunSoFar", "RunTap",

@@ -15,6 +15,10 @@ class Hours:
     ends: time = time(8)
 
 
+#: Of every lab, for now: a night is what lies between two working days.
+HOURS = Hours()
+
+
 @dataclass(frozen=True, slots=True)
 class Night:
     """The night that begins on a local date; half-open, UTC."""

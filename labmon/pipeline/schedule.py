@@ -24,6 +24,7 @@ BEAT_SCHEDULE: dict[str, dict[str, Any]] = {
     "make evidence of runs": {"task": "labmon.evidence.make", "schedule": 15.0, "options": {"expires": 60.0}},
     "tell": _every("tell", 2.0),
     "follow drills": _every("follow_drills", 5.0),
+    "write the night by mail": _every("morning_mails", 120.0),
     "roll up": _every("roll_up", 10.0),
     "judge what rests on minutes": _every("judge_derived", 60.0),
     "back-test warnings ahead": _every("score_limits", 300.0, expires=300.0),

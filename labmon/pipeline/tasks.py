@@ -19,6 +19,7 @@ from labmon.drills.follow import follow_drills
 from labmon.events.steps import take_steps
 from labmon.events.telling import tell_due
 from labmon.experiments.consent import expire_requests
+from labmon.overnight.digest import send_digests
 from labmon.pipeline.derived import judge_derived
 from labmon.pipeline.doubting import cast_doubts
 from labmon.pipeline.nightly import make_day_statistics
@@ -182,6 +183,12 @@ def tell_task() -> None:
     tell_due()
     take_steps()
     send_waiting(for_s=TELL_FOR_S)
+
+
+@_task("morning_mails", 120)
+def morning_mails_task() -> None:
+    """Write the night to whoever wants it by mail."""
+    send_digests()
 
 
 @_task("follow_drills", 120)

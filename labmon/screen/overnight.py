@@ -9,13 +9,12 @@ from django.utils import timezone
 from django.utils.safestring import mark_safe
 from django.views.decorators.http import require_safe
 
-from labmon.overnight.nights import Hours, last_night, night_of
+from labmon.overnight.nights import HOURS, last_night, night_of
 from labmon.overnight.queries import bench_nights
+from labmon.overnight.words import clock, night_sentence
 from labmon.screen.door import for_people
-from labmon.screen.overnight_view import bench_view, clock, night_sentence
+from labmon.screen.overnight_view import bench_view
 from labmon.screen.present import time_text
-
-HOURS = Hours()
 
 
 @require_safe

@@ -1,95 +1,33 @@
-"""A night in words and shapes: the first sentence, and a margin profile that hangs from its limit line. Pure."""
+"""A bench's night as a margin profile that hangs from its limit line. Pure."""
 
-from collections.abc import Sequence
 from dataclasses import dataclass
-from datetime import datetime, timedelta
 from html import escape
 from zoneinfo import ZoneInfo
 
 import numpy as np
 
 from labmon.overnight.nights import Night
-from labmon.overnight.queries import BUCKET_S, ENOUGH, BenchNight
-from labmon.screen.present import margin_db_text
+from labmon.overnight.queries import ENOUGH, BenchNight
+from labmon.overnight.words import BenchWords, bench_words
 
 LOW_DB, HIGH_DB = -4.0, 12.0
 WIDTH, HEIGHT, LIMIT_Y = 840, 84, 21
-FEW = 4
 
 
 @dataclass(frozen=True, slots=True)
 class BenchView:
     """One bench's row."""
 
-    name: str
+    words: BenchWords
     station: str
     experiment: str
     experiment_id: int
-    worst: str
-    word: str
-    is_below: bool
-    usual: str
-    calls: list[str]
-    untrusted: str
-    missing: str
     profile: str
 
 
-def night_sentence(night: Night, rows: Sequence[BenchNight]) -> str:
-    """``Two of 24 benches fell below their limit in the night to 5 March 2031: bench-a, bench-b.``"""
-    when = f"in the night to {night.date + timedelta(days=1):%-d %B %Y}"
-    if not rows:
-        return f"No bench had a limit {when}."
-    below = [row for row in rows if row.worst_db is not None and row.worst_db < 0.0]
-    silent = sum(row.worst_db is None for row in rows)
-    of = f"{len(rows)} bench{'es' if len(rows) != 1 else ''}"
-    said = f"None of {of} fell below its limit {when}" if not below else (
-        f"{len(below)} of {of} fell below {'its' if len(below) == 1 else 'their'} limit {when}: {_names(below)}")
-    return said + (f"; {silent} had no judged reading." if silent else ".")
-
-
-def _names(rows: Sequence[BenchNight]) -> str:
-    names = [f"{row.station}/{row.tap}" for row in rows]
-    return ", ".join(names[:FEW]) + (f" and {len(names) - FEW} more" if len(names) > FEW else "")
-
-
 def bench_view(row: BenchNight, night: Night, zone: ZoneInfo) -> BenchView:
-    """A bench's night in words."""
-    worst = row.worst_db
-    is_below = worst is not None and worst < 0.0
-    at = "" if row.worst_bucket is None else f" about {clock(_bucket_at(night, row.worst_bucket), zone)}"
-    usual = "" if row.usual_db is None else (
-        f"usual worst {margin_db_text(row.usual_db)}, least {margin_db_text(row.usual_low_db)} in {row.usual_nights} nights")
-    covered_s, trusted_s = float(row.covered.sum()) * BUCKET_S, float(row.trusted.sum()) * BUCKET_S
-    whole_s = (night.until_us - night.from_us) / 1e6
-    return BenchView(
-        f"{row.station}/{row.tap}", row.station, row.experiment, row.experiment_id,
-        "" if worst is None else f"{margin_db_text(worst)}{at}",
-        "no judged reading" if worst is None else "below limit" if is_below else "", is_below, usual,
-        [_call(one, zone) for one in row.alarms], _share(max(covered_s - trusted_s, 0.0), whole_s, "untrusted"),
-        _share(max(whole_s - covered_s, 0.0), whole_s, "missing"), profile_svg(row, night, zone))
-
-
-def _call(alarm, zone: ZoneInfo) -> str:
-    cause = f", {alarm.cause}" if alarm.cause else ""
-    what = {"no-reading": "no reading", "untrusted": "untrusted"}.get(alarm.kind, alarm.level)
-    back = f" to {clock(alarm.returned_at, zone)}" if alarm.returned_at else ", still open"
-    return f"{what} {clock(alarm.raised_at, zone)}{back}{cause}"
-
-
-def _share(part_s: float, whole_s: float, word: str) -> str:
-    share = part_s / whole_s
-    return f"{max(100 * share, 1):.0f} % {word}" if share >= 0.005 else ""
-
-
-def clock(at: datetime, zone: ZoneInfo) -> str:
-    """Hours and minutes of the lab's clock."""
-    return f"{at.astimezone(zone):%H:%M}"
-
-
-def _bucket_at(night: Night, bucket: int) -> datetime:
-    first_us = night.from_us // (BUCKET_S * 1_000_000) * BUCKET_S * 1_000_000
-    return night.from_at + timedelta(microseconds=first_us - night.from_us + bucket * BUCKET_S * 1_000_000)
+    """A bench's night with its drawing."""
+    return BenchView(bench_words(row, night, zone), row.station, row.experiment, row.experiment_id, profile_svg(row, night, zone))
 
 
 def profile_svg(row: BenchNight, night: Night, zone: ZoneInfo) -> str:

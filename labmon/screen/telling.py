@@ -7,6 +7,7 @@ from django.views.decorators.http import require_http_methods, require_POST, req
 
 from labmon.errors import WriteError
 from labmon.events.actions import set_quiet_hours
+from labmon.overnight.actions import set_digest, wants_digest
 from labmon.people.rights import Action, require
 from labmon.screen.call_forms import QuietHoursForm
 from labmon.screen.door import for_people, put_refusal
@@ -40,6 +41,7 @@ def telling_page(request: HttpRequest) -> HttpResponse:
             "sentence": _sentence(request, sum(one.ended_at is None for one in devices)),
             "devices": devices,
             "push_key": push_key(),
+            "wants_digest": wants_digest(request.user),
         },
         status=422 if request.method == "POST" else 200,
     )
@@ -86,6 +88,17 @@ def end_device_view(request: HttpRequest, device_id: int) -> HttpResponse:
         raise Http404("You have no such device.")
     end_device(device_id, by=request.user)
     messages.success(request, "You are not told there any more.")
+    return redirect("telling")
+
+
+@require_POST
+@for_people
+def digest_view(request: HttpRequest) -> HttpResponse:
+    """Every night by mail, or no longer."""
+    require(request.user, Action.MAKE_OWN_KEY)
+    is_wanted = request.POST.get("wanted") == "yes"
+    set_digest(request.user, is_wanted=is_wanted, by=request.user)
+    messages.success(request, "The night comes by mail every morning." if is_wanted else "No more mornings' mails.")
     return redirect("telling")
 
 

@@ -73,6 +73,7 @@ urlpatterns = [
     path("you/telling/", telling.telling_page, name="telling"),
     path("you/telling/devices/", telling.add_device_view, name="add-device"),
     path("you/telling/devices/<int:device_id>/end/", telling.end_device_view, name="end-device"),
+    path("you/telling/digest/", telling.digest_view, name="set-digest"),
     path("you/telling/trial/", telling.trial_view, name="trial"),
     path("notify-worker.js", telling.notify_worker, name="notify-worker"),
     path("events/<int:event_id>/", events.event_page_view, name="event"),

@@ -88,6 +88,7 @@ PAGES: dict[str, dict[str, Rule]] = {
     "telling": {"GET": READ, "POST": READ},
     "add-device": {"POST": READ},
     "end-device": {"POST": OWN_ROW},
+    "set-digest": {"POST": READ},
     "trial": {"POST": READ},
     "notify-worker": {"GET": OPEN},
     "event": {"GET": READ},

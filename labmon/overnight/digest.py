@@ -68,4 +68,5 @@ def line_of(one: BenchWords) -> str:
     """``bench-a/in: below limit, worst margin −1.2 dB about 03:10 (usual worst +4.0 dB, …); alarm 03:09 to 03:40``."""
     first = ", ".join(part for part in (one.word, one.worst and f"worst margin {one.worst}") if part)
     usual = f" ({one.usual})" if one.usual else ""
-    return "; ".join([f"{one.name}: {first}{usual}", *(part for part in (one.untrusted, one.missing, *one.calls) if part)])
+    rest = [part for part in (one.drift, one.untrusted, one.missing, *one.calls) if part]
+    return "; ".join([f"{one.name}: {first}{usual}", *rest])

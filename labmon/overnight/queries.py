@@ -8,7 +8,7 @@ import numpy as np
 
 from analysis.judge.margin import margin_of
 from analysis.judge.rule import Quantity
-from analysis.quantities import FloatArray, IntArray
+from analysis.quantities import FloatArray, IntArray, angle_rad_from_er_db, er_db_from_angle_rad
 from analysis.record.rollup_pages import page_columns
 from analysis.record.rollup_rows import open_cells
 from analysis.record.rollups import mean_names, means_of_cells
@@ -61,6 +61,13 @@ class BenchNight:
         """Smallest margin of the night."""
         known = self.least_db[np.isfinite(self.least_db)]
         return float(known.min()) if len(known) else None
+
+    @property
+    def mean_angle_deg(self) -> FloatArray:
+        """Angle on the sphere of each bucket's mean leak (its mean angle, where that is limited); NaN: nothing judged."""
+        is_er = self.quantity == Quantity.ER_DB
+        limit_er_db = self.alarm if is_er else float(er_db_from_angle_rad(np.radians(self.alarm)))
+        return np.degrees(angle_rad_from_er_db(limit_er_db + self.mean_db))
 
     @property
     def worst_bucket(self) -> int | None:

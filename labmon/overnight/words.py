@@ -5,11 +5,14 @@ from dataclasses import dataclass
 from datetime import datetime, timedelta
 from zoneinfo import ZoneInfo
 
+import numpy as np
+
 from labmon.alarms.models import Alarm
 from labmon.overnight.nights import Night
 from labmon.overnight.queries import BUCKET_S, BenchNight
 
 FEW = 4
+HOUR_BUCKETS = 3600 // BUCKET_S
 MINUS, NO_BREAK = "\N{MINUS SIGN}", "\N{NO-BREAK SPACE}"
 
 
@@ -22,6 +25,7 @@ class BenchWords:
     word: str
     is_below: bool
     usual: str
+    drift: str
     calls: list[str]
     untrusted: str
     missing: str
@@ -58,8 +62,17 @@ def bench_words(row: BenchNight, night: Night, zone: ZoneInfo) -> BenchWords:
         f"{row.station}/{row.tap}",
         "" if worst is None else f"{margin_text(worst)}{at}",
         "no judged reading" if worst is None else "below limit" if is_below else "", is_below, usual,
-        [_call(one, zone) for one in row.alarms], _share(max(covered_s - trusted_s, 0.0), whole_s, "untrusted"),
+        _drift(row), [_call(one, zone) for one in row.alarms], _share(max(covered_s - trusted_s, 0.0), whole_s, "untrusted"),
         _share(max(whole_s - covered_s, 0.0), whole_s, "missing"))
+
+
+def _drift(row: BenchNight) -> str:
+    """Mean angle of the first and the last hour with readings, and how far apart two tens of minutes were at most."""
+    angle_deg = row.mean_angle_deg[np.isfinite(row.mean_angle_deg)]
+    if len(angle_deg) < 2 * HOUR_BUCKETS:
+        return ""
+    first, last = angle_deg[:HOUR_BUCKETS].mean(), angle_deg[-HOUR_BUCKETS:].mean()
+    return f"angle {first:.1f}° in the first hour, {last:.1f}° in the last, {np.ptp(angle_deg):.1f}° between its extremes"
 
 
 def margin_text(margin_db: float) -> str:

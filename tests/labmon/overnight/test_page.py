@@ -64,6 +64,15 @@ def test_the_first_sentence_counts_and_names(db):
     assert said.count('class="night-below"') == 1
 
 
+def test_drift_is_told_in_degrees(db):
+    """tan²(γ/2) of 27 dB and of 20 dB: 5.12° and 11.42° (docs/formulas.md; the handbook relation of leak and angle)."""
+    er_db = np.full(HOURS, 27.0)
+    er_db[-1] = 20.0
+    bench("bench-a", er_db, alarm=18.0)
+    roll_up()
+    assert "angle 5.1° in the first hour, 11.4° in the last, 6.3° between its extremes" in page()
+
+
 def test_missing_hours_are_hatched_and_told(db):
     gap = np.full(HOURS, 25.0)
     gap[3:5] = np.nan

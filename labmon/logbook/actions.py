@@ -14,6 +14,7 @@ from labmon.logbook.models import ChangeKind, ConfigurationChange, LogEntry, Log
 from labmon.logbook.pictures import Upload, store_picture
 from labmon.people.models import Person, Role
 from labmon.people.rights import Action, may, owns, require, role_of
+from labmon.runs.models import Run
 
 LONGEST_TEXT: Final = 4000
 #: An entry may be dated so little ahead of the server's clock: a phone's clock is not the server's.
@@ -24,23 +25,25 @@ AHEAD: Final = timedelta(minutes=5)
 def write_entry(
     station: Station, *, by: Person, at: datetime, until_at: datetime | None = None, tap: Tap | None = None,
     text: str = "", tag: str = LogTag.NOTE, change: str | None = None, picture: Upload | None = None,
+    run: Run | None = None,
 ) -> LogEntry:
     """An entry about a moment or a span; with ``change`` (a ChangeKind) it is a configuration change too.
 
     Whether a touch was a configuration change stays open until someone says so (``say_change``).
     Raises:
         NotAllowed: The person may not write in the logbook.
-        WriteError: The time, the tag, the tap, the kind or the picture cannot be meant, or an entry says nothing.
+        WriteError: The time, the tag, the tap, the run, the kind or the picture cannot be meant, or an entry says nothing.
     """
     require(by, Action.LOG, station)
     _check(at, until_at, text, tag)
     _check_tap(station, tap)
+    _check_run(station, run)
     if not text.strip() and picture is None and tag == LogTag.NOTE:
         raise WriteError("text", "A note without words says nothing.", "Write what happened.")
     if change is not None and change not in ChangeKind.values:
         raise WriteError("change", f"{change!r} is no kind of change.", f"Use one of {', '.join(ChangeKind.values)}.")
     entry = LogEntry.objects.create(
-        station=station, tap=tap, at=at, until_at=until_at, text=text.strip(), tag=tag, by=by,
+        station=station, tap=tap, run=run, at=at, until_at=until_at, text=text.strip(), tag=tag, by=by,
         was_change=None if tag == LogTag.TOUCHED and change is None else False,
         picture=store_picture(picture) if picture is not None else "",
     )
@@ -160,3 +163,9 @@ def _check(at: datetime, until_at: datetime | None, text: str, tag: str) -> None
 def _check_tap(station: Station, tap: Tap | None) -> None:
     if tap is not None and tap.station_id != station.pk:
         raise WriteError("tap", f"{tap.name} is no tap of {station.name}.", "Choose one of this bench, or none.")
+
+
+def _check_run(station: Station, run: Run | None) -> None:
+    if run is not None and not run.taps.filter(station=station).exists():
+        do = "Name a run that watches a tap of this bench, or none."
+        raise WriteError("run", f"{run.name} does not run on {station.name}.", do)

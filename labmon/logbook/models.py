@@ -29,10 +29,11 @@ class ChangeKind(models.TextChoices):
 
 
 class LogEntry(models.Model):
-    """An entry about a moment (``until_at`` is null) or a span of a bench, or of one of its taps."""
+    """An entry about a moment (``until_at`` is null) or a span of a bench or one of its taps, and about a run if it names one."""
 
     station = models.ForeignKey("ingest.Station", models.CASCADE, related_name="log_entries")
     tap = models.ForeignKey("ingest.Tap", models.CASCADE, null=True, blank=True, related_name="+")
+    run = models.ForeignKey("labmon.Run", models.SET_NULL, null=True, blank=True, related_name="log_entries")
     at = models.DateTimeField(help_text="When it happened.")
     until_at = models.DateTimeField(null=True, blank=True)
     text = models.CharField(max_length=4000, blank=True)

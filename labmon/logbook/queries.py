@@ -10,6 +10,7 @@ from ingest.models import Station, Tap
 from labmon.logbook.models import ConfigurationChange, LogEntry
 from labmon.people.models import Person
 from labmon.people.rights import stations_visible_to
+from labmon.runs.models import Run
 
 MOST_MARKS = 200
 
@@ -83,9 +84,17 @@ def log_entries(
     return list(loaded(rows).order_by("-at", "-pk")[:limit])
 
 
+def entries_of_run(person: Person, run: Run, *, limit: int = 50) -> list[LogEntry]:
+    """What was written about the run, or about the time of it on its benches; newest first. One query."""
+    meanwhile = Q(at__gte=run.starts_at) | Q(until_at__gt=run.starts_at)
+    of_its_benches = Q(station__in=run.taps.values("station")) & Q(at__lt=run.over_at) & meanwhile
+    rows = entries_visible_to(person).filter(Q(run=run) | of_its_benches)
+    return list(loaded(rows).order_by("-at", "-pk")[:limit])
+
+
 def loaded(rows: QuerySet[LogEntry]) -> QuerySet[LogEntry]:
     """With all that showing an entry needs."""
-    return rows.select_related("station__bench", "tap", "by", "change").annotate(edits=Count("befores"))
+    return rows.select_related("station__bench", "tap", "run", "by", "change").annotate(edits=Count("befores"))
 
 
 def _behind(rows: QuerySet[LogEntry], entry_id: int) -> QuerySet[LogEntry]:

@@ -21,7 +21,7 @@ from labmon.people.rights import Action, may, require
 from labmon.screen.door import for_people, put_refusal, say_refusal
 from labmon.screen.log_forms import LogEditForm, LogForm
 from labmon.screen.log_view import CHANGE_WORDS, TAG_WORDS, EntryView, entry_view, log_sentence, when_text
-from labmon.screen.named import visible_station
+from labmon.screen.named import visible_run, visible_station
 from labmon.screen.present import time_text
 
 PAGE_SIZE = 50
@@ -43,7 +43,7 @@ def log_page(request: HttpRequest, station: str) -> HttpResponse:
             try:
                 entry = _written(request.user, found, dict(form.cleaned_data))
             except WriteError as error:
-                put_refusal(form, error)
+                put_refusal(form, error, {"run": ""})  # its field is hidden, so it is said above the form
             else:
                 messages.success(request, "Written down.")
                 return redirect("log-entry", found.name, entry.pk) if entry.was_change is None else redirect("log", found.name)
@@ -52,14 +52,22 @@ def log_page(request: HttpRequest, station: str) -> HttpResponse:
 
 def _new_form(request: HttpRequest, station: Station) -> LogForm:
     taps = list(station.taps.order_by("name").values_list("name", flat=True))
-    initial = {"at": timezone.now().replace(microsecond=0), "tag": request.GET.get("tag", LogTag.NOTE)}
+    initial = {"at": timezone.now().replace(microsecond=0), "tag": request.GET.get("tag", LogTag.NOTE),
+               "run": _asked_run(request)}
     return LogForm(request.POST or None, request.FILES or None, taps=taps, initial=initial)
 
 
+def _asked_run(request: HttpRequest) -> int | None:
+    """The run that the entry is to be about: as typed, or as the address says."""
+    number = request.POST.get("run") or request.GET.get("run", "")
+    return int(number) if number.isascii() and number.isdigit() and len(number) < 19 else None
+
+
 def _written(person: Person, station: Station, typed: dict[str, Any]) -> LogEntry:
-    name, change = typed.pop("tap"), typed.pop("change")
+    name, change, run_id = typed.pop("tap"), typed.pop("change"), typed.pop("run")
     tap = station.taps.select_related("station").get(name=name) if name else None
-    return write_entry(station, by=person, tap=tap, change=change or None, **typed)
+    return write_entry(station, by=person, tap=tap, change=change or None,
+                       run=visible_run(person, run_id) if run_id else None, **typed)
 
 
 def _shown(request: HttpRequest, station: Station, form: LogForm) -> dict[str, Any]:
@@ -74,6 +82,7 @@ def _shown(request: HttpRequest, station: Station, form: LogForm) -> dict[str, A
         "entries": views,
         "asking": [view for view in views if view.asks],
         "form": form,
+        "run": visible_run(request.user, run_id) if (run_id := _asked_run(request)) else None,
         "may_log": may(request.user, Action.LOG, station),
         "tag": tag,
         "tags": [(one.value, TAG_WORDS[one]) for one in LogTag],

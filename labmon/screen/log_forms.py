@@ -37,6 +37,7 @@ class LogForm(LogEditForm):
         label="Picture", required=False, help_text="JPEG, PNG or WebP, at most 12 MiB. Place and time inside it are dropped.",
         widget=forms.ClearableFileInput(attrs={"accept": "image/jpeg,image/png,image/webp"}),
     )
+    run = forms.IntegerField(required=False, min_value=1, widget=forms.HiddenInput)
     field_order = ["text", "tag", "change", "at", "until_at", "tap", "picture"]
 
     def __init__(self, *args: Any, taps: list[str], **kwargs: Any) -> None:

@@ -37,6 +37,8 @@ class EntryView:
     tag: str
     text: str
     tap: str
+    run: str
+    run_id: int | None
     by: str
     change: str
     edits: int
@@ -69,6 +71,8 @@ def entry_view(entry: LogEntry, *, by: str, may_answer: bool) -> EntryView:
         tag=TAG_WORDS[LogTag(entry.tag)],
         text=entry.text,
         tap=entry.tap.name if entry.tap else "",
+        run=entry.run.name if entry.run else "",
+        run_id=entry.run_id,
         by=by,
         change=CHANGE_WORDS[ChangeKind(kind)] if kind else "",
         edits=getattr(entry, "edits", 0),

@@ -29,6 +29,7 @@ from labmon.alarms.queries import alarm_rows
 from labmon.benches.queries import station_facts
 from labmon.errors import WriteError
 from labmon.events.chain import chains_of
+from labmon.logbook.queries import entries_of_run
 from labmon.people.models import Role
 from labmon.people.rights import Action, may, require, role_of
 from labmon.runs.ledgers import Unusable, ask_ledger, interval_rows, ledger_of, ledgers_of, newest_ledger, stretches
@@ -40,6 +41,7 @@ from labmon.runs.watch import limits_ahead
 from labmon.screen.alarm_view import alarm_view
 from labmon.screen.clearance import run_clearance_context
 from labmon.screen.door import for_people, put_refusal, say_refusal
+from labmon.screen.log import entry_views
 from labmon.screen.named import visible_run
 from labmon.screen.present import number_text, time_text
 from labmon.screen.run_forms import LedgerForm
@@ -141,6 +143,8 @@ def _show(request: HttpRequest, run: Run, form: LedgerForm, status: int) -> Http
         "line": _line(run, rulings, intervals, totals),
         "tap_ids": " ".join(str(pk) for pk in run.run_taps.values_list("tap_id", flat=True)),
         "waiting": [view for view in alarms if view.is_waiting], "alarms": [view for view in alarms if not view.is_waiting],
+        "log": [] if state is RunState.PLANNED else entry_views(request.user, entries_of_run(request.user, run)),
+        "log_benches": _benches(run) if may(request.user, Action.LOG, run.experiment) else [],
         "form": form if may_change and state is RunState.OVER else None,
         **(run_clearance_context(run) if state is RunState.PLANNED else {}),
         **_ledger_shown(request, run, ledger, intervals),
@@ -182,6 +186,10 @@ def _taps(run: Run, now: datetime) -> list[dict[str, Any]]:
     stations: QuerySet[Station] = Station.objects.filter(taps__in=wanted).select_related("room").distinct().order_by("name")
     return [{"station": station.name, "view": tap_view(tap, now)}
             for station in stations for tap in station_facts(station).taps if tap.id in wanted]
+
+
+def _benches(run: Run) -> list[str]:
+    return list(Station.objects.filter(taps__in=run.taps.all()).distinct().order_by("name").values_list("name", flat=True))
 
 
 def _on_call(request: HttpRequest, run: Run, at: datetime) -> list[str]:

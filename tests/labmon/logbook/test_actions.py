@@ -7,9 +7,9 @@ from labmon.audit.models import AuditEntry
 from labmon.errors import NotAllowed, WriteError
 from labmon.logbook.actions import edit_entry, say_change, strike_entry, write_entry
 from labmon.logbook.models import ChangeKind, ConfigurationChange, LogEntry, LogTag
-from labmon.logbook.queries import configuration_changes, configuration_changes_of
+from labmon.logbook.queries import configuration_changes, configuration_changes_of, entries_of_run
 from labmon.people.models import Role
-from tests.factories import NOON, make_person, make_station, make_tap
+from tests.factories import NOON, make_experiment, make_person, make_run, make_station, make_tap
 
 pytestmark = pytest.mark.django_db
 AT = timezone.now() - timedelta(hours=2)
@@ -125,3 +125,24 @@ def test_change_moves_with_its_entry():
     earlier = AT - timedelta(hours=1)
     edit_entry(entry, by=ann, at=earlier, until_at=None, text="spooled anew", tag=LogTag.NOTE)
     assert configuration_changes(entry.station, earlier) == [earlier]
+
+
+def test_an_entry_may_be_about_a_run_of_its_bench_only():
+    tap, other = make_tap(), make_tap()
+    run = make_run(make_experiment(tap), AT - timedelta(hours=1), 7200.0)
+    assert make_entry(station=tap.station, run=run).run == run
+    with pytest.raises(WriteError) as refused:
+        make_entry(station=other.station, run=run)
+    assert refused.value.field == "run" and LogEntry.objects.count() == 1
+
+
+def test_a_run_gathers_what_names_it_and_what_was_written_of_its_time():
+    tap, person = make_tap(), make_person(Role.RESEARCHER)
+    run = make_run(make_experiment(tap), AT - timedelta(hours=1), 7200.0)
+    before = run.starts_at - timedelta(minutes=30)
+    kept = {make_entry(person, station=tap.station).pk,
+            make_entry(person, station=tap.station, run=run, at=before, text="aligned for it").pk,
+            make_entry(person, station=tap.station, at=before, until_at=AT, text="polished").pk}
+    make_entry(person, station=tap.station, at=before, text="earlier")
+    make_entry(person, text="another bench")
+    assert {entry.pk for entry in entries_of_run(person, run)} == kept

@@ -15,7 +15,7 @@ from PIL import Image
 from labmon.logbook.actions import edit_entry, write_entry
 from labmon.logbook.models import ConfigurationChange, LogEntry, LogTag
 from labmon.people.models import Role
-from tests.factories import make_experiment, make_person, make_station, make_tap
+from tests.factories import make_experiment, make_person, make_run, make_station, make_tap
 
 pytestmark = pytest.mark.django_db
 
@@ -182,3 +182,30 @@ def test_an_experiments_page_has_what_was_written_about_its_benches(client, ann,
     for _ in range(20):
         write(bench, ann)
     assert queries(client, address) == few
+
+
+def wish_about(run):
+    at = timezone.now() - timedelta(minutes=5)
+    return {"text": "lens slipped", "tag": "note", "at": f"{at:%Y-%m-%d %H:%M:%S}", "run": run.pk}
+
+
+def test_written_about_a_run_and_read_on_its_page(client, ann, bench):
+    client.force_login(ann)
+    run = make_run(make_experiment(bench.taps.get()), timezone.now() - timedelta(hours=2), 3600.0, name="night of the long fibre")
+    page = client.get(f"/runs/{run.pk}/")
+    assert "Nothing is written about this run or its time." in words(page)
+    address = f"/stations/n2/log/?run={run.pk}"
+    assert address in page.content.decode()
+    assert "About the run night of the long fibre" in words(client.get(address))
+    client.post(address, wish_about(run))
+    assert LogEntry.objects.get().run == run
+    assert "lens slipped" in words(client.get(f"/runs/{run.pk}/"))
+    assert "run night of the long fibre" in words(client.get("/stations/n2/log/"))
+
+
+def test_a_run_of_another_bench_is_refused_and_the_words_stay(client, ann, bench):
+    client.force_login(ann)
+    other = make_run(make_experiment(make_tap(make_station("n3"))), timezone.now() - timedelta(hours=2), 3600.0)
+    answer = client.post("/stations/n2/log/", wish_about(other))
+    assert answer.status_code == 422 and "does not run on n2" in words(answer) and "lens slipped" in words(answer)
+    assert client.get("/stations/n2/log/?run=99999").status_code == 404

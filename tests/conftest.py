@@ -6,8 +6,12 @@ import socket
 from pathlib import Path
 
 import pytest
+from hypothesis import settings
 
 BUILD = Path(__file__).resolve().parents[1] / ".build"
+#: A machine that is busy is no fault of a test.
+settings.register_profile("labmon", deadline=None)
+settings.load_profile("labmon")
 NEAR = {"localhost", "127.0.0.1", "::1", "0.0.0.0", ""}
 
 

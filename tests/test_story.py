@@ -33,6 +33,7 @@ from labmon.experiments.actions import create_experiment, set_limit
 from labmon.people.keys import make_person_key
 from labmon.people.models import Role
 from labmon.pipeline.hint import ask_for_judging
+from labmon.pipeline.lanes import Lane, queue_of
 from labmon.pipeline.schedule import BEAT_SCHEDULE
 from labmon.pipeline.silence import judge_silence
 from labmon.pipeline.tasks import tell_task
@@ -143,7 +144,8 @@ def worker(transactional_db, monkeypatch):
     worker_process_init.disconnect(keep_connection)
     task_postrun.connect(let_go)
     monkeypatch.setattr(ask_for_judging, "_next_s", 0.0)
-    with start_worker(celery_app, pool="solo", perform_ping_check=False, shutdown_timeout=30.0):
+    lanes = [queue_of(lane) for lane in Lane]
+    with start_worker(celery_app, pool="solo", perform_ping_check=False, shutdown_timeout=30.0, queues=lanes):
         yield
     task_postrun.disconnect(let_go)
     worker_process_init.connect(keep_connection)

@@ -95,7 +95,7 @@ def test_a_person_key_is_made_and_revoked_by_its_hint():
     make_person(username="maren")
     said = run("make_key", "--person", "maren")
     assert person_of_key(said["key"]).username == "maren"
-    assert run("revoke_key", "--person", "maren", "--hint", said["key"][-4:])["revoked"] == [said["key_id"]]
+    assert run("revoke_key", "--person", "maren", f"--hint={said['key'][-4:]}")["revoked"] == [said["key_id"]]
     assert person_of_key(said["key"]) is None
 
 

@@ -42,14 +42,19 @@ def test_who_plans_for_others(lab, role, status):
                                    ).status_code == status
 
 
+@pytest.mark.parametrize("experiment", [0, -1, 10**9, "no such"])
+def test_an_experiment_that_is_not_there_is_not_found(lab, experiment):
+    answer = lab.researcher.post(RUNS, wish(lab, experiment=experiment))
+    assert answer.status_code == 404 and "no such experiment for you" in answer.json()["title"] and not Run.objects.exists()
+
+
 @pytest.mark.parametrize(("more", "field"), [
     ({"name": " "}, "name"), ({"starts_at": "tonight"}, "starts_at"), ({"starts_at": "2027-03-04T20:00:00"}, "starts_at"),
     ({"starts_at": "2027-03-04T20:00:00.5Z"}, "starts_at"), ({"ends_at": "2027-03-05T08:00:00Z"}, "ends_at"),
     ({"length_s": None}, "ends_at"), ({"length_s": 30}, "ends_at"), ({"length_s": 1e300}, "length_s"), ({"taps": []}, "taps"),
     ({"taps": ["bench-a/air"]}, "taps"), ({"taps": ["bench-b/in"]}, "taps"), ({"taps": ["x"]}, "taps[0]"),
     ({"deputy": "nobody at all"}, "deputy"), ({"deputy": "guest"}, "deputy"), ({"allowed_below_s": -1}, "allowed_below_s"),
-    ({"wanted_trusted_share": 2}, "wanted_trusted_share"),
-    ({"experiment": 0}, "experiment")])
+    ({"wanted_trusted_share": 2}, "wanted_trusted_share")])
 def test_the_field_at_fault_is_named(lab, more, field):
     answer = lab.researcher.post(RUNS, wish(lab, **more))
     assert (answer.status_code, answer.json()["field"]) == (400, field) and not Run.objects.exists()
